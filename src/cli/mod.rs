@@ -1,0 +1,68 @@
+//! The command line: the only module that opens files, reads the environment or prints.
+
+mod console;
+mod disk;
+mod limits;
+mod output;
+mod signal;
+
+use std::ffi::OsString;
+use std::process::ExitCode;
+
+use clap::{Parser, Subcommand};
+
+pub use console::{Console, Ending, Failure};
+pub use disk::Disk;
+pub use output::{OutputFolder, OutputOptions};
+
+/// The bench of an engineer who puts an amplitude-varying signal through a switching power stage.
+#[derive(Debug, Parser)]
+#[command(name = "quietedge", version, about, long_about = None, max_term_width = 100)]
+struct Arguments {
+    #[command(subcommand)]
+    command: Command,
+
+    #[command(flatten)]
+    common: Common,
+}
+
+/// Options that every command takes.
+#[derive(Debug, Clone, clap::Args)]
+pub struct Common {
+    /// Print one JSON document on stdout and nothing else there
+    #[arg(long, global = true)]
+    json: bool,
+
+    /// No progress bars and no remarks on stderr
+    #[arg(short, long, global = true)]
+    quiet: bool,
+}
+
+#[derive(Debug, Subcommand)]
+enum Command {
+    Signal(signal::Arguments),
+    Limits(limits::Arguments),
+}
+
+/// Runs the program with the process's own arguments.
+pub fn main() -> ExitCode {
+    run(std::env::args_os())
+}
+
+fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
+    let arguments = match Arguments::try_parse_from(arguments) {
+        Ok(arguments) => arguments,
+        Err(error) => {
+            // Help and version go to stdout and are no failure.
+            let code = if error.use_stderr() { 2 } else { 0 };
+            let _ = error.print();
+            return ExitCode::from(code);
+        }
+    };
+    let console = Console::new(&arguments.common);
+    let result = match arguments.command {
+        Command::Signal(arguments) => signal::run(&arguments, &console),
+        Command::Limits(arguments) => limits::run(&arguments, &console),
+    };
+    console.exit(result)
+}

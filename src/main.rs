@@ -1,0 +1,7 @@
+//! The command line of `quietedge`.
+
+use std::process::ExitCode;
+
+fn main() -> ExitCode {
+    quietedge::cli::main()
+}
