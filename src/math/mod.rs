@@ -1,1 +1,5 @@
-//! To be written.
+//! Numbers without physics.
+
+pub mod flow;
+pub mod monotone;
+pub mod small;
