@@ -11,4 +11,7 @@ pub enum SignalError {
         /// The system's own words.
         cause: std::io::Error,
     },
+    /// The resampler refused its own settings.
+    #[error("resampling failed: {0}")]
+    Resampling(String),
 }
