@@ -116,7 +116,10 @@ impl Blocks {
             Err(cause) if cause.kind() == ErrorKind::UnexpectedEof => {
                 Err(SignalError::ImpossibleLength {
                     file: self.layout.file.clone(),
-                    given: format!("the file ends within {count} samples from sample {}", self.next),
+                    given: format!(
+                        "the file ends within {count} samples from sample {}",
+                        self.next
+                    ),
                     allowed: format!("it should hold {} samples", self.layout.samples),
                 })
             }

@@ -90,7 +90,9 @@ pub enum SignalError {
         file: String,
     },
     /// The same thing is stated twice, differently.
-    #[error("{file}: {what} is stated twice and differs: {first} and {second}; allowed: one of them, or the same twice")]
+    #[error(
+        "{file}: {what} is stated twice and differs: {first} and {second}; allowed: one of them, or the same twice"
+    )]
     Disagreement {
         /// The file, as the user named it.
         file: String,

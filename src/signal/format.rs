@@ -124,7 +124,7 @@ pub(super) fn agree(
     second: Option<f64>,
 ) -> Result<Option<f64>, SignalError> {
     match (first, second) {
-        (Some(a), Some(b)) if !((a - b).abs() <= 1e-9 * a.abs()) => {
+        (Some(a), Some(b)) if (a - b).abs() > 1e-9 * a.abs() || (a - b).is_nan() => {
             Err(SignalError::Disagreement {
                 file: file.to_owned(),
                 what,

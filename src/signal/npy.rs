@@ -55,13 +55,13 @@ pub(super) fn layout(
     };
     let start = match (head.get(6), head.get(8..12)) {
         (Some(1), Some(size)) => 10 + usize::from(u16::from_le_bytes([size[0], size[1]])),
-        (Some(_), Some(size)) => {
-            12usize.saturating_add(u32::from_le_bytes([size[0], size[1], size[2], size[3]]) as usize)
-        }
+        (Some(_), Some(size)) => 12usize
+            .saturating_add(u32::from_le_bytes([size[0], size[1], size[2], size[3]]) as usize),
         _ => return Err(cut()),
     };
     let text = head.get(10..start).ok_or_else(cut)?;
-    let one_complex = "one complex array of one dimension: numpy.save(name, x.astype(numpy.complex64))";
+    let one_complex =
+        "one complex array of one dimension: numpy.save(name, x.astype(numpy.complex64))";
     if !is_simple(text) {
         return Err(malformed(
             "a header of nested types or of sizes past any file".to_owned(),
@@ -133,5 +133,7 @@ fn is_simple(text: &[u8]) -> bool {
         }
         deepest = deepest.max(depth);
     }
-    deepest <= 4 && text.iter().filter(|byte| byte.is_ascii_digit()).count() <= 18
+    let digits = text.iter().filter(|byte| byte.is_ascii_digit()).count();
+    let hexadecimal = text.windows(2).any(|pair| matches!(pair, b"0x" | b"0X"));
+    deepest <= 4 && digits <= 18 && !hexadecimal
 }

@@ -32,9 +32,7 @@ pub fn open(
         Format::Csv => {
             let hint = "; a file with time,level is a pulse sequence, which only a scheme that takes pulses can use";
             let columns = Columns::new(reader, &file, ["i", "q"], hint)?;
-            let rate_hz = options
-                .rate_hz
-                .ok_or(SignalError::MissingRate { file })?;
+            let rate_hz = options.rate_hz.ok_or(SignalError::MissingRate { file })?;
             return Ok(Box::new(TextSamples::new(
                 columns,
                 rate_hz,
@@ -168,7 +166,7 @@ fn raw_layout(
     }
     let bytes = reader.seek(SeekFrom::End(0)).map_err(io)?;
     let frame = 2 * encoding.bytes() as u64;
-    if bytes % frame != 0 {
+    if !bytes.is_multiple_of(frame) {
         return Err(SignalError::ImpossibleLength {
             file: file.to_owned(),
             given: format!("{bytes} bytes"),

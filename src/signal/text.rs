@@ -22,7 +22,7 @@ pub(super) struct Columns {
 }
 
 impl Columns {
-    /// Reads the header: `names` in either order.
+    /// Reads the header, `names` in either order, and looks at the first row.
     pub(super) fn new(
         reader: Box<dyn ReadSeek>,
         file: &str,
@@ -69,7 +69,7 @@ impl Columns {
             });
         };
         let first = rows.position().clone();
-        Ok(Self {
+        let mut columns = Self {
             file: file.to_owned(),
             names,
             swapped,
@@ -77,7 +77,11 @@ impl Columns {
             record,
             first,
             read: 0,
-        })
+        };
+        // A file of a header and nothing else is told now, not halfway through the work.
+        columns.next()?;
+        columns.rewind()?;
+        Ok(columns)
     }
 
     pub(super) fn file(&self) -> &str {

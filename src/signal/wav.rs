@@ -201,7 +201,7 @@ fn finish(
         ));
     }
     let frame = (shape.encoding.bytes() * channels) as u64;
-    if bytes % frame != 0 {
+    if !bytes.is_multiple_of(frame) {
         return Err(impossible(
             format!("{bytes} bytes of samples"),
             &format!("a multiple of {frame}, the bytes of one sample"),
@@ -239,9 +239,7 @@ fn read_shape(fmt: &[u8], file: &str) -> Result<Shape, SignalError> {
     let mut tag = u16_at(fmt, 0);
     if tag == 0xFFFE {
         // Extensible: the first two bytes of the sub-format are the tag, the rest is fixed.
-        const REST: [u8; 14] = [
-            0, 0, 0, 0, 0x10, 0, 0x80, 0, 0, 0xAA, 0, 0x38, 0x9B, 0x71,
-        ];
+        const REST: [u8; 14] = [0, 0, 0, 0, 0x10, 0, 0x80, 0, 0, 0xAA, 0, 0x38, 0x9B, 0x71];
         if fmt.len() < 40 || fmt[26..40] != REST {
             return Err(malformed(
                 "an extensible WAV format of unknown kind".to_owned(),
