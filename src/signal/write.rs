@@ -164,12 +164,14 @@ fn wav<W: Write + Seek>(
     format: hound::SampleFormat,
 ) -> Result<u64, SignalError> {
     let rate_hz = source.rate_hz();
-    if rate_hz.fract() != 0.0 || !(1.0..=f64::from(u32::MAX)).contains(&rate_hz) {
+    let frame = u64::from(bits / 8 * 2);
+    // The header holds bytes a second too, in 32 bits.
+    let most_hz = u64::from(u32::MAX) / frame;
+    if rate_hz.fract() != 0.0 || !(1.0..=most_hz as f64).contains(&rate_hz) {
         return Err(SignalError::Unwritable {
             given: format!("a rate of {rate_hz} Hz"),
             allowed: format!(
-                "whole numbers of Hz up to {} in WAV; write .npy, .cf32 or .csv",
-                u32::MAX
+                "whole numbers of Hz up to {most_hz} in WAV of this width; write .npy, .cf32 or .csv"
             ),
         });
     }
@@ -177,7 +179,6 @@ fn wav<W: Write + Seek>(
         hound::Error::IoError(cause) => refuse(file, samples, cause),
         other => refuse(file, samples, io::Error::other(other.to_string())),
     };
-    let frame = u64::from(bits / 8 * 2);
     // The header takes less than 100 bytes of what 32-bit sizes can say.
     let most = (u64::from(u32::MAX) - 100) / frame;
     let spec = hound::WavSpec {
