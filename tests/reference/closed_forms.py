@@ -172,7 +172,8 @@ def differences(now, stored, path=""):
         return max((differences(now[k], v, f"{path}.{k}") for k, v in stored.items()), default=(0.0, path))
     if isinstance(stored, list):
         return max((differences(a, b, f"{path}[{i}]") for i, (a, b) in enumerate(zip(now, stored, strict=True))), default=(0.0, path))
-    return abs(now - stored) / max(abs(stored), 1.0), path
+    error = abs(now - stored) / max(abs(stored), 1.0)
+    return error if np.isfinite(error) else np.inf, path
 
 
 def main():
@@ -181,7 +182,7 @@ def main():
     balance = max(abs(x["balance"]) for x in [found["choke_half"], *found["choke"], *found["any_feed"]])
     if "--check" in sys.argv[1:]:
         error, where = differences(found, json.loads(STORE.read_text())["figures"])
-        fine &= error <= AGREEMENT and balance < 1e-10
+        fine = bool(fine and error <= AGREEMENT and balance < 1e-10)
         if not fine:
             print("\n".join(lines))
         print(f"closed_forms: largest difference {error:.1e} at {where}, energy balance {balance:.1e}: {'agree' if fine else 'DO NOT AGREE'}")

@@ -187,6 +187,21 @@ def long_chain(d):
     d.shunt_c(d.load * d.rng.uniform(0.8, 2.0))
 
 
+def detailed(d):
+    """Resistances given outright, capacitor Q in a tank, a damped trap, an element of each key."""
+    rng, w, r = d.rng, d.w, d.r
+    xl = d.loaded_q * r
+    d.add("series", f"{inductance(xl / w)}, resistance = {text(r * rng.uniform(0.01, 0.1), 'ohm', 3)}")
+    d.add("series", f"{capacitance(1 / (w * (xl - d.excess())))}, resistance = {text(r * rng.uniform(0.005, 0.05), 'ohm', 3)}")
+    ohm, at = r * rng.uniform(0.3, 0.8), rng.uniform(1.9, 3.1)
+    body = f"{inductance(ohm / w)}, {capacitance(1 / (w * ohm * at * at))}"
+    d.add("tank", f"{body}, q = {int(rng.uniform(20, 90))}, capacitor_q = {int(rng.uniform(100, 600))}")
+    ohm, at = r * rng.uniform(0.5, 2.0), rng.uniform(1.9, 3.1)
+    body = f"{inductance(ohm / w)}, {capacitance(1 / (w * ohm * at * at))}"
+    d.add("shunt", f"{body}, q = {int(rng.uniform(20, 90))}, resistance = {text(r * rng.uniform(0.02, 0.3), 'ohm', 3)}")
+    d.reactance = r * rng.choice([-1.0, 1.0]) * rng.uniform(0.1, 0.5)
+
+
 def inductors_around_shunt_resistor(d):
     d.core(joined=True)
     d.series_l(d.r)
@@ -239,6 +254,7 @@ def stages(seed, usable):
     rng = np.random.default_rng(seed)
     plan = [(kind, None) for kind in KINDS for _ in range(3)]
     plan += [(kind, choke) for kind in DEGENERATE for choke in (False, True)]
+    plan += [(detailed, choke) for choke in (False, True, False, True)]
     out = []
     for place, (kind, choke) in enumerate(plan):
         name = f"{place + 1:02d}_{kind.__name__}"

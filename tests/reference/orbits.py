@@ -77,7 +77,8 @@ def worst(now, stage):
     scale, out = scales(stage), (0.0, "")
     for key, value in stage["results"].items():
         a, b = np.array(flat(now[key])), np.array(flat(value))
-        out = max(out, (float((np.abs(a - b) / scale.get(key, np.abs(b))).max()), key))
+        error = float((np.abs(a - b) / scale.get(key, np.abs(b))).max())
+        out = max(out, (error if np.isfinite(error) else np.inf, key))
     return out
 
 

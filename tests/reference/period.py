@@ -60,35 +60,30 @@ def steady(stage, settle=True):
     """Start state, source (1 V supply: the voltage, or for a choke the current in V per load
     resistance), and a note on how they were found.
 
-    The state is settled from rest, period after period. A choke's current is constant and not known
-    beforehand: it comes from shooting, together with a state that the settled one is held against.
-    Where settling takes too long the shooting state is used.
+    The state is settled from rest at a source of one, period after period. Where settling takes too
+    long, shooting on the integrated period map takes its place. With a choke everything is in
+    proportion to its constant current, so the current follows afterwards from
+    mean drain voltage + current * feed resistance = supply.
     """
     M, b, m, c = period_map(stage)
     n = stage.states
     radius = float(np.abs(np.linalg.eigvals(M)).max())
-    if stage.choke:
-        # mean drain voltage + current * feed resistance = supply
-        system = np.block([[np.eye(n) - M, -b[:, None]], [m[None, :], np.array([[c + stage.feed_ohm / stage.load_ohm]])]])
-        solved = np.linalg.solve(system, np.append(np.zeros(n), 1.0))
-        shot, source = solved[:n], solved[n]
-    else:
-        shot, source = np.linalg.solve(np.eye(n) - M, b), 1.0
-    note = {"method": "shooting", "choke_current": "shooting" if stage.choke else None, "spectral_radius": radius}
-    if not settle or radius > SETTLED ** (1 / LONGEST_SETTLING):
-        return shot, source, note
-    state = np.zeros(n)
-    for periods in range(1, 2 * LONGEST_SETTLING):
-        after = advance(stage, state, source)
-        change = np.linalg.norm(after - state) / np.linalg.norm(after)
-        state = after
-        if change < SETTLED:
-            break
-    else:
-        raise RuntimeError("does not settle")
-    note.update(method="settled from rest", periods=periods,
-                distance_to_shooting=float(np.linalg.norm(state - shot) / np.linalg.norm(shot)))
-    return state, source, note
+    shot = np.linalg.solve(np.eye(n) - M, b)
+    state, note = shot, {"method": "shooting", "spectral_radius": radius}
+    if settle and radius < SETTLED ** (1 / LONGEST_SETTLING):
+        state = np.zeros(n)
+        for periods in range(1, 2 * LONGEST_SETTLING):
+            after = advance(stage, state, 1.0)
+            change = np.linalg.norm(after - state) / np.linalg.norm(after)
+            state = after
+            if change < SETTLED:
+                break
+        else:
+            raise RuntimeError("does not settle")
+        note.update(method="settled from rest", periods=periods,
+                    distance_to_shooting=float(np.linalg.norm(state - shot) / np.linalg.norm(shot)))
+    source = 1.0 / (m @ state + c + stage.feed_ohm / stage.load_ohm) if stage.choke else 1.0
+    return state * source, source, note
 
 
 def peak(stage, phase, source, solution):
