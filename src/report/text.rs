@@ -49,9 +49,35 @@ fn push_escaped(out: &mut String, text: &str) {
     }
 }
 
+/// Unit symbols, with prefixes where they are usual, that must not stand alone at the start of a line.
+const UNITS: [&str; 23] = [
+    "%", "dB", "dBm", "dBc", "dBr", "V", "mV", "kV", "A", "mA", "W", "mW", "kW", "Hz", "kHz",
+    "MHz", "GHz", "s", "ms", "us", "ns", "deg", "ohm",
+];
+
+/// `text` with no-break spaces between numbers and their units.
+pub fn keep_units(text: &str) -> String {
+    let mut kept = String::with_capacity(text.len());
+    for word in text.split(' ') {
+        if !kept.is_empty() {
+            let bare = word.trim_end_matches(['.', ',', ';', ':', ')']);
+            let joins = kept.ends_with(|c: char| c.is_ascii_digit()) && UNITS.contains(&bare);
+            kept.push(if joins { '\u{a0}' } else { ' ' });
+        }
+        kept.push_str(word);
+    }
+    kept
+}
+
+/// A quantity with a prefix, as [`units::show`]; sizes no hardware has are zero.
+pub fn quantity(value: f64, unit: &str, digits: usize) -> String {
+    let value = if value.abs() < 1e-24 { 0.0 } else { value };
+    units::show(value, unit, digits)
+}
+
 /// A quantity with its sign always written: `+12.5 kHz`.
 pub fn signed(value: f64, unit: &str, digits: usize) -> String {
-    let text = units::show(value, unit, digits);
+    let text = quantity(value, unit, digits);
     if value > 0.0 {
         format!("+{text}")
     } else {
@@ -70,6 +96,14 @@ mod tests {
             "&lt;b a=&#39;1&#39; c=&quot;2&quot;&gt;&amp;\u{fffd}\u{fffd} "
         );
         assert_eq!(escape_lines("a<\n\tb\u{7}"), "a&lt;\n    b\u{fffd}");
+    }
+
+    #[test]
+    fn numbers_keep_their_units() {
+        assert_eq!(
+            keep_units("2 % of 300 ns, at 5 o'clock"),
+            "2\u{a0}% of 300\u{a0}ns, at 5 o'clock"
+        );
     }
 
     #[test]

@@ -48,6 +48,7 @@ impl CcdfFigure {
             role: Role::Muted,
             width: 1.2,
             dash: Dash::Dots,
+            legend_order: self.curves.len(),
             ..Curve::numbered(0, "complex Gaussian noise", gaussian)
         });
         let names: Vec<&str> = self

@@ -3,10 +3,10 @@
 use crate::report::picture::{AxisSpec, Cell, Chart, Curve, Figure, Panel};
 
 /// Columns and rows of the raster.
-const COLUMNS: usize = 44;
-const ROWS: usize = 30;
+const COLUMNS: usize = 80;
+const ROWS: usize = 56;
 /// Shades between empty and densest, on a logarithmic scale over four decades.
-const SHADES: f64 = 6.0;
+const SHADES: f64 = 5.0;
 const DECADES: f64 = 4.0;
 
 /// Samples of two quantities against each other.
@@ -31,6 +31,7 @@ impl CloudFigure {
     pub fn figure(&self) -> Figure {
         let mut panel = Panel::new(AxisSpec::plain(self.up.clone(), ""), 280.0);
         panel.cells = self.cells();
+        panel.cells_name = "samples, darker where more".to_owned();
         if !self.line.is_empty() {
             let mut curve = Curve::numbered(1, &self.line_name, self.line.clone());
             curve.width = 1.8;

@@ -3,7 +3,7 @@
 use super::{Quantity, highest, pairs, span};
 use crate::report::palette::Role;
 use crate::report::picture::{AxisSpec, Chart, Curve, Figure, Mark, Panel};
-use crate::units;
+use crate::report::text::quantity;
 
 /// A map of the stage; empty lists leave their panel out.
 #[derive(Debug, Clone)]
@@ -55,7 +55,7 @@ impl MapFigure {
         if let (Some(at), Some(panel)) = (peak, panels.last_mut()) {
             panel.marks.push(Mark {
                 at,
-                text: format!("highest {}", units::show(at.1, "V", 3)),
+                text: format!("highest {}", quantity(at.1, "V", 3)),
                 role: Role::Third,
             });
         }

@@ -20,7 +20,7 @@ pub use mask::{MaskFigure, MaskLine};
 pub use spectrum::{SpectrumCurve, SpectrumFigure, WorstPoint};
 pub use waveform::WaveformFigure;
 
-use crate::units;
+use crate::report::text::quantity;
 
 /// The quantity a control axis shows: `supply`, in `V`.
 #[derive(Debug, Clone, PartialEq, Eq)]
@@ -76,9 +76,5 @@ pub(crate) fn span(values: impl Iterator<Item = f64>, unit: &str) -> String {
     if low > high {
         return "no values".to_owned();
     }
-    format!(
-        "{} to {}",
-        units::show(low, unit, 4),
-        units::show(high, unit, 4)
-    )
+    format!("{} to {}", quantity(low, unit, 4), quantity(high, unit, 4))
 }

@@ -3,8 +3,7 @@
 use super::mask::MaskLine;
 use crate::report::palette::Role;
 use crate::report::picture::{AxisSpec, Chart, Curve, Dash, Figure, Mark, Panel};
-use crate::report::text::signed;
-use crate::units;
+use crate::report::text::{quantity, signed};
 
 /// Averaged spectra and the masks they are held against.
 #[derive(Debug, Clone, Default)]
@@ -56,6 +55,11 @@ impl WorstPoint {
     }
 }
 
+/// A label that may break before `at` only.
+fn no_break(label: &str) -> String {
+    label.replace(' ', "\u{a0}").replace("\u{a0}at", " at")
+}
+
 impl SpectrumFigure {
     /// Draws it. Thousands of bins are reduced to the extremes per pixel.
     pub fn figure(&self) -> Figure {
@@ -79,7 +83,7 @@ impl SpectrumFigure {
         for worst in &self.worst {
             panel.marks.push(Mark {
                 at: (worst.offset_hz, worst.level),
-                text: worst.label(),
+                text: no_break(&worst.label()),
                 role: if worst.margin_db >= 0.0 {
                     Role::Within
                 } else {
@@ -119,7 +123,7 @@ impl SpectrumFigure {
             format!(
                 "{} in {}",
                 self.level_unit,
-                units::show(self.resolution_hz, "Hz", 4)
+                quantity(self.resolution_hz, "Hz", 4)
             )
         } else {
             self.level_unit.clone()

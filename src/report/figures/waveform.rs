@@ -3,7 +3,7 @@
 use super::{highest, pairs};
 use crate::report::palette::Role;
 use crate::report::picture::{AxisSpec, Chart, Curve, Figure, Mark, Panel, Shade};
-use crate::units;
+use crate::report::text::quantity;
 
 /// One period of the stage in periodic steady state.
 #[derive(Debug, Clone, Default)]
@@ -39,7 +39,7 @@ impl WaveformFigure {
                 if let Some(at) = peak {
                     panel.marks.push(Mark {
                         at,
-                        text: format!("peak {}", units::show(at.1, unit, 3)),
+                        text: format!("peak {}", quantity(at.1, unit, 3)),
                         role: Role::curve(index),
                     });
                 }
@@ -52,7 +52,7 @@ impl WaveformFigure {
             .peak_current
             .or_else(|| highest(&pairs(&self.time_s, &self.switch_a)));
         let said = |name: &str, peak: Option<(f64, f64)>, unit: &str| match peak {
-            Some((_, value)) => format!("{name} peaks at {}", units::show(value, unit, 3)),
+            Some((_, value)) => format!("{name} peaks at {}", quantity(value, unit, 3)),
             None => format!("{name} has no values"),
         };
         let description = format!(

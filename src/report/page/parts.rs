@@ -4,7 +4,7 @@ use std::fmt::Write as _;
 
 use super::{CaptionedFigure, CheckRow, Conditions, FactGroup, Headline, KeyFigure};
 use crate::report::error::ReportError;
-use crate::report::text::{escape, escape_lines};
+use crate::report::text::{escape, escape_lines, keep_units};
 
 /// Margins beyond this many dB reach the end of the gauge.
 const GAUGE_DB: f64 = 20.0;
@@ -17,17 +17,21 @@ pub(super) fn headline(headline: &Headline) -> String {
         headline.outcome.sentence()
     );
     if let Some(margin) = headline.margin_db.filter(|margin| margin.is_finite()) {
-        let _ = write!(html, " <span class=\"by\">{}</span>", spare(margin));
+        let _ = write!(html, "<span class=\"by\">{}</span>", spare(margin));
     }
-    let _ = write!(html, "</p>\n<p>{}</p>\n</div>\n", escape(&headline.reason));
+    let _ = write!(
+        html,
+        "</p>\n<p>{}</p>\n</div>\n",
+        escape(&keep_units(&headline.reason))
+    );
     html
 }
 
 fn spare(margin_db: f64) -> String {
     if margin_db < 0.0 {
-        format!("{:.1} dB too much", -margin_db)
+        format!(" by {:.1} dB", -margin_db)
     } else {
-        format!("{margin_db:.1} dB to spare")
+        format!(", {margin_db:.1} dB to spare")
     }
 }
 
@@ -41,7 +45,7 @@ pub(super) fn list<'a>(id: &str, title: &str, items: impl Iterator<Item = &'a st
                 escape(subject),
                 escape(rest)
             ),
-            _ => format!("<li>{}</li>\n", escape(item)),
+            _ => format!("<li>{}</li>\n", escape(&keep_units(item))),
         })
         .collect();
     if items.is_empty() {
@@ -76,13 +80,13 @@ pub(super) fn checks(checks: &[CheckRow]) -> String {
             format!("<span class=\"reason\">{}</span>", escape(&check.reason))
         };
         let word = check.outcome.word();
-        let _ = write!(
+        let _ = writeln!(
             html,
             "<tr role=\"row\" class=\"{word}\"><th role=\"rowheader\" scope=\"row\">{}{reason}</th>\
              <td role=\"cell\" data-label=\"Outcome\"><b class=\"word\">{word}</b></td>\
              <td role=\"cell\" data-label=\"Found\">{}</td>\
              <td role=\"cell\" data-label=\"Allowed\">{}</td>\
-             <td role=\"cell\" data-label=\"Margin\">{}</td></tr>\n",
+             <td role=\"cell\" data-label=\"Margin\">{}</td></tr>",
             escape(&check.name),
             or_dash(&check.found),
             or_dash(&check.allowed),
@@ -152,7 +156,7 @@ pub(super) fn figures(figures: &[CaptionedFigure]) -> Result<String, ReportError
             "<figure>\n{}<figcaption><b>{}.</b> {}</figcaption>\n</figure>\n",
             captioned.figure.inline()?,
             index + 1,
-            escape(&captioned.caption)
+            escape(&keep_units(&captioned.caption))
         );
     }
     html += "</section>\n";

@@ -33,6 +33,8 @@ pub(crate) struct Panel {
     pub(crate) curves: Vec<Curve>,
     pub(crate) backdrops: Vec<Backdrop>,
     pub(crate) cells: Vec<Cell>,
+    /// As the legend says the cells.
+    pub(crate) cells_name: String,
     pub(crate) marks: Vec<Mark>,
     /// Height in a wide picture, in pixels.
     pub(crate) height: f64,
@@ -46,6 +48,7 @@ impl Panel {
             curves: Vec::new(),
             backdrops: Vec::new(),
             cells: Vec::new(),
+            cells_name: String::new(),
             marks: Vec::new(),
             height,
         }
@@ -69,6 +72,8 @@ pub(crate) struct Curve {
     pub(crate) width: f64,
     pub(crate) dash: Dash,
     pub(crate) forbidden: Forbidden,
+    /// Entries of the legend stand in rising order of this.
+    pub(crate) legend_order: usize,
 }
 
 impl Curve {
@@ -87,6 +92,7 @@ impl Curve {
             width,
             dash,
             forbidden: Forbidden::Nothing,
+            legend_order: index,
         }
     }
 
@@ -99,6 +105,7 @@ impl Curve {
             width: 2.2,
             dash: Dash::Solid,
             forbidden: Forbidden::Above,
+            legend_order: usize::MAX,
         }
     }
 }

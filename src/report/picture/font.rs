@@ -15,6 +15,9 @@ pub(crate) const FAMILY: &str = "quietedge";
 /// sans-serif faces of this kind: about 1.17 on digits and lower case).
 pub(crate) const RESERVE: f64 = 1.2;
 
+/// How much wider bold letters are.
+const BOLD: f64 = 1.12;
+
 /// Height of the built-in font (ascent less descent) over its em.
 const HEIGHT_PER_EM: f64 = 1.149;
 
@@ -53,6 +56,11 @@ pub(crate) fn width(text: &str, em: f64) -> f64 {
     f64::from(advance) * RESERVE
 }
 
+/// The width to keep free for `text` in bold.
+pub(crate) fn bold_width(text: &str, em: f64) -> f64 {
+    width(text, em) * BOLD
+}
+
 /// `text` shortened to `available` pixels, with an ellipsis where something is missing.
 pub(crate) fn elide(text: &str, em: f64, available: f64) -> String {
     if width(text, em) <= available {
@@ -69,10 +77,10 @@ pub(crate) fn elide(text: &str, em: f64, available: f64) -> String {
     format!("{}…", kept.trim_end())
 }
 
-/// `text` broken at spaces into at most `lines` lines of `available` pixels.
+/// `text` broken at spaces (not at no-break spaces) into at most `lines` lines of `available` pixels.
 pub(crate) fn wrap(text: &str, em: f64, available: f64, lines: usize) -> Vec<String> {
     let mut wrapped: Vec<String> = Vec::new();
-    let mut words = text.split_whitespace();
+    let mut words = text.split(' ').filter(|word| !word.is_empty());
     while let Some(word) = words.next() {
         let joined = match wrapped.last() {
             Some(line) => format!("{line} {word}"),

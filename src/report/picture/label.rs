@@ -55,11 +55,11 @@ pub(crate) fn place(
 ) -> Option<Frame> {
     let (width, height) = size;
     let mut best: Option<(f64, Frame)> = None;
-    for row in -9..=9 {
-        for column in [-1.0, -0.75, -0.5, 0.0, 0.5, 0.75, 1.0] {
+    for row in -12..=12 {
+        for column in [-1.5, -1.0, -0.7, -0.35, 0.0, 0.35, 0.7, 1.0, 1.5] {
             let centre = (
                 at.0 + column * (width / 2.0 + 14.0),
-                at.1 + f64::from(row) * (height * 0.7),
+                at.1 + f64::from(row) * 12.0,
             );
             let frame = Frame {
                 left: centre.0 - width / 2.0,
@@ -79,7 +79,7 @@ pub(crate) fn place(
             }
             let hidden = drawn.iter().filter(|point| frame.holds(**point)).count();
             let far = (centre.0 - at.0).hypot(centre.1 - at.1);
-            let cost = hidden as f64 * 3.0 + far * 0.25;
+            let cost = hidden as f64 * 4.0 + far * 0.15;
             if best.is_none_or(|(least, _)| cost < least) {
                 best = Some((cost, frame));
             }

@@ -55,7 +55,7 @@ pub(crate) fn draw(chart: &Chart, format: Format) -> Canvas {
     let room = canvas.width - 2.0 * PAD;
 
     let mut y = 4.0;
-    for line in font::wrap(&chart.title, size + 1.5, room, 3) {
+    for line in font::wrap(&chart.title, (size + 1.5) * 1.1, room, 3) {
         y += size + 6.0;
         canvas.text(
             (PAD, y),
@@ -101,7 +101,7 @@ pub(crate) fn draw(chart: &Chart, format: Format) -> Canvas {
             Anchor::Start,
             Weight::Normal,
         );
-        y += 7.0;
+        y += 12.0;
         bottom = y + format.height_of(panel);
         let frame = Frame {
             left,
@@ -182,7 +182,7 @@ fn up_axis(panel: &Panel, across: &Axis) -> Axis {
 
 /// How many ticks a height has room for.
 fn up_ticks(height: f64) -> usize {
-    ((height / 34.0) as usize).clamp(2, 9)
+    ((height / 28.0) as usize).clamp(3, 9)
 }
 
 /// The most ticks whose texts do not touch in `room` pixels, and the widest text.
@@ -251,18 +251,6 @@ impl Plot<'_> {
         for backdrop in &panel.backdrops {
             self.backdrop(canvas, &backdrop.points);
         }
-        for cell in &panel.cells {
-            if let (Some(from), Some(to)) = (self.place(cell.from), self.place(cell.to)) {
-                let inside = |at: Place| {
-                    (
-                        at.0.clamp(frame.left, frame.right),
-                        at.1.clamp(frame.top, frame.bottom),
-                    )
-                };
-                let strength = usable(cell.strength).unwrap_or(0.0).clamp(0.0, 1.0);
-                canvas.fill(inside(from), inside(to), Role::First, strength);
-            }
-        }
         let mut rule = |from: Place, to: Place| {
             canvas.line(vec![from, to], Role::Grid, 0.8, Dash::Solid);
         };
@@ -288,6 +276,18 @@ impl Plot<'_> {
                 Anchor::End,
                 Weight::Normal,
             );
+        }
+        for cell in &panel.cells {
+            if let (Some(from), Some(to)) = (self.place(cell.from), self.place(cell.to)) {
+                let inside = |at: Place| {
+                    (
+                        at.0.clamp(frame.left, frame.right),
+                        at.1.clamp(frame.top, frame.bottom),
+                    )
+                };
+                let strength = usable(cell.strength).unwrap_or(0.0).clamp(0.0, 1.0);
+                canvas.fill(inside(from), inside(to), Role::First, strength);
+            }
         }
         canvas.line(
             vec![
@@ -348,8 +348,13 @@ impl Plot<'_> {
             let at = (at.0, at.1.clamp(self.frame.top, self.frame.bottom));
             canvas.dot(at, 4.6, Role::Paper);
             canvas.dot(at, 3.4, mark.role);
-            let text = font::elide(&mark.text, self.size, self.frame.width() - 12.0);
-            let label_size = (font::width(&text, self.size) + 8.0, self.size + 5.0);
+            let lines = font::wrap(&mark.text, self.size, self.frame.width() * 0.45, 2);
+            let widest = lines
+                .iter()
+                .map(|line| font::bold_width(line, self.size))
+                .fold(0.0, f64::max);
+            let line_height = self.size + 2.0;
+            let label_size = (widest + 6.0, line_height * lines.len() as f64 + 4.0);
             if let Some(place) = label::place(at, label_size, &self.frame, &drawn, &placed) {
                 let touch = (
                     at.0.clamp(place.left, place.right),
@@ -362,14 +367,17 @@ impl Plot<'_> {
                     Role::Paper,
                     0.9,
                 );
-                canvas.text(
-                    ((place.left + place.right) / 2.0, place.bottom - 5.0),
-                    &text,
-                    mark.role,
-                    self.size,
-                    Anchor::Middle,
-                    Weight::Bold,
-                );
+                for (index, line) in lines.iter().enumerate() {
+                    let baseline = place.top + line_height * (index + 1) as f64 - 1.0;
+                    canvas.text(
+                        ((place.left + place.right) / 2.0, baseline),
+                        &line.replace('\u{a0}', " "),
+                        mark.role,
+                        self.size,
+                        Anchor::Middle,
+                        Weight::Bold,
+                    );
+                }
                 placed.push(place);
             }
         }

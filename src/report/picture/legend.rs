@@ -1,7 +1,7 @@
 //! The legend: one entry per name, in rows above the panels.
 
 use super::canvas::{Anchor, Canvas, Dash, Place, Weight};
-use super::chart::Chart;
+use super::chart::{Chart, Curve};
 use super::font;
 use crate::report::palette::Role;
 
@@ -23,7 +23,9 @@ pub(crate) fn entries(chart: &Chart) -> Vec<(String, Swatch)> {
         }
     };
     for panel in &chart.panels {
-        for curve in &panel.curves {
+        let mut curves: Vec<&Curve> = panel.curves.iter().collect();
+        curves.sort_by_key(|curve| curve.legend_order);
+        for curve in curves {
             add(
                 &curve.name,
                 Swatch::Line {
@@ -32,6 +34,13 @@ pub(crate) fn entries(chart: &Chart) -> Vec<(String, Swatch)> {
                     dash: curve.dash,
                 },
             );
+        }
+        if !panel.cells.is_empty() {
+            let swatch = Swatch::Fill {
+                role: Role::First,
+                opacity: 0.5,
+            };
+            add(&panel.cells_name, swatch);
         }
         for backdrop in &panel.backdrops {
             let swatch = Swatch::Fill {

@@ -198,6 +198,8 @@ fn encode(rgb: &[u8], width: usize, height: usize) -> Result<Vec<u8>, png::Encod
     let mut encoder = png::Encoder::new(&mut bytes, width as u32, height as u32);
     encoder.set_color(png::ColorType::Rgb);
     encoder.set_depth(png::BitDepth::Eight);
+    encoder.set_filter(png::FilterType::Up);
+    encoder.set_compression(png::Compression::Best);
     let mut writer = encoder.write_header()?;
     writer.write_image_data(rgb)?;
     writer.finish()?;
