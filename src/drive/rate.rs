@@ -38,11 +38,11 @@ impl RateReason {
 }
 
 /// The factor by which a signal of `signal_rate_hz` must be oversampled for `scheme`, a power of two, and why.
-/// `span_hz` is the farthest offset that limits ask for, 0 for none.
+/// `span_hz` is the whole range from the lowest to the highest offset that limits ask for, 0 for none.
 ///
 /// Common practice, checked afterwards by doubling: eight times the signal's rate for the width of its
-/// magnitude and phase, ten times every bandwidth, eight times every tone and converter, and two and a half
-/// times the span.
+/// magnitude and phase, ten times every bandwidth, eight times every tone and converter, and a quarter more
+/// than the span.
 pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usize, RateReason) {
     let Scheme::Supply(SupplyScheme {
         modulator,
@@ -55,7 +55,7 @@ pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usiz
             wanted = (rate_hz, reason);
         }
     };
-    ask(2.5 * span_hz, RateReason::LimitsSpan);
+    ask(1.25 * span_hz, RateReason::LimitsSpan);
     ask(
         10.0 * modulator.bandwidth_hz.unwrap_or(0.0),
         RateReason::ModulatorBandwidth,

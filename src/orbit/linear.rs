@@ -75,6 +75,8 @@ pub struct UnitSample {
 /// A network of some fixed size.
 pub trait LinearSolver: fmt::Debug + Send + Sync {
     fn states(&self) -> usize;
+    /// What one period does to a deviation of the state from its orbit.
+    fn period_map(&self, drive: &Drive) -> DMatrix<f64>;
     fn solve(&self, drive: &Drive) -> Result<UnitOrbit, OrbitError>;
     fn samples(&self, drive: &Drive, points: usize) -> Result<Vec<UnitSample>, OrbitError>;
 }
@@ -266,6 +268,16 @@ impl<const N: usize> Sized_<N> {
 impl<const N: usize> LinearSolver for Sized_<N> {
     fn states(&self) -> usize {
         self.states
+    }
+
+    fn period_map(&self, drive: &Drive) -> DMatrix<f64> {
+        let closed = Flow::new(&self.closed.generator, drive.width_rad, 0);
+        let open = Flow::new(&self.open.generator, TAU - drive.width_rad, 0);
+        DMatrix::from_fn(self.states, self.states, |i, j| {
+            let mut column = [0.0; N];
+            column[j] = 1.0;
+            open.end(&closed.end(&column))[i]
+        })
     }
 
     fn solve(&self, drive: &Drive) -> Result<UnitOrbit, OrbitError> {

@@ -162,6 +162,15 @@ impl Network {
         Orbit::scaled(&unit, &self.stage, supply_v, drive)
     }
 
+    /// The time in which a deviation from the orbit falls to 1/e, s: `-T / ln(rho)` with the spectral radius
+    /// of one period. A map is right for controls that move slowly against it.
+    pub fn settling_s(&self, drive: &Drive) -> f64 {
+        let multipliers = self.solver.period_map(drive).complex_eigenvalues();
+        let largest = multipliers.iter().map(|m| m.norm()).fold(0.0, f64::max);
+        // A radius of zero settles at once; one of 1 or more never does.
+        if largest >= 1.0 { f64::INFINITY } else { -self.stage.period_s() / largest.ln() }
+    }
+
     /// One period of waveforms in the periodic steady state, `points` instants in each switch position.
     ///
     /// # Errors
