@@ -32,13 +32,16 @@ impl Sum {
     fn add(&mut self, block: &[Complex64]) {
         self.samples += block.len() as u64;
         // Block sums first: the rounding error grows with the number of blocks, not of samples.
-        let mut energy = 0.0;
+        let (mut energy, mut peak_squared) = (0.0, self.peak_squared);
         for sample in block {
             let squared = sample.norm_sqr();
             energy += squared;
-            self.peak_squared = self.peak_squared.max(squared);
+            if squared > peak_squared {
+                peak_squared = squared;
+            }
         }
         self.energy += energy;
+        self.peak_squared = peak_squared;
     }
 
     fn levels(&self) -> Levels {

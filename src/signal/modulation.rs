@@ -64,7 +64,8 @@ impl Modulation {
     }
 }
 
-/// Odd levels on both axes; the high `bits` of the word are I, the low ones Q.
+/// Odd levels on both axes; the high `bits` of the word are I, the low ones Q. Gray code 0 is the most
+/// positive level.
 fn axes(word: u32, bits: u32) -> Complex64 {
     let mask = (1 << bits) - 1;
     let level = |gray: u32| f64::from(mask) - 2.0 * f64::from(from_gray(gray & mask));
