@@ -22,6 +22,7 @@ pub use mask::{
 };
 pub use read::read_sets;
 pub use request::{AcprLimit, Limits, LimitsRequest, Unmet};
+pub(crate) use request::{close, same_modulation};
 pub use rows::{
     Adjacent, AdjacentRow, Applies, ErrorRow, MainFilter, Modulation, SignalFormat, Spurious,
     SpuriousRow, Statistic,
