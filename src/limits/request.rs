@@ -1,0 +1,366 @@
+//! What a study asks for: its table `[limits]`.
+
+use serde::Serialize;
+
+use super::library::Library;
+use super::mask::{Corner, Origin};
+use super::read_rows::{percent, rrc};
+use super::rows::MainFilter;
+use super::set::{Kind, LimitSet};
+use crate::input::{Files, Problem, Range, Section, nearest};
+use crate::metrics::ChannelFilter;
+use crate::units::{Dimension, show};
+
+/// One limit on the power in a pair of neighbouring channels, stated in the study.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
+pub struct AcprLimit {
+    /// Centre to centre, Hz.
+    pub offset_hz: f64,
+    /// How the neighbours are read.
+    pub filter: ChannelFilter,
+    /// How the wanted channel is read.
+    pub main: ChannelFilter,
+    /// dB against the wanted channel, negative.
+    pub limit_db: f64,
+}
+
+/// Everything a verdict is held against.
+#[derive(Debug, Clone, PartialEq, Default, Serialize)]
+pub struct Limits {
+    /// Named sets, in the order of the study.
+    pub sets: Vec<LimitSet>,
+    /// Highest RMS error vector magnitude, percent.
+    pub evm_percent: Option<f64>,
+    /// Highest peak error vector magnitude, percent.
+    pub evm_peak_percent: Option<f64>,
+    /// Limits on neighbouring channels.
+    pub acpr: Vec<AcprLimit>,
+    /// Channel width, Hz.
+    pub channel_hz: Option<f64>,
+    /// Authorized bandwidth, Hz.
+    pub authorized_bandwidth_hz: Option<f64>,
+    /// Power of the carrier without modulation, W.
+    pub carrier_w: Option<f64>,
+    /// Equipment classes, one word at most for each set.
+    pub classes: Vec<String>,
+    /// As the set calls it.
+    pub modulation: Option<String>,
+    /// Code rate, as the set writes it.
+    pub coding: Option<String>,
+}
+
+/// A condition that a named set needs and the request does not state, or states wrongly.
+#[derive(Debug, Clone, PartialEq, Eq, thiserror::Error)]
+#[error("{key}: {allowed}")]
+pub struct Unmet {
+    /// The key of the study's `[limits]`.
+    pub key: &'static str,
+    /// What it must be, and for which set.
+    pub allowed: String,
+    /// What was probably meant.
+    pub nearest: Option<String>,
+}
+
+/// Letters and digits only, lower case: `64-QAM` and `64QAM` are one modulation.
+fn plain(text: &str) -> String {
+    text.chars()
+        .filter(char::is_ascii_alphanumeric)
+        .map(|c| c.to_ascii_lowercase())
+        .collect()
+}
+
+/// True where `row` is what `wanted` names: the same word, or its start.
+pub(crate) fn same_modulation(row: &str, wanted: &str) -> bool {
+    row.is_empty() || plain(row).starts_with(&plain(wanted))
+}
+
+impl Limits {
+    /// Nothing but the set `set`.
+    pub fn of_set(set: LimitSet) -> Self {
+        Self {
+            sets: vec![set],
+            ..Self::default()
+        }
+    }
+
+    /// True where there is nothing to hold a signal against.
+    pub fn is_empty(&self) -> bool {
+        self.sets.is_empty()
+            && self.acpr.is_empty()
+            && self.evm_percent.is_none()
+            && self.evm_peak_percent.is_none()
+    }
+
+    /// The word for equipment that `set` knows, if one of them was stated.
+    pub fn class_for(&self, set: &LimitSet) -> Option<&str> {
+        let known = set.classes();
+        self.classes
+            .iter()
+            .map(String::as_str)
+            .find(|word| known.contains(word))
+    }
+
+    /// Holds the conditions stated against those the sets need.
+    ///
+    /// # Errors
+    /// The first that is missing or contradicts a set.
+    pub fn complete(&self) -> Result<(), Unmet> {
+        let unmet = |key, allowed| {
+            Err(Unmet {
+                key,
+                allowed,
+                nearest: None,
+            })
+        };
+        for set in &self.sets {
+            let name = &set.name;
+            match &set.kind {
+                Kind::Mask(mask) => {
+                    let fractions = mask
+                        .segments
+                        .iter()
+                        .any(|segment| matches!(segment.from, Corner::Fraction(_)));
+                    let authorized = mask
+                        .authorized_bandwidth_hz
+                        .or(self.authorized_bandwidth_hz);
+                    if fractions && authorized.is_none() {
+                        return unmet(
+                            "authorized_bandwidth",
+                            format!(
+                                "the authorized bandwidth, such as \"20 kHz\": the offsets of {name} are fractions of it"
+                            ),
+                        );
+                    }
+                    if mask.origin == Origin::ChannelEdge {
+                        match (mask.channel_hz, self.channel_hz) {
+                            (None, None) => {
+                                return unmet(
+                                    "channel",
+                                    format!(
+                                        "the channel width, such as \"5 MHz\": the offsets of {name} count from its edge"
+                                    ),
+                                );
+                            }
+                            (Some(own), Some(stated)) if !close(own, stated) => {
+                                return unmet(
+                                    "channel",
+                                    format!("{}, for which {name} is made", show(own, "Hz", 6)),
+                                );
+                            }
+                            _ => {}
+                        }
+                    }
+                }
+                Kind::Adjacent(adjacent) => {
+                    let mut widths: Vec<f64> = Vec::new();
+                    for width in adjacent.rows.iter().filter_map(|row| row.channel_hz) {
+                        if !widths.iter().any(|other| close(*other, width)) {
+                            widths.push(width);
+                        }
+                    }
+                    let listed: Vec<String> = widths.iter().map(|hz| show(*hz, "Hz", 6)).collect();
+                    let fits = self
+                        .channel_hz
+                        .is_some_and(|stated| widths.iter().any(|width| close(*width, stated)));
+                    if !widths.is_empty() && !fits {
+                        return unmet(
+                            "channel",
+                            format!("one of the channel widths of {name}: {}", listed.join(", ")),
+                        );
+                    }
+                    if adjacent.reference == MainFilter::Channel
+                        && adjacent.channel_hz.or(self.channel_hz).is_none()
+                    {
+                        return unmet(
+                            "channel",
+                            format!(
+                                "the channel width: the reference of {name} is the power in it"
+                            ),
+                        );
+                    }
+                }
+                Kind::Modulation(modulation) => {
+                    let names = |wanted: fn(&super::rows::ErrorRow) -> &str| {
+                        let mut words: Vec<String> = Vec::new();
+                        for row in &modulation.rows {
+                            let word = format!("\"{}\"", wanted(row));
+                            if !words.contains(&word) {
+                                words.push(word);
+                            }
+                        }
+                        words.join(", ")
+                    };
+                    if let Some(wanted) = &self.modulation
+                        && !modulation
+                            .rows
+                            .iter()
+                            .any(|row| same_modulation(&row.modulation, wanted))
+                    {
+                        return unmet(
+                            "modulation",
+                            format!("a modulation of {name}: {}", names(|row| &row.modulation)),
+                        );
+                    }
+                    let coded = modulation.rows.iter().any(|row| row.coding.is_some());
+                    if let Some(coding) = &self.coding
+                        && coded
+                        && !modulation.rows.iter().any(|row| {
+                            self.modulation
+                                .as_ref()
+                                .is_none_or(|wanted| same_modulation(&row.modulation, wanted))
+                                && row.coding.as_ref() == Some(coding)
+                        })
+                    {
+                        return unmet(
+                            "coding",
+                            format!(
+                                "a code rate of {name} for this modulation: {}",
+                                names(|row| row.coding.as_deref().unwrap_or_default())
+                            ),
+                        );
+                    }
+                }
+                Kind::Spurious(_) | Kind::Signal(_) => {}
+            }
+        }
+        let known: Vec<&str> = self.sets.iter().flat_map(LimitSet::classes).collect();
+        for word in &self.classes {
+            if !known.contains(&word.as_str()) {
+                let allowed = if known.is_empty() {
+                    "nothing: none of the named sets tells classes of equipment apart".to_owned()
+                } else {
+                    let words: Vec<String> =
+                        known.iter().map(|known| format!("\"{known}\"")).collect();
+                    format!("a class of the named sets: {}", words.join(", "))
+                };
+                return Err(Unmet {
+                    key: "class",
+                    allowed,
+                    nearest: nearest(word, &known).map(str::to_owned),
+                });
+            }
+        }
+        Ok(())
+    }
+}
+
+/// Equal but for rounding in the text.
+pub(crate) fn close(a: f64, b: f64) -> bool {
+    (a - b).abs() <= 1e-9 * a.abs().max(b.abs())
+}
+
+/// Reads `[limits]`.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub struct LimitsRequest;
+
+impl LimitsRequest {
+    /// The limits that the table `[limits]` of a study asks for. The sets of the files it names join
+    /// the published ones; where it names no sets, it means all sets of its files.
+    ///
+    /// # Errors
+    /// The first thing that is wrong: an unknown set, a file that cannot be read, a condition that a
+    /// set needs and nobody stated.
+    pub fn read(section: &Section<'_>, files: &dyn Files) -> Result<Limits, Problem> {
+        let mut library = Library::published()?;
+        let mut own = Vec::new();
+        for name in section.texts("files")? {
+            let shown = files.display(name);
+            let text = files.text(name).map_err(|error| {
+                section.problem(
+                    "files",
+                    format!("files that can be read ({shown}: {error})"),
+                )
+            })?;
+            own.extend(library.add(&shown, &text)?);
+        }
+        let named = section.texts("sets")?;
+        let mut names: Vec<&str> = if section.has("sets") {
+            named
+        } else {
+            own.iter().map(String::as_str).collect()
+        };
+        names.dedup();
+        let mut sets = Vec::new();
+        for name in names {
+            let set = library.find(name).map_err(|unknown| {
+                let problem = section.problem(
+                    "sets",
+                    format!(
+                        "names of limit sets (`quietedge limits` lists them); there is none called \"{name}\""
+                    ),
+                );
+                match unknown.nearest {
+                    Some(near) => problem.with_hint(format!("did you mean \"{near}\"?")),
+                    None => problem,
+                }
+            })?;
+            sets.push(set.clone());
+        }
+        let hertz = |key| section.maybe_quantity(key, Dimension::Frequency, Range::Positive);
+        let classes = match section.texts("class") {
+            Ok(words) => words,
+            Err(problem) => vec![section.text("class").map_err(|_| problem)?],
+        };
+        let limits = Limits {
+            sets,
+            evm_percent: percent(section, "evm_percent")?,
+            evm_peak_percent: percent(section, "evm_peak_percent")?,
+            acpr: section
+                .sections("acpr")?
+                .iter()
+                .map(acpr)
+                .collect::<Result<_, Problem>>()?,
+            channel_hz: hertz("channel")?,
+            authorized_bandwidth_hz: hertz("authorized_bandwidth")?,
+            carrier_w: section.maybe_quantity(
+                "carrier_power",
+                Dimension::Power,
+                Range::Positive,
+            )?,
+            classes: classes.into_iter().map(str::to_owned).collect(),
+            modulation: section.maybe_text("modulation")?.map(str::to_owned),
+            coding: section.maybe_text("coding")?.map(str::to_owned),
+        };
+        section.finish()?;
+        limits.complete().map_err(|unmet| {
+            let problem = section.problem(unmet.key, unmet.allowed);
+            match unmet.nearest {
+                Some(near) => problem.with_hint(format!("did you mean \"{near}\"?")),
+                None => problem,
+            }
+        })?;
+        Ok(limits)
+    }
+}
+
+fn acpr(row: &Section<'_>) -> Result<AcprLimit, Problem> {
+    let hertz = |key| row.maybe_quantity(key, Dimension::Frequency, Range::Positive);
+    let flat = hertz("bandwidth")?;
+    let shaped = rrc(row, "symbol_rate", "rolloff")?;
+    let filter = match (flat, shaped) {
+        (Some(bandwidth_hz), None) => ChannelFilter::Flat { bandwidth_hz },
+        (None, Some(filter)) => filter,
+        (Some(_), Some(_)) => {
+            return Err(row.problem(
+                "bandwidth",
+                "bandwidth, or symbol_rate and rolloff, not both",
+            ));
+        }
+        (None, None) => {
+            return Err(row.problem(
+                "bandwidth",
+                "the width of a flat filter, or symbol_rate and rolloff of a root-raised-cosine one",
+            ));
+        }
+    };
+    let main = hertz("main_bandwidth")?
+        .map_or(filter, |bandwidth_hz| ChannelFilter::Flat { bandwidth_hz });
+    let limit = AcprLimit {
+        offset_hz: row.quantity("offset", Dimension::Frequency, Range::Positive)?,
+        filter,
+        main,
+        limit_db: row.quantity("limit", Dimension::Decibel, Range::Between(-300.0, 0.0))?,
+    };
+    row.finish()?;
+    Ok(limit)
+}

@@ -1,0 +1,444 @@
+//! Limits that come as rows: neighbouring channels, error vectors, spurious emissions.
+
+use super::judge::{Gathered, Measured};
+use super::outcome::Outcome;
+use super::reading::level_dbm;
+use crate::limits::{
+    Adjacent, AdjacentRow, Applies, ErrorRow, LimitSet, Limits, MainFilter, Modulation, Spurious,
+    SpuriousRow, Statistic, close, same_modulation,
+};
+use crate::metrics::{AdjacentChannel, ChannelFilter, adjacent_channels, channel_power_w};
+use crate::units::{dbm_from_watt, show};
+
+/// Which of several rows for one thing holds, and why, where it had to be chosen.
+fn pick<'r, R>(
+    rows: &[&'r R],
+    applies: impl Fn(&R) -> &Applies,
+    limit: impl Fn(&R) -> f64,
+    class: Option<&str>,
+) -> Option<(&'r R, &'static str)> {
+    let first = *rows.first()?;
+    let by_class = rows.iter().any(|row| !applies(row).classes.is_empty());
+    let differ = rows.iter().any(|row| limit(row) != limit(first));
+    if class.is_some() || !by_class || !differ {
+        return Some((first, ""));
+    }
+    let strictest = rows
+        .iter()
+        .copied()
+        .min_by(|a, b| limit(a).total_cmp(&limit(b)))?;
+    Some((
+        strictest,
+        "; no class is stated in [limits], the strictest row was taken",
+    ))
+}
+
+/// Margin in words.
+fn room(margin_db: f64) -> String {
+    if margin_db >= 0.0 {
+        format!("{margin_db:.2} dB to spare")
+    } else {
+        format!("{:.2} dB too much", -margin_db)
+    }
+}
+
+fn filter_words(filter: &ChannelFilter) -> String {
+    match *filter {
+        ChannelFilter::Flat { bandwidth_hz } => {
+            format!("{} flat", show(bandwidth_hz, "Hz", 6))
+        }
+        ChannelFilter::RootRaisedCosine {
+            symbol_rate_hz,
+            rolloff,
+        } => format!(
+            "root-raised cosine of {}, roll-off {rolloff}",
+            show(symbol_rate_hz, "Hz", 6)
+        ),
+    }
+}
+
+pub(super) fn adjacent(
+    set: &LimitSet,
+    adjacent: &Adjacent,
+    measured: &Measured<'_>,
+    limits: &Limits,
+    gathered: &mut Gathered,
+) {
+    let class = limits.class_for(set);
+    let mut rows: Vec<&AdjacentRow> = adjacent
+        .rows
+        .iter()
+        .filter(|row| {
+            row.applies.to_class(class)
+                && row.applies.at_power(measured.mean_w)
+                && row.channel_hz.is_none_or(|width| {
+                    limits.channel_hz.is_some_and(|stated| close(stated, width))
+                })
+        })
+        .collect();
+    if rows.is_empty() {
+        gathered.check(
+            Some(set),
+            set.name.clone(),
+            Outcome::Undecided,
+            None,
+            format!(
+                "no row is for {} of output power and the class and channel stated",
+                show(measured.mean_w, "W", 4)
+            ),
+        );
+    }
+    while let Some(first) = rows.first().copied() {
+        let same = |row: &&AdjacentRow| {
+            close(row.offset_hz, first.offset_hz) && row.filter == first.filter
+        };
+        let group: Vec<&AdjacentRow> = rows.iter().copied().filter(same).collect();
+        rows.retain(|row| !same(row));
+        let Some((row, why)) = pick(&group, |row| &row.applies, |row| row.limit_db, class) else {
+            continue;
+        };
+        let main = match adjacent.reference {
+            MainFilter::SameFilter => row.filter,
+            MainFilter::Channel => ChannelFilter::Flat {
+                bandwidth_hz: adjacent
+                    .channel_hz
+                    .or(limits.channel_hz)
+                    .unwrap_or(row.filter.bandwidth_hz()),
+            },
+        };
+        let name = format!("{}, channel at {}", set.name, show(row.offset_hz, "Hz", 6));
+        pair(
+            Some(set),
+            name,
+            Pair {
+                offset_hz: row.offset_hz,
+                filter: row.filter,
+                main,
+                limit_db: row.limit_db,
+                floor_dbm: adjacent.floor_dbm,
+                ignore_below_dbm: adjacent.ignore_below_dbm,
+                why,
+            },
+            measured,
+            gathered,
+        );
+    }
+}
+
+struct Pair {
+    offset_hz: f64,
+    filter: ChannelFilter,
+    main: ChannelFilter,
+    limit_db: f64,
+    floor_dbm: Option<f64>,
+    ignore_below_dbm: Option<f64>,
+    why: &'static str,
+}
+
+fn pair(
+    set: Option<&LimitSet>,
+    name: String,
+    pair: Pair,
+    measured: &Measured<'_>,
+    gathered: &mut Gathered,
+) {
+    let read = adjacent_channels(measured.fine, &pair.main, &[(pair.offset_hz, pair.filter)])
+        .and_then(|rows| Ok((rows, channel_power_w(measured.fine, 0.0, &pair.main)?)));
+    let (rows, main_w) = match read {
+        Ok(read) => read,
+        Err(error) => {
+            gathered.check(set, name, Outcome::Undecided, None, error.to_string());
+            return;
+        }
+    };
+    let Some(row) = rows.first().copied() else {
+        return;
+    };
+    let main_dbm = level_dbm(main_w);
+    // An empty neighbour reads minus infinity; kept finite.
+    let finite = |ratio_db: f64| level_dbm(0.0).max(main_dbm + ratio_db) - main_dbm;
+    let row = AdjacentChannel {
+        lower_db: finite(row.lower_db),
+        upper_db: finite(row.upper_db),
+        ..row
+    };
+    gathered.acpr.push(row);
+    let (side, level_db) = if row.lower_db > row.upper_db {
+        ("lower", row.lower_db)
+    } else {
+        ("upper", row.upper_db)
+    };
+    let excuses = [
+        (pair.floor_dbm, "nothing tighter is required"),
+        (pair.ignore_below_dbm, "the ratio counts only above it"),
+    ];
+    let mut limit_dbm = main_dbm + pair.limit_db;
+    let mut excuse = String::new();
+    for (dbm, words) in excuses {
+        if let Some(dbm) = dbm
+            && dbm > limit_dbm
+        {
+            limit_dbm = dbm;
+            excuse = format!(", raised to {dbm:.2} dBm ({words})");
+        }
+    }
+    let margin_db = limit_dbm - (main_dbm + level_db);
+    let reason = format!(
+        "{side} channel at {} holds {level_db:.2} dB ({:.2} dBm, {}) against {main_dbm:.2} dBm in the wanted one ({}), limit {:.2} dB{excuse}: {}{}",
+        show(pair.offset_hz, "Hz", 6),
+        main_dbm + level_db,
+        filter_words(&pair.filter),
+        filter_words(&pair.main),
+        pair.limit_db,
+        room(margin_db),
+        pair.why,
+    );
+    gathered.check(
+        set,
+        name,
+        Outcome::of_margin(margin_db),
+        Some(margin_db),
+        reason,
+    );
+}
+
+pub(super) fn modulation(
+    set: &LimitSet,
+    modulation: &Modulation,
+    measured: &Measured<'_>,
+    limits: &Limits,
+    gathered: &mut Gathered,
+) {
+    let class = limits.class_for(set);
+    let wanted = limits.modulation.as_deref().or(measured.modulation);
+    let rows: Vec<&ErrorRow> = modulation
+        .rows
+        .iter()
+        .filter(|row| {
+            row.applies.to_class(class)
+                && wanted.is_none_or(|wanted| same_modulation(&row.modulation, wanted))
+                && (limits.coding.is_none() || row.coding.is_none() || row.coding == limits.coding)
+        })
+        .collect();
+    if rows.is_empty() {
+        gathered.check(
+            Some(set),
+            set.name.clone(),
+            Outcome::Undecided,
+            None,
+            format!(
+                "the set has no row for {}: state modulation in [limits]",
+                wanted.unwrap_or("this class")
+            ),
+        );
+    }
+    for statistic in [
+        Statistic::Rms,
+        Statistic::Peak,
+        Statistic::P95,
+        Statistic::P99,
+    ] {
+        let group: Vec<&ErrorRow> = rows
+            .iter()
+            .copied()
+            .filter(|row| row.statistic == statistic)
+            .collect();
+        let Some(row) = group
+            .iter()
+            .copied()
+            .min_by(|a, b| a.limit_percent.total_cmp(&b.limit_percent))
+        else {
+            continue;
+        };
+        let mut why = String::new();
+        if group
+            .iter()
+            .any(|other| other.limit_percent != row.limit_percent)
+        {
+            let coding = row
+                .coding
+                .as_ref()
+                .map(|c| format!(" {c}"))
+                .unwrap_or_default();
+            let class = row
+                .applies
+                .classes
+                .first()
+                .map(|c| format!(" {c}"))
+                .unwrap_or_default();
+            why = format!(
+                "; several rows fit, the strictest was taken ({}{coding}{class}): modulation, coding or class in [limits] tell them apart",
+                row.modulation
+            );
+        }
+        error_vector(
+            Some(set),
+            format!("{}, {}", set.name, statistic.word()),
+            statistic,
+            row.limit_percent,
+            &why,
+            measured,
+            gathered,
+        );
+    }
+}
+
+fn error_vector(
+    set: Option<&LimitSet>,
+    name: String,
+    statistic: Statistic,
+    limit_percent: f64,
+    why: &str,
+    measured: &Measured<'_>,
+    gathered: &mut Gathered,
+) {
+    let value = match statistic {
+        Statistic::Rms => measured.evm_percent,
+        Statistic::Peak => measured.evm_peak_percent,
+        Statistic::P95 => measured.evm_p95_percent,
+        Statistic::P99 => measured.evm_p99_percent,
+    };
+    let what = match statistic {
+        Statistic::Rms => "RMS EVM",
+        Statistic::Peak => "peak EVM",
+        Statistic::P95 => "EVM of 95 % of the symbols",
+        Statistic::P99 => "EVM of 99 % of the symbols",
+    };
+    match value.filter(|value| value.is_finite() && *value >= 0.0) {
+        Some(value) => {
+            // A perfect signal would have an endless margin; 1e-9 % is far below any rounding of it.
+            let margin_db = 20.0 * (limit_percent / value.max(1e-9)).log10();
+            let reason = format!(
+                "{what} is {value:.3} %, limit {limit_percent:.2} %: {}{why}",
+                room(margin_db)
+            );
+            gathered.check(set, name, Outcome::of_margin(margin_db), Some(margin_db), reason);
+        }
+        None => gathered.check(
+            set,
+            name,
+            Outcome::Undecided,
+            None,
+            format!(
+                "the {what} was not measured (it needs the reference signal, for symbols also the signal's format); limit {limit_percent:.2} %{why}"
+            ),
+        ),
+    }
+}
+
+pub(super) fn spurious(
+    set: &LimitSet,
+    spurious: &Spurious,
+    measured: &Measured<'_>,
+    limits: &Limits,
+    gathered: &mut Gathered,
+) {
+    let class = limits.class_for(set);
+    let mean_dbm = dbm_from_watt(measured.mean_w);
+    let limit_db = |row: &SpuriousRow| {
+        let cap_db = row
+            .cap_w
+            .map_or(f64::INFINITY, |cap_w| dbm_from_watt(cap_w) - mean_dbm);
+        let floor_db = row.floor_w.map_or(f64::NEG_INFINITY, |floor_w| {
+            dbm_from_watt(floor_w) - mean_dbm
+        });
+        row.limit_db.min(cap_db).max(floor_db)
+    };
+    let mut rows: Vec<&SpuriousRow> = spurious
+        .rows
+        .iter()
+        .filter(|row| row.applies.to_class(class) && row.applies.at_power(measured.mean_w))
+        .collect();
+    // Of two rows that share the power, the first holds.
+    let mut kept: Vec<&SpuriousRow> = Vec::new();
+    rows.retain(|row| {
+        let doubled = kept
+            .iter()
+            .any(|other| other.applies.classes == row.applies.classes);
+        kept.push(*row);
+        !doubled
+    });
+    let Some((row, why)) = pick(&rows, |row| &row.applies, limit_db, class) else {
+        gathered.check(
+            Some(set),
+            set.name.clone(),
+            Outcome::Undecided,
+            None,
+            format!(
+                "no row is for {} of output power",
+                show(measured.mean_w, "W", 4)
+            ),
+        );
+        return;
+    };
+    let limit = limit_db(row);
+    let worst = measured.harmonics_dbc.and_then(|harmonics| {
+        harmonics
+            .iter()
+            .enumerate()
+            .max_by(|a, b| a.1.total_cmp(b.1))
+    });
+    let name = format!("{}, harmonics", set.name);
+    match worst {
+        Some((index, level_db)) if !level_db.is_nan() => {
+            let level_db = level_db.max(level_dbm(0.0) - mean_dbm);
+            let margin_db = limit - level_db;
+            let reason = format!(
+                "harmonic {} is {level_db:.2} dB against the fundamental of {mean_dbm:.2} dBm, limit {limit:.2} dB: {}{why}; other spurious emissions were not looked for",
+                index + 2,
+                room(margin_db)
+            );
+            gathered.check(
+                Some(set),
+                name,
+                Outcome::of_margin(margin_db),
+                Some(margin_db),
+                reason,
+            );
+        }
+        _ => gathered.check(
+            Some(set),
+            name,
+            Outcome::Undecided,
+            None,
+            format!("no harmonics are known for this signal; limit {limit:.2} dB{why}"),
+        ),
+    }
+}
+
+/// The limits that the study states itself.
+pub(super) fn stated(measured: &Measured<'_>, limits: &Limits, gathered: &mut Gathered) {
+    for row in &limits.acpr {
+        pair(
+            None,
+            format!("acpr at {}", show(row.offset_hz, "Hz", 6)),
+            Pair {
+                offset_hz: row.offset_hz,
+                filter: row.filter,
+                main: row.main,
+                limit_db: row.limit_db,
+                floor_dbm: None,
+                ignore_below_dbm: None,
+                why: "",
+            },
+            measured,
+            gathered,
+        );
+    }
+    for (limit, statistic, name) in [
+        (limits.evm_percent, Statistic::Rms, "evm"),
+        (limits.evm_peak_percent, Statistic::Peak, "evm peak"),
+    ] {
+        if let Some(limit_percent) = limit {
+            error_vector(
+                None,
+                name.to_owned(),
+                statistic,
+                limit_percent,
+                "",
+                measured,
+                gathered,
+            );
+        }
+    }
+}
