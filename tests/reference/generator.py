@@ -187,6 +187,11 @@ def long_chain(d):
     d.shunt_c(d.load * d.rng.uniform(0.8, 2.0))
 
 
+def longest(d):
+    long_chain(d)
+    d.reactance = d.load * d.rng.uniform(0.1, 0.5)
+
+
 def detailed(d):
     """Resistances given outright, capacitor Q in a tank, a damped trap, an element of each key."""
     rng, w, r = d.rng, d.w, d.r
@@ -255,6 +260,7 @@ def stages(seed, usable):
     plan = [(kind, None) for kind in KINDS for _ in range(3)]
     plan += [(kind, choke) for kind in DEGENERATE for choke in (False, True)]
     plan += [(detailed, choke) for choke in (False, True, False, True)]
+    plan += [(longest, False), (longest, False)]
     out = []
     for place, (kind, choke) in enumerate(plan):
         name = f"{place + 1:02d}_{kind.__name__}"
