@@ -8,7 +8,7 @@ use num_complex::Complex64;
 use super::balance::Orbit;
 use super::circuit::{Circuit, Input, Owner};
 use super::linear::{self, LinearSolver, Position};
-use super::reduce::{Reduced, Subspace};
+use super::reduce::{Reduced, Subspace, without_idle};
 use super::waveform::Waveform;
 use crate::stage::{Anchor, Driver, Stage};
 
@@ -127,6 +127,7 @@ impl Network {
         };
         let closed = equations(per_load(stage.switch.closed_ohm))?;
         let open = equations(per_load(stage.switch.open_ohm))?;
+        let [closed, open] = without_idle(closed, open).ok_or(NetworkError::Undetermined)?;
         let positions = [position(&closed, "closed")?, position(&open, "open")?];
         let choke_ohm = match circuit.input {
             Input::Voltage(_) => None,
@@ -168,7 +169,11 @@ impl Network {
         let multipliers = self.solver.period_map(drive).complex_eigenvalues();
         let largest = multipliers.iter().map(|m| m.norm()).fold(0.0, f64::max);
         // A radius of zero settles at once; one of 1 or more never does.
-        if largest >= 1.0 { f64::INFINITY } else { -self.stage.period_s() / largest.ln() }
+        if largest >= 1.0 {
+            f64::INFINITY
+        } else {
+            -self.stage.period_s() / largest.ln()
+        }
     }
 
     /// One period of waveforms in the periodic steady state, `points` instants in each switch position.

@@ -230,3 +230,70 @@ impl Subspace {
         })
     }
 }
+
+/// Takes out what never moves: a combination of states that neither position of the switch nor the input can
+/// change, such as the charge trapped between two series capacitors with only coils between them. A stage that
+/// started from rest holds none of it; left in, it would make the periodic state ambiguous.
+pub fn without_idle(closed: Reduced, open: Reduced) -> Option<[Reduced; 2]> {
+    let states = open.a.nrows();
+    let idle = left_null(&joined(&open), RANK_TOLERANCE)?;
+    if idle.ncols() == 0 {
+        return Some([closed, open]);
+    }
+    // Of these, the combinations that the closed switch does not touch either.
+    let touched = idle.transpose() * joined(&closed);
+    let idle = &idle * left_null(&touched, 1e-9)?;
+    if idle.ncols() == 0 {
+        return Some([closed, open]);
+    }
+    // The states that are free to move: the null space of a square matrix that spans the idle ones.
+    let basis = left_null(&(&idle * idle.transpose()), 1e-9)?;
+    let project = |reduced: Reduced| {
+        let row = |row: &DVector<f64>| {
+            let mut short = DVector::zeros(basis.ncols() + 1);
+            short
+                .rows_mut(0, basis.ncols())
+                .copy_from(&(basis.transpose() * row.rows(0, states)));
+            short[basis.ncols()] = row[states];
+            short
+        };
+        Reduced {
+            a: basis.transpose() * &reduced.a * &basis,
+            b: basis.transpose() * &reduced.b,
+            drain: row(&reduced.drain),
+            supply: row(&reduced.supply),
+            resistors: reduced
+                .resistors
+                .iter()
+                .map(|(o, ohm, r)| (*o, *ohm, row(r)))
+                .collect(),
+        }
+    };
+    Some([project(closed), project(open)])
+}
+
+fn joined(reduced: &Reduced) -> DMatrix<f64> {
+    let states = reduced.a.nrows();
+    let mut all = DMatrix::zeros(states, states + 1);
+    all.columns_mut(0, states).copy_from(&reduced.a);
+    all.set_column(states, &reduced.b);
+    all
+}
+
+/// Orthonormal columns `l` with `l^T matrix = 0`, up to `tolerance` of the largest singular value (or of one,
+/// where the matrix is smaller than that).
+fn left_null(matrix: &DMatrix<f64>, tolerance: f64) -> Option<DMatrix<f64>> {
+    let rows = matrix.nrows();
+    // Square, so that every left vector is there.
+    let mut square = DMatrix::zeros(rows, rows.max(matrix.ncols()));
+    square.columns_mut(0, matrix.ncols()).copy_from(matrix);
+    let svd = square.svd(true, false);
+    let u = svd.u?;
+    let limit = tolerance * svd.singular_values.max().max(1.0);
+    let null: Vec<_> = (0..u.ncols())
+        .filter(|&i| svd.singular_values[i] <= limit)
+        .collect();
+    Some(DMatrix::from_fn(rows, null.len(), |row, column| {
+        u[(row, null[column])]
+    }))
+}

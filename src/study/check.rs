@@ -4,9 +4,7 @@ use num_complex::Complex64;
 
 use super::error::StudyError;
 use super::load::{Hardware, Study};
-use super::result::{
-    CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts,
-};
+use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
 use super::warning::Warning;
 use crate::drive::{MAX_FACTOR, oversampling};
@@ -82,7 +80,10 @@ pub fn check(
     };
     let mut coarse = chain.run(source, &mut tick)?;
     let mut judged = verdict_of(study, &coarse);
-    let mut convergence = Convergence { against_factor: factor, moved_db: 0.0 };
+    let mut convergence = Convergence {
+        against_factor: factor,
+        moved_db: 0.0,
+    };
     for _ in 0..=MORE_DOUBLINGS {
         let instants = 2 * chain.factor as u64 * signal.samples;
         if 2 * chain.factor > MAX_FACTOR || instants > MOST_INSTANTS {
@@ -240,27 +241,42 @@ fn metrics(study: &Study, run: &Run, judgement: &Judgement) -> Result<Metrics, S
 
 /// Where no limit asks for neighbours: two equal channels to each side, where the channel's width is known.
 fn default_acpr(study: &Study, run: &Run) -> Vec<crate::metrics::AdjacentChannel> {
-    let Some(channel_hz) = study.limits.channel_hz.or(study.limits.authorized_bandwidth_hz) else {
+    let Some(channel_hz) = study
+        .limits
+        .channel_hz
+        .or(study.limits.authorized_bandwidth_hz)
+    else {
         return Vec::new();
     };
-    let filter = ChannelFilter::Flat { bandwidth_hz: channel_hz };
+    let filter = ChannelFilter::Flat {
+        bandwidth_hz: channel_hz,
+    };
     let neighbours = [(channel_hz, filter), (2.0 * channel_hz, filter)];
     adjacent_channels(&run.output_spectrum, &filter, &neighbours).unwrap_or_default()
 }
 
 fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     let mut warnings = Vec::new();
-    let RateFacts { factor, convergence, .. } = result.rate;
+    let RateFacts {
+        factor,
+        convergence,
+        ..
+    } = result.rate;
     // The negation also catches a movement that is no number.
     if !(convergence.moved_db <= CONVERGED_DB) {
-        warnings.push(Warning::NotConverged { moved_db: convergence.moved_db, factor });
+        warnings.push(Warning::NotConverged {
+            moved_db: convergence.moved_db,
+            factor,
+        });
     }
     if convergence.against_factor == factor {
         warnings.push(Warning::RateLimited { factor });
     }
     let highest = result.signal.peak * result.study.signal.level;
     if highest > 1.0 {
-        warnings.push(Warning::AboveFullScale { peak: result.signal.peak });
+        warnings.push(Warning::AboveFullScale {
+            peak: result.signal.peak,
+        });
     }
     if held > 0.0 {
         warnings.push(Warning::HeldAtEdge { fraction: held });
@@ -268,11 +284,16 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     if let Some(stage) = &result.stage {
         // A silicon junction starts to conduct at about 0.7 V (common practice).
         if stage.orbit.switch_min_v < -0.7 {
-            warnings.push(Warning::DiodeWouldConduct { lowest_v: stage.orbit.switch_min_v });
+            warnings.push(Warning::DiodeWouldConduct {
+                lowest_v: stage.orbit.switch_min_v,
+            });
         }
         let signal_s = 1.0 / result.signal.rate_hz;
         if stage.settling_s > SLOW * signal_s {
-            warnings.push(Warning::SlowStage { settling_s: stage.settling_s, signal_s });
+            warnings.push(Warning::SlowStage {
+                settling_s: stage.settling_s,
+                signal_s,
+            });
         }
     }
     if result.map.origin() == Origin::File {
@@ -283,8 +304,17 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
         warnings.push(Warning::MapFromFile { missing });
     }
     if result.output_spectrum.segments < FEW_SEGMENTS {
-        warnings.push(Warning::FewAverages { segments: result.output_spectrum.segments });
+        warnings.push(Warning::FewAverages {
+            segments: result.output_spectrum.segments,
+        });
     }
-    warnings.extend(result.judgement.warnings.iter().cloned().map(Warning::Limits));
+    warnings.extend(
+        result
+            .judgement
+            .warnings
+            .iter()
+            .cloned()
+            .map(Warning::Limits),
+    );
     warnings
 }

@@ -93,7 +93,11 @@ impl Study {
     pub fn read(name: &str, files: &dyn Files) -> Result<Self, Problem> {
         let shown = files.display(name);
         let text = files.text(name).map_err(|error| {
-            Problem::about_file(&shown, format!("a file that cannot be read ({error})"), "a study file")
+            Problem::about_file(
+                &shown,
+                format!("a file that cannot be read ({error})"),
+                "a study file",
+            )
         })?;
         let document = Document::parse(&shown, &text)?;
         let root = document.root();
@@ -122,7 +126,13 @@ impl Study {
         if let Hardware::Map(map) = &study.hardware
             && map.control() != Control::Supply
         {
-            return Err(scheme.problem("kind", format!("a scheme that moves the map's control, {}", map.control().name())));
+            return Err(scheme.problem(
+                "kind",
+                format!(
+                    "a scheme that moves the map's control, {}",
+                    map.control().name()
+                ),
+            ));
         }
         Ok(study)
     }
@@ -139,7 +149,9 @@ fn signal_choice(section: &Section<'_>) -> Result<SignalChoice, Problem> {
 }
 
 fn spectrum_settings(section: &Section<'_>) -> Result<(Window, Option<f64>), Problem> {
-    let window = section.maybe_choice("window", &WINDOWS)?.unwrap_or(Window::BlackmanHarris);
+    let window = section
+        .maybe_choice("window", &WINDOWS)?
+        .unwrap_or(Window::BlackmanHarris);
     let resolution = section.maybe_quantity("resolution", Dimension::Frequency, Range::Positive)?;
     section.finish()?;
     Ok((window, resolution))
@@ -155,7 +167,10 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
         let name = root.text("stage")?;
         let shown = files.display(name);
         let text = files.text(name).map_err(|error| {
-            root.problem("stage", format!("a file that can be read ({shown}: {error})"))
+            root.problem(
+                "stage",
+                format!("a file that can be read ({shown}: {error})"),
+            )
         })?;
         return Ok(Hardware::Stage(Stage::parse(&shown, &text)?));
     }
@@ -166,9 +181,9 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
         Some("json") => MapFormat::Json,
         _ => return Err(root.problem("map", "a file named *.csv or *.json")),
     };
-    let reader = files
-        .open(name)
-        .map_err(|error| root.problem("map", format!("a file that can be read ({shown}: {error})")))?;
+    let reader = files.open(name).map_err(|error| {
+        root.problem("map", format!("a file that can be read ({shown}: {error})"))
+    })?;
     Ok(Hardware::Map(read_map(&shown, format, reader, &facts)?))
 }
 

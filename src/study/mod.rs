@@ -10,7 +10,5 @@ mod warning;
 pub use check::check;
 pub use error::StudyError;
 pub use load::{Hardware, SignalChoice, Study};
-pub use result::{
-    CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts,
-};
+pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
 pub use warning::Warning;

@@ -100,7 +100,10 @@ impl Chain<'_> {
         let Scheme::Supply(scheme) = &self.study.scheme;
         let edge = EDGE.min(self.signal_samples / 20) * self.factor as u64;
         let settling = SupplyDrive::settling(scheme, rate_hz) as u64;
-        (edge + settling, (self.signal_samples * self.factor as u64).saturating_sub(edge))
+        (
+            edge + settling,
+            (self.signal_samples * self.factor as u64).saturating_sub(edge),
+        )
     }
 
     /// Runs the chain once over the whole source and hands out what counts.
@@ -136,7 +139,12 @@ impl Chain<'_> {
             let inside = |at: u64| (at.clamp(first, first + count as u64) - first) as usize;
             let range = inside(start)..inside(end);
             if !range.is_empty() {
-                take(&Piece { first, track: &track, output_v: &output_v, range })?;
+                take(&Piece {
+                    first,
+                    track: &track,
+                    output_v: &output_v,
+                    range,
+                })?;
             }
             first += count as u64;
             tick(count as u64);
@@ -256,7 +264,10 @@ impl Chain<'_> {
             errors: errors.finish()?,
             energy,
             held: held as f64 / total.max(1) as f64,
-            control_density: density.iter().map(|&n| n as f64 / total.max(1) as f64).collect(),
+            control_density: density
+                .iter()
+                .map(|&n| n as f64 / total.max(1) as f64)
+                .collect(),
             notch,
         })
     }

@@ -77,7 +77,10 @@ impl fmt::Display for Warning {
                 "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the linear stage does not",
                 show(*lowest_v, "V", 3)
             ),
-            Self::SlowStage { settling_s, signal_s } => write!(
+            Self::SlowStage {
+                settling_s,
+                signal_s,
+            } => write!(
                 f,
                 "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result",
                 show(*settling_s, "s", 3),
