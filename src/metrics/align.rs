@@ -8,10 +8,12 @@ use super::lag::{GUARD, LagPeak};
 use super::pair::PairError;
 use crate::math::Transform;
 
-/// Longest search to each side, samples: it bounds the memory of a meter to about 160 MB.
+/// Longest search to each side, samples: it bounds the memory of a meter to about 200 MB.
 const LONGEST_SEARCH: usize = 1 << 17;
 /// Samples over which each end of the streams is faded in and out, at most.
 const FADE: usize = 1024;
+/// Samples done with that may stand before those still needed.
+pub(super) const MOVE: usize = 1 << 15;
 /// Fewest samples that are summed over.
 const FEWEST: usize = 64;
 /// Correlation below which nothing is said: two unrelated streams of some thousand samples reach
@@ -56,6 +58,8 @@ pub struct AlignmentMeter {
     cross: Vec<Complex64>,
     reference: Vec<Complex64>,
     output: Vec<Complex64>,
+    /// First sample held that is still needed.
+    start: usize,
     fade: usize,
     summed: u64,
     seen: u64,
@@ -95,6 +99,7 @@ impl AlignmentMeter {
             cross: zeros,
             reference: Vec::new(),
             output: Vec::new(),
+            start: 0,
             fade: FADE.min(block / 2),
             summed: 0,
             seen: 0,
@@ -122,13 +127,15 @@ impl AlignmentMeter {
             self.reference.extend_from_slice(reference);
             self.output.extend_from_slice(output);
             // A block is summed only when another one follows: the last ones carry the fade.
-            let mut at = 0;
-            while self.reference.len() - at >= 2 * (self.block + self.lags) {
-                self.sum_block(at, self.block, None);
-                at += self.block;
+            while self.reference.len() - self.start >= 2 * (self.block + self.lags) {
+                self.sum_block(self.start, self.block, None);
+                self.start += self.block;
             }
-            self.reference.drain(..at);
-            self.output.drain(..at);
+            if self.start >= part.max(MOVE) {
+                self.reference.drain(..self.start);
+                self.output.drain(..self.start);
+                self.start = 0;
+            }
         }
         Ok(())
     }
@@ -145,13 +152,8 @@ impl AlignmentMeter {
         output[wide..].fill(Complex64::ZERO);
 
         let middle = &self.output[from..from + count];
-        let mut squares = (0.0, 0.0);
-        for (x, y) in reference[..count].iter().zip(middle) {
-            squares.0 += x.norm_sqr();
-            squares.1 += y.norm_sqr();
-        }
-        self.reference_square += squares.0;
-        self.output_square += squares.1;
+        self.reference_square += energy(&reference[..count]);
+        self.output_square += energy(middle);
 
         // The fades, on the few samples they reach.
         let rising = (self.fade as u64).saturating_sub(self.summed) as usize;
@@ -185,7 +187,7 @@ impl AlignmentMeter {
     /// [`PairError::TooShort`], [`PairError::Silent`], [`PairError::Unrelated`],
     /// [`PairError::SearchEnd`].
     pub fn finish(mut self) -> Result<Alignment, PairError> {
-        let mut left = self.reference.len().saturating_sub(2 * self.lags);
+        let mut left = (self.reference.len() - self.start).saturating_sub(2 * self.lags);
         if self.summed == 0 {
             if left < FEWEST {
                 return Err(PairError::TooShort {
@@ -195,7 +197,7 @@ impl AlignmentMeter {
             }
             self.fade = self.fade.min(left / 4);
         }
-        let mut at = 0;
+        let mut at = self.start;
         while left > 0 {
             let count = left.min(self.block);
             self.sum_block(at, count, Some(left));
@@ -239,6 +241,18 @@ impl AlignmentMeter {
             samples: self.summed,
         })
     }
+}
+
+/// Sum of squares, four sums side by side: one alone would wait for each addition.
+fn energy(samples: &[Complex64]) -> f64 {
+    let (fours, rest) = samples.as_chunks::<4>();
+    let mut lanes = [0.0; 4];
+    for four in fours {
+        for (lane, sample) in lanes.iter_mut().zip(four) {
+            *lane += sample.norm_sqr();
+        }
+    }
+    lanes.iter().sum::<f64>() + rest.iter().map(|sample| sample.norm_sqr()).sum::<f64>()
 }
 
 /// A raised cosine from 0 to 1 over `length` samples: its value and its slope at sample `at`.

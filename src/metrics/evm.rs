@@ -2,7 +2,7 @@
 
 use num_complex::Complex64;
 
-use super::align::Alignment;
+use super::align::{Alignment, MOVE};
 use super::pair::PairError;
 use crate::math::Transform;
 use crate::math::fir::{fractional_advance, kaiser_half_taps, low_pass};
@@ -15,7 +15,7 @@ const DELAY_DB: f64 = 130.0;
 /// The band's filter: its transition as a part of the band, and its attenuation.
 const TRANSITION: f64 = 0.1;
 const BAND_DB: f64 = 80.0;
-/// Longest band filter to each side.
+/// Longest band filter to each side, taps: it takes a meter to about 230 MB.
 const LONGEST_HALF: usize = 1 << 16;
 
 /// How far an output is from its reference.
@@ -50,21 +50,37 @@ struct Sums {
 
 impl Sums {
     fn add(&mut self, reference: &[Complex64], error: &[Complex64]) {
-        let mut sums = Self {
-            peak: self.peak,
-            ..Self::default()
-        };
-        for (x, e) in reference.iter().zip(error) {
-            let square = e.norm_sqr();
-            sums.reference += x.norm_sqr();
-            sums.error += square;
-            sums.product += x.conj() * e;
-            sums.peak = sums.peak.max(square);
+        // Four sums side by side: one alone would wait for each addition before the next.
+        let mut lanes = [Self::default(); 4];
+        let (fours, rest) = reference.as_chunks::<4>();
+        let (error_fours, error_rest) = error.as_chunks::<4>();
+        for (x, e) in fours.iter().zip(error_fours) {
+            for ((lane, x), e) in lanes.iter_mut().zip(x).zip(e) {
+                lane.count(*x, *e);
+            }
         }
-        self.reference += sums.reference;
-        self.error += sums.error;
-        self.product += sums.product;
-        self.peak = sums.peak;
+        for (x, e) in rest.iter().zip(error_rest) {
+            lanes[0].count(*x, *e);
+        }
+        for lane in lanes {
+            self.reference += lane.reference;
+            self.error += lane.error;
+            self.product += lane.product;
+            self.peak = self.peak.max(lane.peak);
+        }
+    }
+
+    #[inline]
+    fn count(&mut self, x: Complex64, e: Complex64) {
+        let square = e.norm_sqr();
+        self.reference += x.norm_sqr();
+        self.error += square;
+        self.product += x.conj() * e;
+        self.peak = if square > self.peak {
+            square
+        } else {
+            self.peak
+        };
     }
 
     /// What is left of the gain: `<x, x + e> / <x, x>`.
@@ -108,6 +124,8 @@ pub struct ErrorMeter {
     work: [Vec<Complex64>; 3],
     reference: Vec<Complex64>,
     output: Vec<Complex64>,
+    /// First sample held that is still needed.
+    start: usize,
     full: Sums,
     inside: Sums,
     samples: u64,
@@ -177,6 +195,7 @@ impl ErrorMeter {
             work: [zeros.clone(), zeros.clone(), zeros],
             reference: Vec::new(),
             output: Vec::new(),
+            start: 0,
             full: Sums::default(),
             inside: Sums::default(),
             samples: 0,
@@ -200,13 +219,16 @@ impl ErrorMeter {
             self.seen += reference.len() as u64;
             take(&mut self.reference, &mut self.skip_reference, reference);
             take(&mut self.output, &mut self.skip_output, output);
-            let mut at = 0;
-            while self.reference.len().min(self.output.len()) >= at + length {
-                self.compare(at, length);
-                at += length - 2 * self.half;
+            while self.reference.len().min(self.output.len()) >= self.start + length {
+                self.compare(self.start, length);
+                self.start += length - 2 * self.half;
             }
-            self.reference.drain(..at);
-            self.output.drain(..at);
+            // Moved to the front only now and then.
+            if self.start >= length.max(MOVE) {
+                self.reference.drain(..self.start);
+                self.output.drain(..self.start);
+                self.start = 0;
+            }
         }
         Ok(())
     }
@@ -261,9 +283,9 @@ impl ErrorMeter {
     /// # Errors
     /// [`PairError::TooShort`], [`PairError::Silent`].
     pub fn finish(mut self) -> Result<ErrorFigures, PairError> {
-        let rest = self.reference.len().min(self.output.len());
+        let rest = self.reference.len().min(self.output.len()) - self.start;
         if rest > 2 * self.half {
-            self.compare(0, rest);
+            self.compare(self.start, rest);
         }
         if self.samples == 0 {
             return Err(PairError::TooShort {

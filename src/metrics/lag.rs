@@ -41,16 +41,19 @@ impl Neighbourhood {
             })
             .collect();
         Transform::new(length).forward(&mut terms);
-        Self {
-            terms: terms
-                .into_iter()
-                .enumerate()
-                .map(|(bin, term)| {
-                    let cycles = signed_bin(bin, length) as f64 / length as f64;
-                    (TAU * cycles, term / length as f64)
-                })
-                .collect(),
-        }
+        let mut terms: Vec<_> = terms
+            .into_iter()
+            .enumerate()
+            .map(|(bin, term)| {
+                let cycles = signed_bin(bin, length) as f64 / length as f64;
+                (TAU * cycles, term / length as f64)
+            })
+            .collect();
+        // The term at half the rate belongs to both signs alike.
+        let (omega, term) = terms[GUARD];
+        terms[GUARD] = (omega, term / 2.0);
+        terms.push((-omega, term / 2.0));
+        Self { terms }
     }
 
     /// `R(u)`, and the first and second derivative of `ln |R(u)|`.

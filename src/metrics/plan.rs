@@ -4,8 +4,8 @@ use super::spectrum::SpectrumError;
 use crate::math::Window;
 use crate::math::fft::fast_length;
 
-/// Shortest and longest block of one transform: the longest keeps a meter below 300 MB.
-const LENGTHS: std::ops::RangeInclusive<usize> = 16..=1 << 22;
+/// Shortest and longest block of one transform: the longest takes a meter to about 150 MB.
+const LENGTHS: std::ops::RangeInclusive<usize> = 16..=1 << 21;
 
 /// What is kept of the blocks beside their mean.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]

@@ -18,7 +18,7 @@ use quietedge::metrics::{
 
 /// Samples kept in memory and read again and again.
 const POOL: usize = 1 << 20;
-const BLOCK: usize = 1 << 16;
+const BLOCK: usize = 1 << 14;
 const RATE_HZ: f64 = 20e6;
 
 /// Two streams, one after another block: a coloured noise, and itself 40 samples later through a cubic.
