@@ -1,0 +1,133 @@
+//! Results as JSON documents. Key names are stable: keys may be added, never renamed.
+
+use serde::Serialize;
+use serde_json::{Value, json};
+
+use crate::map::Map;
+use crate::orbit::Orbit;
+use crate::stage::Stage;
+use crate::study::CheckResult;
+
+/// The document of `quietedge solve`.
+pub fn solve_document(stage: &Stage, orbit: &Orbit) -> Value {
+    json!({
+        "stage": stage.title,
+        "frequency_hz": stage.frequency_hz,
+        "supply_v": orbit.supply_v,
+        "duty": orbit.drive.duty(),
+        "load_ohm": stage.load.ohm,
+        "orbit": {
+            "output_v": orbit.output_v_parts(),
+            "output_w": orbit.output_w,
+            "supply_a": orbit.supply_a,
+            "supply_w": orbit.supply_w,
+            "driver_w": orbit.driver_w,
+            "efficiency": orbit.efficiency,
+            "losses_w": orbit.losses,
+            "switch_peak_v": orbit.switch_peak_v,
+            "switch_min_v": orbit.switch_min_v,
+            "switch_peak_a": orbit.switch_peak_a,
+            "switch_min_a": orbit.switch_min_a,
+            "closing_v": orbit.closing_v,
+            "closing_slope_v_per_s": orbit.closing_slope_v_per_s,
+            "harmonics_dbc": orbit.harmonics_dbc,
+            "energy_residual": orbit.energy_residual,
+        },
+    })
+}
+
+#[derive(Serialize)]
+struct Phasor {
+    re: f64,
+    im: f64,
+}
+
+impl Orbit {
+    fn output_v_parts(&self) -> impl Serialize + use<> {
+        Phasor { re: self.output_v.re, im: self.output_v.im }
+    }
+}
+
+/// The document of `quietedge map`, which a study can name in place of a stage.
+pub fn map_document(title: &str, map: &Map) -> Value {
+    let points: Vec<Value> = map
+        .points()
+        .iter()
+        .map(|point| {
+            json!({
+                "control": point.control,
+                "output_v": Phasor { re: point.output_v.re, im: point.output_v.im },
+                "supply_v": point.supply_v,
+                "supply_a": point.supply_a,
+                "efficiency": point.efficiency,
+                "switch_peak_v": point.switch_peak_v,
+                "switch_peak_a": point.switch_peak_a,
+                "switch_min_v": point.switch_min_v,
+                "closing_v": point.closing_v,
+            })
+        })
+        .collect();
+    json!({
+        "title": title,
+        "control": map.control().name(),
+        "frequency_hz": map.frequency_hz(),
+        "load_ohm": map.load_ohm(),
+        "points": points,
+    })
+}
+
+/// A map as the CSV file that a study can name in place of a stage. Absent columns are left out.
+pub fn map_csv(title: &str, map: &Map) -> String {
+    use std::fmt::Write;
+    let mut text = String::new();
+    let facts = [
+        ("title", title.replace(['\n', '\r'], " ")),
+        ("control", map.control().name().to_owned()),
+        ("frequency", format!("{} Hz", map.frequency_hz())),
+        ("load_resistance", format!("{} ohm", map.load_ohm())),
+    ];
+    for (key, value) in facts {
+        let _ = writeln!(text, "# {key} = {value}");
+    }
+    type Column = (&'static str, fn(&crate::map::MapPoint) -> Option<f64>);
+    let columns: [Column; 9] = [
+        ("control", |point| Some(point.control)),
+        ("output_re_v", |point| Some(point.output_v.re)),
+        ("output_im_v", |point| Some(point.output_v.im)),
+        ("supply_v", |point| Some(point.supply_v)),
+        ("supply_a", |point| point.supply_a),
+        ("efficiency", |point| point.efficiency),
+        ("switch_peak_v", |point| point.switch_peak_v),
+        ("switch_peak_a", |point| point.switch_peak_a),
+        ("closing_v", |point| point.closing_v),
+    ];
+    let present: Vec<&Column> = columns
+        .iter()
+        .filter(|(_, value)| map.points().iter().all(|point| value(point).is_some()))
+        .collect();
+    let names: Vec<&str> = present.iter().map(|(name, _)| *name).collect();
+    let _ = writeln!(text, "{}", names.join(","));
+    for point in map.points() {
+        let values: Vec<String> = present
+            .iter()
+            .filter_map(|(_, value)| value(point))
+            .map(|value| value.to_string())
+            .collect();
+        let _ = writeln!(text, "{}", values.join(","));
+    }
+    text
+}
+
+/// The document of `quietedge check`.
+pub fn check_document(result: &CheckResult) -> Value {
+    json!({
+        "study": result.study.title,
+        "scheme": result.scheme().name(),
+        "signal": result.signal,
+        "level": result.study.signal.level,
+        "sampling": result.rate,
+        "metrics": result.metrics,
+        "verdict": result.judgement.verdict,
+        "warnings": result.warnings,
+    })
+}
