@@ -349,7 +349,7 @@ fn endless_lines_are_refused() {
         ..FormatOptions::default()
     };
     let message = open(&files, "x.csv", &options).err().unwrap().to_string();
-    assert!(message.contains("more than 4096 bytes"), "{message}");
+    assert!(message.contains("more than 65536 bytes"), "{message}");
 }
 
 #[test]
