@@ -260,7 +260,15 @@ impl Source for TextSamples {
             let Some([i, q]) = self.columns.next()? else {
                 break;
             };
-            block[count] = Complex64::new(i * self.gain, q * self.gain);
+            let sample = Complex64::new(i * self.gain, q * self.gain);
+            if !(sample.re.is_finite() && sample.im.is_finite()) {
+                return Err(SignalError::NotFinite {
+                    file: self.columns.file().to_owned(),
+                    sample: self.columns.count() - 1,
+                    given: format!("{sample} after scaling"),
+                });
+            }
+            block[count] = sample;
             count += 1;
         }
         Ok(count)
