@@ -75,6 +75,12 @@ pub fn open_pulses(
     }
 }
 
+/// Rates beyond these are slips of a prefix.
+const RATES_HZ: (f64, f64) = (1e-6, 1e15);
+
+/// Full scales beyond these would overflow or vanish.
+const FULL_SCALES: (f64, f64) = (1e-15, 1e15);
+
 type Prepared = (Box<dyn ReadSeek>, Format, FormatOptions);
 
 /// Opens the file, completes the options by its sidecar, and decides the format.
@@ -105,29 +111,25 @@ fn prepare(
             });
         }
     };
-    if let Some(rate_hz) = options.rate_hz
-        && !(rate_hz.is_finite() && rate_hz > 0.0)
-    {
-        return Err(not_positive(file, "rate", rate_hz));
-    }
-    if let Some(full_scale) = options.full_scale
-        && !(full_scale.is_finite() && full_scale > 0.0)
-    {
-        return Err(not_positive(file, "full scale", full_scale));
+    for (what, value, (low, high)) in [
+        ("sample rate in Hz", options.rate_hz, RATES_HZ),
+        ("full scale", options.full_scale, FULL_SCALES),
+    ] {
+        if let Some(value) = value
+            && !(low..=high).contains(&value)
+        {
+            return Err(SignalError::Malformed {
+                file: file.to_owned(),
+                given: format!("a {what} of {value}"),
+                allowed: format!("{low:e} to {high:e}"),
+            });
+        }
     }
     let format = match options.format {
         Some(format) => format,
         None => Format::of_name(name)?,
     };
     Ok((reader, format, options))
-}
-
-fn not_positive(file: &str, what: &str, given: f64) -> SignalError {
-    SignalError::Malformed {
-        file: file.to_owned(),
-        given: format!("a {what} of {given}"),
-        allowed: "a finite number above 0".to_owned(),
-    }
 }
 
 /// A file that is nothing but samples.

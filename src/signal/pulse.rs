@@ -72,10 +72,15 @@ impl PulseSource for TextEdges {
                 });
             }
             self.last_s = time_s;
-            block[count] = Edge {
-                time_s,
-                level: level * self.gain,
-            };
+            let level = level * self.gain;
+            if !level.is_finite() {
+                return Err(SignalError::NotFinite {
+                    file: self.columns.file().to_owned(),
+                    sample: self.columns.count() - 1,
+                    given: format!("{level} after scaling"),
+                });
+            }
+            block[count] = Edge { time_s, level };
             count += 1;
         }
         Ok(count)

@@ -7,8 +7,8 @@ use num_complex::Complex64;
 use super::{SignalError, Source};
 use crate::input::ReadSeek;
 
-/// The longest line that is read; two numbers need about 50 bytes.
-const MOST_LINE_BYTES: usize = 4096;
+/// A line that goes on past this is refused; two numbers need about 50 bytes.
+const MOST_LINE_BYTES: usize = 1 << 16;
 
 /// Two columns of numbers under a header that names them.
 pub(super) struct Columns {
@@ -33,7 +33,6 @@ impl Columns {
             .has_headers(false)
             .quoting(false)
             .flexible(true)
-            .trim(csv::Trim::All)
             .comment(Some(b'#'))
             .from_reader(ShortLines {
                 reader: BufReader::with_capacity(1 << 16, reader),
@@ -52,6 +51,7 @@ impl Columns {
             .iter()
             .map(|name| {
                 name.trim_start_matches('\u{feff}')
+                    .trim()
                     .trim_matches('"')
                     .to_lowercase()
             })
@@ -147,7 +147,8 @@ impl Columns {
 }
 
 fn number(text: &str) -> Option<f64> {
-    text.trim_matches('"')
+    text.trim()
+        .trim_matches('"')
         .parse::<f64>()
         .ok()
         .filter(|value| value.is_finite())
@@ -202,18 +203,19 @@ struct ShortLines {
 impl Read for ShortLines {
     fn read(&mut self, out: &mut [u8]) -> io::Result<usize> {
         let count = self.reader.read(out)?;
-        for byte in &out[..count] {
-            self.line = if matches!(byte, b'\n' | b'\r') {
-                0
-            } else {
-                self.line + 1
-            };
-            if self.line > MOST_LINE_BYTES {
-                return Err(io::Error::new(
-                    io::ErrorKind::InvalidData,
-                    format!("a line of more than {MOST_LINE_BYTES} bytes"),
-                ));
-            }
+        // Only what follows the last line end counts on: lines inside are no longer than `out`.
+        self.line = match out[..count]
+            .iter()
+            .rposition(|byte| matches!(byte, b'\n' | b'\r'))
+        {
+            Some(end) => count - end - 1,
+            None => self.line + count,
+        };
+        if self.line > MOST_LINE_BYTES {
+            return Err(io::Error::new(
+                io::ErrorKind::InvalidData,
+                format!("a line of more than {MOST_LINE_BYTES} bytes"),
+            ));
         }
         Ok(count)
     }
@@ -258,7 +260,15 @@ impl Source for TextSamples {
             let Some([i, q]) = self.columns.next()? else {
                 break;
             };
-            block[count] = Complex64::new(i * self.gain, q * self.gain);
+            let sample = Complex64::new(i * self.gain, q * self.gain);
+            if !(sample.re.is_finite() && sample.im.is_finite()) {
+                return Err(SignalError::NotFinite {
+                    file: self.columns.file().to_owned(),
+                    sample: self.columns.count() - 1,
+                    given: format!("{sample} after scaling"),
+                });
+            }
+            block[count] = sample;
             count += 1;
         }
         Ok(count)

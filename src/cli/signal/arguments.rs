@@ -29,7 +29,7 @@ pub(super) enum Command {
     /// Many narrow carriers with a cyclic prefix
     #[command(after_help = "Examples:
   quietedge signal ofdm --spacing 15kHz --fft 512 --carriers 300 --prefix 36 --out ofdm.cf32
-  quietedge signal ofdm --spacing 78.125kHz --fft 64 --carriers 52 --prefix 16 --edge 4 --modulation qam64 --out ofdm.npy")]
+  quietedge signal ofdm --spacing 78.125kHz --fft 64 --carriers 52 --prefix 16 --edge 4 --out ofdm.npy")]
     Ofdm {
         #[command(flatten)]
         shape: OfdmArguments,
