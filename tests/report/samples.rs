@@ -71,11 +71,23 @@ pub fn spectrum() -> SpectrumFigure {
         resolution_hz: 100.0,
         curves: vec![curve("output", -14.0), curve("wanted", -62.0)],
         masks: vec![side(1.0), side(-1.0)],
-        worst: vec![WorstPoint {
-            offset_hz: 12_500.0,
-            level: -24.6,
-            margin_db: -9.4,
-        }],
+        worst: vec![
+            WorstPoint {
+                offset_hz: 12_500.0,
+                level: -24.6,
+                margin_db: -9.4,
+            },
+            WorstPoint {
+                offset_hz: -12_480.0,
+                level: -26.6,
+                margin_db: -6.7,
+            },
+            WorstPoint {
+                offset_hz: 3_200.0,
+                level: 17.4,
+                margin_db: 19.6,
+            },
+        ],
         span_hz: None,
     }
 }

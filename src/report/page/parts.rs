@@ -77,7 +77,10 @@ pub(super) fn checks(checks: &[CheckRow]) -> String {
         let reason = if check.reason.is_empty() {
             String::new()
         } else {
-            format!("<span class=\"reason\">{}</span>", escape(&check.reason))
+            format!(
+                "<span class=\"reason\">{}</span>",
+                escape(&keep_units(&check.reason))
+            )
         };
         let word = check.outcome.word();
         let _ = writeln!(
@@ -87,7 +90,7 @@ pub(super) fn checks(checks: &[CheckRow]) -> String {
              <td role=\"cell\" data-label=\"Found\">{}</td>\
              <td role=\"cell\" data-label=\"Allowed\">{}</td>\
              <td role=\"cell\" data-label=\"Margin\">{}</td></tr>",
-            escape(&check.name),
+            escape(&keep_units(&check.name)),
             or_dash(&check.found),
             or_dash(&check.allowed),
             margin(check.margin_db),
@@ -212,7 +215,7 @@ pub(super) fn conditions(conditions: &Conditions) -> String {
         let name = escape(name);
         let _ = writeln!(
             html,
-            "<h3>{name}</h3>\n<pre class=\"input\" tabindex=\"0\" aria-label=\"{name}\">{}</pre>",
+            "<h3>{name}</h3>\n<pre class=\"input\" role=\"region\" tabindex=\"0\" aria-label=\"{name}\">{}</pre>",
             escape_lines(text)
         );
     }
