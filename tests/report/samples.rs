@@ -2,6 +2,7 @@
 
 use quietedge::report::figures::*;
 use quietedge::report::page::*;
+use quietedge::report::table::Align;
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use std::f64::consts::TAU;
@@ -294,6 +295,17 @@ pub fn page() -> Page {
             key("occupied bandwidth", "8.61 kHz", "99 %"),
         ],
         figures: figures().into_iter().map(|(_, figure, caption)| CaptionedFigure { figure, caption: caption.to_owned() }).collect(),
+        tables: vec![DataTable {
+            title: "Mask segments".to_owned(),
+            columns: vec![
+                ("segment".to_owned(), Align::Left),
+                ("worst at".to_owned(), Align::Right),
+                ("margin".to_owned(), Align::Right),
+            ],
+            rows: [["0 to 5.625 kHz", "+3.2 kHz", "+19.6 dB"], ["5.625 to 12.5 kHz", "+12.5 kHz", "-9.4 dB"]]
+                .map(|row| row.map(str::to_owned).to_vec())
+                .to_vec(),
+        }],
         facts: vec![
             facts("Stage", &[("frequency", "169.4 MHz"), ("feed", "8.2 nH, 50 mohm"), ("drain capacitance", "60 pF"), ("energy residual", "2.1e-14")]),
             facts("Map", &[("points", "201"), ("control", "0 V to 6 V"), ("largest phase step", "0.4 deg")]),

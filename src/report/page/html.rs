@@ -38,6 +38,7 @@ pub(super) fn page(page: &Page) -> Result<String, ReportError> {
     html += &parts::checks(&page.checks);
     html += &parts::key_figures(&page.key_figures);
     html += &parts::figures(&page.figures)?;
+    html += &parts::tables(&page.tables);
     html += &parts::facts(&page.facts);
     html += &parts::list(
         "model",

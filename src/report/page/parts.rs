@@ -2,8 +2,9 @@
 
 use std::fmt::Write as _;
 
-use super::{CaptionedFigure, CheckRow, Conditions, FactGroup, Headline, KeyFigure};
+use super::{CaptionedFigure, CheckRow, Conditions, DataTable, FactGroup, Headline, KeyFigure};
 use crate::report::error::ReportError;
+use crate::report::table::Align;
 use crate::report::text::{escape, escape_lines, keep_units};
 
 /// Margins beyond this many dB reach the end of the gauge.
@@ -164,6 +165,55 @@ pub(super) fn figures(figures: &[CaptionedFigure]) -> Result<String, ReportError
     }
     html += "</section>\n";
     Ok(html)
+}
+
+/// Further tables, each with its heading.
+pub(super) fn tables(tables: &[DataTable]) -> String {
+    let mut html = String::new();
+    for (index, table) in tables.iter().enumerate() {
+        let side = |align: Align| match align {
+            Align::Left => "",
+            Align::Right => " class=\"right\"",
+        };
+        let _ = write!(
+            html,
+            "<section aria-labelledby=\"table{index}\">\n<h2 id=\"table{index}\">{}</h2>\n\
+             <table role=\"table\" class=\"data\" aria-labelledby=\"table{index}\">\n\
+             <thead role=\"rowgroup\">\n<tr role=\"row\">",
+            escape(&table.title)
+        );
+        for (header, align) in &table.columns {
+            let _ = write!(
+                html,
+                "<th role=\"columnheader\" scope=\"col\"{}>{}</th>",
+                side(*align),
+                escape(header)
+            );
+        }
+        html += "</tr>\n</thead>\n<tbody role=\"rowgroup\">\n";
+        for row in &table.rows {
+            html += "<tr role=\"row\">";
+            for (column, (header, align)) in table.columns.iter().enumerate() {
+                let cell = escape(row.get(column).map_or("", String::as_str));
+                let side = side(*align);
+                let _ = if column == 0 {
+                    write!(
+                        html,
+                        "<th role=\"rowheader\" scope=\"row\"{side}>{cell}</th>"
+                    )
+                } else {
+                    let header = escape(header);
+                    write!(
+                        html,
+                        "<td role=\"cell\" data-label=\"{header}\"{side}>{cell}</td>"
+                    )
+                };
+            }
+            html += "</tr>\n";
+        }
+        html += "</tbody>\n</table>\n</section>\n";
+    }
+    html
 }
 
 /// Groups of names and values.
