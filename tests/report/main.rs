@@ -7,6 +7,7 @@ use proptest::prelude::*;
 use quietedge::report::Figure;
 use quietedge::report::figures::*;
 use quietedge::report::page::*;
+use quietedge::report::table::Align;
 
 /// Parses `figure` and returns its texts.
 fn texts(figure: &Figure) -> Vec<String> {
@@ -329,6 +330,11 @@ fn hostile(text: &str) -> Page {
             }
             .figure(),
             caption: text(),
+        }],
+        tables: vec![DataTable {
+            title: text(),
+            columns: vec![(text(), Align::Left), (text(), Align::Right)],
+            rows: vec![vec![text()], vec![text(); 3]],
         }],
         facts: vec![FactGroup {
             title: text(),

@@ -2,6 +2,7 @@
 
 use quietedge::report::figures::*;
 use quietedge::report::page::*;
+use quietedge::report::table::Align;
 use rand::{RngExt, SeedableRng};
 use rand_chacha::ChaCha8Rng;
 use std::f64::consts::TAU;
@@ -71,11 +72,23 @@ pub fn spectrum() -> SpectrumFigure {
         resolution_hz: 100.0,
         curves: vec![curve("output", -14.0), curve("wanted", -62.0)],
         masks: vec![side(1.0), side(-1.0)],
-        worst: vec![WorstPoint {
-            offset_hz: 12_500.0,
-            level: -24.6,
-            margin_db: -9.4,
-        }],
+        worst: vec![
+            WorstPoint {
+                offset_hz: 12_500.0,
+                level: -24.6,
+                margin_db: -9.4,
+            },
+            WorstPoint {
+                offset_hz: -12_480.0,
+                level: -26.6,
+                margin_db: -6.7,
+            },
+            WorstPoint {
+                offset_hz: 3_200.0,
+                level: 17.4,
+                margin_db: 19.6,
+            },
+        ],
         span_hz: None,
     }
 }
@@ -282,6 +295,17 @@ pub fn page() -> Page {
             key("occupied bandwidth", "8.61 kHz", "99 %"),
         ],
         figures: figures().into_iter().map(|(_, figure, caption)| CaptionedFigure { figure, caption: caption.to_owned() }).collect(),
+        tables: vec![DataTable {
+            title: "Mask segments".to_owned(),
+            columns: vec![
+                ("segment".to_owned(), Align::Left),
+                ("worst at".to_owned(), Align::Right),
+                ("margin".to_owned(), Align::Right),
+            ],
+            rows: [["0 to 5.625 kHz", "+3.2 kHz", "+19.6 dB"], ["5.625 to 12.5 kHz", "+12.5 kHz", "-9.4 dB"]]
+                .map(|row| row.map(str::to_owned).to_vec())
+                .to_vec(),
+        }],
         facts: vec![
             facts("Stage", &[("frequency", "169.4 MHz"), ("feed", "8.2 nH, 50 mohm"), ("drain capacitance", "60 pF"), ("energy residual", "2.1e-14")]),
             facts("Map", &[("points", "201"), ("control", "0 V to 6 V"), ("largest phase step", "0.4 deg")]),

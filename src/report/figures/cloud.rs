@@ -1,6 +1,7 @@
 //! Output amplitude over wanted amplitude as a two-dimensional density: the AM-AM cloud.
 
-use crate::report::picture::{AxisSpec, Cell, Chart, Curve, Figure, Panel};
+use crate::report::palette::Role;
+use crate::report::picture::{AxisSpec, Cell, Chart, Curve, Dash, Figure, Panel};
 
 /// Columns and rows of the raster.
 const COLUMNS: usize = 80;
@@ -35,6 +36,10 @@ impl CloudFigure {
         if !self.line.is_empty() {
             let mut curve = Curve::numbered(1, &self.line_name, self.line.clone());
             curve.width = 1.8;
+            // A rim of paper keeps the line apart from the cells.
+            let mut rim = Curve::numbered(1, "", self.line.clone());
+            (rim.role, rim.width, rim.dash) = (Role::Paper, 5.0, Dash::Solid);
+            panel.curves.push(rim);
             panel.curves.push(curve);
         }
         let description = format!(

@@ -1,9 +1,11 @@
 //! Spectrum over offset, against masks, with the worst point marked.
 
 use super::mask::MaskLine;
+use crate::metrics::Spectrum;
 use crate::report::palette::Role;
 use crate::report::picture::{AxisSpec, Chart, Curve, Dash, Figure, Mark, Panel};
 use crate::report::text::{quantity, signed};
+use crate::units;
 
 /// Averaged spectra and the masks they are held against.
 #[derive(Debug, Clone, Default)]
@@ -31,6 +33,23 @@ pub struct SpectrumCurve {
     pub name: String,
     /// (offset from the carrier in hertz, level), offsets rising.
     pub points: Vec<(f64, f64)>,
+}
+
+impl SpectrumCurve {
+    /// The mean densities of `spectrum` as dBm in `resolution_hz`: `10 log10(density * resolution) + 30`.
+    /// Bins without power have no place on the picture.
+    pub fn in_dbm(name: impl Into<String>, spectrum: &Spectrum, resolution_hz: f64) -> Self {
+        let level = |density: &f64| units::dbm_from_watt(density * resolution_hz);
+        Self {
+            name: name.into(),
+            points: spectrum
+                .mean_w_per_hz
+                .iter()
+                .enumerate()
+                .map(|(bin, density)| (spectrum.offset_hz(bin), level(density)))
+                .collect(),
+        }
+    }
 }
 
 /// A point where the margin is smallest.
@@ -152,5 +171,26 @@ impl SpectrumFigure {
             .reduce(f64::min)
             .unwrap_or(f64::INFINITY);
         Some((highest - 90.0).min(lowest_mask - 20.0))
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn densities_become_levels_in_the_resolution() {
+        let spectrum = Spectrum {
+            bin_hz: 10.0,
+            enbw_hz: 15.0,
+            mean_w_per_hz: vec![0.0, 1e-5, 1e-8],
+            peak_w_per_hz: None,
+            segments: 1,
+        };
+        let curve = SpectrumCurve::in_dbm("output", &spectrum, 100.0);
+        // 1e-5 W/Hz in 100 Hz is 1 mW.
+        assert_eq!(curve.points[0], (-10.0, f64::NEG_INFINITY));
+        assert!((curve.points[1].1 - 0.0).abs() < 1e-12 && curve.points[1].0 == 0.0);
+        assert!((curve.points[2].1 + 30.0).abs() < 1e-12);
     }
 }

@@ -5,7 +5,7 @@ use crate::report::cautions::CAUTIONS;
 use crate::report::error::ReportError;
 use crate::report::palette::{self, Role};
 use crate::report::picture;
-use crate::report::text::escape;
+use crate::report::text::{escape, keep_units};
 
 const STYLE: &str = include_str!("page.css");
 
@@ -21,7 +21,10 @@ pub(super) fn page(page: &Page) -> Result<String, ReportError> {
         style()
     );
     if !page.subtitle.is_empty() {
-        html += &format!("<p class=\"subtitle\">{}</p>\n", escape(&page.subtitle));
+        html += &format!(
+            "<p class=\"subtitle\">{}</p>\n",
+            escape(&keep_units(&page.subtitle))
+        );
     }
     if let Some(headline) = &page.headline {
         html += &parts::headline(headline);
@@ -35,6 +38,7 @@ pub(super) fn page(page: &Page) -> Result<String, ReportError> {
     html += &parts::checks(&page.checks);
     html += &parts::key_figures(&page.key_figures);
     html += &parts::figures(&page.figures)?;
+    html += &parts::tables(&page.tables);
     html += &parts::facts(&page.facts);
     html += &parts::list(
         "model",

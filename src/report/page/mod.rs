@@ -8,6 +8,7 @@ mod parts;
 
 use super::error::ReportError;
 use super::picture::Figure;
+use super::table::Align;
 
 /// Everything a report says.
 #[derive(Debug, Clone, Default)]
@@ -26,6 +27,8 @@ pub struct Page {
     pub key_figures: Vec<KeyFigure>,
     /// Pictures with captions, in order.
     pub figures: Vec<CaptionedFigure>,
+    /// Further tables, such as the margin of every mask segment.
+    pub tables: Vec<DataTable>,
     /// Facts about stage, map, signal, scheme.
     pub facts: Vec<FactGroup>,
     /// What the model leaves out.
@@ -111,6 +114,17 @@ pub struct CaptionedFigure {
     pub figure: Figure,
     /// What to see in it.
     pub caption: String,
+}
+
+/// A table with a heading and a header row.
+#[derive(Debug, Clone, Default)]
+pub struct DataTable {
+    /// `Mask segments`
+    pub title: String,
+    /// Headers, with the side on which the columns are aligned; the first column names the row.
+    pub columns: Vec<(String, Align)>,
+    /// Cells; missing ones stay empty, those beyond the last column are left out.
+    pub rows: Vec<Vec<String>>,
 }
 
 /// Names and values under one heading.

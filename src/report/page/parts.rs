@@ -2,8 +2,9 @@
 
 use std::fmt::Write as _;
 
-use super::{CaptionedFigure, CheckRow, Conditions, FactGroup, Headline, KeyFigure};
+use super::{CaptionedFigure, CheckRow, Conditions, DataTable, FactGroup, Headline, KeyFigure};
 use crate::report::error::ReportError;
+use crate::report::table::Align;
 use crate::report::text::{escape, escape_lines, keep_units};
 
 /// Margins beyond this many dB reach the end of the gauge.
@@ -77,7 +78,10 @@ pub(super) fn checks(checks: &[CheckRow]) -> String {
         let reason = if check.reason.is_empty() {
             String::new()
         } else {
-            format!("<span class=\"reason\">{}</span>", escape(&check.reason))
+            format!(
+                "<span class=\"reason\">{}</span>",
+                escape(&keep_units(&check.reason))
+            )
         };
         let word = check.outcome.word();
         let _ = writeln!(
@@ -87,7 +91,7 @@ pub(super) fn checks(checks: &[CheckRow]) -> String {
              <td role=\"cell\" data-label=\"Found\">{}</td>\
              <td role=\"cell\" data-label=\"Allowed\">{}</td>\
              <td role=\"cell\" data-label=\"Margin\">{}</td></tr>",
-            escape(&check.name),
+            escape(&keep_units(&check.name)),
             or_dash(&check.found),
             or_dash(&check.allowed),
             margin(check.margin_db),
@@ -163,6 +167,55 @@ pub(super) fn figures(figures: &[CaptionedFigure]) -> Result<String, ReportError
     Ok(html)
 }
 
+/// Further tables, each with its heading.
+pub(super) fn tables(tables: &[DataTable]) -> String {
+    let mut html = String::new();
+    for (index, table) in tables.iter().enumerate() {
+        let side = |align: Align| match align {
+            Align::Left => "",
+            Align::Right => " class=\"right\"",
+        };
+        let _ = write!(
+            html,
+            "<section aria-labelledby=\"table{index}\">\n<h2 id=\"table{index}\">{}</h2>\n\
+             <table role=\"table\" class=\"data\" aria-labelledby=\"table{index}\">\n\
+             <thead role=\"rowgroup\">\n<tr role=\"row\">",
+            escape(&table.title)
+        );
+        for (header, align) in &table.columns {
+            let _ = write!(
+                html,
+                "<th role=\"columnheader\" scope=\"col\"{}>{}</th>",
+                side(*align),
+                escape(header)
+            );
+        }
+        html += "</tr>\n</thead>\n<tbody role=\"rowgroup\">\n";
+        for row in &table.rows {
+            html += "<tr role=\"row\">";
+            for (column, (header, align)) in table.columns.iter().enumerate() {
+                let cell = escape(row.get(column).map_or("", String::as_str));
+                let side = side(*align);
+                let _ = if column == 0 {
+                    write!(
+                        html,
+                        "<th role=\"rowheader\" scope=\"row\"{side}>{cell}</th>"
+                    )
+                } else {
+                    let header = escape(header);
+                    write!(
+                        html,
+                        "<td role=\"cell\" data-label=\"{header}\"{side}>{cell}</td>"
+                    )
+                };
+            }
+            html += "</tr>\n";
+        }
+        html += "</tbody>\n</table>\n</section>\n";
+    }
+    html
+}
+
 /// Groups of names and values.
 pub(super) fn facts(groups: &[FactGroup]) -> String {
     if groups.is_empty() {
@@ -212,7 +265,7 @@ pub(super) fn conditions(conditions: &Conditions) -> String {
         let name = escape(name);
         let _ = writeln!(
             html,
-            "<h3>{name}</h3>\n<pre class=\"input\" tabindex=\"0\" aria-label=\"{name}\">{}</pre>",
+            "<h3>{name}</h3>\n<pre class=\"input\" role=\"region\" tabindex=\"0\" aria-label=\"{name}\">{}</pre>",
             escape_lines(text)
         );
     }

@@ -166,7 +166,11 @@ impl Axis {
     pub(crate) fn ticks(&self, most: usize) -> Vec<Tick> {
         let most = most.max(2);
         match self.spread {
-            Spread::Linear => self.even_ticks(most),
+            // Coarse round steps may leave one round value or none: then finer ones.
+            Spread::Linear => (most..=most.max(5))
+                .map(|most| self.even_ticks(most))
+                .find(|ticks| ticks.len() > 1)
+                .unwrap_or_default(),
             Spread::Decades => self.decade_ticks(most),
         }
     }
@@ -175,7 +179,6 @@ impl Axis {
         let (low, high) = (self.low / self.unit_size, self.high / self.unit_size);
         let step = round_step((high - low) / most as f64);
         let decimals = (-(step.log10() + 1e-9).floor()).max(0.0) as usize;
-        // 2.5 needs one digit more than its decade says; steps here are 1, 2 or 5.
         let first = (low / step - 1e-9).ceil();
         (0..=most + 1)
             .map(|index| (first + index as f64) * step)
@@ -295,7 +298,7 @@ mod tests {
             let axis = Axis::fit(&spec, values.iter().copied(), 0.05);
             prop_assert!(axis.low < axis.high);
             let ticks = axis.ticks(most);
-            prop_assert!(!ticks.is_empty() && ticks.len() <= most + 2, "{ticks:?}");
+            prop_assert!(ticks.len() > 1 && ticks.len() <= most.max(3) + 2, "{ticks:?}");
             for tick in &ticks {
                 let share = axis.share(tick.value).unwrap();
                 prop_assert!((-1e-6..=1.0 + 1e-6).contains(&share), "{tick:?} in {axis:?}");

@@ -11,11 +11,13 @@ use plotters::style::FontStyle;
 /// The name under which plotters knows the built-in font.
 pub(crate) const FAMILY: &str = "quietedge";
 
-/// Share by which a browser's font may be wider than the built-in one (measured against wide
-/// sans-serif faces of this kind: about 1.17 on digits and lower case).
+/// Share by which a browser's font may be wider than the built-in one. Labels of the figures, measured
+/// in a browser: 1.11 to 1.18 in DejaVu Sans, the widest common sans-serif face, 0.97 to 1.05 in
+/// Liberation Sans.
 pub(crate) const RESERVE: f64 = 1.2;
 
-/// How much wider bold letters are.
+/// How much wider bold letters are; with [`RESERVE`] 1.34. Measured as above: 1.23 to 1.31 in
+/// DejaVu Sans Bold.
 const BOLD: f64 = 1.12;
 
 /// Height of the built-in font (ascent less descent) over its em.

@@ -83,6 +83,8 @@ pub(crate) fn draw(
         let middle = y - size * 0.35;
         match *swatch {
             Swatch::Line { role, width, dash } => {
+                // Thin lines are hard to tell apart in so short a piece.
+                let width = width.max(2.0);
                 canvas.line(vec![(x, middle), (x + SWATCH, middle)], role, width, dash)
             }
             Swatch::Fill { role, opacity } => {

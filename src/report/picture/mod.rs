@@ -8,6 +8,7 @@ mod font;
 mod label;
 mod layout;
 mod legend;
+mod plot;
 mod png;
 mod svg;
 mod thin;
