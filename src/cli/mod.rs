@@ -1,10 +1,14 @@
 //! The command line: the only module that opens files, reads the environment or prints.
 
+mod arguments;
+mod check;
 mod console;
 mod disk;
 mod limits;
+mod map;
 mod output;
 mod signal;
+mod solve;
 
 use std::ffi::OsString;
 use std::process::ExitCode;
@@ -40,6 +44,9 @@ pub struct Common {
 
 #[derive(Debug, Subcommand)]
 enum Command {
+    Check(check::Arguments),
+    Solve(solve::Arguments),
+    Map(map::Arguments),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
 }
@@ -61,6 +68,9 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
     };
     let console = Console::new(&arguments.common);
     let result = match arguments.command {
+        Command::Check(arguments) => check::run(&arguments, &console),
+        Command::Solve(arguments) => solve::run(&arguments, &console),
+        Command::Map(arguments) => map::run(&arguments, &console),
         Command::Signal(arguments) => signal::run(&arguments, &console),
         Command::Limits(arguments) => limits::run(&arguments, &console),
     };

@@ -48,6 +48,23 @@ impl OutputFolder {
         Ok(output)
     }
 
+    /// As [`OutputFolder::claim`] for the folder that `options` names, if any.
+    ///
+    /// # Errors
+    /// As [`OutputFolder::claim`].
+    pub fn claim_option(options: &OutputOptions, names: &[&str]) -> Result<Option<Self>, Failure> {
+        options
+            .out
+            .as_deref()
+            .map(|folder| Self::claim(folder, options.force, names))
+            .transpose()
+    }
+
+    /// How to show the folder in messages.
+    pub fn display(&self) -> std::path::Display<'_> {
+        self.folder.display()
+    }
+
     fn refuse_existing(&self, name: &str) -> Result<(), Failure> {
         let path = self.folder.join(name);
         if !self.force && path.exists() {

@@ -180,6 +180,11 @@ impl Map {
         ))
     }
 
+    /// Output phase at `control`, rad, without jumps of a turn; `None` outside the domain.
+    pub fn phase_at_rad(&self, control: f64) -> Option<f64> {
+        self.phase_rad.at(control)
+    }
+
     /// Output phasor at `control` held within the domain, and whether it had to be held.
     pub fn output_held_v(&self, control: f64) -> (Complex64, bool) {
         let (amplitude_v, held) = self.amplitude_v.at_held(control);

@@ -10,11 +10,14 @@
 //! ```
 
 pub mod cautions;
+pub mod check;
+pub mod documents;
 mod error;
 pub mod figures;
 pub mod page;
 pub mod palette;
 pub mod picture;
+pub mod stage;
 pub mod table;
 mod text;
 

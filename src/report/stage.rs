@@ -1,0 +1,189 @@
+//! Orbits and maps as text and pictures.
+
+use super::figures::{MapFigure, Quantity, WaveformFigure};
+use super::picture::Figure;
+use super::table::{Align, Table};
+use super::text::quantity;
+use crate::map::{Control, Map};
+use crate::orbit::{Orbit, Waveform};
+use crate::stage::Stage;
+use crate::units;
+
+/// What an engineer asks of one orbit, in rows of name, value and remark.
+pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
+    let row = |name: &str, value: String, remark: String| [name.to_owned(), value, remark];
+    let percent = |watt: f64| format!("{:.2} % of the supply power", 100.0 * watt / orbit.supply_w);
+    let lost = |name: &str, watt: f64| row(name, quantity(watt, "W", 4), percent(watt));
+    let mut rows = vec![
+        row(
+            "output power",
+            quantity(orbit.output_w, "W", 4),
+            format!("{:.2} dBm", units::dbm_from_watt(orbit.output_w)),
+        ),
+        row(
+            "output phasor",
+            quantity(orbit.output_v.norm(), "V", 4),
+            format!("peak, at {:.2} deg", orbit.output_v.arg().to_degrees()),
+        ),
+        row("supply", quantity(orbit.supply_v, "V", 4), quantity(orbit.supply_a, "A", 4)),
+        row(
+            "efficiency",
+            format!("{:.2} %", 100.0 * orbit.efficiency),
+            "output over supply power; no driver power in this model".to_owned(),
+        ),
+        lost("lost in closed switch", orbit.losses.closed_switch),
+        lost("lost in open switch", orbit.losses.open_switch),
+        lost("lost in feed", orbit.losses.feed),
+        lost("lost in ladder", orbit.losses.ladder),
+        lost("harmonics in load", orbit.losses.harmonics),
+        row(
+            "peak drain voltage",
+            quantity(orbit.switch_peak_v, "V", 4),
+            format!("{:.3} times the supply", orbit.switch_peak_v / orbit.supply_v),
+        ),
+        row(
+            "lowest drain voltage",
+            quantity(orbit.switch_min_v, "V", 4),
+            "a diode would conduct below about -0.7 V".to_owned(),
+        ),
+        row(
+            "peak switch current",
+            quantity(orbit.switch_peak_a, "A", 4),
+            format!("{:.3} times the supply current", orbit.switch_peak_a / orbit.supply_a),
+        ),
+        row(
+            "drain at closing",
+            quantity(orbit.closing_v, "V", 4),
+            format!(
+                "slope {} a period",
+                quantity(orbit.closing_slope_v_per_s * stage.period_s(), "V", 3)
+            ),
+        ),
+    ];
+    for (index, level) in orbit.harmonics_dbc.iter().enumerate() {
+        rows.push(row(&format!("harmonic {}", index + 2), format!("{level:.1} dBc"), String::new()));
+    }
+    rows.push(row(
+        "energy residual",
+        format!("{:.1e}", orbit.energy_residual),
+        "of the supply power".to_owned(),
+    ));
+    rows
+}
+
+/// One orbit for the terminal.
+pub fn orbit_text(stage: &Stage, orbit: &Orbit) -> String {
+    let mut table = Table::new([("", Align::Left), ("", Align::Right), ("", Align::Left)]);
+    for row in orbit_rows(stage, orbit) {
+        table.row(row);
+    }
+    format!(
+        "{}: {}, closed {:.1} % of the period, into {}\n\n{}",
+        stage.title,
+        quantity(stage.frequency_hz, "Hz", 6),
+        100.0 * orbit.drive.duty(),
+        quantity(stage.load.ohm, "ohm", 4),
+        table.text()
+    )
+}
+
+/// One period as a picture.
+pub fn waveform_figure(stage: &Stage, waveform: &Waveform) -> Figure {
+    WaveformFigure {
+        title: format!("{} at {}", stage.title, quantity(stage.supply_v, "V", 4)),
+        time_s: waveform.time_s.clone(),
+        drain_v: waveform.drain_v.clone(),
+        switch_a: waveform.switch_a.clone(),
+        load_v: waveform.load_v.clone(),
+        closed_s: vec![waveform.closed_s],
+        peak_drain: None,
+        peak_current: None,
+    }
+    .figure()
+}
+
+/// The control's axis.
+pub fn control_quantity(control: Control) -> Quantity {
+    match control {
+        Control::Supply => Quantity::new("supply", "V"),
+        Control::Width => Quantity::new("closed part of the period", ""),
+    }
+}
+
+/// Phases of a map's points in degrees, following each other within half a turn.
+pub fn phases_deg(map: &Map) -> Vec<f64> {
+    map.points()
+        .iter()
+        .map(|point| map.phase_at_rad(point.control).map_or(f64::NAN, f64::to_degrees))
+        .collect()
+}
+
+/// A map as a picture.
+pub fn map_figure(title: &str, map: &Map) -> Figure {
+    let points = map.points();
+    let known = |value: fn(&crate::map::MapPoint) -> Option<f64>| {
+        points.iter().map(value).collect::<Option<Vec<f64>>>().unwrap_or_default()
+    };
+    MapFigure {
+        title: title.to_owned(),
+        control: control_quantity(map.control()),
+        control_values: points.iter().map(|point| point.control).collect(),
+        amplitude_v: points.iter().map(|point| point.output_v.norm()).collect(),
+        phase_deg: phases_deg(map),
+        efficiency: known(|point| point.efficiency),
+        switch_peak_v: known(|point| point.switch_peak_v),
+    }
+    .figure()
+}
+
+/// How many rows of a map the terminal shows.
+const TEXT_ROWS: usize = 21;
+
+/// A map for the terminal: evenly chosen rows.
+pub fn map_text(title: &str, map: &Map) -> String {
+    let columns = [
+        map.control().name(),
+        "amplitude",
+        "phase",
+        "power",
+        "current",
+        "efficiency",
+        "peak drain",
+        "at closing",
+    ];
+    let mut table = Table::new(columns.map(|name| (name, Align::Right)));
+    let phases = phases_deg(map);
+    let points = map.points();
+    let shown = points.len().min(TEXT_ROWS);
+    for row in 0..shown {
+        let index = row * (points.len() - 1) / (shown - 1).max(1);
+        let point = &points[index];
+        let optional = |value: Option<f64>, unit: &str| {
+            value.map_or("-".to_owned(), |value| quantity(value, unit, 4))
+        };
+        table.row([
+            quantity(point.control, map.control().unit(), 4),
+            quantity(point.output_v.norm(), "V", 4),
+            format!("{:.2} deg", phases[index]),
+            quantity(point.output_v.norm_sqr() / (2.0 * map.load_ohm()), "W", 4),
+            optional(point.supply_a, "A"),
+            point.efficiency.map_or("-".to_owned(), |e| format!("{:.2} %", 100.0 * e)),
+            optional(point.switch_peak_v, "V"),
+            optional(point.closing_v, "V"),
+        ]);
+    }
+    let monotone = match map.turns_at() {
+        None => "the amplitude rises all the way: the map has an inverse".to_owned(),
+        Some(control) => format!(
+            "the amplitude stops rising at {}: no inverse from there on",
+            quantity(control, map.control().unit(), 4)
+        ),
+    };
+    format!(
+        "{title}: {} of {} points over {}\n{monotone}\n\n{}",
+        shown,
+        points.len(),
+        map.describe(),
+        table.text()
+    )
+}
