@@ -237,7 +237,13 @@ pub fn show(value: f64, unit: &str, digits: usize) -> String {
         return format!("{value} {unit}").trim_end().to_owned();
     }
     const PREFIXES: [&str; 10] = ["f", "p", "n", "u", "m", "", "k", "M", "G", "T"];
-    let digits = digits.max(1) as i32;
+    let digits = digits.clamp(1, 17) as i32;
+    // What no prefix can shorten is left to scientific notation.
+    if !(1e-24..1e24).contains(&value.abs()) {
+        return format!("{value:.*e} {unit}", digits as usize - 1)
+            .trim_end()
+            .to_owned();
+    }
     // Round first: 999.96 at four digits is 1.000 k.
     let exponent = value.abs().log10().floor() as i32;
     let quantum = 10f64.powi((exponent - digits + 1).max(-300));
@@ -338,6 +344,8 @@ mod tests {
             (-0.25, "A", "-250 mA"),
             (0.123_456, "", "0.1235"),
             (1e-21, "F", "0.000001 fF"),
+            (3.3e-310, "W", "3.300e-310 W"),
+            (-5e30, "V", "-5.000e30 V"),
         ] {
             assert_eq!(show(value, unit, 4), text);
         }

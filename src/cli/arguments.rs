@@ -7,7 +7,11 @@ pub fn quantity(
     dimension: Dimension,
 ) -> impl Fn(&str) -> Result<f64, String> + Clone + Send + Sync + 'static {
     move |text| {
-        units::parse(text, dimension)
-            .map_err(|error| format!("{error}; allowed: {dimension}, such as {}", dimension.example()))
+        units::parse(text, dimension).map_err(|error| {
+            format!(
+                "{error}; allowed: {dimension}, such as {}",
+                dimension.example()
+            )
+        })
     }
 }

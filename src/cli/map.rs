@@ -74,7 +74,8 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     };
     let from = end(&arguments.from, "--from", full.values[0])?;
     let to = end(&arguments.to, "--to", full.values[full.values.len() - 1])?;
-    let map = Sweep::even(&network, control, from, to, arguments.points as usize)?.solve(&network)?;
+    let map =
+        Sweep::even(&network, control, from, to, arguments.points as usize)?.solve(&network)?;
     let document = map_document(&stage.title, &map);
     console.print(&map_text(&stage.title, &map))?;
     console.print_json(&document)?;
@@ -84,7 +85,11 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
         folder.write(names[1], &serde_json::to_vec_pretty(&document)?)?;
         folder.write(names[2], figure.svg()?.as_bytes())?;
         folder.write(names[3], &figure.png()?)?;
-        console.remark(&format!("wrote {} into {}", names.join(", "), folder.display()));
+        console.remark(&format!(
+            "wrote {} into {}",
+            names.join(", "),
+            folder.display()
+        ));
     }
     Ok(Ending::Within)
 }

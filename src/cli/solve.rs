@@ -63,7 +63,9 @@ impl Changes {
             if value > 0.0 {
                 Ok(value)
             } else {
-                Err(Failure::new(format!("{option}: given {value}; allowed: more than 0")))
+                Err(Failure::new(format!(
+                    "{option}: given {value}; allowed: more than 0"
+                )))
             }
         };
         if let Some(supply_v) = self.supply {
@@ -105,7 +107,11 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
         folder.write(names[0], figure.svg()?.as_bytes())?;
         folder.write(names[1], &figure.png()?)?;
         folder.write(names[2], &serde_json::to_vec_pretty(&document)?)?;
-        console.remark(&format!("wrote {} into {}", names.join(", "), folder.display()));
+        console.remark(&format!(
+            "wrote {} into {}",
+            names.join(", "),
+            folder.display()
+        ));
     }
     Ok(Ending::Within)
 }

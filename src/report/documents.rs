@@ -44,7 +44,10 @@ struct Phasor {
 
 impl Orbit {
     fn output_v_parts(&self) -> impl Serialize + use<> {
-        Phasor { re: self.output_v.re, im: self.output_v.im }
+        Phasor {
+            re: self.output_v.re,
+            im: self.output_v.im,
+        }
     }
 }
 

@@ -25,7 +25,11 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
             quantity(orbit.output_v.norm(), "V", 4),
             format!("peak, at {:.2} deg", orbit.output_v.arg().to_degrees()),
         ),
-        row("supply", quantity(orbit.supply_v, "V", 4), quantity(orbit.supply_a, "A", 4)),
+        row(
+            "supply",
+            quantity(orbit.supply_v, "V", 4),
+            quantity(orbit.supply_a, "A", 4),
+        ),
         row(
             "efficiency",
             format!("{:.2} %", 100.0 * orbit.efficiency),
@@ -39,7 +43,10 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         row(
             "peak drain voltage",
             quantity(orbit.switch_peak_v, "V", 4),
-            format!("{:.3} times the supply", orbit.switch_peak_v / orbit.supply_v),
+            format!(
+                "{:.3} times the supply",
+                orbit.switch_peak_v / orbit.supply_v
+            ),
         ),
         row(
             "lowest drain voltage",
@@ -49,7 +56,10 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         row(
             "peak switch current",
             quantity(orbit.switch_peak_a, "A", 4),
-            format!("{:.3} times the supply current", orbit.switch_peak_a / orbit.supply_a),
+            format!(
+                "{:.3} times the supply current",
+                orbit.switch_peak_a / orbit.supply_a
+            ),
         ),
         row(
             "drain at closing",
@@ -61,7 +71,11 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         ),
     ];
     for (index, level) in orbit.harmonics_dbc.iter().enumerate() {
-        rows.push(row(&format!("harmonic {}", index + 2), format!("{level:.1} dBc"), String::new()));
+        rows.push(row(
+            &format!("harmonic {}", index + 2),
+            format!("{level:.1} dBc"),
+            String::new(),
+        ));
     }
     rows.push(row(
         "energy residual",
@@ -114,7 +128,10 @@ pub fn control_quantity(control: Control) -> Quantity {
 pub fn phases_deg(map: &Map) -> Vec<f64> {
     map.points()
         .iter()
-        .map(|point| map.phase_at_rad(point.control).map_or(f64::NAN, f64::to_degrees))
+        .map(|point| {
+            map.phase_at_rad(point.control)
+                .map_or(f64::NAN, f64::to_degrees)
+        })
         .collect()
 }
 
@@ -122,7 +139,11 @@ pub fn phases_deg(map: &Map) -> Vec<f64> {
 pub fn map_figure(title: &str, map: &Map) -> Figure {
     let points = map.points();
     let known = |value: fn(&crate::map::MapPoint) -> Option<f64>| {
-        points.iter().map(value).collect::<Option<Vec<f64>>>().unwrap_or_default()
+        points
+            .iter()
+            .map(value)
+            .collect::<Option<Vec<f64>>>()
+            .unwrap_or_default()
     };
     MapFigure {
         title: title.to_owned(),
@@ -167,7 +188,9 @@ pub fn map_text(title: &str, map: &Map) -> String {
             format!("{:.2} deg", phases[index]),
             quantity(point.output_v.norm_sqr() / (2.0 * map.load_ohm()), "W", 4),
             optional(point.supply_a, "A"),
-            point.efficiency.map_or("-".to_owned(), |e| format!("{:.2} %", 100.0 * e)),
+            point
+                .efficiency
+                .map_or("-".to_owned(), |e| format!("{:.2} %", 100.0 * e)),
             optional(point.switch_peak_v, "V"),
             optional(point.closing_v, "V"),
         ]);

@@ -18,6 +18,8 @@ pub struct Study {
     pub note: Option<String>,
     /// What transmits.
     pub hardware: Hardware,
+    /// The file that it came from, relative to the study.
+    pub hardware_file: String,
     /// What is transmitted.
     pub signal: SignalChoice,
     /// How it moves the controls.
@@ -108,10 +110,16 @@ impl Study {
             Some(section) => spectrum_settings(section)?,
             None => (Window::BlackmanHarris, None),
         };
+        let hardware = hardware(&root, files)?;
         let study = Self {
             title: root.maybe_text("title")?.unwrap_or(name).to_owned(),
             note: root.maybe_text("note")?.map(str::to_owned),
-            hardware: hardware(&root, files)?,
+            hardware_file: if root.has("stage") {
+                root.text("stage")?.to_owned()
+            } else {
+                map_choice(&root)?.0.to_owned()
+            },
+            hardware,
             signal: signal_choice(&signal)?,
             scheme: Scheme::read(&scheme)?,
             limits: match root.maybe_section("limits")? {

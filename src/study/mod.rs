@@ -1,5 +1,6 @@
 //! One study from file to verdict.
 
+mod built_in;
 mod check;
 mod error;
 mod load;
@@ -7,6 +8,7 @@ mod result;
 mod run;
 mod warning;
 
+pub use built_in::{BuiltIn, DEFAULT_STUDY};
 pub use check::check;
 pub use error::StudyError;
 pub use load::{Hardware, SignalChoice, Study};

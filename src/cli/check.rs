@@ -1,0 +1,134 @@
+//! `quietedge check`: the main job.
+
+use std::path::{Path, PathBuf};
+
+use super::{Console, Disk, Ending, Failure, OutputFolder, OutputOptions};
+use crate::input::Files;
+use crate::report::check::{Request, page, spectrum_figure, text};
+use crate::report::documents::{check_document, map_csv};
+use crate::signal;
+use crate::study::{BuiltIn, CheckResult, DEFAULT_STUDY, Study, StudyError, check};
+use crate::verdict::Outcome;
+
+/// Carry out a study: does the output meet its limits? Exit code 0 within, 1 outside, 2 undecided
+#[derive(Debug, clap::Args)]
+#[command(after_help = "Examples:
+  quietedge check                                 the built-in study; the report goes to quietedge-report/
+  quietedge check my.study.toml --out report      report.html, result.json, spectrum.png, map.csv
+  quietedge check my.study.toml --json | jq .verdict.outcome")]
+pub struct Arguments {
+    /// Study file (TOML); the built-in one where absent
+    study: Option<PathBuf>,
+
+    #[command(flatten)]
+    output: OutputOptions,
+}
+
+/// Where the report of the built-in study goes without `--out`; made anew each time.
+const BUILT_IN_FOLDER: &str = "quietedge-report";
+
+const NAMES: [&str; 4] = ["report.html", "result.json", "spectrum.png", "map.csv"];
+
+/// Parts of the progress bar.
+const STEPS: u64 = 1000;
+
+/// Runs the command.
+///
+/// # Errors
+/// A study that cannot be read or carried out; files that cannot be written.
+pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> {
+    let folder = match (&arguments.study, &arguments.output.out) {
+        (None, None) => Some(OutputFolder::claim(
+            Path::new(BUILT_IN_FOLDER),
+            true,
+            &NAMES,
+        )?),
+        _ => OutputFolder::claim_option(&arguments.output, &NAMES)?,
+    };
+    let (name, files): (String, Box<dyn Files>) = match &arguments.study {
+        None => (DEFAULT_STUDY.to_owned(), Box::new(BuiltIn)),
+        Some(path) => {
+            let name = path
+                .file_name()
+                .unwrap_or_default()
+                .to_string_lossy()
+                .into_owned();
+            (name, Box::new(Disk::beside(path)))
+        }
+    };
+    let study = Study::read(&name, &*files)?;
+    let result = carry_out(&study, &*files, console)?;
+    console.print(&text(&result))?;
+    console.print_json(&check_document(&result))?;
+    if let Some(folder) = folder {
+        let request = Request {
+            command: command_line(arguments),
+            inputs: inputs(&study, &*files),
+        };
+        write(&folder, &result, &request)?;
+        let report = folder.path(NAMES[0]);
+        console.remark(&format!("the report is in {}", report.display()));
+    }
+    let outcome = result.judgement.verdict.outcome;
+    if outcome == Outcome::Undecided {
+        let reasons: Vec<&str> = result
+            .judgement
+            .verdict
+            .checks
+            .iter()
+            .filter(|check| check.outcome == Outcome::Undecided)
+            .map(|check| check.reason.as_str())
+            .collect();
+        return Err(Failure::new(format!("undecided: {}", reasons.join("; "))));
+    }
+    Ok(if outcome == Outcome::Within {
+        Ending::Within
+    } else {
+        Ending::Outside
+    })
+}
+
+fn carry_out(
+    study: &Study,
+    files: &dyn Files,
+    console: &Console,
+) -> Result<CheckResult, StudyError> {
+    let mut source = signal::open(files, &study.signal.file, &study.signal.options)?;
+    let bar = console.progress(STEPS, "checking");
+    let result = check(study, &mut *source, &mut |part| {
+        bar.set_position((part * STEPS as f64) as u64);
+    });
+    bar.finish_and_clear();
+    result
+}
+
+fn write(folder: &OutputFolder, result: &CheckResult, request: &Request) -> Result<(), Failure> {
+    folder.write(NAMES[0], page(result, request).html()?.as_bytes())?;
+    folder.write(
+        NAMES[1],
+        &serde_json::to_vec_pretty(&check_document(result))?,
+    )?;
+    folder.write(NAMES[2], &spectrum_figure(result).figure.png()?)?;
+    folder.write(
+        NAMES[3],
+        map_csv(&result.study.title, &result.map).as_bytes(),
+    )?;
+    Ok(())
+}
+
+fn command_line(arguments: &Arguments) -> String {
+    match &arguments.study {
+        None => "quietedge check".to_owned(),
+        Some(study) => format!("quietedge check {}", study.display()),
+    }
+}
+
+/// The text of the stage or map file that the study names.
+fn inputs(study: &Study, files: &dyn Files) -> Vec<(String, String)> {
+    let name = &study.hardware_file;
+    files
+        .text(name)
+        .into_iter()
+        .map(|text| (files.display(name), text))
+        .collect()
+}
