@@ -111,6 +111,16 @@ pub enum Detector {
     PeakHold,
 }
 
+impl Detector {
+    /// In words, for tables and reasons.
+    pub fn words(self) -> &'static str {
+        match self {
+            Self::Mean => "mean",
+            Self::PeakHold => "peak hold",
+        }
+    }
+}
+
 /// Where offset 0 is. In a baseband spectrum the first four are one place, its centre; they are kept
 /// apart because the documents name them.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, Serialize)]
@@ -126,6 +136,19 @@ pub enum Origin {
     CenterOfAuthorizedBandwidth,
     /// The edge of the channel, outwards.
     ChannelEdge,
+}
+
+impl Origin {
+    /// In words, for tables.
+    pub fn words(self) -> &'static str {
+        match self {
+            Self::Carrier => "the carrier",
+            Self::AssignedFrequency => "the assigned frequency",
+            Self::ChannelCenter => "the centre of the channel",
+            Self::CenterOfAuthorizedBandwidth => "the centre of the authorized bandwidth",
+            Self::ChannelEdge => "the edge of the channel, outwards",
+        }
+    }
 }
 
 /// Where the measuring filter may stand in its segment.

@@ -14,6 +14,7 @@ mod rows;
 mod set;
 #[cfg(test)]
 mod tests;
+mod words;
 
 pub use library::{Library, UnknownSet};
 pub use mask::{

@@ -24,6 +24,15 @@ enum Word {
 /// # Errors
 /// The first thing that is wrong, with its place.
 pub fn read_sets(file: &str, text: &str) -> Result<Vec<LimitSet>, Problem> {
+    read_sets_beside(file, text, |_| false)
+}
+
+/// As [`read_sets`], for a file whose sets may not take the names that are `taken`.
+pub(super) fn read_sets_beside(
+    file: &str,
+    text: &str,
+    taken: impl Fn(&str) -> bool,
+) -> Result<Vec<LimitSet>, Problem> {
     let document = Document::parse(file, text)?;
     let root = document.root();
     root.maybe_whole("schema", SCHEMA, SCHEMA)?;
@@ -35,7 +44,15 @@ pub fn read_sets(file: &str, text: &str) -> Result<Vec<LimitSet>, Problem> {
     }
     named
         .into_iter()
-        .map(|(name, section)| set(name, &section))
+        .map(|(name, section)| {
+            if taken(name) {
+                return Err(section.problem_here(
+                    format!("a set called \"{name}\""),
+                    "a name that no other set has",
+                ));
+            }
+            set(name, &section)
+        })
         .collect()
 }
 

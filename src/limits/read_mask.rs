@@ -96,7 +96,7 @@ pub(super) fn mask(section: &Section<'_>) -> Result<Mask, Problem> {
                     Corner::Hz(_) => "from_hz",
                     Corner::Fraction(_) => "from_frac",
                 };
-                return Err(rows[at].problem(
+                return Err(rows.get(at).unwrap_or(section).problem(
                     key,
                     format!(
                         "an offset outside segment {} ({}): segments must not overlap",

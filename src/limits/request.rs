@@ -51,7 +51,7 @@ pub struct Limits {
 
 /// A condition that a named set needs and the request does not state, or states wrongly.
 #[derive(Debug, Clone, PartialEq, Eq, thiserror::Error)]
-#[error("{key}: {allowed}")]
+#[error("{key} must be {allowed}{}", .nearest.as_ref().map(|near| format!("; did you mean \"{near}\"?")).unwrap_or_default())]
 pub struct Unmet {
     /// The key of the study's `[limits]`.
     pub key: &'static str,

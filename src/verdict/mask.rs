@@ -3,7 +3,7 @@
 use super::judge::{Gathered, Measured};
 use super::outcome::{MaskMargin, Outcome, Side, Unit};
 use super::reading::{Bands, Reader, level_dbm};
-use super::reference::{Level, detector_words, level};
+use super::reference::{Level, level};
 use super::wanted::bandwidth_hz;
 use crate::limits::{
     Adjacent, Applies, Combine, Conditions, Corner, Detector, LimitLevel, LimitSet, Mask,
@@ -331,7 +331,7 @@ impl MaskJudge<'_> {
             side.word(),
             show(worst.offset_hz, "Hz", 6),
             show(bandwidth_hz, "Hz", 4),
-            detector_words(self.mask.detector),
+            self.mask.detector.words(),
         )
     }
 }
