@@ -1,6 +1,7 @@
 //! A file of limit sets: the published ones and the user's own have one form.
 
-use super::read_mask::{mask, place_of_check};
+use super::consistent::hold;
+use super::read_mask::mask;
 use super::read_rows::{adjacent, modulation, signal, spurious};
 use super::set::{CheckPoint, Confidence, Kind, LimitSet, Obtained, Provenance};
 use crate::input::{Document, Problem, Range, Section};
@@ -85,7 +86,7 @@ fn set(name: &str, section: &Section<'_>) -> Result<LimitSet, Problem> {
             .iter()
             .map(|row| {
                 let check = check_point(row)?;
-                place_of_check(mask, &check, row)?;
+                hold(mask, &check, row)?;
                 Ok(check)
             })
             .collect::<Result<_, Problem>>()?,

@@ -2,8 +2,9 @@
 
 use std::fmt;
 
-use super::mask::{Combine, Corner, Segment, Term};
+use super::mask::{Corner, Segment};
 use super::rows::Applies;
+use super::terms::{Combine, Term};
 use crate::units::show;
 
 /// Frequencies to six digits.

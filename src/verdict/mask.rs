@@ -2,13 +2,10 @@
 
 use super::judge::{Gathered, Measured};
 use super::outcome::{MaskMargin, Outcome, Side, Unit};
-use super::reading::{Bands, Reader, level_dbm};
+use super::reading::{Bands, Reader, centres, level_dbm};
 use super::reference::{Level, level};
 use super::wanted::bandwidth_hz;
-use crate::limits::{
-    Adjacent, Applies, Combine, Conditions, Corner, Detector, LimitLevel, LimitSet, Mask,
-    NotStated, Origin, Placement, Reference, Segment, Term,
-};
+use crate::limits::{Conditions, LimitLevel, LimitSet, Mask, NotStated, Reference, Segment, Term};
 use crate::units::show;
 
 /// A fine spectrum coarser than this part of the measuring bandwidth smears what it reads.
@@ -45,33 +42,6 @@ enum Seen {
     Trivial,
 }
 
-/// The mask that a set of neighbouring channels puts beyond them, read in its widest row's bandwidth.
-pub(super) fn beyond_mask(adjacent: &Adjacent) -> Option<Mask> {
-    let (from_hz, term) = adjacent.beyond?;
-    let bw_hz = adjacent
-        .rows
-        .iter()
-        .map(|row| row.filter.bandwidth_hz())
-        .fold(0.0, f64::max);
-    Some(Mask {
-        reference: Reference::MeanPowerInChannel,
-        origin: Origin::ChannelCenter,
-        detector: Detector::Mean,
-        channel_hz: adjacent.channel_hz,
-        authorized_bandwidth_hz: None,
-        floor_dbm: adjacent.floor_dbm,
-        segments: vec![Segment {
-            from: Corner::Hz(from_hz),
-            to: None,
-            bw_hz,
-            placement: Placement::Centre,
-            combine: Combine::Single,
-            terms: vec![term],
-            applies: Applies::default(),
-        }],
-    })
-}
-
 impl MaskJudge<'_> {
     pub(super) fn run(&self, gathered: &mut Gathered) {
         let chosen = match self.mask.segments_for(self.class, &self.conditions) {
@@ -89,7 +59,8 @@ impl MaskJudge<'_> {
             });
             match self.segment(segment, continues, gathered) {
                 Ok(seen) => before = Some((segment, seen)),
-                Err(error) => self.undecided(gathered, self.set.name.clone(), error),
+                // What one segment misses, all do: it is said once.
+                Err(error) => return self.undecided(gathered, self.set.name.clone(), error),
             }
         }
     }
@@ -346,23 +317,6 @@ fn shown(worst: &Worst, reference_dbm: f64) -> (f64, f64, Unit) {
             (worst.level_dbm - reference_dbm, db, Unit::Decibel)
         }
         LimitLevel::Absolute { dbm } => (worst.level_dbm, dbm, Unit::Dbm),
-    }
-}
-
-/// The first and last centre of the measuring filter in a segment.
-pub(super) fn centres(
-    placement: Placement,
-    from_hz: f64,
-    to_hz: f64,
-    bandwidth_hz: f64,
-) -> (f64, f64) {
-    match placement {
-        Placement::Centre => (from_hz, to_hz),
-        Placement::Inside if to_hz - from_hz < bandwidth_hz => {
-            let middle_hz = (from_hz + to_hz) / 2.0;
-            (middle_hz, middle_hz)
-        }
-        Placement::Inside => (from_hz + bandwidth_hz / 2.0, to_hz - bandwidth_hz / 2.0),
     }
 }
 

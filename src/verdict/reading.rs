@@ -1,6 +1,6 @@
 //! Readings of a mask: power in a bandwidth that is swept over the offset.
 
-use crate::limits::Detector;
+use crate::limits::{Detector, Placement};
 use crate::metrics::Spectrum;
 use crate::units::dbm_from_watt;
 
@@ -194,5 +194,22 @@ impl<'a> Reader<'a> {
         std::iter::once(from_hz)
             .chain((0..count).map(move |at| (first + at as f64) * step_hz))
             .chain(std::iter::once(to_hz))
+    }
+}
+
+/// The first and last centre of the measuring filter in a segment.
+pub(super) fn centres(
+    placement: Placement,
+    from_hz: f64,
+    to_hz: f64,
+    bandwidth_hz: f64,
+) -> (f64, f64) {
+    match placement {
+        Placement::Centre => (from_hz, to_hz),
+        Placement::Inside if to_hz - from_hz < bandwidth_hz => {
+            let middle_hz = (from_hz + to_hz) / 2.0;
+            (middle_hz, middle_hz)
+        }
+        Placement::Inside => (from_hz + bandwidth_hz / 2.0, to_hz - bandwidth_hz / 2.0),
     }
 }
