@@ -298,3 +298,47 @@ fn edge_counts_from_30_khz_on_the_carrier() {
     );
     assert_eq!(check.obtained, Some(Obtained::Memory));
 }
+
+/// Printed by `tests/reference/mask_margins.py` (Python 3.11.7, NumPy 2.4.6): start of the segment,
+/// side, margin in dB, offset in Hz. It reads every eighth of a bin, the program every bin: the
+/// smallest margin may differ by what the smooth spectra change over half a bin, below 0.01 dB.
+#[test]
+fn margins_agree_with_brute_force() {
+    use Side::{Lower, Upper};
+    let fine = spectrum(8000, 20.0, 30.0, |hz| {
+        1e-3 * 10f64.powf(-(hz.abs() / 4e3).powf(1.2)) * (1.0 + 0.5 * (hz / 3e3).sin()) + 1e-9
+    });
+    let judgement = judge(
+        &measured(&fine, &[], fine.total_w()),
+        &limits(&["fcc_90_210_mask_c"]),
+    );
+    for (from_hz, side, margin_db, worst_hz) in [
+        (5e3, Lower, 17.3741, 10e3),
+        (5e3, Upper, 17.6765, 8721.0),
+        (10e3, Lower, 14.5600, 10e3),
+        (10e3, Upper, 15.3851, 10e3),
+    ] {
+        let margin = margin(&judgement, from_hz, side);
+        near(margin.margin_db, margin_db, 0.01);
+        near(margin.worst_hz, worst_hz, 40.0);
+    }
+    let fine = spectrum(4000, 25e3, 25e3, |hz| {
+        1e-9 * 10f64.powf(-(hz.abs() - 8e6).max(0.0) / 4e6) * (1.0 + 0.3 * (hz / 5e6).sin())
+    });
+    let judgement = judge(
+        &measured(&fine, &[], fine.total_w()),
+        &limits(&["ieee80211_ofdm20_mask"]),
+    );
+    for (from_hz, side, margin_db, worst_hz) in [
+        (9e6, Lower, -10.1547, 11e6),
+        (9e6, Upper, -12.3044, 11e6),
+        (11e6, Lower, -10.1547, 11e6),
+        (11e6, Upper, -12.3044, 11e6),
+        (20e6, Lower, 2.2502, 20e6),
+        (20e6, Upper, 4.2570, 20e6),
+    ] {
+        let margin = margin(&judgement, from_hz, side);
+        near(margin.margin_db, margin_db, 0.01);
+        near(margin.worst_hz, worst_hz, 25e3);
+    }
+}
