@@ -1,5 +1,6 @@
 //! Files that a command writes: whole or not at all, and never over others unasked.
 
+use std::fs::File;
 use std::io::Write;
 use std::path::{Path, PathBuf};
 
@@ -68,15 +69,33 @@ impl OutputFolder {
     /// # Errors
     /// As the file system; a file that appeared since the claim, without `force`.
     pub fn write(&self, name: &str, bytes: &[u8]) -> Result<PathBuf, Failure> {
+        self.write_with(name, |file| {
+            file.write_all(bytes).map_err(|error| {
+                Failure::new(format!(
+                    "cannot write {}: {error}",
+                    self.path(name).display()
+                ))
+            })
+        })
+    }
+
+    /// As [`OutputFolder::write`], with the bytes made by `make` one after the other.
+    ///
+    /// # Errors
+    /// As [`OutputFolder::write`], and the failure of `make`; nothing stays behind then.
+    pub fn write_with(
+        &self,
+        name: &str,
+        make: impl FnOnce(&mut File) -> Result<(), Failure>,
+    ) -> Result<PathBuf, Failure> {
         self.refuse_existing(name)?;
         let path = self.path(name);
         let failed = |error: &dyn std::fmt::Display| {
             Failure::new(format!("cannot write {}: {error}", path.display()))
         };
         let mut file = NamedTempFile::new_in(&self.folder).map_err(|error| failed(&error))?;
-        file.write_all(bytes)
-            .and_then(|()| file.flush())
-            .map_err(|error| failed(&error))?;
+        make(file.as_file_mut())?;
+        file.flush().map_err(|error| failed(&error))?;
         make_readable(&file).map_err(|error| failed(&error))?;
         if self.force {
             file.persist(&path).map_err(|error| failed(&error.error))?;

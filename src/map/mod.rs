@@ -1,1 +1,256 @@
-//! To be written.
+//! STEP 3: from a control to the output, forward and inverse: AM-AM and AM-PM.
+
+mod read;
+mod sweep;
+
+use num_complex::Complex64;
+
+use crate::math::monotone::{Curve, CurveError};
+use crate::units;
+
+pub use read::{MapFacts, MapFormat, read_map};
+pub use sweep::{Sweep, SweepError};
+
+/// What is moved.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Control {
+    /// Supply voltage, V.
+    Supply,
+    /// Closed fraction of the period.
+    Width,
+}
+
+impl Control {
+    /// The unit of its values, empty for a fraction.
+    pub fn unit(self) -> &'static str {
+        match self {
+            Self::Supply => "V",
+            Self::Width => "",
+        }
+    }
+
+    /// Its name in files and on the command line.
+    pub fn name(self) -> &'static str {
+        match self {
+            Self::Supply => "supply",
+            Self::Width => "width",
+        }
+    }
+}
+
+/// The stage at one value of the control. What a measured map does not know is absent.
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
+pub struct MapPoint {
+    /// V for supply, a fraction for width.
+    pub control: f64,
+    /// Phasor of the output, peak volts across the load resistance.
+    pub output_v: Complex64,
+    /// Supply, V.
+    pub supply_v: f64,
+    /// Mean supply current, A.
+    pub supply_a: Option<f64>,
+    /// Output power over supply and driver power.
+    pub efficiency: Option<f64>,
+    /// Highest drain voltage, V.
+    pub switch_peak_v: Option<f64>,
+    /// Highest switch current, A.
+    pub switch_peak_a: Option<f64>,
+    /// Lowest drain voltage, V.
+    pub switch_min_v: Option<f64>,
+    /// Drain voltage just before the switch closes, V.
+    pub closing_v: Option<f64>,
+}
+
+/// Where a map came from.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Origin {
+    /// Solved from a stage: stress and replay can be asked.
+    Stage,
+    /// Read from a file: only what the file holds is known.
+    File,
+}
+
+/// Output over a control, as curves that pass through every point and never leave their domain.
+#[derive(Debug, Clone)]
+pub struct Map {
+    control: Control,
+    origin: Origin,
+    frequency_hz: f64,
+    load_ohm: f64,
+    points: Vec<MapPoint>,
+    amplitude_v: Curve,
+    phase_rad: Curve,
+    supply_a: Option<Curve>,
+    switch_peak_v: Option<Curve>,
+}
+
+/// Why points make no map.
+#[derive(Debug, Clone, PartialEq, thiserror::Error)]
+pub enum MapError {
+    /// The points make no curve.
+    #[error("the map: {0}")]
+    Curve(#[from] CurveError),
+    /// Every output is zero.
+    #[error("the map: the output is zero at every point")]
+    Silent,
+}
+
+impl Map {
+    /// A map through `points`, sorted by strictly increasing control.
+    ///
+    /// The phase at a point without output is that of its nearest neighbour with output: a straight supply map
+    /// passes through zero without a kink.
+    ///
+    /// # Errors
+    /// [`MapError`].
+    pub fn new(
+        control: Control,
+        origin: Origin,
+        frequency_hz: f64,
+        load_ohm: f64,
+        points: Vec<MapPoint>,
+    ) -> Result<Self, MapError> {
+        let x: Vec<f64> = points.iter().map(|point| point.control).collect();
+        let amplitude: Vec<f64> = points.iter().map(|point| point.output_v.norm()).collect();
+        let phase = unwrapped(&points, &amplitude)?;
+        let optional = |value: fn(&MapPoint) -> Option<f64>| {
+            let values: Option<Vec<f64>> = points.iter().map(value).collect();
+            values
+                .map(|values| Curve::new(x.clone(), values))
+                .transpose()
+        };
+        Ok(Self {
+            control,
+            origin,
+            frequency_hz,
+            load_ohm,
+            amplitude_v: Curve::new(x.clone(), amplitude)?,
+            phase_rad: Curve::new(x.clone(), phase)?,
+            supply_a: optional(|point| point.supply_a)?,
+            switch_peak_v: optional(|point| point.switch_peak_v)?,
+            points,
+        })
+    }
+
+    /// What is moved.
+    pub fn control(&self) -> Control {
+        self.control
+    }
+
+    /// Where the map came from.
+    pub fn origin(&self) -> Origin {
+        self.origin
+    }
+
+    /// Carrier, Hz.
+    pub fn frequency_hz(&self) -> f64 {
+        self.frequency_hz
+    }
+
+    /// Load resistance, ohm.
+    pub fn load_ohm(&self) -> f64 {
+        self.load_ohm
+    }
+
+    /// The points it passes through.
+    pub fn points(&self) -> &[MapPoint] {
+        &self.points
+    }
+
+    /// Lowest and highest control.
+    pub fn domain(&self) -> (f64, f64) {
+        self.amplitude_v.domain()
+    }
+
+    /// The highest output amplitude of all points, V.
+    pub fn full_amplitude_v(&self) -> f64 {
+        self.points
+            .iter()
+            .map(|point| point.output_v.norm())
+            .fold(0.0, f64::max)
+    }
+
+    /// Output phasor at `control`, peak volts; `None` outside the domain.
+    pub fn output_v(&self, control: f64) -> Option<Complex64> {
+        Some(Complex64::from_polar(
+            self.amplitude_v.at(control)?,
+            self.phase_rad.at(control)?,
+        ))
+    }
+
+    /// Output phasor at `control` held within the domain, and whether it had to be held.
+    pub fn output_held_v(&self, control: f64) -> (Complex64, bool) {
+        let (amplitude_v, held) = self.amplitude_v.at_held(control);
+        let (phase_rad, _) = self.phase_rad.at_held(control);
+        (Complex64::from_polar(amplitude_v, phase_rad), held)
+    }
+
+    /// Supply current at `control` held within the domain, A, where the map knows it.
+    pub fn supply_held_a(&self, control: f64) -> Option<f64> {
+        self.supply_a.as_ref().map(|curve| curve.at_held(control).0)
+    }
+
+    /// Highest drain voltage at `control` held within the domain, V, where the map knows it.
+    pub fn switch_peak_held_v(&self, control: f64) -> Option<f64> {
+        self.switch_peak_v
+            .as_ref()
+            .map(|curve| curve.at_held(control).0)
+    }
+
+    /// The control that gives `amplitude_v`; `None` outside the range or where the map is not monotone.
+    pub fn inverse(&self, amplitude_v: f64) -> Option<f64> {
+        self.amplitude_v.inverse(amplitude_v)
+    }
+
+    /// The first control from which the amplitude no longer rises, where there is one: the map has no
+    /// inverse from there on.
+    pub fn turns_at(&self) -> Option<f64> {
+        self.points
+            .windows(2)
+            .find(|pair| pair[1].output_v.norm() <= pair[0].output_v.norm())
+            .map(|pair| pair[0].control)
+    }
+
+    /// Amplitudes that are reached, and the phase's range over them, for messages: `0 V to 11.2 V`.
+    pub fn describe(&self) -> String {
+        let (low, high) = self.domain();
+        let unit = self.control.unit();
+        format!(
+            "{} {} to {}",
+            self.control.name(),
+            units::show(low, unit, 4),
+            units::show(high, unit, 4)
+        )
+    }
+}
+
+/// Phases that follow each other within half a turn, from the strongest point outwards.
+fn unwrapped(points: &[MapPoint], amplitude: &[f64]) -> Result<Vec<f64>, MapError> {
+    let strongest = (0..points.len())
+        .max_by(|&a, &b| amplitude[a].total_cmp(&amplitude[b]))
+        .unwrap_or(0);
+    let full = amplitude.get(strongest).copied().unwrap_or(0.0);
+    if full == 0.0 {
+        return Err(MapError::Silent);
+    }
+    let mut phase = vec![0.0; points.len()];
+    phase[strongest] = points[strongest].output_v.arg();
+    let next = |last: f64, index: usize| {
+        // Below 1e-12 of full output the phase is rounding.
+        if amplitude[index] <= 1e-12 * full {
+            return last;
+        }
+        let raw = points[index].output_v.arg();
+        last + (raw - last + std::f64::consts::PI).rem_euclid(std::f64::consts::TAU)
+            - std::f64::consts::PI
+    };
+    for index in strongest + 1..points.len() {
+        phase[index] = next(phase[index - 1], index);
+    }
+    for index in (0..strongest).rev() {
+        phase[index] = next(phase[index + 1], index);
+    }
+    Ok(phase)
+}

@@ -1,7 +1,22 @@
 //! STEP 6: numbers about the output.
 
+mod align;
 mod channel;
+mod envelope;
+mod evm;
+mod lag;
+mod occupied;
+mod pair;
+mod plan;
 mod spectrum;
+mod welch;
 
+pub use align::{Alignment, AlignmentMeter};
 pub use channel::{AdjacentChannel, ChannelFilter, adjacent_channels, channel_power_w};
+pub use envelope::{EnvelopeFigures, EnvelopeMeter};
+pub use evm::{ErrorFigures, ErrorMeter};
+pub use occupied::{OccupiedBand, occupied_bandwidth};
+pub use pair::PairError;
+pub use plan::{Hold, SpectrumPlan};
 pub use spectrum::{Spectrum, SpectrumError};
+pub use welch::SpectrumMeter;

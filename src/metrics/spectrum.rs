@@ -23,6 +23,61 @@ pub enum SpectrumError {
         /// Samples of one segment.
         needed: usize,
     },
+    /// A sample rate that is none.
+    #[error("a sample rate of {given_hz} Hz: it must be positive and finite")]
+    Rate {
+        /// Rate given, Hz.
+        given_hz: f64,
+    },
+    /// A load that takes no power.
+    #[error("a load of {given_ohm} ohm: it must be positive and finite")]
+    Load {
+        /// Load given, ohm.
+        given_ohm: f64,
+    },
+    /// A resolution that no block of a sensible length has.
+    #[error(
+        "a resolution bandwidth of {given_hz} Hz: from {finest_hz} Hz to {coarsest_hz} Hz is possible at this sample rate and window"
+    )]
+    Resolution {
+        /// Resolution given, Hz.
+        given_hz: f64,
+        /// Smallest possible, Hz.
+        finest_hz: f64,
+        /// Largest possible, Hz.
+        coarsest_hz: f64,
+    },
+    /// A block too short or too long to transform.
+    #[error("blocks of {given} samples: {shortest} to {longest} are possible")]
+    Length {
+        /// Length given.
+        given: usize,
+        /// Shortest possible.
+        shortest: usize,
+        /// Longest possible.
+        longest: usize,
+    },
+    /// Blocks that overlap wholly or not at all.
+    #[error("an overlap of {given}: it must be from 0 to below 1")]
+    Overlap {
+        /// Overlap given, as a part of a block.
+        given: f64,
+    },
+    /// A window parameter without meaning.
+    #[error("a Kaiser window with beta {beta}: it must be from 0 to 50")]
+    Window {
+        /// Parameter given.
+        beta: f64,
+    },
+    /// A part of the power that is none.
+    #[error("a fraction of {given} of the power: it must lie between 0 and 1")]
+    Fraction {
+        /// Fraction given.
+        given: f64,
+    },
+    /// Nothing to take a part of.
+    #[error("the spectrum holds no power")]
+    NoPower,
 }
 
 /// Two-sided power densities over the offset from the carrier, lowest offset first.

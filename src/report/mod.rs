@@ -1,1 +1,22 @@
-//! To be written.
+//! Results to bytes: text tables, pictures (SVG, PNG) and the self-contained HTML report. No I/O.
+//!
+//! The types here are views: plain data that say what is shown. Whoever has results fills them;
+//! nothing here computes a result.
+//!
+//! ```text
+//! figures::SpectrumFigure { .. }.figure() -> Figure   .svg(), .png()
+//! page::Page { .. }.html()                -> one HTML file
+//! table::Table                            -> aligned text for the terminal
+//! ```
+
+pub mod cautions;
+mod error;
+pub mod figures;
+pub mod page;
+pub mod palette;
+pub mod picture;
+pub mod table;
+mod text;
+
+pub use error::ReportError;
+pub use picture::Figure;

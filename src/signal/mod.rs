@@ -1,7 +1,33 @@
 //! SECOND INPUT: the wanted complex baseband, from files and generators.
 
+mod blocks;
 mod error;
+mod format;
+mod levels;
+mod modulation;
+mod npy;
+mod ofdm;
+mod open;
+mod oversample;
+mod pulse;
+mod recipe;
+mod shaping;
 mod source;
+mod text;
+mod tones;
+mod wav;
+mod write;
 
 pub use error::SignalError;
+pub use format::{Format, FormatOptions};
+pub use levels::Levels;
+pub use modulation::Modulation;
+pub use ofdm::{Centre, Ofdm};
+pub use open::{open, open_pulses};
+pub use oversample::Oversampled;
+pub use pulse::{Edge, PulseSource};
+pub use recipe::{Ends, Kind, MOST_SAMPLES, Recipe, make};
+pub use shaping::{SingleCarrier, root_raised_cosine};
 pub use source::{Samples, Source};
+pub use tones::{Noise, Phases, Ramp, Tones};
+pub use write::{Writing, write};

@@ -1,1 +1,92 @@
-//! To be written.
+//! STEP 1: what the hardware is. A stage file becomes a [`Stage`].
+
+mod ladder;
+mod read;
+
+pub use ladder::{Arm, Element, Part, Rung};
+
+/// Which edge of the closed interval stays when its width changes.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Anchor {
+    /// The switch always closes at the same instant.
+    Leading,
+    /// The middle of the closed interval stays.
+    Centre,
+    /// The switch always opens at the same instant.
+    Trailing,
+}
+
+/// A switching power stage, in SI units.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Stage {
+    /// What the user calls it.
+    pub title: String,
+    /// Carrier, Hz.
+    pub frequency_hz: f64,
+    /// Full range of the supply control, V.
+    pub supply_v: f64,
+    /// The active device.
+    pub switch: Switch,
+    /// Fixed capacitance from the drain to ground, F.
+    pub drain_f: f64,
+    /// When the switch is closed.
+    pub driver: Driver,
+    /// From the supply to the drain.
+    pub feed: Feed,
+    /// From the drain to the load.
+    pub ladder: Vec<Rung>,
+    /// What the power is for.
+    pub load: Load,
+}
+
+/// A switch from the drain to ground.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Switch {
+    /// Resistance while closed, ohm.
+    pub closed_ohm: f64,
+    /// Resistance while open, ohm; infinite where the file gives none.
+    pub open_ohm: f64,
+}
+
+/// When the switch is closed.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Driver {
+    /// Closed fraction of the period at full width, more than 0 and less than 1.
+    pub duty: f64,
+    /// Which edge stays when the width is modulated.
+    pub anchor: Anchor,
+}
+
+/// From the supply to the drain.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum Feed {
+    /// An inductor, H, with series resistance, ohm.
+    Inductor {
+        /// H
+        henry: f64,
+        /// ohm
+        ohm: f64,
+    },
+    /// An ideal choke: its current is constant, its mean voltage is that across its resistance, ohm.
+    Choke {
+        /// ohm
+        ohm: f64,
+    },
+}
+
+/// The end of the ladder.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Load {
+    /// ohm
+    pub ohm: f64,
+    /// What stands in series with it, if anything.
+    pub reactance: Option<Element>,
+}
+
+impl Stage {
+    /// One period of the carrier, s.
+    pub fn period_s(&self) -> f64 {
+        1.0 / self.frequency_hz
+    }
+}

@@ -1,0 +1,185 @@
+//! Scheme `supply`: the magnitude moves the supply, the phase moves the drive.
+//!
+//! ```text
+//! x ---- delay ---- |.| ---- level, shaping ---- converter, filter, slew, ripple ---- supply
+//!   \--- delay ---- x/|x| -- low-pass, limiter ----------------------------------- phase
+//! ```
+
+use num_complex::Complex64;
+
+use super::Track;
+use super::modulator::{Modulator, SupplyModulator};
+use super::shaping::Shaping;
+use crate::math::delay::{Delay, LATENCY};
+use crate::math::lowpass::Lowpass;
+
+/// The scheme as the study describes it.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct SupplyScheme {
+    /// From the wanted magnitude to the supply's fraction.
+    pub shaping: Shaping,
+    /// What makes the supply.
+    pub modulator: Modulator,
+    /// What makes the drive's phase.
+    pub phase_path: PhasePath,
+}
+
+/// The path of the drive's phase: a phasor of constant magnitude, filtered and limited again.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct PhasePath {
+    /// Dead time, s.
+    pub delay_s: f64,
+    /// -3 dB bandwidth of the phasor's Butterworth low-pass around the carrier (half the band-pass), Hz.
+    pub bandwidth_hz: Option<f64>,
+    /// Order of that low-pass.
+    pub order: u32,
+}
+
+impl Default for PhasePath {
+    fn default() -> Self {
+        Self {
+            delay_s: 0.0,
+            bandwidth_hz: None,
+            order: 2,
+        }
+    }
+}
+
+/// Magnitudes below this fraction of full scale have no phase of their own: the last one is kept.
+const NO_PHASE: f64 = 1e-9;
+
+/// The scheme at work at one sample rate.
+#[derive(Debug, Clone)]
+pub struct SupplyDrive {
+    shaping: Shaping,
+    level: f64,
+    full_v: f64,
+    wanted: Delay,
+    magnitude: Delay,
+    angle: Delay,
+    modulator: SupplyModulator,
+    phase_filter: Option<Lowpass<Complex64>>,
+    last_phase: Complex64,
+    settled: bool,
+}
+
+impl SupplyDrive {
+    /// The scheme at `rate_hz` on a stage of `full_v`, signal full scale at `level` of it.
+    pub fn new(scheme: &SupplyScheme, level: f64, full_v: f64, rate_hz: f64) -> Self {
+        Self {
+            shaping: scheme.shaping,
+            level,
+            full_v,
+            wanted: Delay::new(0.0),
+            magnitude: Delay::new(scheme.modulator.delay_s * rate_hz),
+            angle: Delay::new(scheme.phase_path.delay_s * rate_hz),
+            modulator: SupplyModulator::new(&scheme.modulator, full_v, rate_hz),
+            phase_filter: scheme
+                .phase_path
+                .bandwidth_hz
+                .map(|bandwidth_hz| Lowpass::new(scheme.phase_path.order, bandwidth_hz, rate_hz)),
+            last_phase: Complex64::ONE,
+            settled: false,
+        }
+    }
+
+    /// How many samples after the start the track still shows the start: interpolators filling, filters settling.
+    pub fn settling(scheme: &SupplyScheme, rate_hz: f64) -> usize {
+        let dead = scheme.modulator.delay_s.max(scheme.phase_path.delay_s) * rate_hz;
+        let slowest = [
+            scheme.modulator.bandwidth_hz,
+            scheme.phase_path.bandwidth_hz,
+        ]
+        .into_iter()
+        .flatten()
+        .fold(0.0, |slowest: f64, bandwidth_hz| {
+            slowest.max(1.0 / bandwidth_hz)
+        });
+        // A Butterworth low-pass of order 8 rings below 1e-6 within about 12 periods of its bandwidth.
+        2 * LATENCY + dead.ceil() as usize + (12.0 * slowest * rate_hz).ceil() as usize
+    }
+
+    /// Appends the controls for `samples` to `track`, all rows at the same instants ([`LATENCY`] late).
+    pub fn push(&mut self, samples: &[Complex64], track: &mut Track) {
+        for &sample in samples {
+            let wanted = self.wanted.push(sample);
+            let magnitude = self.magnitude.push(sample).norm();
+            let asked_v = self.full_v * self.shaping.apply(self.level * magnitude);
+            track.wanted.push(wanted);
+            track
+                .asked
+                .push(self.full_v * self.shaping.apply(self.level * wanted.norm()));
+            track.control.push(self.modulator.push(asked_v));
+            let angle = self.angle.push(sample);
+            track.phase.push(self.phase(angle));
+        }
+    }
+
+    fn phase(&mut self, sample: Complex64) -> Complex64 {
+        let mut phase = unit(sample).unwrap_or(self.last_phase);
+        if let Some(filter) = &mut self.phase_filter {
+            if !self.settled {
+                filter.settle(phase);
+                self.settled = true;
+            }
+            phase = unit(filter.push(phase)).unwrap_or(self.last_phase);
+        }
+        self.last_phase = phase;
+        phase
+    }
+}
+
+fn unit(sample: Complex64) -> Option<Complex64> {
+    let magnitude = sample.norm();
+    (magnitude > NO_PHASE).then(|| sample / magnitude)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::drive::Shape;
+
+    fn ideal() -> SupplyScheme {
+        SupplyScheme {
+            shaping: Shaping {
+                shape: Shape::Corner,
+                floor: 0.0,
+            },
+            modulator: Modulator::default(),
+            phase_path: PhasePath::default(),
+        }
+    }
+
+    #[test]
+    fn an_ideal_track_is_the_signal_in_polar_form() {
+        let mut drive = SupplyDrive::new(&ideal(), 0.8, 6.0, 1e6);
+        let samples: Vec<_> = (0..500)
+            .map(|n| Complex64::new((0.03 * f64::from(n)).sin(), 0.3))
+            .collect();
+        let mut track = Track::default();
+        drive.push(&samples, &mut track);
+        for n in LATENCY..500 {
+            let output = track.control[n] / (0.8 * 6.0) * track.phase[n];
+            assert!((output - samples[n - LATENCY]).norm() < 1e-12);
+            assert_eq!(track.wanted[n], samples[n - LATENCY]);
+            assert_eq!(track.asked[n], track.control[n]);
+        }
+    }
+
+    #[test]
+    fn paths_are_delayed_apart() {
+        let mut scheme = ideal();
+        scheme.modulator.delay_s = 2.5e-6;
+        scheme.phase_path.delay_s = 1e-6;
+        let mut drive = SupplyDrive::new(&scheme, 1.0, 1.0, 1e6);
+        let signal = |n: f64| Complex64::from_polar(0.5 + 0.3 * (0.1 * n).cos(), 0.05 * n);
+        let samples: Vec<_> = (0..500).map(|n| signal(f64::from(n))).collect();
+        let mut track = Track::default();
+        drive.push(&samples, &mut track);
+        for n in 100..500 {
+            let at = (n - LATENCY) as f64;
+            assert!((track.control[n] - signal(at - 2.5).norm()).abs() < 1e-6);
+            assert!((track.phase[n] - signal(at - 1.0) / signal(at - 1.0).norm()).norm() < 1e-12);
+        }
+    }
+}

@@ -1,0 +1,142 @@
+//! One period in numbers, with its energy balance.
+
+use num_complex::Complex64;
+
+use super::linear::UnitOrbit;
+use super::network::{Drive, HARMONICS, OrbitError};
+use crate::stage::Stage;
+
+/// The largest accepted energy residual, relative to the supply power. The model bank stays below 1e-9; what
+/// circulates in a resonator of loaded Q costs about Q^2 rounding errors, so that only a Q past 30,000 fails.
+const BALANCE_TOLERANCE: f64 = 1e-6;
+
+/// Where the power goes that does not reach the load, W.
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
+pub struct Losses {
+    /// In the closed switch, the charge dumped at closing included.
+    pub closed_switch: f64,
+    /// In the open switch.
+    pub open_switch: f64,
+    /// In the feed's resistance.
+    pub feed: f64,
+    /// In all rungs of the ladder.
+    pub ladder: f64,
+    /// In each rung of the ladder, from the drain.
+    pub rungs: Vec<f64>,
+    /// Reaching the load at direct current and harmonics of the carrier.
+    pub harmonics: f64,
+}
+
+impl Losses {
+    /// Their sum, W.
+    pub fn total_w(&self) -> f64 {
+        self.closed_switch + self.open_switch + self.feed + self.ladder + self.harmonics
+    }
+}
+
+/// The periodic steady state of a stage at one supply and one width.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Orbit {
+    /// Supply, V.
+    pub supply_v: f64,
+    /// When the switch is closed.
+    pub drive: Drive,
+    /// Phasor of the fundamental of the voltage across the load resistance, peak volts.
+    pub output_v: Complex64,
+    /// Power of the fundamental in the load, W.
+    pub output_w: f64,
+    /// Mean supply current, A.
+    pub supply_a: f64,
+    /// Power from the supply, W.
+    pub supply_w: f64,
+    /// Power from the driver, W.
+    pub driver_w: f64,
+    /// Output power over supply and driver power.
+    pub efficiency: f64,
+    /// Where the rest goes.
+    pub losses: Losses,
+    /// Harmonics 2, 3, ... of the load voltage relative to the fundamental, dB.
+    pub harmonics_dbc: [f64; HARMONICS - 1],
+    /// Highest drain voltage of the period, V.
+    pub switch_peak_v: f64,
+    /// Lowest drain voltage of the period, V; below zero a real device's diode would conduct.
+    pub switch_min_v: f64,
+    /// Highest switch current, A.
+    pub switch_peak_a: f64,
+    /// Lowest switch current, A; below zero it flows backwards.
+    pub switch_min_a: f64,
+    /// Drain voltage just before the switch closes, V.
+    pub closing_v: f64,
+    /// Its slope at that instant, V/s.
+    pub closing_slope_v_per_s: f64,
+    /// Supply and driver power less output and losses, relative to the supply power.
+    pub energy_residual: f64,
+}
+
+impl Orbit {
+    /// The orbit at `supply_v` of a stage whose orbit at one volt is `unit`.
+    pub(super) fn scaled(
+        unit: &UnitOrbit,
+        stage: &Stage,
+        supply_v: f64,
+        drive: &Drive,
+    ) -> Result<Self, OrbitError> {
+        let load_ohm = stage.load.ohm;
+        // Normalised powers are volts squared; divided by the load resistance they are watts.
+        let watt = |unit_power: f64| unit_power * supply_v * supply_v / load_ohm;
+        let output_v = unit.harmonics[0] * supply_v;
+        let output_w = output_v.norm_sqr() / (2.0 * load_ohm);
+        let supply_w = watt(unit.supply);
+        let driver_w = 0.0;
+        let rungs: Vec<f64> = unit.rungs.iter().map(|&power| watt(power)).collect();
+        let losses = Losses {
+            closed_switch: watt(unit.closed_switch),
+            open_switch: watt(unit.open_switch),
+            feed: watt(unit.feed),
+            ladder: rungs.iter().fold(0.0, |sum, loss| sum + loss),
+            rungs,
+            harmonics: watt(unit.load) - output_w,
+        };
+        // At zero supply nothing flows and nothing is left over.
+        let unit_output = unit.harmonics[0].norm_sqr() / 2.0;
+        let unit_lost: f64 = unit.closed_switch
+            + unit.open_switch
+            + unit.feed
+            + unit.rungs.iter().sum::<f64>()
+            + (unit.load - unit_output);
+        let energy_residual = (unit.supply - unit_output - unit_lost) / unit.supply;
+        if !(energy_residual.abs() <= BALANCE_TOLERANCE) {
+            return Err(OrbitError::Unbalanced {
+                residual: energy_residual,
+                allowed: BALANCE_TOLERANCE,
+            });
+        }
+        let fundamental = unit.harmonics[0].norm();
+        let mut harmonics_dbc = [0.0; HARMONICS - 1];
+        for (level, harmonic) in harmonics_dbc.iter_mut().zip(&unit.harmonics[1..]) {
+            *level = 20.0 * (harmonic.norm() / fundamental).log10();
+        }
+        Ok(Self {
+            supply_v,
+            drive: *drive,
+            output_v,
+            output_w,
+            supply_a: unit.supply * supply_v / load_ohm,
+            supply_w,
+            driver_w,
+            efficiency: unit_output / unit.supply,
+            losses,
+            harmonics_dbc,
+            switch_peak_v: unit.drain_max * supply_v,
+            switch_min_v: unit.drain_min * supply_v,
+            switch_peak_a: unit.switch_max * supply_v / load_ohm,
+            switch_min_a: unit.switch_min * supply_v / load_ohm,
+            closing_v: unit.closing * supply_v,
+            closing_slope_v_per_s: unit.closing_slope
+                * supply_v
+                * std::f64::consts::TAU
+                * stage.frequency_hz,
+            energy_residual,
+        })
+    }
+}

@@ -1,0 +1,189 @@
+//! From a file's name to a stream of samples or edges.
+
+use std::io::{ErrorKind, Read, Seek, SeekFrom};
+
+use super::blocks::{Blocks, Encoding, Layout};
+use super::format::{Format, FormatOptions};
+use super::pulse::{PcmEdges, PulseSource, TextEdges};
+use super::text::{Columns, TextSamples};
+use super::wav::Channels;
+use super::{SignalError, Source, npy, wav};
+use crate::input::{Document, Files, ReadSeek};
+
+/// Opens the I/Q signal `name`. Its header is read and checked now, its samples as they are asked for.
+///
+/// A sidecar `name.toml` with the keys `format`, `rate` and `full_scale` completes `options`.
+///
+/// # Errors
+/// A file that cannot be opened, a format or rate that is not known or stated twice differently, a
+/// header that is wrong or cannot be true of a file of this size.
+pub fn open(
+    files: &dyn Files,
+    name: &str,
+    options: &FormatOptions,
+) -> Result<Box<dyn Source>, SignalError> {
+    let file = files.display(name);
+    let (mut reader, format, options) = prepare(files, name, &file, options)?;
+    let layout = match format {
+        Format::Wav => wav::layout(&mut reader, &file, &options, Channels::Stereo)?,
+        Format::Npy => npy::layout(&mut reader, &file, &options)?,
+        Format::Cf32 => raw_layout(&mut reader, &file, &options, Encoding::F32)?,
+        Format::Ci16 => raw_layout(&mut reader, &file, &options, Encoding::I16)?,
+        Format::Csv => {
+            let hint = "; a file with time,level is a pulse sequence, which only a scheme that takes pulses can use";
+            let columns = Columns::new(reader, &file, ["i", "q"], hint)?;
+            let rate_hz = options.rate_hz.ok_or(SignalError::MissingRate { file })?;
+            return Ok(Box::new(TextSamples::new(
+                columns,
+                rate_hz,
+                options.full_scale.unwrap_or(1.0),
+            )));
+        }
+    };
+    Ok(Box::new(Blocks::new(reader, layout)?))
+}
+
+/// Opens the pulse sequence `name`: mono WAV, or CSV with the columns `time,level` (s, full scale 1.0).
+///
+/// # Errors
+/// As [`open`].
+pub fn open_pulses(
+    files: &dyn Files,
+    name: &str,
+    options: &FormatOptions,
+) -> Result<Box<dyn PulseSource>, SignalError> {
+    let file = files.display(name);
+    let (mut reader, format, options) = prepare(files, name, &file, options)?;
+    match format {
+        Format::Wav => {
+            let layout = wav::layout(&mut reader, &file, &options, Channels::Mono)?;
+            Ok(Box::new(PcmEdges::new(Blocks::new(reader, layout)?)))
+        }
+        Format::Csv => {
+            let hint = " (time in seconds); a file with i,q is a signal, not a pulse sequence";
+            let columns = Columns::new(reader, &file, ["time", "level"], hint)?;
+            Ok(Box::new(TextEdges::new(
+                columns,
+                options.full_scale.unwrap_or(1.0),
+            )))
+        }
+        other => Err(SignalError::Malformed {
+            file,
+            given: format!("a pulse sequence as .{}", other.name()),
+            allowed: "a mono WAV file or a CSV file with time,level".to_owned(),
+        }),
+    }
+}
+
+type Prepared = (Box<dyn ReadSeek>, Format, FormatOptions);
+
+/// Opens the file, completes the options by its sidecar, and decides the format.
+fn prepare(
+    files: &dyn Files,
+    name: &str,
+    file: &str,
+    options: &FormatOptions,
+) -> Result<Prepared, SignalError> {
+    let reader = files.open(name).map_err(|cause| SignalError::Open {
+        file: file.to_owned(),
+        cause,
+    })?;
+    let sidecar = format!("{name}.toml");
+    let options = match files.text(&sidecar) {
+        Ok(text) => {
+            let document = Document::parse(&files.display(&sidecar), &text)?;
+            let section = document.root();
+            let stated = FormatOptions::from_section(&section)?;
+            section.finish()?;
+            options.merged(stated, file)?
+        }
+        Err(cause) if cause.kind() == ErrorKind::NotFound => *options,
+        Err(cause) => {
+            return Err(SignalError::Open {
+                file: files.display(&sidecar),
+                cause,
+            });
+        }
+    };
+    if let Some(rate_hz) = options.rate_hz
+        && !(rate_hz.is_finite() && rate_hz > 0.0)
+    {
+        return Err(not_positive(file, "rate", rate_hz));
+    }
+    if let Some(full_scale) = options.full_scale
+        && !(full_scale.is_finite() && full_scale > 0.0)
+    {
+        return Err(not_positive(file, "full scale", full_scale));
+    }
+    let format = match options.format {
+        Some(format) => format,
+        None => Format::of_name(name)?,
+    };
+    Ok((reader, format, options))
+}
+
+fn not_positive(file: &str, what: &str, given: f64) -> SignalError {
+    SignalError::Malformed {
+        file: file.to_owned(),
+        given: format!("a {what} of {given}"),
+        allowed: "a finite number above 0".to_owned(),
+    }
+}
+
+/// A file that is nothing but samples.
+fn raw_layout(
+    reader: &mut Box<dyn ReadSeek>,
+    file: &str,
+    options: &FormatOptions,
+    encoding: Encoding,
+) -> Result<Layout, SignalError> {
+    let io = |cause| SignalError::Io {
+        file: file.to_owned(),
+        samples: 0,
+        cause,
+    };
+    let mut first = Vec::new();
+    reader
+        .as_mut()
+        .take(6)
+        .read_to_end(&mut first)
+        .map_err(io)?;
+    let header = if first.starts_with(b"\x93NUMPY") {
+        Some("npy")
+    } else if first.starts_with(b"RIFF") || first.starts_with(b"RF64") {
+        Some("wav")
+    } else {
+        None
+    };
+    if let Some(real) = header {
+        return Err(SignalError::Malformed {
+            file: file.to_owned(),
+            given: format!("a file that starts as a .{real} file does"),
+            allowed: format!(
+                "raw samples without a header; give it the extension .{real} or state format = \"{real}\""
+            ),
+        });
+    }
+    let bytes = reader.seek(SeekFrom::End(0)).map_err(io)?;
+    let frame = 2 * encoding.bytes() as u64;
+    if !bytes.is_multiple_of(frame) {
+        return Err(SignalError::ImpossibleLength {
+            file: file.to_owned(),
+            given: format!("{bytes} bytes"),
+            allowed: format!(
+                "a multiple of {frame}, the bytes of one sample: the file is cut off or of another format"
+            ),
+        });
+    }
+    Ok(Layout {
+        file: file.to_owned(),
+        rate_hz: options.rate_hz.ok_or_else(|| SignalError::MissingRate {
+            file: file.to_owned(),
+        })?,
+        encoding,
+        channels: 2,
+        start: 0,
+        samples: bytes / frame,
+        full_scale: options.full_scale.unwrap_or_else(|| encoding.full_scale()),
+    })
+}

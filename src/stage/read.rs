@@ -1,0 +1,206 @@
+//! Stage files: TOML to [`Stage`]. Keys are described in `docs/formats.md`.
+
+use std::f64::consts::TAU;
+
+use super::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use crate::input::{Document, Problem, Range, Section};
+use crate::units::Dimension;
+
+/// The anchors by their names in files.
+const ANCHORS: [(&str, Anchor); 3] = [
+    ("leading", Anchor::Leading),
+    ("centre", Anchor::Centre),
+    ("trailing", Anchor::Trailing),
+];
+
+/// Duties that leave both a closed and an open interval worth the name.
+const DUTY: Range = Range::Within(0.01, 0.99);
+
+impl Stage {
+    /// Reads the stage in `text`, which came from `file`.
+    ///
+    /// # Errors
+    /// The first thing wrong, with its place.
+    pub fn parse(file: &str, text: &str) -> Result<Self, Problem> {
+        let document = Document::parse(file, text)?;
+        let root = document.root();
+        let frequency_hz = root.quantity("frequency", Dimension::Frequency, Range::Positive)?;
+        let title = root.maybe_text("title")?.unwrap_or(file).to_owned();
+
+        let supply = root.section("supply")?;
+        let supply_v = supply.quantity("voltage", Dimension::Voltage, Range::Positive)?;
+        supply.finish()?;
+
+        let drain = root.section("drain")?;
+        let drain_f = drain.quantity("capacitance", Dimension::Capacitance, Range::Positive)?;
+        drain.finish()?;
+
+        let load_section = root.section("load")?;
+        let (ladder, load) = load(&load_section, frequency_hz)?;
+        load_section.finish()?;
+
+        let stage = Self {
+            title,
+            frequency_hz,
+            supply_v,
+            switch: switch(&root.section("switch")?)?,
+            drain_f,
+            driver: driver(root.maybe_section("driver")?)?,
+            feed: feed(&root.section("feed")?)?,
+            ladder,
+            load,
+        };
+        root.finish()?;
+        Ok(stage)
+    }
+}
+
+fn switch(section: &Section<'_>) -> Result<Switch, Problem> {
+    let closed_ohm =
+        section.quantity("closed_resistance", Dimension::Resistance, Range::Positive)?;
+    let open_ohm = section
+        .maybe_quantity("open_resistance", Dimension::Resistance, Range::Positive)?
+        .unwrap_or(f64::INFINITY);
+    if open_ohm <= closed_ohm {
+        return Err(section.problem("open_resistance", "more than closed_resistance"));
+    }
+    section.finish()?;
+    Ok(Switch {
+        closed_ohm,
+        open_ohm,
+    })
+}
+
+fn driver(section: Option<Section<'_>>) -> Result<Driver, Problem> {
+    let mut driver = Driver {
+        duty: 0.5,
+        anchor: Anchor::Centre,
+    };
+    if let Some(section) = section {
+        driver.duty = section
+            .maybe_quantity("duty", Dimension::Ratio, DUTY)?
+            .unwrap_or(driver.duty);
+        driver.anchor = section
+            .maybe_choice("anchor", &ANCHORS)?
+            .unwrap_or(driver.anchor);
+        section.finish()?;
+    }
+    Ok(driver)
+}
+
+fn feed(section: &Section<'_>) -> Result<Feed, Problem> {
+    let ohm = section
+        .maybe_quantity("resistance", Dimension::Resistance, Range::NotNegative)?
+        .unwrap_or(0.0);
+    let choke = section.maybe_flag("choke")?.unwrap_or(false);
+    let feed = match section.maybe_quantity("inductance", Dimension::Inductance, Range::Positive)? {
+        Some(_) if choke => {
+            return Err(section.problem("choke", "either inductance or choke = true, not both"));
+        }
+        Some(henry) => Feed::Inductor { henry, ohm },
+        None if choke => Feed::Choke { ohm },
+        None => return Err(section.problem("inductance", "an inductance, or choke = true")),
+    };
+    section.finish()?;
+    Ok(feed)
+}
+
+fn load(section: &Section<'_>, frequency_hz: f64) -> Result<(Vec<Rung>, Load), Problem> {
+    let ohm = section.quantity("resistance", Dimension::Resistance, Range::Positive)?;
+    let reactance = section
+        .maybe_quantity("reactance", Dimension::Resistance, Range::Any)?
+        .filter(|ohm| *ohm != 0.0)
+        .map(|ohm| {
+            let angular = TAU * frequency_hz;
+            if ohm > 0.0 {
+                Element::Inductor(ohm / angular)
+            } else {
+                Element::Capacitor(-1.0 / (angular * ohm))
+            }
+        });
+    let ladder = section
+        .sections("ladder")?
+        .iter()
+        .map(|section| rung(section, TAU * frequency_hz))
+        .collect::<Result<_, _>>()?;
+    Ok((ladder, Load { ohm, reactance }))
+}
+
+fn rung(section: &Section<'_>, angular_hz: f64) -> Result<Rung, Problem> {
+    let mut found = Vec::new();
+    for (key, arm) in [
+        ("series", Arm::Series),
+        ("shunt", Arm::Shunt),
+        ("tank", Arm::Tank),
+    ] {
+        if let Some(section) = section.maybe_section(key)? {
+            found.push((arm, section));
+        }
+    }
+    section.finish()?;
+    let one_of = "exactly one of series, shunt, tank in each [[load.ladder]]";
+    if found.len() != 1 {
+        return Err(section.problem_here(format!("{} of them", found.len()), one_of));
+    }
+    let (arm, section) = found.remove(0);
+    Ok(Rung {
+        arm,
+        parts: parts(&section, arm, angular_hz)?,
+    })
+}
+
+/// The parts of one rung. `q` belongs to the inductor, or to the capacitor where it is alone;
+/// `capacitor_q` to the capacitor beside an inductor; `resistance` is a part of its own where it
+/// stands alone or in a tank, else the series resistance of the inductor or capacitor.
+fn parts(section: &Section<'_>, arm: Arm, angular_hz: f64) -> Result<Vec<Part>, Problem> {
+    let inductance =
+        section.maybe_quantity("inductance", Dimension::Inductance, Range::Positive)?;
+    let capacitance =
+        section.maybe_quantity("capacitance", Dimension::Capacitance, Range::Positive)?;
+    let resistance =
+        section.maybe_quantity("resistance", Dimension::Resistance, Range::Positive)?;
+    let q = section.maybe_quantity("q", Dimension::Ratio, Range::Positive)?;
+    let capacitor_q = section.maybe_quantity("capacitor_q", Dimension::Ratio, Range::Positive)?;
+    section.finish()?;
+    if q.is_some() && inductance.is_none() && capacitance.is_none() {
+        return Err(section.problem("q", "q only beside an inductance or a capacitance"));
+    }
+    if capacitor_q.is_some() && (capacitance.is_none() || inductance.is_none()) {
+        return Err(section.problem(
+            "capacitor_q",
+            "capacitor_q only where inductance and capacitance stand in one rung; q otherwise",
+        ));
+    }
+    let mut parts = Vec::new();
+    if let Some(henry) = inductance {
+        let loss_ohm = q.map_or(0.0, |q| angular_hz * henry / q);
+        parts.push(Part {
+            element: Element::Inductor(henry),
+            loss_ohm,
+        });
+    }
+    if let Some(farad) = capacitance {
+        let q = if inductance.is_some() { capacitor_q } else { q };
+        let loss_ohm = q.map_or(0.0, |q| 1.0 / (angular_hz * farad * q));
+        parts.push(Part {
+            element: Element::Capacitor(farad),
+            loss_ohm,
+        });
+    }
+    if let Some(ohm) = resistance {
+        parts.push(Part {
+            element: Element::Resistor(ohm),
+            loss_ohm: 0.0,
+        });
+    }
+    match (parts.len(), arm) {
+        (0, _) => {
+            Err(section.problem_here("an empty table", "inductance, capacitance or resistance"))
+        }
+        (1, Arm::Tank) => Err(section.problem_here(
+            "one part",
+            "at least two of inductance, capacitance, resistance in a tank",
+        )),
+        _ => Ok(parts),
+    }
+}

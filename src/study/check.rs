@@ -1,0 +1,320 @@
+//! The main job: a study to its verdict.
+
+use num_complex::Complex64;
+
+use super::error::StudyError;
+use super::load::{Hardware, Study};
+use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
+use super::run::{Chain, Run};
+use super::warning::Warning;
+use crate::drive::{MAX_FACTOR, oversampling};
+use crate::map::{Control, Map, Origin, Sweep};
+use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
+use crate::orbit::{Drive, Network};
+use crate::signal::Source;
+use crate::units::dbm_from_watt;
+use crate::verdict::{Judgement, Measured, Wanted, judge};
+
+/// Points of a map solved for a check.
+const MAP_POINTS: usize = 201;
+
+/// How far a margin may move when the sampling is doubled, dB.
+const CONVERGED_DB: f64 = 0.1;
+
+/// How often the sampling is doubled beyond the first comparison.
+const MORE_DOUBLINGS: usize = 2;
+
+/// Oversampled instants past which no further doubling is tried: some tens of seconds of work.
+const MOST_INSTANTS: u64 = 200_000_000;
+
+/// Resolution of the spectrum where neither limits nor the study ask for one, as a part of the signal's rate.
+const DEFAULT_RESOLUTION: f64 = 1.0 / 512.0;
+
+/// Fewer segments than this are worth a warning.
+const FEW_SEGMENTS: u64 = 25;
+
+/// A stage that settles slower than this part of the signal's sample period has memory worth a warning:
+/// a lag of a hundredth of a sample period costs about -40 dB at the edge of the band.
+const SLOW: f64 = 0.01;
+
+/// Carries out `study` on `source`, the signal that it names.
+///
+/// `progress` is told now and then which part of the work is done, 0 to 1.
+///
+/// # Errors
+/// [`StudyError`] where no verdict can be reached.
+pub fn check(
+    study: &Study,
+    source: &mut dyn Source,
+    progress: &mut dyn FnMut(f64),
+) -> Result<CheckResult, StudyError> {
+    let (map, stage) = hardware(&study.hardware)?;
+    let signal = signal_facts(study, source)?;
+    let wanted = Wanted::of(&study.limits);
+    let (factor, reason) = oversampling(&study.scheme, signal.rate_hz, wanted.span_hz);
+    let resolution_hz = [wanted.fine_resolution_hz, study.resolution_hz]
+        .into_iter()
+        .flatten()
+        .reduce(f64::min)
+        .unwrap_or(DEFAULT_RESOLUTION * signal.rate_hz);
+    let mut chain = Chain {
+        study,
+        map: &map,
+        factor,
+        wanted: &wanted,
+        resolution_hz,
+        evm_band_hz: study
+            .limits
+            .channel_hz
+            .or(study.limits.authorized_bandwidth_hz)
+            .unwrap_or(signal.rate_hz),
+        signal_samples: signal.samples,
+    };
+
+    // Work in units of the first factor's passes: 1 + 2 for the first comparison.
+    let first_instants = signal.samples as f64 * factor as f64;
+    let mut done = 0.0;
+    let mut tick = |instants: u64| {
+        done += instants as f64 / first_instants / 2.0;
+        progress((done / 3.0).min(1.0));
+    };
+    let mut coarse = chain.run(source, &mut tick)?;
+    let mut judged = verdict_of(study, &coarse);
+    let mut convergence = Convergence {
+        against_factor: factor,
+        moved_db: 0.0,
+    };
+    for _ in 0..=MORE_DOUBLINGS {
+        let instants = 2 * chain.factor as u64 * signal.samples;
+        if 2 * chain.factor > MAX_FACTOR || instants > MOST_INSTANTS {
+            break;
+        }
+        chain.factor *= 2;
+        let fine = chain.run(source, &mut tick)?;
+        let finer = verdict_of(study, &fine);
+        convergence = Convergence {
+            against_factor: coarse.factor,
+            moved_db: largest_move(&judged, &finer),
+        };
+        (coarse, judged) = (fine, finer);
+        if convergence.moved_db <= CONVERGED_DB {
+            break;
+        }
+    }
+    let (run, judgement) = (coarse, judged);
+    let metrics = metrics(study, &run, &judgement)?;
+    let mut result = CheckResult {
+        study: study.clone(),
+        rate: RateFacts {
+            factor: run.factor,
+            rate_hz: run.rate_hz,
+            reason,
+            samples: run.output_envelope.samples,
+            convergence,
+        },
+        signal,
+        map,
+        stage,
+        metrics,
+        output_spectrum: run.output_spectrum,
+        wanted_spectrum: run.wanted_spectrum,
+        peak_spectra: run.peak_spectra,
+        output_envelope: run.output_envelope,
+        wanted_envelope: run.wanted_envelope,
+        control_density: run.control_density,
+        notch: run.notch,
+        warnings: Vec::new(),
+        judgement,
+    };
+    result.warnings = warnings(&result, run.held);
+    Ok(result)
+}
+
+/// The map, and the stage at full supply where there is one.
+fn hardware(hardware: &Hardware) -> Result<(Map, Option<StageFacts>), StudyError> {
+    let stage = match hardware {
+        Hardware::Map(map) => return Ok((map.clone(), None)),
+        Hardware::Stage(stage) => stage,
+    };
+    let network = Network::new(stage)?;
+    let map = Sweep::full(&network, Control::Supply, MAP_POINTS)?.solve(&network)?;
+    let drive = Drive::new(&stage.driver, stage.driver.duty);
+    let facts = StageFacts {
+        orbit: network.orbit(stage.supply_v, &drive)?,
+        waveform: network.waveform(stage.supply_v, &drive, 240)?,
+        settling_s: network.settling_s(&drive),
+    };
+    Ok((map, Some(facts)))
+}
+
+/// Reads the signal once: its length may not be known before, and its level must be.
+fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, StudyError> {
+    source.rewind()?;
+    let mut block = vec![Complex64::ZERO; 1 << 16];
+    let (mut samples, mut square, mut peak) = (0u64, 0.0, 0.0f64);
+    loop {
+        let count = source.read(&mut block)?;
+        if count == 0 {
+            break;
+        }
+        samples += count as u64;
+        for sample in &block[..count] {
+            let power = sample.norm_sqr();
+            square += power;
+            peak = peak.max(power);
+        }
+    }
+    source.rewind()?;
+    if peak == 0.0 {
+        return Err(StudyError::SilentSignal);
+    }
+    let rate_hz = source.rate_hz();
+    Ok(SignalFacts {
+        file: study.signal.file.clone(),
+        rate_hz,
+        samples,
+        duration_s: samples as f64 / rate_hz,
+        peak: peak.sqrt(),
+        rms: (square / samples as f64).sqrt(),
+    })
+}
+
+fn verdict_of(study: &Study, run: &Run) -> Judgement {
+    let measured = Measured {
+        fine: &run.output_spectrum,
+        peak_hold: &run.peak_spectra,
+        mean_w: run.output_envelope.mean_w,
+        peak_w: run.output_envelope.peak_w,
+        evm_percent: Some(run.errors.evm_percent),
+        evm_peak_percent: Some(run.errors.evm_peak_percent),
+        evm_p95_percent: None,
+        evm_p99_percent: None,
+        modulation: None,
+        harmonics_dbc: None,
+    };
+    judge(&measured, &study.limits)
+}
+
+/// The largest movement of any margin between two verdicts on the same limits, dB. A check that is decided in
+/// only one of them counts as infinite.
+fn largest_move(before: &Judgement, after: &Judgement) -> f64 {
+    let pairs = before.verdict.checks.iter().map(|check| {
+        let other = after
+            .verdict
+            .checks
+            .iter()
+            .find(|other| other.name == check.name && other.set == check.set);
+        match (check.margin_db, other.and_then(|other| other.margin_db)) {
+            (Some(a), Some(b)) => (a - b).abs(),
+            (None, None) => 0.0,
+            _ => f64::INFINITY,
+        }
+    });
+    pairs.fold(0.0, f64::max)
+}
+
+fn metrics(study: &Study, run: &Run, judgement: &Judgement) -> Result<Metrics, StudyError> {
+    let acpr = if judgement.acpr.is_empty() {
+        default_acpr(study, run)
+    } else {
+        judgement.acpr.clone()
+    };
+    let known = |efficiency: f64| efficiency.is_finite().then_some(efficiency);
+    Ok(Metrics {
+        power_dbm: dbm_from_watt(run.output_envelope.mean_w),
+        peak_power_dbm: dbm_from_watt(run.output_envelope.peak_w),
+        papr_db: run.output_envelope.papr_db,
+        occupied_hz: occupied_bandwidth(&run.output_spectrum, 0.99)?.width_hz(),
+        evm_percent: run.errors.evm_percent,
+        evm_peak_percent: run.errors.evm_peak_percent,
+        evm_band_hz: run.errors.band_hz,
+        nmse_db: run.errors.nmse_db,
+        delay_s: run.alignment.delay_s,
+        gain_v: run.alignment.gain.norm(),
+        gain_deg: run.alignment.gain.arg().to_degrees(),
+        acpr,
+        mask: judgement.mask.clone(),
+        efficiency: known(run.energy.efficiency()),
+        stage_efficiency: known(run.energy.stage_efficiency()),
+    })
+}
+
+/// Where no limit asks for neighbours: two equal channels to each side, where the channel's width is known.
+fn default_acpr(study: &Study, run: &Run) -> Vec<crate::metrics::AdjacentChannel> {
+    let Some(channel_hz) = study
+        .limits
+        .channel_hz
+        .or(study.limits.authorized_bandwidth_hz)
+    else {
+        return Vec::new();
+    };
+    let filter = ChannelFilter::Flat {
+        bandwidth_hz: channel_hz,
+    };
+    let neighbours = [(channel_hz, filter), (2.0 * channel_hz, filter)];
+    adjacent_channels(&run.output_spectrum, &filter, &neighbours).unwrap_or_default()
+}
+
+fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
+    let mut warnings = Vec::new();
+    let RateFacts {
+        factor,
+        convergence,
+        ..
+    } = result.rate;
+    // The negation also catches a movement that is no number.
+    if !(convergence.moved_db <= CONVERGED_DB) {
+        warnings.push(Warning::NotConverged {
+            moved_db: convergence.moved_db,
+            factor,
+        });
+    }
+    if convergence.against_factor == factor {
+        warnings.push(Warning::RateLimited { factor });
+    }
+    let highest = result.signal.peak * result.study.signal.level;
+    if highest > 1.0 {
+        warnings.push(Warning::AboveFullScale {
+            peak: result.signal.peak,
+        });
+    }
+    if held > 0.0 {
+        warnings.push(Warning::HeldAtEdge { fraction: held });
+    }
+    if let Some(stage) = &result.stage {
+        // A silicon junction starts to conduct at about 0.7 V (common practice).
+        if stage.orbit.switch_min_v < -0.7 {
+            warnings.push(Warning::DiodeWouldConduct {
+                lowest_v: stage.orbit.switch_min_v,
+            });
+        }
+        let signal_s = 1.0 / result.signal.rate_hz;
+        if stage.settling_s > SLOW * signal_s {
+            warnings.push(Warning::SlowStage {
+                settling_s: stage.settling_s,
+                signal_s,
+            });
+        }
+    }
+    if result.map.origin() == Origin::File {
+        let mut missing = vec!["stress of the switch", "memory of the stage"];
+        if result.metrics.efficiency.is_none() {
+            missing.push("efficiency");
+        }
+        warnings.push(Warning::MapFromFile { missing });
+    }
+    if result.output_spectrum.segments < FEW_SEGMENTS {
+        warnings.push(Warning::FewAverages {
+            segments: result.output_spectrum.segments,
+        });
+    }
+    warnings.extend(
+        result
+            .judgement
+            .warnings
+            .iter()
+            .cloned()
+            .map(Warning::Limits),
+    );
+    warnings
+}

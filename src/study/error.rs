@@ -1,0 +1,48 @@
+//! Why a study could not be carried out.
+
+use crate::input::Problem;
+use crate::map::SweepError;
+use crate::metrics::{PairError, SpectrumError};
+use crate::orbit::{NetworkError, OrbitError};
+use crate::signal::SignalError;
+
+/// The step that failed, with its own words.
+#[derive(Debug, thiserror::Error)]
+pub enum StudyError {
+    /// Something wrong in a file of settings.
+    #[error(transparent)]
+    Input(#[from] Problem),
+    /// The signal cannot be read.
+    #[error("the signal: {0}")]
+    Signal(#[from] SignalError),
+    /// The stage has no state equations.
+    #[error("the stage: {0}")]
+    Network(#[from] NetworkError),
+    /// The stage has no orbit.
+    #[error("the stage: {0}")]
+    Orbit(#[from] OrbitError),
+    /// The stage has no map.
+    #[error("the stage: {0}")]
+    Sweep(#[from] SweepError),
+    /// No spectrum can be taken.
+    #[error("the spectrum: {0}")]
+    Spectrum(#[from] SpectrumError),
+    /// Output and wanted signal cannot be compared.
+    #[error("the comparison of output and wanted signal: {0}")]
+    Pair(#[from] PairError),
+    /// Too few samples are left once the start and the end are taken off.
+    #[error(
+        "the signal has {given} samples: too few, at least {needed} are needed for a spectrum in {resolution_hz} Hz beside start and end. Use a longer signal, or limits with a wider bandwidth"
+    )]
+    SignalTooShort {
+        /// Samples in the file.
+        given: u64,
+        /// Samples needed.
+        needed: u64,
+        /// The finest resolution that is wanted.
+        resolution_hz: f64,
+    },
+    /// Every sample is zero.
+    #[error("the signal is silent: every sample is zero")]
+    SilentSignal,
+}

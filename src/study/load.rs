@@ -1,0 +1,206 @@
+//! A study file and the files it names.
+
+use crate::drive::Scheme;
+use crate::input::{Document, Files, Problem, Range, Section};
+use crate::limits::{Limits, LimitsRequest};
+use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
+use crate::math::Window;
+use crate::signal::FormatOptions;
+use crate::stage::Stage;
+use crate::units::Dimension;
+
+/// One study, ready to be carried out; the signal is still a file.
+#[derive(Debug, Clone)]
+pub struct Study {
+    /// What the user calls it.
+    pub title: String,
+    /// Remarks of the user, shown in the report.
+    pub note: Option<String>,
+    /// What transmits.
+    pub hardware: Hardware,
+    /// What is transmitted.
+    pub signal: SignalChoice,
+    /// How it moves the controls.
+    pub scheme: Scheme,
+    /// What it is held against.
+    pub limits: Limits,
+    /// Window of the spectra.
+    pub window: Window,
+    /// Resolution of the spectrum that is shown, Hz, where the user wants a finer one than the limits need.
+    pub resolution_hz: Option<f64>,
+    /// The study file's own text, to repeat it.
+    pub text: String,
+}
+
+/// What transmits.
+#[derive(Debug, Clone)]
+pub enum Hardware {
+    /// A stage, to be solved.
+    Stage(Stage),
+    /// A map from a file.
+    Map(Map),
+}
+
+impl Hardware {
+    /// Full range of the supply, V.
+    pub fn full_supply_v(&self) -> f64 {
+        match self {
+            Self::Stage(stage) => stage.supply_v,
+            Self::Map(map) => map.domain().1,
+        }
+    }
+
+    /// Carrier, Hz.
+    pub fn frequency_hz(&self) -> f64 {
+        match self {
+            Self::Stage(stage) => stage.frequency_hz,
+            Self::Map(map) => map.frequency_hz(),
+        }
+    }
+
+    /// Load resistance, ohm.
+    pub fn load_ohm(&self) -> f64 {
+        match self {
+            Self::Stage(stage) => stage.load.ohm,
+            Self::Map(map) => map.load_ohm(),
+        }
+    }
+}
+
+/// What is transmitted.
+#[derive(Debug, Clone, PartialEq)]
+pub struct SignalChoice {
+    /// Relative to the study.
+    pub file: String,
+    /// As the study states it.
+    pub options: FormatOptions,
+    /// Signal full scale as a fraction of the control's full range.
+    pub level: f64,
+}
+
+const WINDOWS: [(&str, Window); 4] = [
+    ("blackman_harris", Window::BlackmanHarris),
+    ("hann", Window::Hann),
+    ("flat_top", Window::FlatTop),
+    ("kaiser", Window::Kaiser(12.0)),
+];
+
+impl Study {
+    /// Reads the study `name` and the stage or map and limits that it names.
+    ///
+    /// # Errors
+    /// The first thing wrong in any of the files, with its place.
+    pub fn read(name: &str, files: &dyn Files) -> Result<Self, Problem> {
+        let shown = files.display(name);
+        let text = files.text(name).map_err(|error| {
+            Problem::about_file(
+                &shown,
+                format!("a file that cannot be read ({error})"),
+                "a study file",
+            )
+        })?;
+        let document = Document::parse(&shown, &text)?;
+        let root = document.root();
+        let signal = root.section("signal")?;
+        let scheme = root.section("scheme")?;
+        let metrics = root.maybe_section("metrics")?;
+        let (window, resolution_hz) = match &metrics {
+            Some(section) => spectrum_settings(section)?,
+            None => (Window::BlackmanHarris, None),
+        };
+        let study = Self {
+            title: root.maybe_text("title")?.unwrap_or(name).to_owned(),
+            note: root.maybe_text("note")?.map(str::to_owned),
+            hardware: hardware(&root, files)?,
+            signal: signal_choice(&signal)?,
+            scheme: Scheme::read(&scheme)?,
+            limits: match root.maybe_section("limits")? {
+                Some(section) => LimitsRequest::read(&section, files)?,
+                None => Limits::default(),
+            },
+            window,
+            resolution_hz,
+            text: text.clone(),
+        };
+        root.finish()?;
+        if let Hardware::Map(map) = &study.hardware
+            && map.control() != Control::Supply
+        {
+            return Err(scheme.problem(
+                "kind",
+                format!(
+                    "a scheme that moves the map's control, {}",
+                    map.control().name()
+                ),
+            ));
+        }
+        Ok(study)
+    }
+}
+
+fn signal_choice(section: &Section<'_>) -> Result<SignalChoice, Problem> {
+    let choice = SignalChoice {
+        file: section.text("file")?.to_owned(),
+        options: FormatOptions::from_section(section)?,
+        level: section.quantity("level", Dimension::Ratio, Range::UpTo(0.0, 1.0))?,
+    };
+    section.finish()?;
+    Ok(choice)
+}
+
+fn spectrum_settings(section: &Section<'_>) -> Result<(Window, Option<f64>), Problem> {
+    let window = section
+        .maybe_choice("window", &WINDOWS)?
+        .unwrap_or(Window::BlackmanHarris);
+    let resolution = section.maybe_quantity("resolution", Dimension::Frequency, Range::Positive)?;
+    section.finish()?;
+    Ok((window, resolution))
+}
+
+fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> {
+    let (has_stage, has_map) = (root.has("stage"), root.has("map"));
+    if has_stage == has_map {
+        let key = if has_stage { "map" } else { "stage" };
+        return Err(root.problem(key, "one of: stage = \"file\" or map = \"file\""));
+    }
+    if has_stage {
+        let name = root.text("stage")?;
+        let shown = files.display(name);
+        let text = files.text(name).map_err(|error| {
+            root.problem(
+                "stage",
+                format!("a file that can be read ({shown}: {error})"),
+            )
+        })?;
+        return Ok(Hardware::Stage(Stage::parse(&shown, &text)?));
+    }
+    let (name, facts) = map_choice(root)?;
+    let shown = files.display(name);
+    let format = match name.rsplit('.').next() {
+        Some("csv") => MapFormat::Csv,
+        Some("json") => MapFormat::Json,
+        _ => return Err(root.problem("map", "a file named *.csv or *.json")),
+    };
+    let reader = files.open(name).map_err(|error| {
+        root.problem("map", format!("a file that can be read ({shown}: {error})"))
+    })?;
+    Ok(Hardware::Map(read_map(&shown, format, reader, &facts)?))
+}
+
+/// `map = "file"` or a table with the facts that the file does not hold.
+fn map_choice<'a>(root: &Section<'a>) -> Result<(&'a str, MapFacts), Problem> {
+    let Ok(Some(section)) = root.maybe_section("map") else {
+        return Ok((root.text("map")?, MapFacts::default()));
+    };
+    let controls = [("supply", Control::Supply), ("width", Control::Width)];
+    let positive = |key, dimension| section.maybe_quantity(key, dimension, Range::Positive);
+    let facts = MapFacts {
+        control: section.maybe_choice("control", &controls)?,
+        load_ohm: positive("load_resistance", Dimension::Resistance)?,
+        frequency_hz: positive("frequency", Dimension::Frequency)?,
+        supply_v: positive("supply", Dimension::Voltage)?,
+    };
+    let file = section.text("file")?;
+    section.finish()?;
+    Ok((file, facts))
+}

@@ -1,0 +1,274 @@
+//! One signal through the whole chain at one oversampling factor, block by block, in two passes.
+//!
+//! The first pass takes spectra, powers and the alignment of output and wanted signal; the second runs
+//! the same chain again and holds the aligned output against the wanted signal. Memory does not grow with
+//! the signal.
+
+use num_complex::Complex64;
+
+use super::error::StudyError;
+use super::load::Study;
+use super::result::Notch;
+use crate::drive::{Modulator, Scheme, SupplyDrive, Track};
+use crate::map::Map;
+use crate::metrics::{
+    Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
+    Spectrum, SpectrumMeter, SpectrumPlan,
+};
+use crate::signal::{Oversampled, Source};
+use crate::transmit::{Energy, MapTransmitter};
+use crate::verdict::Wanted;
+
+/// Samples a block of the chain.
+const BLOCK: usize = 1 << 14;
+
+/// Signal samples dropped at the start and at the end, where the interpolation sees past the file. A twentieth
+/// of a short signal.
+const EDGE: u64 = 512;
+
+/// Bins of the control's density.
+pub const DENSITY_BINS: usize = 100;
+
+/// Signal samples shown to each side of the deepest notch.
+const NOTCH_SAMPLES: usize = 12;
+
+/// What to run.
+#[derive(Debug, Clone, Copy)]
+pub struct Chain<'a> {
+    pub study: &'a Study,
+    pub map: &'a Map,
+    pub factor: usize,
+    pub wanted: &'a Wanted,
+    /// Resolution of the mean spectra, Hz.
+    pub resolution_hz: f64,
+    /// Full width in which the EVM is taken, Hz.
+    pub evm_band_hz: f64,
+    /// Samples of the signal at its own rate.
+    pub signal_samples: u64,
+}
+
+/// What came out.
+#[derive(Debug, Clone)]
+pub struct Run {
+    pub factor: usize,
+    pub rate_hz: f64,
+    pub output_spectrum: Spectrum,
+    pub wanted_spectrum: Spectrum,
+    pub peak_spectra: Vec<Spectrum>,
+    pub output_envelope: EnvelopeFigures,
+    pub wanted_envelope: EnvelopeFigures,
+    pub alignment: Alignment,
+    pub errors: ErrorFigures,
+    pub energy: Energy,
+    /// Part of all instants whose control lay outside the map.
+    pub held: f64,
+    pub control_density: Vec<f64>,
+    pub notch: Notch,
+}
+
+/// The instants of a block that count: start and end of the signal are left out.
+struct Piece<'a> {
+    /// Index of the first instant since the start of the chain.
+    first: u64,
+    track: &'a Track,
+    output_v: &'a [Complex64],
+    range: std::ops::Range<usize>,
+}
+
+impl Piece<'_> {
+    fn wanted(&self) -> &[Complex64] {
+        &self.track.wanted[self.range.clone()]
+    }
+
+    fn output_v(&self) -> &[Complex64] {
+        &self.output_v[self.range.clone()]
+    }
+}
+
+impl Chain<'_> {
+    fn rate_hz(&self, source: &dyn Source) -> f64 {
+        source.rate_hz() * self.factor as f64
+    }
+
+    fn modulator(&self) -> &Modulator {
+        let Scheme::Supply(scheme) = &self.study.scheme;
+        &scheme.modulator
+    }
+
+    /// First and last instant (exclusive) that count.
+    fn span(&self, rate_hz: f64) -> (u64, u64) {
+        let Scheme::Supply(scheme) = &self.study.scheme;
+        let edge = EDGE.min(self.signal_samples / 20) * self.factor as u64;
+        let settling = SupplyDrive::settling(scheme, rate_hz) as u64;
+        (
+            edge + settling,
+            (self.signal_samples * self.factor as u64).saturating_sub(edge),
+        )
+    }
+
+    /// Runs the chain once over the whole source and hands out what counts.
+    fn pass(
+        &self,
+        source: &mut dyn Source,
+        tick: &mut dyn FnMut(u64),
+        mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
+    ) -> Result<(Energy, u64), StudyError> {
+        let rate_hz = self.rate_hz(source);
+        let (start, end) = self.span(rate_hz);
+        let Scheme::Supply(scheme) = &self.study.scheme;
+        let full_v = self.study.hardware.full_supply_v();
+        let mut drive = SupplyDrive::new(scheme, self.study.signal.level, full_v, rate_hz);
+        let mut transmitter = MapTransmitter::new(self.map, self.modulator());
+        let mut oversampled = Oversampled::new(source, self.factor)?;
+        let mut samples = vec![Complex64::ZERO; BLOCK];
+        let mut track = Track::default();
+        let mut output_v = Vec::with_capacity(BLOCK);
+        let mut first = 0u64;
+        loop {
+            let count = oversampled.read(&mut samples)?;
+            if count == 0 || first >= end {
+                break;
+            }
+            track.clear();
+            output_v.clear();
+            drive.push(&samples[..count], &mut track);
+            if first < start {
+                transmitter.restart();
+            }
+            transmitter.push(&track, &mut output_v);
+            let inside = |at: u64| (at.clamp(first, first + count as u64) - first) as usize;
+            let range = inside(start)..inside(end);
+            if !range.is_empty() {
+                take(&Piece {
+                    first,
+                    track: &track,
+                    output_v: &output_v,
+                    range,
+                })?;
+            }
+            first += count as u64;
+            tick(count as u64);
+        }
+        Ok((transmitter.energy(), transmitter.held()))
+    }
+
+    fn meters(&self, rate_hz: f64) -> Result<(SpectrumMeter, Vec<SpectrumMeter>), StudyError> {
+        let load_ohm = self.map.load_ohm();
+        let meter = |resolution_hz, hold| {
+            let plan =
+                SpectrumPlan::for_resolution(rate_hz, resolution_hz, self.study.window, hold)?;
+            let (start, end) = self.span(rate_hz);
+            if (end.saturating_sub(start)) < plan.length as u64 {
+                return Err(StudyError::SignalTooShort {
+                    given: self.signal_samples,
+                    needed: (plan.length as u64 + start) / self.factor as u64
+                        + EDGE.min(self.signal_samples / 20)
+                        + 1,
+                    resolution_hz,
+                });
+            }
+            Ok(SpectrumMeter::new(plan, rate_hz, load_ohm)?)
+        };
+        let fine = meter(self.resolution_hz, Hold::None)?;
+        let peaks = self
+            .wanted
+            .peak_hold_resolutions_hz
+            .iter()
+            .map(|&resolution_hz| meter(resolution_hz, Hold::Peak))
+            .collect::<Result<_, _>>()?;
+        Ok((fine, peaks))
+    }
+
+    /// Both passes. `tick` is told how many oversampled instants were done.
+    ///
+    /// # Errors
+    /// [`StudyError`] of any step.
+    pub fn run(
+        &self,
+        source: &mut dyn Source,
+        tick: &mut dyn FnMut(u64),
+    ) -> Result<Run, StudyError> {
+        let rate_hz = self.rate_hz(source);
+        let Scheme::Supply(scheme) = &self.study.scheme;
+        let load_ohm = self.map.load_ohm();
+        let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
+        let (mut wanted_meter, _) = self.meters(rate_hz)?;
+        let mut output_envelope = EnvelopeMeter::new(load_ohm);
+        let mut wanted_envelope = EnvelopeMeter::new(load_ohm);
+        let search_s = SupplyDrive::settling(scheme, rate_hz) as f64 / rate_hz;
+        let mut alignment = AlignmentMeter::new(rate_hz, search_s)?;
+        let mut density = vec![0u64; DENSITY_BINS];
+        let full_v = self.study.hardware.full_supply_v();
+        let mut deepest = (f64::INFINITY, 0u64);
+        let (energy, held) = self.pass(source, tick, |piece| {
+            output_meter.push(piece.output_v());
+            for meter in &mut peak_meters {
+                meter.push(piece.output_v());
+            }
+            wanted_meter.push(piece.wanted());
+            output_envelope.push(piece.output_v());
+            wanted_envelope.push(piece.wanted());
+            alignment.push(piece.wanted(), piece.output_v())?;
+            for at in piece.range.clone() {
+                let fraction = piece.track.control[at] / full_v;
+                let bin = (fraction * DENSITY_BINS as f64) as usize;
+                density[bin.min(DENSITY_BINS - 1)] += 1;
+                let magnitude = piece.track.wanted[at].norm_sqr();
+                if magnitude < deepest.0 {
+                    deepest = (magnitude, piece.first + at as u64);
+                }
+            }
+            Ok(())
+        })?;
+        let output_envelope = output_envelope.finish().ok_or(StudyError::SilentSignal)?;
+        let wanted_envelope = wanted_envelope.finish().ok_or(StudyError::SilentSignal)?;
+        let alignment = alignment.finish()?;
+
+        let mut errors = ErrorMeter::new(alignment, rate_hz, Some(self.evm_band_hz))?;
+        let mut notch = Notch::default();
+        let reach = (NOTCH_SAMPLES * self.factor) as u64;
+        let level = self.study.signal.level;
+        self.pass(source, tick, |piece| {
+            errors.push(piece.wanted(), piece.output_v())?;
+            for at in piece.range.clone() {
+                let instant = piece.first + at as u64;
+                if instant.abs_diff(deepest.1) <= reach {
+                    let offset = instant as f64 - deepest.1 as f64;
+                    notch.time_s.push(offset / rate_hz);
+                    notch.wanted.push(level * piece.track.wanted[at].norm());
+                    notch.asked.push(piece.track.asked[at] / full_v);
+                    notch.control.push(piece.track.control[at] / full_v);
+                }
+            }
+            Ok(())
+        })?;
+
+        let total: u64 = density.iter().sum();
+        let mut wanted_spectrum = wanted_meter.finish()?;
+        let gain = alignment.gain.norm_sqr();
+        for density in &mut wanted_spectrum.mean_w_per_hz {
+            *density *= gain;
+        }
+        Ok(Run {
+            factor: self.factor,
+            rate_hz,
+            output_spectrum: output_meter.finish()?,
+            wanted_spectrum,
+            peak_spectra: peak_meters
+                .into_iter()
+                .map(SpectrumMeter::finish)
+                .collect::<Result<_, _>>()?,
+            output_envelope,
+            wanted_envelope,
+            alignment,
+            errors: errors.finish()?,
+            energy,
+            held: held as f64 / total.max(1) as f64,
+            control_density: density
+                .iter()
+                .map(|&n| n as f64 / total.max(1) as f64)
+                .collect(),
+            notch,
+        })
+    }
+}

@@ -1,0 +1,112 @@
+//! What a reader of the result must know besides, with advice.
+
+use std::fmt;
+
+use crate::units::show;
+
+/// Something that limits how far the result can be trusted.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Warning {
+    /// Finer sampling moves the margins.
+    NotConverged {
+        /// Largest movement of any margin, dB.
+        moved_db: f64,
+        /// Oversampling of the result.
+        factor: usize,
+    },
+    /// The finest rate was reached before sampling was fine enough for the imperfections.
+    RateLimited {
+        /// Oversampling of the result.
+        factor: usize,
+    },
+    /// The control left the map.
+    HeldAtEdge {
+        /// Part of all instants.
+        fraction: f64,
+    },
+    /// The linear stage goes below ground, where a real device conducts.
+    DiodeWouldConduct {
+        /// Lowest drain voltage at full supply, V.
+        lowest_v: f64,
+    },
+    /// The map assumes that the stage settles at once.
+    SlowStage {
+        /// Settling time of the stage, s.
+        settling_s: f64,
+        /// Sample period of the signal, s.
+        signal_s: f64,
+    },
+    /// A map from a file knows neither stress nor memory.
+    MapFromFile {
+        /// What it cannot answer.
+        missing: Vec<&'static str>,
+    },
+    /// Few averages.
+    FewAverages {
+        /// Segments averaged.
+        segments: u64,
+    },
+    /// Peaks of the signal past full scale.
+    AboveFullScale {
+        /// Highest magnitude, full scale 1.
+        peak: f64,
+    },
+    /// Anything that the limits say.
+    Limits(String),
+}
+
+impl fmt::Display for Warning {
+    fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
+        match self {
+            Self::NotConverged { moved_db, factor } => write!(
+                f,
+                "sampling is not fine enough: from {}x to {factor}x oversampling a margin moved by {moved_db:.2} dB (0.1 dB is allowed). Treat margins as uncertain by that much",
+                factor / 2
+            ),
+            Self::RateLimited { factor } => write!(
+                f,
+                "the imperfections ask for finer sampling than the highest factor of {factor}: check that their bandwidths and frequencies are meant"
+            ),
+            Self::HeldAtEdge { fraction } => write!(
+                f,
+                "the control left the map at {} of all instants and was held at its edge: lower the level or extend the map",
+                show(100.0 * fraction, "%", 3).replace(" %", " %")
+            ),
+            Self::DiodeWouldConduct { lowest_v } => write!(
+                f,
+                "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the linear stage does not",
+                show(*lowest_v, "V", 3)
+            ),
+            Self::SlowStage {
+                settling_s,
+                signal_s,
+            } => write!(
+                f,
+                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result",
+                show(*settling_s, "s", 3),
+                show(*signal_s, "s", 3)
+            ),
+            Self::MapFromFile { missing } => write!(
+                f,
+                "the map came from a file: {} cannot be answered from it",
+                missing.join(", ")
+            ),
+            Self::FewAverages { segments } => write!(
+                f,
+                "the spectrum averages only {segments} segments, so that each reading is uncertain by about {:.1} dB: use a longer signal",
+                4.34 / (*segments as f64).sqrt()
+            ),
+            Self::AboveFullScale { peak } => write!(
+                f,
+                "the signal reaches {peak:.3} of full scale: what lies above the supply's range is clipped; lower the level"
+            ),
+            Self::Limits(text) => f.write_str(text),
+        }
+    }
+}
+
+impl serde::Serialize for Warning {
+    fn serialize<S: serde::Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        serializer.collect_str(self)
+    }
+}

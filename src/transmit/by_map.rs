@@ -1,0 +1,97 @@
+//! The stage as its map: it settles at once to the orbit of the present control.
+
+use num_complex::Complex64;
+
+use crate::drive::{Modulator, Track};
+use crate::map::Map;
+
+/// Where the energy went, summed over samples.
+#[derive(Debug, Clone, Copy, PartialEq, Default)]
+pub struct Energy {
+    /// Samples summed.
+    pub samples: u64,
+    /// Sum of output powers, W.
+    pub output_w: f64,
+    /// Sum of powers that the stage draws from its supply, W.
+    pub stage_w: f64,
+    /// Sum of powers that the modulator draws, W.
+    pub modulator_w: f64,
+}
+
+impl Energy {
+    /// Mean output power, W.
+    pub fn mean_output_w(&self) -> f64 {
+        self.output_w / self.samples as f64
+    }
+
+    /// Output over what the stage draws.
+    pub fn stage_efficiency(&self) -> f64 {
+        self.output_w / self.stage_w
+    }
+
+    /// Output over what the modulator draws.
+    pub fn efficiency(&self) -> f64 {
+        self.output_w / self.modulator_w
+    }
+}
+
+/// A map at work on a supply track.
+#[derive(Debug, Clone)]
+pub struct MapTransmitter<'a> {
+    map: &'a Map,
+    modulator: Modulator,
+    energy: Energy,
+    held: u64,
+    highest_control: f64,
+}
+
+impl<'a> MapTransmitter<'a> {
+    /// `map` behind `modulator`.
+    pub fn new(map: &'a Map, modulator: &Modulator) -> Self {
+        Self {
+            map,
+            modulator: *modulator,
+            energy: Energy::default(),
+            held: 0,
+            highest_control: 0.0,
+        }
+    }
+
+    /// Appends the output for every instant of `track`, peak volts across the load.
+    pub fn push(&mut self, track: &Track, output_v: &mut Vec<Complex64>) {
+        let load_ohm = self.map.load_ohm();
+        for (&control, &phase) in track.control.iter().zip(&track.phase) {
+            let (gain_v, held) = self.map.output_held_v(control);
+            let output = gain_v * phase;
+            self.held += u64::from(held);
+            self.highest_control = self.highest_control.max(control);
+            self.energy.output_w += output.norm_sqr() / (2.0 * load_ohm);
+            let stage_w = control * self.map.supply_held_a(control).unwrap_or(f64::NAN);
+            self.energy.stage_w += stage_w;
+            self.energy.modulator_w += stage_w / self.modulator.efficiency + self.modulator.idle_w;
+            output_v.push(output);
+        }
+        self.energy.samples += track.len() as u64;
+    }
+
+    /// Forgets the sums: what came before was settling.
+    pub fn restart(&mut self) {
+        self.energy = Energy::default();
+        self.held = 0;
+    }
+
+    /// The sums so far. Powers drawn are not a number where the map knows no supply current.
+    pub fn energy(&self) -> Energy {
+        self.energy
+    }
+
+    /// Instants whose control lay outside the map and was held at its edge.
+    pub fn held(&self) -> u64 {
+        self.held
+    }
+
+    /// The highest control so far.
+    pub fn highest_control(&self) -> f64 {
+        self.highest_control
+    }
+}
