@@ -42,6 +42,9 @@ pub struct Segment {
     pub to: Option<Corner>,
     /// Resolution or integration bandwidth, Hz; 0 where the rule fixes none.
     pub bw_hz: f64,
+    /// A peak-hold reading in `bw_hz` is the sum of those in this bandwidth, Hz, over `bw_hz`.
+    #[serde(skip_serializing_if = "Option::is_none")]
+    pub sum_of_bw_hz: Option<f64>,
     /// Where the measuring filter may stand.
     pub placement: Placement,
     /// How the terms make one limit.

@@ -106,6 +106,17 @@ pub(super) fn mask(section: &Section<'_>) -> Result<Mask, Problem> {
             }
         }
     }
+    if detector == Detector::Mean
+        && let Some(row) = rows
+            .iter()
+            .zip(&segments)
+            .find_map(|(row, segment)| segment.sum_of_bw_hz.map(|_| row))
+    {
+        return Err(row.problem(
+            "sum_of_bw_hz",
+            "nothing, unless the detector is \"peak_hold\"",
+        ));
+    }
     if detector == Detector::PeakHold && segments.iter().any(|segment| segment.bw_hz == 0.0) {
         return Err(section.problem(
             "detector",
@@ -148,6 +159,7 @@ fn from_points(
         from: Corner::Hz(from_hz),
         to: to.map(Corner::Hz),
         bw_hz: bw_hz.unwrap_or(0.0),
+        sum_of_bw_hz: None,
         placement,
         combine: Combine::Single,
         terms: vec![term],
@@ -259,10 +271,18 @@ fn segment(
         ));
     };
     let placement = row.maybe_choice("placement", &PLACEMENTS)?;
+    let sum_of_bw_hz = row.maybe_quantity("sum_of_bw_hz", HERTZ, Range::Positive)?;
+    if sum_of_bw_hz.is_some_and(|narrow_hz| narrow_hz >= bw_hz) {
+        return Err(row.problem(
+            "sum_of_bw_hz",
+            format!("less than bw_hz, {}", show(bw_hz, "Hz", 6)),
+        ));
+    }
     let segment = Segment {
         from,
         to,
         bw_hz,
+        sum_of_bw_hz,
         placement: placement.unwrap_or(own_placement),
         combine,
         terms,

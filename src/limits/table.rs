@@ -86,7 +86,14 @@ pub fn table_rows(
             for segment in mask.segments.iter().filter(|s| s.applies.to_class(class)) {
                 let bandwidth = match segment.bw_hz {
                     0.0 => "not fixed".to_owned(),
-                    hz => show(hz, "Hz", 4),
+                    hz => match segment.sum_of_bw_hz {
+                        Some(narrow_hz) => format!(
+                            "{} (sum of {})",
+                            show(hz, "Hz", 4),
+                            show(narrow_hz, "Hz", 4)
+                        ),
+                        None => show(hz, "Hz", 4),
+                    },
                 };
                 let ends = match evaluate(mask, segment, conditions) {
                     Ok(ends) => {

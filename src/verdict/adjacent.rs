@@ -30,6 +30,7 @@ pub(super) fn beyond_mask(adjacent: &Adjacent) -> Option<Mask> {
             from: Corner::Hz(from_hz),
             to: None,
             bw_hz,
+            sum_of_bw_hz: None,
             placement: Placement::Centre,
             combine: Combine::Single,
             terms: vec![term],

@@ -93,7 +93,7 @@ impl MaskJudge<'_> {
             self.bands,
             self.measured.peak_hold,
             self.mask.detector,
-            bandwidth_hz,
+            (bandwidth_hz, segment.sum_of_bw_hz),
         )
     }
 
@@ -126,16 +126,16 @@ impl MaskJudge<'_> {
         let name = format!("{}, {}", self.set.name, extent(from_hz, to_hz));
         let bandwidth_hz = bandwidth_hz(segment.bw_hz, &self.conditions);
         let Some(reader) = self.reader(segment) else {
-            gathered.check(
-                Some(self.set),
-                name,
-                Outcome::Undecided,
-                None,
-                format!(
-                    "the segment is read by peak hold in {}, and no spectrum was taken so: give a longer signal or a rate at which that resolution is possible",
-                    show(bandwidth_hz, "Hz", 4)
-                ),
+            let reason = format!(
+                "the segment is read by peak hold in {}, and no spectrum was taken so: give a longer signal or a rate at which that resolution is possible",
+                show(segment.sum_of_bw_hz.unwrap_or(bandwidth_hz), "Hz", 4)
             );
+            if continues {
+                // The same limit was judged up to where the rule changes the bandwidth.
+                gathered.warnings.push(format!("{name}: {reason}"));
+            } else {
+                gathered.check(Some(self.set), name, Outcome::Undecided, None, reason);
+            }
             return Ok(Seen::Unseen);
         };
         let (start_hz, stop_hz) = centres(segment.placement, from_hz, to_hz, bandwidth_hz);
@@ -188,7 +188,7 @@ impl MaskJudge<'_> {
         let Some((side, worst)) = tightest else {
             return Ok(Seen::Unseen);
         };
-        let mut reason = self.reason(side, &worst, &reference, bandwidth_hz);
+        let mut reason = self.reason(segment, side, &worst, &reference);
         if segment.bw_hz == 0.0 {
             reason.push_str(&format!(
                 "; the rule fixes no bandwidth, {} were taken",
@@ -284,7 +284,12 @@ impl MaskJudge<'_> {
         }
     }
 
-    fn reason(&self, side: Side, worst: &Worst, reference: &Level, bandwidth_hz: f64) -> String {
+    fn reason(&self, segment: &Segment, side: Side, worst: &Worst, reference: &Level) -> String {
+        let bandwidth_hz = bandwidth_hz(segment.bw_hz, &self.conditions);
+        let detector = match segment.sum_of_bw_hz {
+            Some(narrow_hz) => format!("sum of peak holds in {}", show(narrow_hz, "Hz", 4)),
+            None => self.mask.detector.words().to_owned(),
+        };
         let (level_db, limit_db, unit) = shown(worst, reference.dbm);
         let unit = unit.word();
         let against = if unit == "dB" {
@@ -298,11 +303,10 @@ impl MaskJudge<'_> {
             format!("{:.2} dB too much", -worst.margin_db)
         };
         format!(
-            "{} side, {} from the carrier: {level_db:.2} {unit} in {} ({}){against}, limit {limit_db:.2} {unit}: {room}",
+            "{} side, {} from the carrier: {level_db:.2} {unit} in {} ({detector}){against}, limit {limit_db:.2} {unit}: {room}",
             side.word(),
             show(worst.offset_hz, "Hz", 6),
             show(bandwidth_hz, "Hz", 4),
-            self.mask.detector.words(),
         )
     }
 }

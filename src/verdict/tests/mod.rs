@@ -77,10 +77,9 @@ fn mask_d(lower_dbm: f64, upper_dbm: f64) -> Judgement {
         };
         watt_from_dbm(dbm) / 100.0
     });
-    let wide = spectrum(16, 25e3, 100e3, |_| watt_from_dbm(-50.0) / 100e3);
     let fine = narrow.clone();
     judge(
-        &measured(&fine, &[narrow, wide], 5.0),
+        &measured(&fine, &[narrow], 5.0),
         &limits(&["fcc_90_210_mask_d"]),
     )
 }

@@ -31,7 +31,7 @@ fn nothing_asked_and_nothing_sent_are_undecided() {
 #[test]
 fn wanted_spectra() {
     let wanted = Wanted::of(&limits(&["fcc_90_210_mask_d", "fcc_90_210_mask_e"]));
-    assert_eq!(wanted.peak_hold_resolutions_hz, [100.0, 100e3]);
+    assert_eq!(wanted.peak_hold_resolutions_hz, [100.0]);
     assert_eq!(wanted.fine_resolution_hz, Some(100.0));
     // Mask D: the first 100 kHz beyond 55.625 kHz end at 155.625 kHz.
     assert!(
