@@ -1,6 +1,6 @@
 //! All sets that can be named: the published ones, and the user's files.
 
-use super::read::read_sets;
+use super::read::{read_sets, read_sets_beside};
 use super::set::LimitSet;
 use crate::input::{Problem, nearest};
 
@@ -39,19 +39,10 @@ impl Library {
     /// # Errors
     /// As [`read_sets`], and a name that is taken.
     pub fn add(&mut self, file: &str, text: &str) -> Result<Vec<String>, Problem> {
-        let sets = read_sets(file, text)?;
-        let mut names = Vec::new();
-        for set in sets {
-            if self.sets.iter().any(|other| other.name == set.name) {
-                return Err(Problem::about_file(
-                    file,
-                    format!("a set called \"{}\"", set.name),
-                    "a name that no other set has",
-                ));
-            }
-            names.push(set.name.clone());
-            self.sets.push(set);
-        }
+        let taken = |name: &str| self.sets.iter().any(|set| set.name == name);
+        let sets = read_sets_beside(file, text, taken)?;
+        let names = sets.iter().map(|set| set.name.clone()).collect();
+        self.sets.extend(sets);
         Ok(names)
     }
 

@@ -1,6 +1,7 @@
 //! A file of limit sets: the published ones and the user's own have one form.
 
-use super::read_mask::{mask, place_of_check};
+use super::consistent::hold;
+use super::read_mask::mask;
 use super::read_rows::{adjacent, modulation, signal, spurious};
 use super::set::{CheckPoint, Confidence, Kind, LimitSet, Obtained, Provenance};
 use crate::input::{Document, Problem, Range, Section};
@@ -24,6 +25,15 @@ enum Word {
 /// # Errors
 /// The first thing that is wrong, with its place.
 pub fn read_sets(file: &str, text: &str) -> Result<Vec<LimitSet>, Problem> {
+    read_sets_beside(file, text, |_| false)
+}
+
+/// As [`read_sets`], for a file whose sets may not take the names that are `taken`.
+pub(super) fn read_sets_beside(
+    file: &str,
+    text: &str,
+    taken: impl Fn(&str) -> bool,
+) -> Result<Vec<LimitSet>, Problem> {
     let document = Document::parse(file, text)?;
     let root = document.root();
     root.maybe_whole("schema", SCHEMA, SCHEMA)?;
@@ -35,7 +45,15 @@ pub fn read_sets(file: &str, text: &str) -> Result<Vec<LimitSet>, Problem> {
     }
     named
         .into_iter()
-        .map(|(name, section)| set(name, &section))
+        .map(|(name, section)| {
+            if taken(name) {
+                return Err(section.problem_here(
+                    format!("a set called \"{name}\""),
+                    "a name that no other set has",
+                ));
+            }
+            set(name, &section)
+        })
         .collect()
 }
 
@@ -68,7 +86,7 @@ fn set(name: &str, section: &Section<'_>) -> Result<LimitSet, Problem> {
             .iter()
             .map(|row| {
                 let check = check_point(row)?;
-                place_of_check(mask, &check, row)?;
+                hold(mask, &check, row)?;
                 Ok(check)
             })
             .collect::<Result<_, Problem>>()?,

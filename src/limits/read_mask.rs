@@ -1,12 +1,11 @@
 //! Masks in a file: segments or points.
 
-use super::mask::{
-    Combine, Conditions, Corner, Detector, LimitLevel, Mask, Origin, Placement, Reference, Segment,
-    Term,
-};
+use super::consistent::overlap;
+use super::mask::{Corner, Mask, Segment};
 use super::read_rows::applies;
+use super::read_term::term;
 use super::rows::Applies;
-use super::set::CheckPoint;
+use super::terms::{Combine, Detector, Origin, Placement, Reference, Term};
 use crate::input::{Problem, Range, Section};
 use crate::units::{Dimension, show};
 
@@ -96,16 +95,27 @@ pub(super) fn mask(section: &Section<'_>) -> Result<Mask, Problem> {
                     Corner::Hz(_) => "from_hz",
                     Corner::Fraction(_) => "from_frac",
                 };
-                return Err(rows[at].problem(
+                return Err(rows.get(at).unwrap_or(section).problem(
                     key,
                     format!(
                         "an offset outside segment {} ({}): segments must not overlap",
                         before + 1,
-                        extent(earlier)
+                        earlier.extent_words()
                     ),
                 ));
             }
         }
+    }
+    if detector == Detector::Mean
+        && let Some(row) = rows
+            .iter()
+            .zip(&segments)
+            .find_map(|(row, segment)| segment.sum_of_bw_hz.map(|_| row))
+    {
+        return Err(row.problem(
+            "sum_of_bw_hz",
+            "nothing, unless the detector is \"peak_hold\"",
+        ));
     }
     if detector == Detector::PeakHold && segments.iter().any(|segment| segment.bw_hz == 0.0) {
         return Err(section.problem(
@@ -149,6 +159,7 @@ fn from_points(
         from: Corner::Hz(from_hz),
         to: to.map(Corner::Hz),
         bw_hz: bw_hz.unwrap_or(0.0),
+        sum_of_bw_hz: None,
         placement,
         combine: Combine::Single,
         terms: vec![term],
@@ -260,10 +271,18 @@ fn segment(
         ));
     };
     let placement = row.maybe_choice("placement", &PLACEMENTS)?;
+    let sum_of_bw_hz = row.maybe_quantity("sum_of_bw_hz", HERTZ, Range::Positive)?;
+    if sum_of_bw_hz.is_some_and(|narrow_hz| narrow_hz >= bw_hz) {
+        return Err(row.problem(
+            "sum_of_bw_hz",
+            format!("less than bw_hz, {}", show(bw_hz, "Hz", 6)),
+        ));
+    }
     let segment = Segment {
         from,
         to,
         bw_hz,
+        sum_of_bw_hz,
         placement: placement.unwrap_or(own_placement),
         combine,
         terms,
@@ -271,147 +290,4 @@ fn segment(
     };
     row.finish()?;
     Ok(segment)
-}
-
-#[derive(Clone, Copy)]
-enum Form {
-    Const,
-    Linear,
-    Log,
-    Power,
-    Absolute,
-}
-
-/// One term. `from` is where its segment starts: a logarithm has no value at 0.
-pub(super) fn term(
-    section: &Section<'_>,
-    from: Corner,
-    reference: Reference,
-) -> Result<Term, Problem> {
-    let forms = [
-        ("const", Form::Const),
-        ("linear", Form::Linear),
-        ("log", Form::Log),
-        ("power", Form::Power),
-        ("absolute", Form::Absolute),
-    ];
-    let Some(form) = section.maybe_choice("form", &forms)? else {
-        return Err(section.problem(
-            "form",
-            "\"const\", \"linear\", \"log\", \"power\" or \"absolute\"",
-        ));
-    };
-    let decibel = |key| section.quantity(key, Dimension::Decibel, Range::Any);
-    if reference == Reference::AbsoluteDbm && !matches!(form, Form::Absolute) {
-        return Err(section.problem(
-            "form",
-            "\"absolute\" where the set's reference is \"absolute_dbm\"",
-        ));
-    }
-    let term = match form {
-        Form::Const => Term::Const { db: decibel("db")? },
-        Form::Linear => Term::Linear {
-            at_hz: section.quantity("at_hz", HERTZ, Range::NotNegative)?,
-            at_db: decibel("at_db")?,
-            slope_db_per_hz: section.quantity("slope_db_per_hz", Dimension::Ratio, Range::Any)?,
-        },
-        Form::Log => {
-            if matches!(from, Corner::Hz(at) | Corner::Fraction(at) if at <= 0.0) {
-                return Err(section.problem(
-                    "form",
-                    "another form where the segment starts at 0: a logarithm has no value there",
-                ));
-            }
-            Term::Log {
-                k_db: decibel("k_db")?,
-                f0_hz: section.quantity("f0_hz", HERTZ, Range::Positive)?,
-            }
-        }
-        Form::Power => Term::Power {
-            c_db: decibel("c_db")?,
-        },
-        Form::Absolute => Term::Absolute {
-            dbm: section.quantity("dbm", Dimension::Level, Range::Any)?,
-        },
-    };
-    section.finish()?;
-    Ok(term)
-}
-
-/// True where two segments could both hold at one offset.
-fn overlap(a: &Segment, b: &Segment) -> bool {
-    let numbers = |segment: &Segment| {
-        let (from, fraction) = match segment.from {
-            Corner::Hz(hz) => (hz, false),
-            Corner::Fraction(fraction) => (fraction, true),
-        };
-        let to = match segment.to {
-            Some(Corner::Hz(to) | Corner::Fraction(to)) => to,
-            None => f64::INFINITY,
-        };
-        (from, to, fraction)
-    };
-    let ((a_from, a_to, a_fraction), (b_from, b_to, b_fraction)) = (numbers(a), numbers(b));
-    let holds_point =
-        |from: f64, to: f64, at: f64| at > from && at <= to || at == from && from == to;
-    let share_offsets = match (a_from == a_to, b_from == b_to) {
-        (true, _) => holds_point(b_from, b_to, a_from),
-        (_, true) => holds_point(a_from, a_to, b_from),
-        _ => a_from < b_to && b_from < a_to,
-    };
-    let share_classes = a.applies.classes.is_empty()
-        || b.applies.classes.is_empty()
-        || a.applies
-            .classes
-            .iter()
-            .any(|class| b.applies.classes.contains(class));
-    let range = |applies: &Applies| {
-        (
-            applies.min_power_w.unwrap_or(0.0),
-            applies.max_power_w.unwrap_or(f64::INFINITY),
-        )
-    };
-    let ((a_min, a_max), (b_min, b_max)) = (range(&a.applies), range(&b.applies));
-    let share_powers = a_min < b_max && b_min < a_max;
-    a_fraction == b_fraction && share_offsets && share_classes && share_powers
-}
-
-fn extent(segment: &Segment) -> String {
-    let corner = |corner: Corner| match corner {
-        Corner::Hz(hz) => show(hz, "Hz", 6),
-        Corner::Fraction(fraction) => format!("{fraction} times the authorized bandwidth"),
-    };
-    match segment.to {
-        Some(to) => format!("{} to {}", corner(segment.from), corner(to)),
-        None => format!("{} and beyond", corner(segment.from)),
-    }
-}
-
-/// Holds `check` against the mask: a file that contradicts its own check points is refused.
-pub(super) fn place_of_check(
-    mask: &Mask,
-    check: &CheckPoint,
-    row: &Section<'_>,
-) -> Result<(), Problem> {
-    let conditions = Conditions {
-        power_w: check.power_w,
-        authorized_bandwidth_hz: check.authorized_bandwidth_hz,
-        ..Conditions::default()
-    };
-    let level = mask
-        .limit_at(check.offset_hz, None, &conditions)
-        .map_err(|error| row.problem_here("a check point", format!("its conditions ({error})")))?;
-    // Half of the last of three printed decimals.
-    let limit_db = match level {
-        Some(LimitLevel::Relative { db }) => db,
-        _ => f64::NAN,
-    };
-    if (limit_db - check.limit_db).abs() <= 0.000_5 + 1e-9 {
-        Ok(())
-    } else {
-        Err(row.problem(
-            "limit_db",
-            format!("{limit_db:.3} dB, which is what the segments give there"),
-        ))
-    }
 }

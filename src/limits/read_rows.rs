@@ -1,11 +1,12 @@
 //! Rows in a file: neighbouring channels, error vectors, spurious emissions, facts about signals.
 
-use super::mask::{Corner, Reference};
-use super::read_mask::term;
+use super::mask::Corner;
+use super::read_term::term;
 use super::rows::{
     Adjacent, AdjacentRow, Applies, ErrorRow, MainFilter, Modulation, SignalFormat, Spurious,
     SpuriousRow, Statistic,
 };
+use super::terms::Reference;
 use crate::input::{Problem, Range, Section};
 use crate::metrics::ChannelFilter;
 use crate::units::{Dimension, from_db, show};

@@ -2,7 +2,7 @@
 
 use serde::Serialize;
 
-use super::mask::Term;
+use super::terms::Term;
 use crate::metrics::ChannelFilter;
 
 /// Which equipment and which output powers a row is for. Both powers are included; at a power that

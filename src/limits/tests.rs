@@ -223,3 +223,24 @@ fn cautions_say_how_numbers_were_obtained() {
     );
     assert_eq!(caution("fcc_90_210_mask_a"), None);
 }
+
+proptest::proptest! {
+    /// A published set with one line lost, doubled or spoilt is read or refused with a place; it
+    /// never stops the program.
+    #[test]
+    fn spoilt_files_are_read_or_refused(at in 0usize..1400, how in 0u8..4) {
+        let text = include_str!("published.toml");
+        let mut lines: Vec<String> = text.lines().map(str::to_owned).collect();
+        let line = lines[at].clone();
+        match how {
+            0 => drop(lines.remove(at)),
+            1 => lines.insert(at, line),
+            2 => lines[at] = line.replace("= ", "= -"),
+            _ => lines[at] = line.replace("0.0", "1e308"),
+        }
+        if let Err(problem) = read_sets("spoilt.toml", &lines.join("\n")) {
+            let message = problem.to_string();
+            proptest::prop_assert!(message.starts_with("spoilt.toml:"), "{}", message);
+        }
+    }
+}

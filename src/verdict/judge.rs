@@ -2,8 +2,9 @@
 
 use serde::Serialize;
 
+use super::adjacent::{adjacent as neighbours, beyond_mask};
 use super::line::{MaskLine, lines_of};
-use super::mask::{MaskJudge, beyond_mask};
+use super::mask::MaskJudge;
 use super::outcome::{Check, MaskMargin, Outcome, Verdict};
 use super::reading::Bands;
 use super::rows;
@@ -136,7 +137,7 @@ pub fn judge(measured: &Measured<'_>, limits: &Limits) -> Judgement {
                 gathered.lines.extend(lines_of(&judge, &known));
             }
             Kind::Adjacent(adjacent) => {
-                rows::adjacent(set, adjacent, measured, limits, &mut gathered);
+                neighbours(set, adjacent, measured, limits, &mut gathered);
                 if let Some(mask) = beyond_mask(adjacent) {
                     let judge = MaskJudge {
                         set,

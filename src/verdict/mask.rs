@@ -2,13 +2,10 @@
 
 use super::judge::{Gathered, Measured};
 use super::outcome::{MaskMargin, Outcome, Side, Unit};
-use super::reading::{Bands, Reader, level_dbm};
-use super::reference::{Level, detector_words, level};
+use super::reading::{Bands, Reader, centres, level_dbm};
+use super::reference::{Level, level};
 use super::wanted::bandwidth_hz;
-use crate::limits::{
-    Adjacent, Applies, Combine, Conditions, Corner, Detector, LimitLevel, LimitSet, Mask,
-    NotStated, Origin, Placement, Reference, Segment, Term,
-};
+use crate::limits::{Conditions, LimitLevel, LimitSet, Mask, NotStated, Reference, Segment, Term};
 use crate::units::show;
 
 /// A fine spectrum coarser than this part of the measuring bandwidth smears what it reads.
@@ -45,33 +42,6 @@ enum Seen {
     Trivial,
 }
 
-/// The mask that a set of neighbouring channels puts beyond them, read in its widest row's bandwidth.
-pub(super) fn beyond_mask(adjacent: &Adjacent) -> Option<Mask> {
-    let (from_hz, term) = adjacent.beyond?;
-    let bw_hz = adjacent
-        .rows
-        .iter()
-        .map(|row| row.filter.bandwidth_hz())
-        .fold(0.0, f64::max);
-    Some(Mask {
-        reference: Reference::MeanPowerInChannel,
-        origin: Origin::ChannelCenter,
-        detector: Detector::Mean,
-        channel_hz: adjacent.channel_hz,
-        authorized_bandwidth_hz: None,
-        floor_dbm: adjacent.floor_dbm,
-        segments: vec![Segment {
-            from: Corner::Hz(from_hz),
-            to: None,
-            bw_hz,
-            placement: Placement::Centre,
-            combine: Combine::Single,
-            terms: vec![term],
-            applies: Applies::default(),
-        }],
-    })
-}
-
 impl MaskJudge<'_> {
     pub(super) fn run(&self, gathered: &mut Gathered) {
         let chosen = match self.mask.segments_for(self.class, &self.conditions) {
@@ -89,7 +59,8 @@ impl MaskJudge<'_> {
             });
             match self.segment(segment, continues, gathered) {
                 Ok(seen) => before = Some((segment, seen)),
-                Err(error) => self.undecided(gathered, self.set.name.clone(), error),
+                // What one segment misses, all do: it is said once.
+                Err(error) => return self.undecided(gathered, self.set.name.clone(), error),
             }
         }
     }
@@ -122,7 +93,7 @@ impl MaskJudge<'_> {
             self.bands,
             self.measured.peak_hold,
             self.mask.detector,
-            bandwidth_hz,
+            (bandwidth_hz, segment.sum_of_bw_hz),
         )
     }
 
@@ -155,16 +126,16 @@ impl MaskJudge<'_> {
         let name = format!("{}, {}", self.set.name, extent(from_hz, to_hz));
         let bandwidth_hz = bandwidth_hz(segment.bw_hz, &self.conditions);
         let Some(reader) = self.reader(segment) else {
-            gathered.check(
-                Some(self.set),
-                name,
-                Outcome::Undecided,
-                None,
-                format!(
-                    "the segment is read by peak hold in {}, and no spectrum was taken so: give a longer signal or a rate at which that resolution is possible",
-                    show(bandwidth_hz, "Hz", 4)
-                ),
+            let reason = format!(
+                "the segment is read by peak hold in {}, and no spectrum was taken so: give a longer signal or a rate at which that resolution is possible",
+                show(segment.sum_of_bw_hz.unwrap_or(bandwidth_hz), "Hz", 4)
             );
+            if continues {
+                // The same limit was judged up to where the rule changes the bandwidth.
+                gathered.warnings.push(format!("{name}: {reason}"));
+            } else {
+                gathered.check(Some(self.set), name, Outcome::Undecided, None, reason);
+            }
             return Ok(Seen::Unseen);
         };
         let (start_hz, stop_hz) = centres(segment.placement, from_hz, to_hz, bandwidth_hz);
@@ -217,7 +188,7 @@ impl MaskJudge<'_> {
         let Some((side, worst)) = tightest else {
             return Ok(Seen::Unseen);
         };
-        let mut reason = self.reason(side, &worst, &reference, bandwidth_hz);
+        let mut reason = self.reason(segment, side, &worst, &reference);
         if segment.bw_hz == 0.0 {
             reason.push_str(&format!(
                 "; the rule fixes no bandwidth, {} were taken",
@@ -313,7 +284,12 @@ impl MaskJudge<'_> {
         }
     }
 
-    fn reason(&self, side: Side, worst: &Worst, reference: &Level, bandwidth_hz: f64) -> String {
+    fn reason(&self, segment: &Segment, side: Side, worst: &Worst, reference: &Level) -> String {
+        let bandwidth_hz = bandwidth_hz(segment.bw_hz, &self.conditions);
+        let detector = match segment.sum_of_bw_hz {
+            Some(narrow_hz) => format!("sum of peak holds in {}", show(narrow_hz, "Hz", 4)),
+            None => self.mask.detector.words().to_owned(),
+        };
         let (level_db, limit_db, unit) = shown(worst, reference.dbm);
         let unit = unit.word();
         let against = if unit == "dB" {
@@ -327,11 +303,10 @@ impl MaskJudge<'_> {
             format!("{:.2} dB too much", -worst.margin_db)
         };
         format!(
-            "{} side, {} from the carrier: {level_db:.2} {unit} in {} ({}){against}, limit {limit_db:.2} {unit}: {room}",
+            "{} side, {} from the carrier: {level_db:.2} {unit} in {} ({detector}){against}, limit {limit_db:.2} {unit}: {room}",
             side.word(),
             show(worst.offset_hz, "Hz", 6),
             show(bandwidth_hz, "Hz", 4),
-            detector_words(self.mask.detector),
         )
     }
 }
@@ -346,23 +321,6 @@ fn shown(worst: &Worst, reference_dbm: f64) -> (f64, f64, Unit) {
             (worst.level_dbm - reference_dbm, db, Unit::Decibel)
         }
         LimitLevel::Absolute { dbm } => (worst.level_dbm, dbm, Unit::Dbm),
-    }
-}
-
-/// The first and last centre of the measuring filter in a segment.
-pub(super) fn centres(
-    placement: Placement,
-    from_hz: f64,
-    to_hz: f64,
-    bandwidth_hz: f64,
-) -> (f64, f64) {
-    match placement {
-        Placement::Centre => (from_hz, to_hz),
-        Placement::Inside if to_hz - from_hz < bandwidth_hz => {
-            let middle_hz = (from_hz + to_hz) / 2.0;
-            (middle_hz, middle_hz)
-        }
-        Placement::Inside => (from_hz + bandwidth_hz / 2.0, to_hz - bandwidth_hz / 2.0),
     }
 }
 

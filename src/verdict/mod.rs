@@ -3,6 +3,7 @@
 //! [`Wanted::of`] says which spectra the limits need, [`judge`] holds what was measured against them.
 //! A reading equal to its limit is within; a limit that nothing was read for is undecided, never within.
 
+mod adjacent;
 mod judge;
 mod line;
 mod mask;

@@ -1,6 +1,6 @@
 //! Readings of a mask: power in a bandwidth that is swept over the offset.
 
-use crate::limits::Detector;
+use crate::limits::{Detector, Placement};
 use crate::metrics::Spectrum;
 use crate::units::dbm_from_watt;
 
@@ -26,6 +26,7 @@ pub(super) fn level_dbm(watt: f64) -> f64 {
 #[derive(Debug)]
 pub(super) struct Bands<'a> {
     spectrum: &'a Spectrum,
+    w_per_hz: &'a [f64],
     /// `sums[i]` is the power of all bins below bin `i`, W, with what rounding left off.
     sums: Vec<(f64, f64)>,
 }
@@ -39,34 +40,50 @@ fn exact_sum(a: f64, b: f64) -> (f64, f64) {
 }
 
 impl<'a> Bands<'a> {
+    /// The bands of the mean densities.
     pub(super) fn new(spectrum: &'a Spectrum) -> Self {
-        let mut sums = Vec::with_capacity(spectrum.bins() + 1);
+        Self::of(spectrum, &spectrum.mean_w_per_hz)
+    }
+
+    /// The bands of other densities of the same bins.
+    fn of(spectrum: &'a Spectrum, w_per_hz: &'a [f64]) -> Self {
+        let mut sums = Vec::with_capacity(w_per_hz.len() + 1);
         let (mut sum, mut left_off) = (0.0, 0.0);
         sums.push((sum, left_off));
-        for density in &spectrum.mean_w_per_hz {
+        for density in w_per_hz {
             let (next, error) = exact_sum(sum, density * spectrum.bin_hz);
             sum = next;
             left_off += error;
             sums.push((sum, left_off));
         }
-        Self { spectrum, sums }
+        Self {
+            spectrum,
+            w_per_hz,
+            sums,
+        }
     }
 
     pub(super) fn spectrum(&self) -> &'a Spectrum {
         self.spectrum
     }
 
+    /// Power in `bandwidth_hz` around `centre_hz`, W.
+    fn around_w(&self, centre_hz: f64, bandwidth_hz: f64) -> f64 {
+        self.power_w(
+            centre_hz - bandwidth_hz / 2.0,
+            centre_hz + bandwidth_hz / 2.0,
+        )
+    }
+
     /// Power from `from_hz` to `to_hz`, W; what lies past the sampled range counts as nothing.
     pub(super) fn power_w(&self, from_hz: f64, to_hz: f64) -> f64 {
-        let bins = self.spectrum.bins();
+        let bins = self.w_per_hz.len();
         let (low, _) = self.spectrum.range_hz();
         let position = |hz: f64| ((hz - low) / self.spectrum.bin_hz).clamp(0.0, bins as f64);
         let (from, to) = (position(from_hz), position(to_hz));
         let (first, last) = (from as usize, to as usize);
         let part = |bin: usize, covered: f64| {
-            covered
-                * self.spectrum.mean_w_per_hz.get(bin).copied().unwrap_or(0.0)
-                * self.spectrum.bin_hz
+            covered * self.w_per_hz.get(bin).copied().unwrap_or(0.0) * self.spectrum.bin_hz
         };
         if first == last {
             return part(first, to - from);
@@ -86,6 +103,8 @@ pub(super) enum Reader<'a> {
         bands: &'a Bands<'a>,
         bandwidth_hz: f64,
     },
+    /// Peak-hold readings of a narrower spectrum, summed over a flat filter.
+    Summed { bands: Bands<'a>, bandwidth_hz: f64 },
     /// Peak hold in the window's own bandwidth.
     Peak {
         spectrum: &'a Spectrum,
@@ -99,8 +118,9 @@ impl<'a> Reader<'a> {
         bands: &'a Bands<'a>,
         peak_hold: &'a [Spectrum],
         detector: Detector,
-        bandwidth_hz: f64,
+        (bandwidth_hz, sum_of_bw_hz): (f64, Option<f64>),
     ) -> Option<Self> {
+        let held_in_hz = sum_of_bw_hz.unwrap_or(bandwidth_hz);
         match detector {
             Detector::Mean => Some(Self::Mean {
                 bands,
@@ -110,11 +130,17 @@ impl<'a> Reader<'a> {
                 .iter()
                 .filter_map(|spectrum| {
                     let held = spectrum.peak_w_per_hz.as_deref()?;
-                    let apart = (spectrum.enbw_hz / bandwidth_hz - 1.0).abs();
+                    let apart = (spectrum.enbw_hz / held_in_hz - 1.0).abs();
                     (apart <= BANDWIDTH_TOLERANCE).then_some((apart, spectrum, held))
                 })
                 .min_by(|a, b| a.0.total_cmp(&b.0))
-                .map(|(_, spectrum, held)| Self::Peak { spectrum, held }),
+                .map(|(_, spectrum, held)| match sum_of_bw_hz {
+                    Some(_) => Self::Summed {
+                        bands: Bands::of(spectrum, held),
+                        bandwidth_hz,
+                    },
+                    None => Self::Peak { spectrum, held },
+                }),
         }
     }
 
@@ -122,10 +148,14 @@ impl<'a> Reader<'a> {
     pub(super) fn centres_hz(&self) -> (f64, f64) {
         match self {
             Self::Mean {
-                bands,
+                bands: Bands { spectrum, .. },
+                bandwidth_hz,
+            }
+            | Self::Summed {
+                bands: Bands { spectrum, .. },
                 bandwidth_hz,
             } => {
-                let (low, high) = bands.spectrum.range_hz();
+                let (low, high) = spectrum.range_hz();
                 (low + bandwidth_hz / 2.0, high - bandwidth_hz / 2.0)
             }
             Self::Peak { spectrum, .. } => {
@@ -140,9 +170,13 @@ impl<'a> Reader<'a> {
     pub(super) fn step_hz(&self) -> f64 {
         match self {
             Self::Mean {
-                bands,
+                bands: Bands { spectrum, .. },
                 bandwidth_hz,
-            } => bands.spectrum.bin_hz.min(bandwidth_hz / 4.0),
+            }
+            | Self::Summed {
+                bands: Bands { spectrum, .. },
+                bandwidth_hz,
+            } => spectrum.bin_hz.min(bandwidth_hz / 4.0),
             Self::Peak { spectrum, .. } => spectrum.bin_hz,
         }
     }
@@ -153,10 +187,11 @@ impl<'a> Reader<'a> {
             Self::Mean {
                 bands,
                 bandwidth_hz,
-            } => bands.power_w(
-                centre_hz - bandwidth_hz / 2.0,
-                centre_hz + bandwidth_hz / 2.0,
-            ),
+            } => bands.around_w(centre_hz, *bandwidth_hz),
+            Self::Summed {
+                bands,
+                bandwidth_hz,
+            } => bands.around_w(centre_hz, *bandwidth_hz),
             Self::Peak { spectrum, held } => {
                 // Between two bins the power is taken on the straight line between theirs.
                 let at = (centre_hz / spectrum.bin_hz + (spectrum.bins() / 2) as f64)
@@ -194,5 +229,22 @@ impl<'a> Reader<'a> {
         std::iter::once(from_hz)
             .chain((0..count).map(move |at| (first + at as f64) * step_hz))
             .chain(std::iter::once(to_hz))
+    }
+}
+
+/// The first and last centre of the measuring filter in a segment.
+pub(super) fn centres(
+    placement: Placement,
+    from_hz: f64,
+    to_hz: f64,
+    bandwidth_hz: f64,
+) -> (f64, f64) {
+    match placement {
+        Placement::Centre => (from_hz, to_hz),
+        Placement::Inside if to_hz - from_hz < bandwidth_hz => {
+            let middle_hz = (from_hz + to_hz) / 2.0;
+            (middle_hz, middle_hz)
+        }
+        Placement::Inside => (from_hz + bandwidth_hz / 2.0, to_hz - bandwidth_hz / 2.0),
     }
 }

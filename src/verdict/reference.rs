@@ -2,7 +2,7 @@
 
 use super::judge::Measured;
 use super::reading::{Bands, Reader, level_dbm};
-use crate::limits::{Conditions, Detector, Reference};
+use crate::limits::{Conditions, Reference};
 
 /// Half the stretch around the carrier in which a near-carrier average is looked for, Hz.
 const NEAR_CARRIER_HZ: f64 = 1e6;
@@ -64,13 +64,5 @@ pub(super) fn level(
             plain(bands.power_w(-HALF_ON_CARRIER_HZ, HALF_ON_CARRIER_HZ))
         }
         Reference::AbsoluteDbm => plain(measured.mean_w),
-    }
-}
-
-/// How a reading was taken, in words.
-pub(super) fn detector_words(detector: Detector) -> &'static str {
-    match detector {
-        Detector::Mean => "mean",
-        Detector::PeakHold => "peak hold",
     }
 }

@@ -26,7 +26,8 @@ const OPEN_STRETCH: f64 = 1.25;
 pub struct Wanted {
     /// Noise bandwidth of the averaged spectrum, Hz, at most; none where no limit reads one.
     pub fine_resolution_hz: Option<f64>,
-    /// Noise bandwidths of peak-hold spectra, Hz, ascending, each once.
+    /// Noise bandwidths of peak-hold spectra, Hz, ascending, each once. The flat-top window suits them:
+    /// it reads a tone anywhere to 0.01 dB, and needs the lowest rate for a wide bandwidth.
     pub peak_hold_resolutions_hz: Vec<f64>,
     /// The whole sampled range from lowest to highest offset, Hz, at least, so that nothing is left
     /// undecided; 0 where no limit reads a spectrum.
@@ -118,9 +119,10 @@ impl Wanted {
             match mask.detector {
                 Detector::Mean => self.fine(bandwidth_hz / BINS_PER_BANDWIDTH),
                 Detector::PeakHold => {
-                    self.peak_hold_resolutions_hz.push(bandwidth_hz);
+                    let held_hz = segment.sum_of_bw_hz.unwrap_or(bandwidth_hz);
+                    self.peak_hold_resolutions_hz.push(held_hz);
                     // The channel's power and the picture are read off the mean spectrum.
-                    self.fine(bandwidth_hz);
+                    self.fine(held_hz);
                 }
             }
             let inside = match segment.placement {
