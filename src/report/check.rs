@@ -548,7 +548,7 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
             own(
                 "check by doubling",
                 format!(
-                    "from {}x to {}x margins moved by {:.3} dB at most",
+                    "from {}x to {}x margins moved by {:.3} dB at most (those past 30 dB not counted)",
                     rate.convergence.against_factor, rate.factor, rate.convergence.moved_db
                 ),
             ),
