@@ -81,10 +81,13 @@ pub fn check(
         done += count as f64 / instants / 3.0;
         progress(done.min(1.0));
     };
-    let mut convergence = Convergence { against_factor: factor, moved_db: f64::NAN };
+    let mut convergence = Convergence {
+        against_factor: factor,
+        moved_db: f64::NAN,
+    };
     chain.factor = (factor / 2).max(1);
     let mut run = chain.run(source, &mut tick)?;
-    let mut judgement = verdict_of(study, &run);
+    let mut judgement = verdict_of(study, stage.as_ref(), &run);
     for _ in 0..=MORE_DOUBLINGS {
         let instants = 2 * chain.factor as u64 * signal.samples;
         if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS) {
@@ -92,7 +95,7 @@ pub fn check(
         }
         chain.factor *= 2;
         let finer = chain.run(source, &mut tick)?;
-        let finer_judgement = verdict_of(study, &finer);
+        let finer_judgement = verdict_of(study, stage.as_ref(), &finer);
         convergence = Convergence {
             against_factor: run.factor,
             moved_db: largest_move(&judgement, &finer_judgement),
@@ -179,7 +182,7 @@ fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, S
     })
 }
 
-fn verdict_of(study: &Study, run: &Run) -> Judgement {
+fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement {
     let measured = Measured {
         fine: &run.output_spectrum,
         peak_hold: &run.peak_spectra,
@@ -190,7 +193,8 @@ fn verdict_of(study: &Study, run: &Run) -> Judgement {
         evm_p95_percent: None,
         evm_p99_percent: None,
         modulation: None,
-        harmonics_dbc: None,
+        // At full supply: a linear stage keeps their ratio at any supply.
+        harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
     };
     judge(&measured, &study.limits)
 }
