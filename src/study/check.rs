@@ -136,7 +136,7 @@ pub fn check(
 /// The map, and the stage at full supply where there is one.
 fn hardware(hardware: &Hardware) -> Result<(Map, Option<StageFacts>), StudyError> {
     let stage = match hardware {
-        Hardware::Map(map) => return Ok((map.clone(), None)),
+        Hardware::Map(map) => return Ok((Map::clone(map), None)),
         Hardware::Stage(stage) => stage,
     };
     let network = Network::new(stage)?;
@@ -267,8 +267,7 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
         convergence,
         ..
     } = result.rate;
-    // The negation also catches a movement that is no number.
-    if !(convergence.moved_db <= CONVERGED_DB) {
+    if convergence.moved_db.is_nan() || convergence.moved_db > CONVERGED_DB {
         warnings.push(Warning::NotConverged {
             moved_db: convergence.moved_db,
             factor,
