@@ -6,6 +6,8 @@ pub mod fir;
 pub mod flow;
 pub mod lowpass;
 pub mod monotone;
+pub mod newton;
+pub mod simplex;
 pub mod small;
 pub mod window;
 

@@ -2,6 +2,7 @@
 
 mod ladder;
 mod read;
+mod write;
 
 pub use ladder::{Arm, Element, Part, Rung};
 
