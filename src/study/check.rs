@@ -81,7 +81,10 @@ pub fn check(
         done += count as f64 / instants / 3.0;
         progress(done.min(1.0));
     };
-    let mut convergence = Convergence { against_factor: factor, moved_db: f64::NAN };
+    let mut convergence = Convergence {
+        against_factor: factor,
+        moved_db: f64::NAN,
+    };
     chain.factor = (factor / 2).max(1);
     let mut run = chain.run(source, &mut tick)?;
     let mut judgement = verdict_of(study, &run);
