@@ -65,7 +65,13 @@ fn the_sidecar_is_read() {
 #[test]
 fn the_map_is_read() {
     let text = &blocks("csv")[0];
-    let map = read_map("formats.md", MapFormat::Csv, text.as_bytes(), &MapFacts::default()).unwrap();
+    let map = read_map(
+        "formats.md",
+        MapFormat::Csv,
+        text.as_bytes(),
+        &MapFacts::default(),
+    )
+    .unwrap();
     assert_eq!(map.points().len(), 3);
     assert_eq!(map.load_ohm(), 50.0);
 }

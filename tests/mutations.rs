@@ -156,7 +156,7 @@ impl Files for Memory {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 40000, failure_persistence: None, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig { cases: 512, failure_persistence: None, ..ProptestConfig::default() })]
 
     #[test]
     fn stages_end_in_an_orbit_or_a_complaint(spoils in prop::collection::vec(spoil(), 1..4)) {
