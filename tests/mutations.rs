@@ -165,10 +165,8 @@ proptest! {
             Err(problem) => shown(&problem, &text),
             Ok(stage) => {
                 let drive = Drive::new(&stage.driver, stage.driver.duty);
-                if let Ok(orbit) = Network::new(&stage).and_then(|network| {
-                    Ok(network.orbit(stage.supply_v, &drive))
-                }).map_err(|error| error.to_string()) {
-                    match orbit {
+                if let Ok(network) = Network::new(&stage) {
+                    match network.orbit(stage.supply_v, &drive) {
                         Ok(orbit) => prop_assert!(
                             orbit.output_w.is_finite() && orbit.energy_residual.abs() < 1e-6,
                             "{text}"
