@@ -140,7 +140,13 @@ fn rung(section: &Section<'_>, angular_hz: f64) -> Result<Rung, Problem> {
     section.finish()?;
     let one_of = "exactly one of series, shunt, tank in each [[load.ladder]]";
     if found.len() != 1 {
-        return Err(section.problem_here(format!("{} of them", found.len()), one_of));
+        let given: Vec<&str> = section.keys().collect();
+        let given = if given.is_empty() {
+            "none of them".to_owned()
+        } else {
+            given.join(" and ")
+        };
+        return Err(section.problem_here(given, one_of));
     }
     let (arm, section) = found.remove(0);
     Ok(Rung {

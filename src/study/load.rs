@@ -94,13 +94,9 @@ impl Study {
     /// The first thing wrong in any of the files, with its place.
     pub fn read(name: &str, files: &dyn Files) -> Result<Self, Problem> {
         let shown = files.display(name);
-        let text = files.text(name).map_err(|error| {
-            Problem::about_file(
-                &shown,
-                format!("a file that cannot be read ({error})"),
-                "a study file",
-            )
-        })?;
+        let text = files
+            .text(name)
+            .map_err(|error| Problem::unreadable(&shown, &error, "a study file, TOML in UTF-8"))?;
         let document = Document::parse(&shown, &text)?;
         let root = document.root();
         let signal = root.section("signal")?;
