@@ -6,6 +6,7 @@ pub mod fir;
 pub mod flow;
 pub mod lowpass;
 pub mod monotone;
+pub mod radau;
 pub mod small;
 pub mod window;
 
