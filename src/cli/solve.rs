@@ -58,7 +58,7 @@ impl Changes {
         let text = Disk::here()
             .text(&name)
             .map_err(|error| Failure::new(format!("{name}: cannot be read: {error}")))?;
-        let mut stage = Stage::parse(&name, &text)?;
+        let mut stage = Stage::read(&name, &text, &Disk::here())?;
         let positive = |option: &str, value: f64| {
             if value > 0.0 {
                 Ok(value)

@@ -180,7 +180,9 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
                 format!("a file that can be read ({shown}: {error})"),
             )
         })?;
-        return Ok(Hardware::Stage(Stage::parse(&shown, &text)?));
+        return Ok(Hardware::Stage(Stage::read_as(
+            &shown, name, &text, files,
+        )?));
     }
     let (name, facts) = map_choice(root)?;
     let shown = files.display(name);
