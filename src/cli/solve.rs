@@ -98,9 +98,19 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     let stage = arguments.changes.stage(&arguments.stage)?;
     let network = Network::new(&stage)?;
     let drive = Drive::new(&stage.driver, stage.driver.duty);
-    let orbit = network.orbit(stage.supply_v, &drive)?;
-    let document = solve_document(&stage, &orbit);
-    console.print(&orbit_text(&stage, &orbit))?;
+    let orbits = network.orbits(stage.supply_v, &drive)?;
+    let Some((orbit, others)) = orbits.split_first() else {
+        return Err(Failure::new("the stage has no orbit".to_owned()));
+    };
+    let document = solve_document(&stage, orbit, others);
+    console.print(&orbit_text(&stage, orbit))?;
+    if !others.is_empty() {
+        console.remark(&format!(
+            "several solutions found: this stage has {} further periodic states at the same supply and width; which \
+             one it settles to depends on how it is started (other_orbits in the JSON document)",
+            others.len()
+        ));
+    }
     console.print_json(&document)?;
     if let Some(folder) = folder {
         let figure = waveform_figure(&stage, &network.waveform(stage.supply_v, &drive, 400)?);

@@ -12,7 +12,7 @@ use super::stage::{control_quantity, orbit_rows, phases_deg, waveform_figure};
 use super::table::{Align, Table};
 use super::text::quantity;
 use crate::drive::Scheme;
-use crate::limits::{Detector, Obtained};
+use crate::limits::Detector;
 use crate::study::{CheckResult, Hardware};
 use crate::units;
 use crate::verdict::{self, Check, MaskMargin};
@@ -47,20 +47,61 @@ pub fn deciding(result: &CheckResult) -> Option<&Check> {
         })
 }
 
-/// What the model leaves out: true of every check by map.
-const MODEL_LIMITS: [&str; 6] = [
+/// What the model leaves out of every check by map.
+const MODEL_LIMITS: [&str; 4] = [
     "By map: the stage is taken to settle at once to the orbit of the present supply. Energy stored in its feed \
      and network, and so memory, is left out; the settling time in the facts says how long that is.",
-    "The stage is linear between switching instants: fixed capacitances, a switch with one closed resistance that \
-     opens and closes at once, no diode, no gate coupling, no temperature. Its supply map is therefore straight; \
-     what bends the signal here are the floor, the modulator and the paths.",
-    "No driver power is counted.",
     "The modulator is a chain of dead time, converter, Butterworth filter, slew limit and ripple; its efficiency is \
      one number plus idle power, whatever it delivers.",
     "The error vector is that of the waveform in the stated band after one complex gain and one delay were taken off, \
      not that of equalized symbols.",
     "Harmonics of the carrier are not part of the masks.",
 ];
+
+/// What it leaves out, the stage's own model included.
+fn model_limits(result: &CheckResult) -> Vec<String> {
+    let mut limits: Vec<String> = MODEL_LIMITS.iter().map(|text| (*text).to_owned()).collect();
+    let Hardware::Stage(stage) = &result.study.hardware else {
+        return limits;
+    };
+    if stage.is_curved() {
+        let parts = [
+            (stage.drain_curve.is_some(), "capacitance that depends on the drain voltage"),
+            (stage.switch.diode.is_some(), "a diode"),
+            (stage.gate_coupling_f > 0.0, "gate-drain coupling"),
+            (stage.switch.knee.is_some(), "a limit of the closed switch's current"),
+        ];
+        let present: Vec<&str> = parts.iter().filter(|part| part.0).map(|part| part.1).collect();
+        limits.insert(
+            1,
+            format!(
+                "The stage is modelled with {}. It opens and closes at once, half-way up the gate's edges where \
+                 these are given; the diode has no stored charge, no capacitance loses energy, and temperature is \
+                 left out.",
+                present.join(", ")
+            ),
+        );
+    } else {
+        limits.insert(
+            1,
+            "The stage is linear between switching instants: fixed capacitances, a switch with one closed resistance \
+             that opens and closes at once, no diode, no gate coupling, no temperature. Its supply map is therefore \
+             straight; what bends the signal here are the floor, the modulator and the paths."
+                .to_owned(),
+        );
+    }
+    limits.insert(
+        2,
+        if stage.driver.gate.is_some() {
+            "Driver power is gate charge at the swing and the charge through the gate-drain coupling, drawn from a \
+             rail at the swing; losses inside the driver are left out."
+                .to_owned()
+        } else {
+            "No driver power is counted.".to_owned()
+        },
+    );
+    limits
+}
 
 /// The report's page.
 pub fn page(result: &CheckResult, request: &Request) -> Page {
@@ -75,7 +116,7 @@ pub fn page(result: &CheckResult, request: &Request) -> Page {
         figures: figures(result),
         tables: tables(result),
         facts: facts(result),
-        model_limits: MODEL_LIMITS.iter().map(|text| (*text).to_owned()).collect(),
+        model_limits: model_limits(result),
         conditions: Conditions {
             command: request.command.clone(),
             version: format!("quietedge {}", env!("CARGO_PKG_VERSION")),
@@ -110,19 +151,11 @@ fn headline(result: &CheckResult) -> Headline {
     let decided = deciding(result);
     Headline {
         outcome: outcome(result.judgement.verdict.outcome),
-        reason: decided.map_or_else(String::new, reason),
+        reason: decided.map_or_else(String::new, |check| {
+            format!("{}: {}", check.name, check.reason)
+        }),
         margin_db: decided.and_then(|check| check.margin_db),
     }
-}
-
-/// A check's reason, with the caution where its numbers were not read in the source.
-fn reason(check: &Check) -> String {
-    let doubt = match check.obtained {
-        Some(Obtained::Memory) => " Limit recalled from memory: check it against the document.",
-        Some(Obtained::SecondHand) => " Limit read second-hand: check it against the document.",
-        _ => "",
-    };
-    format!("{}{doubt}", check.reason)
 }
 
 fn check_rows(result: &CheckResult) -> Vec<CheckRow> {
@@ -136,10 +169,10 @@ fn check_rows(result: &CheckResult) -> Vec<CheckRow> {
         .map(|check| CheckRow {
             name: check.name.clone(),
             outcome: outcome(check.outcome),
-            found: String::new(),
-            allowed: String::new(),
+            found: check.found.clone().unwrap_or_default(),
+            allowed: check.allowed.clone().unwrap_or_default(),
             margin_db: check.margin_db,
-            reason: reason(check),
+            reason: check.reason.clone(),
         })
         .collect()
 }
@@ -548,7 +581,7 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
             own(
                 "check by doubling",
                 format!(
-                    "from {}x to {}x margins moved by {:.3} dB at most",
+                    "from {}x to {}x margins moved by {:.3} dB at most (those past 30 dB not counted)",
                     rate.convergence.against_factor, rate.factor, rate.convergence.moved_db
                 ),
             ),
@@ -648,17 +681,16 @@ pub fn text(result: &CheckResult) -> String {
     let mut checks = Table::new([
         ("", Align::Left),
         ("margin", Align::Right),
+        ("found", Align::Right),
+        ("allowed", Align::Right),
         ("check", Align::Left),
-        ("reason", Align::Left),
     ]);
     for row in check_rows(result) {
-        checks.row([
-            row.outcome.word().to_owned(),
-            row.margin_db
-                .map_or("-".to_owned(), |margin| format!("{margin:+.2} dB")),
-            row.name,
-            row.reason,
-        ]);
+        let margin = row
+            .margin_db
+            .map_or("-".to_owned(), |margin| format!("{margin:+.2} dB"));
+        let word = row.outcome.word().to_owned();
+        checks.row([word, margin, row.found, row.allowed, row.name]);
     }
     let mut numbers = Table::new([("", Align::Left), ("", Align::Right), ("", Align::Left)]);
     for row in key_rows(result) {
@@ -666,6 +698,9 @@ pub fn text(result: &CheckResult) -> String {
     }
     let word = outcome(verdict.outcome).word().to_uppercase();
     let mut text = format!("{word}: {}\n", result.study.title);
+    if let Some(check) = deciding(result) {
+        text.push_str(&format!("{}: {}\n", check.name, check.reason));
+    }
     for (title, table) in [("Checks", checks), ("Numbers", numbers)] {
         text.push_str(&format!("\n{title}\n{}\n", table.text()));
     }

@@ -24,7 +24,7 @@ pub enum Warning {
         /// Part of all instants.
         fraction: f64,
     },
-    /// The linear stage goes below ground, where a real device conducts.
+    /// The stage goes below ground, where a real device conducts, and has no diode.
     DiodeWouldConduct {
         /// Lowest drain voltage at full supply, V.
         lowest_v: f64,
@@ -70,11 +70,11 @@ impl fmt::Display for Warning {
             Self::HeldAtEdge { fraction } => write!(
                 f,
                 "the control left the map at {} of all instants and was held at its edge: lower the level or extend the map",
-                show(100.0 * fraction, "%", 3).replace(" %", " %")
+                show(100.0 * fraction, "%", 3)
             ),
             Self::DiodeWouldConduct { lowest_v } => write!(
                 f,
-                "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the linear stage does not",
+                "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the stage file has no diode",
                 show(*lowest_v, "V", 3)
             ),
             Self::SlowStage {
