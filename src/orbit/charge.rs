@@ -243,7 +243,7 @@ mod tests {
                 // Simpson's rule over the step.
                 let rise = 0.01 / 6.0 * (before.1 + 4.0 * law.at(v - 0.005).1 + here.1);
                 assert!((here.0 - before.0 - rise).abs() < 3e-7, "{v}: {law:?}");
-                assert!((here.1 - before.1).abs() < 0.15, "{v}");
+                assert!((here.1 - before.1).abs() < 0.8, "{v}");
                 before = here;
             }
             assert!(law.at(0.0).0.abs() < 1e-15);

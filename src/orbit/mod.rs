@@ -4,6 +4,8 @@ mod balance;
 mod charge;
 mod circuit;
 mod curved;
+#[cfg(test)]
+mod curved_tests;
 mod device;
 mod gather;
 mod linear;
