@@ -24,6 +24,8 @@ pub enum Dimension {
     Capacitance,
     /// H
     Inductance,
+    /// C
+    Charge,
     /// V/s
     SlewRate,
     /// A pure number; `%` is allowed.
@@ -48,6 +50,7 @@ impl Dimension {
             Self::Resistance => "ohm",
             Self::Capacitance => "F",
             Self::Inductance => "H",
+            Self::Charge => "C",
             Self::SlewRate => "V/s",
             Self::Ratio => "",
             Self::Decibel => "dB",
@@ -66,6 +69,7 @@ impl Dimension {
             Self::Power => (1e-24, 1e12),
             Self::Resistance => (1e-9, 1e15),
             Self::Capacitance => (1e-21, 1e3),
+            Self::Charge => (1e-21, 1e3),
             Self::Inductance => (1e-18, 1e6),
             Self::SlewRate => (1e-9, 1e18),
             Self::Ratio => (1e-15, 1e15),
@@ -103,6 +107,7 @@ impl Dimension {
             Self::Resistance => "a resistance",
             Self::Capacitance => "a capacitance",
             Self::Inductance => "an inductance",
+            Self::Charge => "a charge",
             Self::SlewRate => "a slew rate",
             Self::Ratio => "a pure number",
             Self::Decibel => "a ratio in dB",
@@ -122,6 +127,7 @@ impl Dimension {
             Self::Resistance => "\"0.18 ohm\"",
             Self::Capacitance => "\"22 pF\"",
             Self::Inductance => "\"8.2 nH\"",
+            Self::Charge => "\"2 nC\"",
             Self::SlewRate => "\"40 V/us\"",
             Self::Ratio => "0.5 or \"50 %\"",
             Self::Decibel => "\"-3 dB\"",
@@ -145,6 +151,7 @@ impl Dimension {
                 .or_else(|| scaled("Ω")),
             Self::Capacitance => scaled("F"),
             Self::Inductance => scaled("H"),
+            Self::Charge => scaled("C"),
             Self::SlewRate => {
                 let (volt, time) = unit.split_once('/')?;
                 let volt = prefix(volt.strip_suffix('V')?)?;

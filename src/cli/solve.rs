@@ -60,7 +60,7 @@ impl Changes {
         let text = Disk::here()
             .text(&name)
             .map_err(|error| Problem::unreadable(&name, &error, "a stage file, TOML in UTF-8"))?;
-        let mut stage = Stage::parse(&name, &text)?;
+        let mut stage = Stage::read(&name, &text, &Disk::here())?;
         let positive = |option: &str, value: f64| {
             if value > 0.0 {
                 Ok(value)
@@ -103,11 +103,21 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     };
     let network = Network::new(&stage).map_err(|error| about(&error))?;
     let drive = Drive::new(&stage.driver, stage.driver.duty);
-    let orbit = network
-        .orbit(stage.supply_v, &drive)
+    let orbits = network
+        .orbits(stage.supply_v, &drive)
         .map_err(|error| about(&error))?;
-    let document = solve_document(&stage, &orbit);
-    console.print(&orbit_text(&stage, &orbit))?;
+    let Some((orbit, others)) = orbits.split_first() else {
+        return Err(about(&"the stage has no orbit"));
+    };
+    let document = solve_document(&stage, orbit, others);
+    console.print(&orbit_text(&stage, orbit))?;
+    if !others.is_empty() {
+        console.remark(&format!(
+            "several solutions found: this stage has {} further periodic states at the same supply and width; which \
+             one it settles to depends on how it is started (other_orbits in the JSON document)",
+            others.len()
+        ));
+    }
     console.print_json(&document)?;
     if let Some(folder) = folder {
         let figure = waveform_figure(&stage, &network.waveform(stage.supply_v, &drive, 400)?);

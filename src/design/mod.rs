@@ -11,6 +11,8 @@ pub use parts::{Match, Parts};
 pub use solve::{BestEffort, Design, DesignError, Zero, design};
 pub use values::{Series, rounded};
 
+use crate::stage::Device;
+
 /// What the stage must do, and what it must be made of.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Targets {
@@ -30,8 +32,10 @@ pub struct Targets {
     pub loaded_q: f64,
     /// The one free choice.
     pub choice: Choice,
-    /// What the device and the parts lose.
+    /// The active device.
     pub device: Device,
+    /// What the parts around it lose.
+    pub losses: PartLosses,
 }
 
 /// The one free choice of a class E stage with a feed inductor.
@@ -47,15 +51,9 @@ pub enum Choice {
     DeviceCapacitance,
 }
 
-/// What is given and not to be chosen.
+/// What the parts around the device lose.
 #[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Device {
-    /// Closed resistance of the switch, ohm.
-    pub closed_ohm: f64,
-    /// Open resistance of the switch, ohm; may be infinite.
-    pub open_ohm: f64,
-    /// Capacitance that the device brings to the drain, F; 0 where it does not matter.
-    pub capacitance_f: f64,
+pub struct PartLosses {
     /// Resistance of the feed, ohm.
     pub feed_ohm: f64,
     /// Quality factor of the inductors at the carrier; may be infinite.

@@ -3,13 +3,13 @@
 use std::f64::consts::TAU;
 
 use super::values::{Series, rounded};
-use super::{Device, Targets};
-use crate::stage::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use super::{PartLosses, Targets};
+use crate::stage::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage};
 
 /// Everything that is chosen.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Parts {
-    /// From the drain to ground, the device's own included, F.
+    /// Fixed capacitance from the drain to ground, the device's own fixed part included, F.
     pub drain_f: f64,
     /// H; none for a choke.
     pub feed_h: Option<f64>,
@@ -74,14 +74,12 @@ impl Parts {
     /// The stage that these parts make.
     pub fn stage(&self, targets: &Targets) -> Stage {
         let angular_hz = TAU * targets.frequency_hz;
-        let Device {
-            closed_ohm,
-            open_ohm,
+        let PartLosses {
             feed_ohm,
             inductor_q,
             capacitor_q,
-            ..
-        } = targets.device;
+        } = targets.losses;
+        let device = &targets.device;
         let inductor = |henry: f64| Part {
             element: Element::Inductor(henry),
             loss_ohm: angular_hz * henry / inductor_q,
@@ -110,14 +108,14 @@ impl Parts {
             title: targets.title.clone(),
             frequency_hz: targets.frequency_hz,
             supply_v: targets.supply_v,
-            switch: Switch {
-                closed_ohm,
-                open_ohm,
-            },
+            switch: device.switch,
             drain_f: self.drain_f,
+            drain_curve: device.drain_curve.clone(),
+            gate_coupling_f: device.gate_coupling_f,
             driver: Driver {
                 duty: targets.duty,
                 anchor: Anchor::Centre,
+                gate: device.gate,
             },
             feed: match self.feed_h {
                 Some(henry) => Feed::Inductor {

@@ -108,8 +108,14 @@ pub fn design(targets: &Targets) -> Result<Design, DesignError> {
     if targets.choice == Choice::DeviceCapacitance {
         return around_device(targets);
     }
-    let (ideal, parts, evaluations) = nominal(targets)?;
-    if parts.drain_f < targets.device.capacitance_f * (1.0 - 1e-9) {
+    let (ideal, parts, evaluations) = match nominal(targets) {
+        // A curved device may leave no room for any fixed capacitance at all.
+        Err(DesignError::NotFound { .. }) if targets.device.drain_curve.is_some() => {
+            return best_effort(targets, None, None);
+        }
+        other => other?,
+    };
+    if parts.drain_f < targets.device.drain_f * (1.0 - 1e-9) {
         return best_effort(targets, Some(ideal), Some(parts));
     }
     finish(targets, Some(ideal), parts, Zero::Reached { evaluations })
@@ -124,7 +130,7 @@ fn nominal(targets: &Targets) -> Result<(Ideal, Parts, usize), DesignError> {
 
 /// The feed ratio at which the drain capacitance is the device's own: it rises with the ratio.
 fn around_device(targets: &Targets) -> Result<Design, DesignError> {
-    let device_f = targets.device.capacitance_f;
+    let device_f = targets.device.drain_f;
     let mut evaluations = 0;
     let mut at = |ratio: f64| {
         let choice = if ratio > 0.0 {
@@ -140,6 +146,7 @@ fn around_device(targets: &Targets) -> Result<Design, DesignError> {
         Ok((ideal, parts))
     };
     let (_, choke): (Ideal, Parts) = at(0.0)?;
+    let whole_f = choke.drain_f + curved_f(targets);
     if device_f < choke.drain_f {
         return Err(DesignError::TooLittleCapacitance {
             given_f: device_f,
@@ -174,14 +181,13 @@ fn around_device(targets: &Targets) -> Result<Design, DesignError> {
         } else {
             low = middle;
         }
-        if (parts.drain_f / device_f - 1.0).abs() < 1e-12 {
+        if (parts.drain_f - device_f).abs() < 1e-12 * whole_f {
             break;
         }
     }
-    if (parts.drain_f / device_f - 1.0).abs() > 1e-9 {
-        return Err(DesignError::NotFound {
-            residual: (parts.drain_f / device_f - 1.0).abs(),
-        });
+    let residual = (parts.drain_f - device_f).abs() / whole_f;
+    if residual > 1e-9 {
+        return Err(DesignError::NotFound { residual });
     }
     parts.drain_f = device_f;
     finish(targets, Some(ideal), parts, Zero::Reached { evaluations })
@@ -197,9 +203,10 @@ fn finish(
     let orbit = orbit_of(&stage).ok_or(DesignError::NotFound {
         residual: f64::INFINITY,
     })?;
-    let device_f = targets.device.capacitance_f;
-    let highest_frequency_hz = (device_f > 0.0)
-        .then(|| highest_frequency_hz(targets.output_w, targets.supply_v, targets.duty, device_f))
+    let device_f = targets.device.drain_f;
+    let whole_f = device_f + curved_f(targets);
+    let highest_frequency_hz = (whole_f > 0.0)
+        .then(|| highest_frequency_hz(targets.output_w, targets.supply_v, targets.duty, whole_f))
         .flatten();
     Ok(Design {
         targets: targets.clone(),
@@ -241,8 +248,9 @@ fn ideal_parts(targets: &Targets, ideal: &Ideal) -> Parts {
     let ohm = ideal.power * targets.supply_v.powi(2) / targets.output_w;
     let (matching, taken_up_ohm) = Match::new(targets.load_ohm, ohm, angular_hz);
     let resonator_ohm = targets.loaded_q * ohm;
+    let drain_f = ideal.capacitance / (angular_hz * ohm);
     Parts {
-        drain_f: ideal.capacitance / (angular_hz * ohm),
+        drain_f: (drain_f - curved_f(targets)).max(0.05 * drain_f),
         feed_h: ideal
             .feed
             .is_finite()
@@ -253,22 +261,25 @@ fn ideal_parts(targets: &Targets, ideal: &Ideal) -> Parts {
     }
 }
 
-/// The unknowns of the search: logarithms of the parts that the free choice leaves open.
-fn unknowns(targets: &Targets, parts: &Parts) -> Vec<f64> {
-    let mut unknowns = match targets.choice {
-        Choice::NoExcess => vec![parts.drain_f, parts.feed_h.unwrap_or(1.0)],
-        _ => vec![parts.drain_f, parts.series_h],
+/// The unknowns of the search: the fixed drain capacitance as a part of `drain_scale_f`, and logarithms of the
+/// other parts that the free choice leaves open.
+fn unknowns(targets: &Targets, parts: &Parts, drain_scale_f: f64) -> Vec<f64> {
+    let mut others = match targets.choice {
+        Choice::NoExcess => vec![parts.feed_h.unwrap_or(1.0)],
+        _ => vec![parts.series_h],
     };
     match parts.matching {
         Match::None => {}
-        Match::Up { shunt_f } => unknowns.push(shunt_f),
-        Match::Down { load_h, .. } => unknowns.push(load_h),
+        Match::Up { shunt_f } => others.push(shunt_f),
+        Match::Down { load_h, .. } => others.push(load_h),
     }
-    unknowns.iter().map(|value| value.ln()).collect()
+    std::iter::once(parts.drain_f / drain_scale_f)
+        .chain(others.iter().map(|value| value.ln()))
+        .collect()
 }
 
 /// The parts for `unknowns`, what the free choice ties included.
-fn with_unknowns(targets: &Targets, start: &Parts, unknowns: &[f64]) -> Parts {
+fn with_unknowns(targets: &Targets, start: &Parts, drain_scale_f: f64, unknowns: &[f64]) -> Parts {
     let angular_hz = TAU * targets.frequency_hz;
     let value = |index: usize| unknowns.get(index).copied().unwrap_or(0.0).exp();
     let mut parts = *start;
@@ -277,16 +288,19 @@ fn with_unknowns(targets: &Targets, start: &Parts, unknowns: &[f64]) -> Parts {
         Match::Up { shunt_f } => *shunt_f = value(2),
         Match::Down { load_h, .. } => *load_h = value(2),
     }
+    parts.drain_f = unknowns
+        .first()
+        .map_or(start.drain_f, |part| part * drain_scale_f);
     match targets.choice {
-        Choice::Choke | Choice::DeviceCapacitance => {
-            (parts.drain_f, parts.series_h) = (value(0), value(1));
-        }
+        Choice::Choke | Choice::DeviceCapacitance => parts.series_h = value(1),
         Choice::FeedRatio(ratio) => {
-            (parts.drain_f, parts.series_h) = (value(0), value(1));
-            parts.feed_h = Some(1.0 / ((ratio * angular_hz).powi(2) * parts.drain_f));
+            parts.series_h = value(1);
+            // The ratio counts what the drain has at the supply voltage, curved parts included.
+            let drain_f = parts.drain_f + curved_f(targets);
+            parts.feed_h = Some(1.0 / ((ratio * angular_hz).powi(2) * drain_f));
         }
         Choice::NoExcess => {
-            (parts.drain_f, parts.feed_h) = (value(0), Some(value(1)));
+            parts.feed_h = Some(value(1));
             // The series inductor resonates with the capacitor and takes up the match's reactance only.
             let taken_up_ohm = match parts.matching {
                 Match::Up { shunt_f } => {
@@ -307,7 +321,17 @@ fn with_unknowns(targets: &Targets, start: &Parts, unknowns: &[f64]) -> Parts {
     parts
 }
 
+/// What the device adds to the fixed drain capacitance at the supply voltage, F.
+fn curved_f(targets: &Targets) -> f64 {
+    let curve = targets.device.drain_curve.as_ref();
+    targets.device.gate_coupling_f
+        + curve.map_or(0.0, |curve| curve.capacitance_f(targets.supply_v))
+}
+
 fn residuals(targets: &Targets, parts: &Parts) -> Option<Vec<f64>> {
+    if parts.drain_f < 0.0 {
+        return None;
+    }
     let orbit = orbit_of(&parts.stage(targets))?;
     let volt = targets.supply_v;
     let mut values = vec![
@@ -329,13 +353,14 @@ fn zero(targets: &Targets, ideal: &Ideal) -> Result<(Parts, usize), DesignError>
     };
     let mut total = 0;
     let mut attempt = |targets: &Targets, start: &Parts| {
-        let found = search(&unknowns(targets, start), stop, |x| {
-            residuals(targets, &with_unknowns(targets, start, x))
+        let scale_f = start.drain_f + curved_f(targets);
+        let found = search(&unknowns(targets, start, scale_f), stop, |x| {
+            residuals(targets, &with_unknowns(targets, start, scale_f, x))
         });
         match found {
             Search::Converged { at, evaluations } => {
                 total += evaluations;
-                Ok((with_unknowns(targets, start, &at), total))
+                Ok((with_unknowns(targets, start, scale_f, &at), total))
             }
             Search::Stuck { residual, .. } | Search::RanOut { residual, .. } => Err(residual),
         }
@@ -365,10 +390,10 @@ fn zero(targets: &Targets, ideal: &Ideal) -> Result<(Parts, usize), DesignError>
         let mut easy = targets.clone();
         let start_q = targets.loaded_q.max(EASY_Q);
         easy.loaded_q = start_q * (targets.loaded_q / start_q).powf(part);
-        easy.device.closed_ohm *= 0.01f64.powf(1.0 - part);
-        easy.device.feed_ohm *= part;
-        easy.device.inductor_q /= part.max(1e-3);
-        easy.device.capacitor_q /= part.max(1e-3);
+        easy.device.switch.closed_ohm *= 0.01f64.powf(1.0 - part);
+        easy.losses.feed_ohm *= part;
+        easy.losses.inductor_q /= part.max(1e-3);
+        easy.losses.capacitor_q /= part.max(1e-3);
         easy
     };
     let mut parts = ideal_parts(&on_path(0.0), ideal);
@@ -396,7 +421,7 @@ fn best_effort(
     ideal: Option<Ideal>,
     nominal: Option<Parts>,
 ) -> Result<Design, DesignError> {
-    let device_f = targets.device.capacitance_f;
+    let device_f = targets.device.drain_f;
     let start = match (nominal, Ideal::no_excess(targets.duty)) {
         (Some(parts), _) => parts,
         (None, Some(ideal)) => ideal_parts(targets, &ideal),
@@ -462,7 +487,8 @@ fn best_effort(
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::design::Device;
+    use crate::design::PartLosses;
+    use crate::stage::{Device, Switch};
 
     fn targets(choice: Choice) -> Targets {
         Targets {
@@ -475,9 +501,18 @@ mod tests {
             loaded_q: 5.0,
             choice,
             device: Device {
-                closed_ohm: 0.1,
-                open_ohm: f64::INFINITY,
-                capacitance_f: 20e-12,
+                switch: Switch {
+                    closed_ohm: 0.1,
+                    open_ohm: f64::INFINITY,
+                    knee: None,
+                    diode: None,
+                },
+                drain_f: 20e-12,
+                drain_curve: None,
+                gate_coupling_f: 0.0,
+                gate: None,
+            },
+            losses: PartLosses {
                 feed_ohm: 0.03,
                 inductor_q: 100.0,
                 capacitor_q: 400.0,
@@ -509,17 +544,17 @@ mod tests {
     #[test]
     fn the_device_can_be_the_whole_drain_capacitance() {
         let mut targets = targets(Choice::DeviceCapacitance);
-        targets.device.capacitance_f = 140e-12;
+        targets.device.drain_f = 140e-12;
         let found = design(&targets).unwrap();
         assert!(matches!(found.zero, Zero::Reached { .. }));
         assert_eq!(found.parts.drain_f, 140e-12);
         assert!(found.orbit.closing_v.abs() < 1e-8 * 6.0);
-        targets.device.capacitance_f = 1e-12;
+        targets.device.drain_f = 1e-12;
         assert!(matches!(
             design(&targets),
             Err(DesignError::TooLittleCapacitance { .. })
         ));
-        targets.device.capacitance_f = 500e-12;
+        targets.device.drain_f = 500e-12;
         let found = design(&targets).unwrap();
         assert!(matches!(found.zero, Zero::BestEffort(_)));
     }
@@ -527,7 +562,7 @@ mod tests {
     #[test]
     fn too_large_a_device_gets_the_best_that_is_left() {
         let mut targets = targets(Choice::Choke);
-        targets.device.capacitance_f = 150e-12;
+        targets.device.drain_f = 150e-12;
         let design = design(&targets).unwrap();
         let Zero::BestEffort(BestEffort::TooMuchCapacitance {
             needed_f: Some(needed_f),

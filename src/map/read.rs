@@ -7,7 +7,7 @@ use std::io::Read;
 
 use num_complex::Complex64;
 
-use super::{Control, Map, MapPoint, Origin};
+use super::{Control, Failure, Map, MapPoint, Origin};
 use crate::input::{Complaint, Place, Problem, nearest, read_text};
 use crate::units::{self, Dimension};
 
@@ -33,7 +33,7 @@ pub struct MapFacts {
     pub supply_v: Option<f64>,
 }
 
-const COLUMNS: [&str; 11] = [
+const COLUMNS: [&str; 12] = [
     "control",
     "output_re_v",
     "output_im_v",
@@ -45,6 +45,7 @@ const COLUMNS: [&str; 11] = [
     "switch_peak_v",
     "switch_peak_a",
     "closing_v",
+    "driver_w",
 ];
 
 /// No volt, ampere or degree of a transmitter is larger than this.
@@ -64,7 +65,7 @@ pub fn read_map(
     let about = |given: String, allowed: &str| Problem::about_file(file, given, allowed);
     let text = read_text(reader)
         .map_err(|error| Problem::unreadable(file, &error, "a map, text in UTF-8"))?;
-    let (own, points) = match format {
+    let (own, points, failures) = match format {
         MapFormat::Csv => from_csv(file, &text)?,
         MapFormat::Json => from_json(file, &text)?,
     };
@@ -124,12 +125,14 @@ pub fn read_map(
         };
         map_points.push(point.finish(supply_v, load_ohm));
     }
-    Map::new(control, Origin::File, frequency_hz, load_ohm, map_points).map_err(|error| {
-        about(
-            error.to_string(),
-            "at least two points, sorted by control, with output",
-        )
-    })
+    Map::new(control, Origin::File, frequency_hz, load_ohm, map_points)
+        .map(|map| map.with_failures(failures))
+        .map_err(|error| {
+            about(
+                error.to_string(),
+                "at least two points, sorted by control, with output",
+            )
+        })
 }
 
 /// One row as far as the file says.
@@ -143,6 +146,7 @@ struct Row {
     switch_peak_v: Option<f64>,
     switch_peak_a: Option<f64>,
     closing_v: Option<f64>,
+    driver_w: Option<f64>,
 }
 
 impl Row {
@@ -162,11 +166,14 @@ impl Row {
             switch_peak_a: self.switch_peak_a,
             switch_min_v: None,
             closing_v: self.closing_v,
+            driver_w: self.driver_w,
         }
     }
 }
 
-fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
+type Contents = (MapFacts, Vec<Row>, Vec<Failure>);
+
+fn from_csv(file: &str, text: &str) -> Result<Contents, Problem> {
     let complain = |line: usize, key: &str, given: String, allowed: String| {
         let content = text
             .lines()
@@ -188,7 +195,7 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
             hint: None,
         })
     };
-    let facts = facts_of_comments(text, &complain)?;
+    let (facts, failures) = facts_of_comments(text, &complain)?;
     let header_line = text
         .lines()
         .position(|line| !line.starts_with('#') && !line.trim().is_empty())
@@ -290,7 +297,8 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
                 "efficiency" => row.efficiency = Some(value),
                 "switch_peak_v" => row.switch_peak_v = Some(value),
                 "switch_peak_a" => row.switch_peak_a = Some(value),
-                _ => row.closing_v = Some(value),
+                "closing_v" => row.closing_v = Some(value),
+                _ => row.driver_w = Some(value),
             }
         }
         if !cartesian {
@@ -310,14 +318,15 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         }
         rows.push(row);
     }
-    Ok((facts, rows))
+    Ok((facts, rows, failures))
 }
 
 fn facts_of_comments(
     text: &str,
     complain: &impl Fn(usize, &str, String, String) -> Problem,
-) -> Result<MapFacts, Problem> {
+) -> Result<(MapFacts, Vec<Failure>), Problem> {
     let mut facts = MapFacts::default();
+    let mut failures = Vec::new();
     for (index, line) in text.lines().enumerate() {
         let Some((key, value)) = line.strip_prefix('#').and_then(|fact| fact.split_once('='))
         else {
@@ -352,10 +361,25 @@ fn facts_of_comments(
             "load_resistance" => facts.load_ohm = quantity(Dimension::Resistance)?,
             "frequency" => facts.frequency_hz = quantity(Dimension::Frequency)?,
             "supply" => facts.supply_v = quantity(Dimension::Voltage)?,
+            "failed" => {
+                let (control, reason) = value.split_once(' ').unwrap_or((value, ""));
+                let control = control
+                    .parse()
+                    .ok()
+                    .filter(|control: &f64| control.is_finite())
+                    .ok_or_else(|| {
+                        let allowed = "a control and the reason".to_owned();
+                        complain(index + 1, key, value.to_owned(), allowed)
+                    })?;
+                failures.push(Failure {
+                    control,
+                    reason: reason.to_owned(),
+                });
+            }
             _ => {}
         }
     }
-    Ok(facts)
+    Ok((facts, failures))
 }
 
 /// The words of `error`; its line and column stand in the place already.
@@ -367,7 +391,7 @@ fn without_position(error: &serde_json::Error) -> String {
     }
 }
 
-fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
+fn from_json(file: &str, text: &str) -> Result<Contents, Problem> {
     #[derive(serde::Deserialize)]
     struct Document {
         control: Option<String>,
@@ -375,6 +399,8 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         frequency_hz: Option<f64>,
         supply_v: Option<f64>,
         points: Vec<Point>,
+        #[serde(default)]
+        failures: Vec<Failure>,
     }
     #[derive(serde::Deserialize)]
     struct Point {
@@ -386,6 +412,7 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         switch_peak_v: Option<f64>,
         switch_peak_a: Option<f64>,
         closing_v: Option<f64>,
+        driver_w: Option<f64>,
     }
     #[derive(serde::Deserialize)]
     struct Output {
@@ -452,7 +479,8 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
             switch_peak_v: point.switch_peak_v,
             switch_peak_a: point.switch_peak_a,
             closing_v: point.closing_v,
+            driver_w: point.driver_w,
         })
         .collect();
-    Ok((facts, rows))
+    Ok((facts, rows, document.failures))
 }

@@ -7,6 +7,7 @@ pub mod flow;
 pub mod lowpass;
 pub mod monotone;
 pub mod newton;
+pub mod radau;
 pub mod simplex;
 pub mod small;
 pub mod window;

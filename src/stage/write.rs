@@ -3,13 +3,32 @@
 use std::f64::consts::TAU;
 use std::fmt::Write;
 
-use super::{Anchor, Arm, Element, Feed, Part, Rung, Stage};
+use super::{Anchor, Arm, DrainCurve, Element, Feed, Part, Rung, Stage};
 use crate::units::show;
 
 /// Digits that bring every part back to a relative 1e-12.
 const DIGITS: usize = 13;
 
+/// The file that a written stage names for its table of drain capacitance.
+pub const TABLE_NAME: &str = "drain-capacitance.csv";
+
 impl Stage {
+    /// The table of drain capacitance as the CSV file that [`Stage::to_toml`] names [`TABLE_NAME`]; none where the
+    /// stage has no such table.
+    pub fn drain_table_csv(&self) -> Option<String> {
+        let Some(DrainCurve::Table(points)) = &self.drain_curve else {
+            return None;
+        };
+        let rows = points
+            .iter()
+            .map(|(volt, farad)| format!("{volt},{farad}\n"));
+        Some(
+            std::iter::once("voltage_v,capacitance_f\n".to_owned())
+                .chain(rows)
+                .collect(),
+        )
+    }
+
     /// The stage as TOML, with `remarks` as comment lines on top.
     pub fn to_toml(&self, remarks: &[String]) -> String {
         let mut text = String::new();
@@ -40,10 +59,37 @@ impl Stage {
                 quoted(self.switch.open_ohm, "ohm")
             ));
         }
-        line(format!(
-            "\n[drain]\ncapacitance = {}",
-            quoted(self.drain_f, "F")
-        ));
+        if let Some(knee) = self.switch.knee {
+            let current = quoted(knee.current_a, "A");
+            line(format!(
+                "knee = {{ current = {current}, sharpness = {} }}",
+                knee.sharpness
+            ));
+        }
+        if let Some(diode) = self.switch.diode {
+            let (drop, ohm) = (quoted(diode.drop_v, "V"), quoted(diode.ohm, "ohm"));
+            line(format!("diode = {{ drop = {drop}, resistance = {ohm} }}"));
+        }
+        line("\n[drain]".to_owned());
+        if self.drain_f > 0.0 || self.drain_curve.is_none() {
+            line(format!("capacitance = {}", quoted(self.drain_f, "F")));
+        }
+        match &self.drain_curve {
+            Some(DrainCurve::Junction(junction)) => line(format!(
+                "junction = {{ zero_bias = {}, potential = {}, grading = {} }}",
+                quoted(junction.zero_bias_f, "F"),
+                quoted(junction.potential_v, "V"),
+                junction.grading
+            )),
+            Some(DrainCurve::Table(_)) => line(format!("table = \"{TABLE_NAME}\"")),
+            None => {}
+        }
+        if self.gate_coupling_f > 0.0 {
+            line(format!(
+                "gate_coupling = {}",
+                quoted(self.gate_coupling_f, "F")
+            ));
+        }
         let anchor = match self.driver.anchor {
             Anchor::Leading => "leading",
             Anchor::Centre => "centre",
@@ -53,6 +99,12 @@ impl Stage {
             "\n[driver]\nduty = {}\nanchor = \"{anchor}\"",
             self.driver.duty
         ));
+        if let Some(gate) = self.driver.gate {
+            line(format!("swing = {}", quoted(gate.swing_v, "V")));
+            line(format!("rise = {}", quoted(gate.rise_s, "s")));
+            line(format!("fall = {}", quoted(gate.fall_s, "s")));
+            line(format!("gate_charge = {}", quoted(gate.charge_c, "C")));
+        }
         line("\n[feed]".to_owned());
         let ohm = match self.feed {
             Feed::Inductor { henry, ohm } => {
@@ -139,9 +191,9 @@ mod tests {
             title = "a \"quoted\" title"
             frequency = "169.4 MHz"
             supply = { voltage = "6 V" }
-            switch = { closed_resistance = "0.12 ohm", open_resistance = "50 kohm" }
-            drain = { capacitance = "75.1234567 pF" }
-            driver = { duty = 0.45, anchor = "trailing" }
+            switch = { closed_resistance = "0.12 ohm", open_resistance = "50 kohm", knee = { current = "7 A" }, diode = { drop = "0.8 V", resistance = "0.2 ohm" } }
+            drain = { capacitance = "75.1234567 pF", junction = { zero_bias = "48 pF", potential = "0.8 V", grading = 0.45 }, gate_coupling = "1.5 pF" }
+            driver = { duty = 0.45, anchor = "trailing", swing = "3.3 V", rise = "100 ps", fall = "120 ps", gate_charge = "1 nC" }
             feed = { inductance = "6.8 nH", resistance = "50 mohm" }
             [load]
             resistance = "50 ohm"
@@ -159,6 +211,9 @@ mod tests {
         let near = |a: f64, b: f64| (a - b).abs() <= 1e-11 * a.abs();
         assert_eq!(again.title, stage.title);
         assert_eq!(again.driver, stage.driver);
+        assert_eq!(again.switch, stage.switch);
+        assert_eq!(again.drain_curve, stage.drain_curve);
+        assert_eq!(again.gate_coupling_f, stage.gate_coupling_f);
         assert!(near(stage.drain_f, again.drain_f));
         assert_eq!(stage.ladder.len(), again.ladder.len());
         let parts = |stage: &Stage| -> Vec<Part> {

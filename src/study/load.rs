@@ -176,7 +176,9 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
                 format!("a file that can be read ({shown}: {error})"),
             )
         })?;
-        return Ok(Hardware::Stage(Box::new(Stage::parse(&shown, &text)?)));
+        return Ok(Hardware::Stage(Box::new(Stage::read_as(
+            &shown, name, &text, files,
+        )?)));
     }
     let (name, facts) = map_choice(root)?;
     let shown = files.display(name);
