@@ -21,6 +21,8 @@ pub enum RateReason {
     Converter,
     /// The ripple's frequency.
     Ripple,
+    /// The rate of a table or polynomial in front.
+    Predistortion,
 }
 
 impl RateReason {
@@ -33,6 +35,7 @@ impl RateReason {
             Self::PhaseBandwidth => "the phase path's bandwidth",
             Self::Converter => "the converter's rate",
             Self::Ripple => "the ripple's frequency",
+            Self::Predistortion => "the rate of the predistortion",
         }
     }
 }
@@ -47,7 +50,11 @@ const TRANSPARENT: f64 = 8.0;
 /// its magnitude and phase, four times every bandwidth that is not far wider than the signal, four times
 /// every tone and converter, and a quarter more than the span.
 pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usize, RateReason) {
-    let Scheme::Supply(SupplyScheme { modulator, phase_path, .. }) = scheme;
+    let Scheme::Supply(SupplyScheme {
+        modulator,
+        phase_path,
+        ..
+    }) = scheme;
     let mut wanted = (8.0 * signal_rate_hz, RateReason::PolarExpansion);
     let mut ask = |rate_hz: f64, reason: RateReason| {
         if rate_hz > wanted.0 {
@@ -55,13 +62,21 @@ pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usiz
         }
     };
     let band = |bandwidth_hz: Option<f64>| {
-        4.0 * bandwidth_hz.unwrap_or(0.0).min(TRANSPARENT * signal_rate_hz)
+        4.0 * bandwidth_hz
+            .unwrap_or(0.0)
+            .min(TRANSPARENT * signal_rate_hz)
     };
     ask(1.25 * span_hz, RateReason::LimitsSpan);
     ask(band(modulator.bandwidth_hz), RateReason::ModulatorBandwidth);
     ask(band(phase_path.bandwidth_hz), RateReason::PhaseBandwidth);
-    ask(4.0 * modulator.converter.map_or(0.0, |c| c.rate_hz), RateReason::Converter);
-    ask(4.0 * modulator.ripple.map_or(0.0, |r| r.frequency_hz), RateReason::Ripple);
+    ask(
+        4.0 * modulator.converter.map_or(0.0, |c| c.rate_hz),
+        RateReason::Converter,
+    );
+    ask(
+        4.0 * modulator.ripple.map_or(0.0, |r| r.frequency_hz),
+        RateReason::Ripple,
+    );
     let factor = (wanted.0 / signal_rate_hz).log2().ceil().clamp(0.0, 30.0);
     ((1usize << factor as u32).min(MAX_FACTOR), wanted.1)
 }
@@ -73,7 +88,10 @@ mod tests {
 
     fn factor(modulator: Modulator, span_hz: f64) -> (usize, RateReason) {
         let scheme = Scheme::Supply(SupplyScheme {
-            shaping: Shaping { shape: Shape::Corner, floor: 0.0 },
+            shaping: Shaping {
+                shape: Shape::Corner,
+                floor: 0.0,
+            },
             modulator,
             phase_path: PhasePath::default(),
         });
@@ -85,11 +103,23 @@ mod tests {
         let ideal = Modulator::default();
         assert_eq!(factor(ideal, 0.0), (8, RateReason::PolarExpansion));
         assert_eq!(factor(ideal, 20e6), (32, RateReason::LimitsSpan));
-        let band = Modulator { bandwidth_hz: Some(5e6), ..ideal };
+        let band = Modulator {
+            bandwidth_hz: Some(5e6),
+            ..ideal
+        };
         assert_eq!(factor(band, 0.0), (32, RateReason::ModulatorBandwidth));
-        let wide = Modulator { bandwidth_hz: Some(1e12), ..ideal };
+        let wide = Modulator {
+            bandwidth_hz: Some(1e12),
+            ..ideal
+        };
         assert_eq!(factor(wide, 0.0), (32, RateReason::ModulatorBandwidth));
-        let ripple = Some(Ripple { amplitude_v: 0.1, frequency_hz: 1e12 });
-        assert_eq!(factor(Modulator { ripple, ..ideal }, 0.0), (MAX_FACTOR, RateReason::Ripple));
+        let ripple = Some(Ripple {
+            amplitude_v: 0.1,
+            frequency_hz: 1e12,
+        });
+        assert_eq!(
+            factor(Modulator { ripple, ..ideal }, 0.0),
+            (MAX_FACTOR, RateReason::Ripple)
+        );
     }
 }

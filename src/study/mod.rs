@@ -11,6 +11,6 @@ mod warning;
 pub use built_in::{BuiltIn, DEFAULT_STUDY};
 pub use check::check;
 pub use error::StudyError;
-pub use load::{Hardware, SignalChoice, Study};
+pub use load::{Hardware, Predistortion, SignalChoice, Study};
 pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
 pub use warning::Warning;
