@@ -124,6 +124,22 @@ impl LeastSquares {
         self.pending.clear();
     }
 
+    /// `|A c - b|^2` and `|b|^2` of all rows for any coefficients.
+    pub fn missed(&self, coefficients: &[Complex64]) -> (f64, f64) {
+        let mut whole = self.clone();
+        whole.fold();
+        let n = self.columns;
+        let (mut missed, mut target) = (0.0, 0.0);
+        for row in whole.triangle.row_iter() {
+            let fitted: Complex64 = (0..n.min(coefficients.len()))
+                .map(|column| row[column] * coefficients[column])
+                .sum();
+            missed += (fitted - row[n]).norm_sqr();
+            target += row[n].norm_sqr();
+        }
+        (missed, target)
+    }
+
     /// The best coefficients; `ridge` is 0 for none, and small against 1.
     ///
     /// # Errors

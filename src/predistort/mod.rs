@@ -5,12 +5,17 @@
 
 mod branch;
 mod export;
+mod polynomial;
 mod read;
 mod request;
 mod table;
 
 pub use branch::{Branch, BranchError};
 pub use export::{c_header, csv, hex_image, json, npy};
+pub use polynomial::{
+    Candidate, Choice, Fit, FitError, Form, Learned, LearningEnd, LearningPass, PolynomialRequest,
+    PolynomialSize, choose, fit, learn,
+};
 pub use read::read_table;
 pub use request::{BelowFloor, TableRequest};
 pub use table::{Entry, EntryCounts, EntryState, Table, TableError};

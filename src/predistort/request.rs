@@ -32,7 +32,7 @@ pub struct TableRequest {
 }
 
 impl Default for TableRequest {
-    /// 256 entries at 8 times the signal's rate, 12 bits each, straight lines between them.
+    /// 256 entries at 16 times the signal's rate, 12 bits each, straight lines between them.
     fn default() -> Self {
         Self {
             size: LookupSize {
@@ -43,7 +43,7 @@ impl Default for TableRequest {
             },
             spacing: Spacing::Magnitude,
             between: Between::Linear,
-            rate: 8,
+            rate: 16,
             below_floor: BelowFloor::Shaped,
             full_output_v: None,
         }

@@ -4,7 +4,7 @@ use crate::input::Problem;
 use crate::map::SweepError;
 use crate::metrics::{PairError, SpectrumError};
 use crate::orbit::{NetworkError, OrbitError};
-use crate::predistort::TableError;
+use crate::predistort::{FitError, TableError};
 use crate::signal::SignalError;
 
 /// The step that failed, with its own words.
@@ -34,6 +34,9 @@ pub enum StudyError {
     /// No table can be made.
     #[error("the table: {0}")]
     Table(#[from] TableError),
+    /// No polynomial can be fitted.
+    #[error(transparent)]
+    Polynomial(#[from] FitError),
     /// A table for another range of the control.
     #[error(
         "the table is for a full control of {table_v} V, the study's hardware has {given_v} V: make the table again for this study"
