@@ -17,6 +17,7 @@ pub mod figures;
 pub mod page;
 pub mod palette;
 pub mod picture;
+pub mod predistort;
 pub mod stage;
 pub mod table;
 mod text;

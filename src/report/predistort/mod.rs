@@ -1,0 +1,8 @@
+//! A study without and with predistortion: page, terminal text and documents.
+
+mod documents;
+mod page;
+mod tables;
+
+pub use documents::{polynomial_csv, polynomial_document, predistort_document};
+pub use page::{page, spectra_figure, table_figure, text};
