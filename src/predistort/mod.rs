@@ -17,5 +17,5 @@ pub use polynomial::{
     PolynomialSize, choose, fit, learn,
 };
 pub use read::read_table;
-pub use request::{BelowFloor, TableRequest};
+pub use request::{BelowFloor, DEFAULT_MU, TableRequest};
 pub use table::{Entry, EntryCounts, EntryState, Table, TableError};

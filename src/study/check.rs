@@ -158,7 +158,7 @@ impl<'a> Bench<'a> {
     ) -> Result<Judgement, StudyError> {
         let correction = front.correction();
         let run = self.chain(correction.as_ref()).run(source, &mut |_| {})?;
-        Ok(verdict_of(self.study, &run))
+        Ok(verdict_of(self.study, self.stage.as_ref(), &run))
     }
 
     pub(super) fn check(
@@ -195,7 +195,7 @@ impl<'a> Bench<'a> {
         };
         chain.factor = (factor / 2).max(1);
         let mut run = chain.run(source, &mut tick)?;
-        let mut judgement = verdict_of(study, &run);
+        let mut judgement = verdict_of(study, self.stage.as_ref(), &run);
         for _ in 0..=MORE_DOUBLINGS {
             let instants = 2 * chain.factor as u64 * signal.samples;
             if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS)
@@ -204,7 +204,7 @@ impl<'a> Bench<'a> {
             }
             chain.factor *= 2;
             let finer = chain.run(source, &mut tick)?;
-            let finer_judgement = verdict_of(study, &finer);
+            let finer_judgement = verdict_of(study, self.stage.as_ref(), &finer);
             convergence = Convergence {
                 against_factor: run.factor,
                 moved_db: largest_move(&judgement, &finer_judgement),
@@ -250,7 +250,7 @@ impl<'a> Bench<'a> {
 /// The map, and the stage at full supply where there is one.
 fn hardware(hardware: &Hardware) -> Result<(Map, Option<StageFacts>), StudyError> {
     let stage = match hardware {
-        Hardware::Map(map) => return Ok((map.clone(), None)),
+        Hardware::Map(map) => return Ok((Map::clone(map), None)),
         Hardware::Stage(stage) => stage,
     };
     let network = Network::new(stage)?;
@@ -296,7 +296,7 @@ fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, S
     })
 }
 
-fn verdict_of(study: &Study, run: &Run) -> Judgement {
+fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement {
     let measured = Measured {
         fine: &run.output_spectrum,
         peak_hold: &run.peak_spectra,
@@ -307,7 +307,8 @@ fn verdict_of(study: &Study, run: &Run) -> Judgement {
         evm_p95_percent: None,
         evm_p99_percent: None,
         modulation: None,
-        harmonics_dbc: None,
+        // At full supply: a linear stage keeps their ratio at any supply.
+        harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
     };
     judge(&measured, &study.limits)
 }
@@ -380,8 +381,7 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
         convergence,
         ..
     } = result.rate;
-    // The negation also catches a movement that is no number.
-    if !(convergence.moved_db <= CONVERGED_DB) {
+    if convergence.moved_db.is_nan() || convergence.moved_db > CONVERGED_DB {
         warnings.push(Warning::NotConverged {
             moved_db: convergence.moved_db,
             factor,
