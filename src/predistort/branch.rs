@@ -95,6 +95,12 @@ impl<'a> Branch<'a> {
             .unwrap_or_else(|| self.halved(amplitude_v))
     }
 
+    /// The amplitude at `control`, V, held at the branch's ends.
+    pub fn output_v(&self, control: f64) -> f64 {
+        let held = control.clamp(self.control.0, self.control.1);
+        self.map.output_held_v(held).0.norm()
+    }
+
     fn halved(&self, amplitude_v: f64) -> f64 {
         let (mut low, mut high) = self.control;
         loop {

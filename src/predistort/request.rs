@@ -1,6 +1,6 @@
 //! What table is wanted.
 
-use crate::drive::{Between, LookupSize, MAX_TABLE_RATE, Shaping, Spacing};
+use crate::drive::{Between, LookupSize, MAX_TABLE_RATE, Spacing};
 use crate::input::{Problem, Range, Section};
 use crate::units::Dimension;
 
@@ -70,14 +70,6 @@ const BELOW_FLOOR: [(&str, BelowFloor); 2] =
 pub const DEFAULT_MU: f64 = 255.0;
 
 impl TableRequest {
-    /// The wanted output at magnitude `m` as a part of the output at address 1.
-    pub fn target(&self, m: f64, shaping: &Shaping) -> f64 {
-        match self.below_floor {
-            BelowFloor::Shaped => shaping.apply(m),
-            BelowFloor::Held => m,
-        }
-    }
-
     /// Reads the keys of a study's `[predistort]` table; what is absent is as in [`TableRequest::default`].
     ///
     /// # Errors

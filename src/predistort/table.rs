@@ -3,7 +3,8 @@
 //! For the wanted magnitude `m` of an entry, a part of the control's range:
 //!
 //! ```text
-//! wanted output   a(m) = A target(m)          A: output at address 1; target: m, or the scheme's shaping of m
+//! wanted output   a(m) = A target(m)          A: output at address 1
+//! target          m, or the scheme's shaping of m with the output at the control's floor as its floor
 //! control         v(m) = branch^-1(a(m)), held within the branch and above the floor
 //! phase           -(phase(v(m)) - phase(v(1)))
 //! ```
@@ -139,13 +140,23 @@ impl Table {
             .into());
         }
         let branch = Branch::of(map)?;
+        let full_output_v = request.full_output_v.unwrap_or(branch.reach_v.1);
+        let floor_v = branch.output_v(shaping.floor * full_control);
         let maker = Maker {
             map,
             branch: &branch,
             full_control,
             shaping,
+            target: Shaping {
+                shape: shaping.shape,
+                floor: if shaping.floor > 0.0 && request.below_floor == BelowFloor::Shaped {
+                    floor_v / full_output_v
+                } else {
+                    0.0
+                },
+            },
             request,
-            full_output_v: request.full_output_v.unwrap_or(branch.reach_v.1),
+            full_output_v,
         };
         let steps = (request.size.depth - 1) as f64;
         let entries: Vec<Entry> = (0..request.size.depth)
@@ -197,6 +208,8 @@ struct Maker<'a> {
     branch: &'a Branch<'a>,
     full_control: f64,
     shaping: &'a Shaping,
+    /// From the wanted magnitude to the wanted output, both parts of full range.
+    target: Shaping,
     request: &'a TableRequest,
     full_output_v: f64,
 }
@@ -230,13 +243,13 @@ impl Maker<'_> {
     }
 
     fn entry(&self, magnitude: f64) -> Entry {
-        let target = self.request.target(magnitude, self.shaping);
+        let target = self.target.apply(magnitude);
         let (control, mut state) = self.control(self.full_output_v * target);
         let moved = target - magnitude;
         if state == EntryState::Inverted && moved > 0.5 * self.request.size.control_step() {
             state = EntryState::MovedByFloor;
         }
-        let (top, _) = self.control(self.full_output_v * self.request.target(1.0, self.shaping));
+        let (top, _) = self.control(self.full_output_v * self.target.apply(1.0));
         Entry {
             magnitude,
             control: control / self.full_control,
