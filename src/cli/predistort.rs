@@ -12,7 +12,8 @@ use crate::predistort::{
 };
 use crate::report::check::Request;
 use crate::report::predistort::{
-    page, polynomial_csv, polynomial_document, predistort_document, spectra_figure, text,
+    margin_figure, page, polynomial_csv, polynomial_document, predistort_document, spectra_figure,
+    table_figure, text,
 };
 use crate::signal;
 use crate::study::{
@@ -25,7 +26,7 @@ use crate::verdict::Outcome;
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Examples:
   quietedge predistort my.study.toml --out table
-      report.html, result.json, spectrum.png and table.csv, .json, .npy, .hex ($readmemh), .h (C)
+      report.html, result.json, spectrum.png, table.png; table.csv, .json, .npy, .hex ($readmemh), .h (C)
   quietedge predistort my.study.toml --depth 64 --amplitude-bits 10 --phase-bits 8 --spacing power
   quietedge predistort my.study.toml --search --reserve \"3 dB\"
   quietedge predistort my.study.toml --polynomial memory
@@ -152,7 +153,7 @@ enum FormWord {
     Cross,
 }
 
-const NAMES: [&str; 10] = [
+const NAMES: [&str; 12] = [
     "report.html",
     "result.json",
     "spectrum.png",
@@ -163,6 +164,8 @@ const NAMES: [&str; 10] = [
     "table.h",
     "polynomial.json",
     "polynomial.csv",
+    "table.png",
+    "margin.png",
 ];
 
 /// Parts of the progress bar.
@@ -331,6 +334,10 @@ fn write(
     folder.write(NAMES[5], &npy(table)?)?;
     folder.write(NAMES[6], hex_image(table).as_bytes())?;
     folder.write(NAMES[7], c_header(table).as_bytes())?;
+    folder.write(NAMES[10], &table_figure(result).figure.png()?)?;
+    if let Some(margin) = margin_figure(result) {
+        folder.write(NAMES[11], &margin.figure.png()?)?;
+    }
     if let Some(polynomial) = &result.polynomial
         && let (Some(document), Some(text)) =
             (polynomial_document(polynomial), polynomial_csv(polynomial))

@@ -43,7 +43,7 @@ fn folder() -> tempfile::TempDir {
     folder
 }
 
-const FILES: [&str; 8] = [
+const FILES: [&str; 9] = [
     "report.html",
     "result.json",
     "spectrum.png",
@@ -52,6 +52,7 @@ const FILES: [&str; 8] = [
     "table.npy",
     "table.hex",
     "table.h",
+    "table.png",
 ];
 
 #[test]
@@ -101,7 +102,7 @@ fn a_study_is_mended_written_and_checked_again() {
     for name in FILES.iter().chain(&["polynomial.json", "polynomial.csv"]) {
         assert!(path(name).metadata().expect(name).len() > 100, "{name}");
     }
-    assert_eq!(std::fs::read_dir(path("")).expect("a folder").count(), 10);
+    assert_eq!(std::fs::read_dir(path("")).expect("a folder").count(), 11);
 
     // Nothing is overwritten unasked.
     let table = std::fs::read(path("table.json")).expect("the table");

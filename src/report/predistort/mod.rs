@@ -5,4 +5,4 @@ mod page;
 mod tables;
 
 pub use documents::{polynomial_csv, polynomial_document, predistort_document};
-pub use page::{page, spectra_figure, table_figure, text};
+pub use page::{margin_figure, page, spectra_figure, table_figure, text};

@@ -182,7 +182,7 @@ pub fn table_figure(result: &PredistortResult) -> CaptionedFigure {
 }
 
 /// Margin over depth and bits, where they were searched.
-fn margin_figure(result: &PredistortResult) -> Option<CaptionedFigure> {
+pub fn margin_figure(result: &PredistortResult) -> Option<CaptionedFigure> {
     let search = result.search.as_ref()?;
     let curves = search
         .sweeps

@@ -200,13 +200,19 @@ pub(super) fn search_sentence(result: &PredistortResult) -> Option<String> {
         "{} entries, {} amplitude and {} phase bits",
         size.depth, size.amplitude_bits, size.phase_bits
     );
+    let verified = result.after.judgement.verdict.tightest();
+    let verified = verified
+        .and_then(|check| check.margin_db)
+        .map_or(String::new(), |margin| {
+            format!(" Verified with finer sampling it leaves {margin:+.2} dB.")
+        });
     Some(match search.end {
         SearchEnd::Found => format!(
-            "{sizes}: the smallest table tried that keeps every limit with {} dB to spare.",
+            "{sizes}: the smallest table tried that keeps every limit with {} dB to spare.{verified}",
             search.reserve.db
         ),
         SearchEnd::OutOfReach => format!(
-            "No table keeps every limit with {} dB to spare, not the finest either: {sizes} comes closest. What is left is not the table's: look at the modulator, the delays and the level.",
+            "No table keeps every limit with {} dB to spare, not the finest either: {sizes} comes closest.{verified} What is left is not the table's: look at the modulator, the delays and the level.",
             search.reserve.db
         ),
     })
