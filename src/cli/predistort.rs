@@ -119,7 +119,7 @@ struct PolynomialOptions {
     passes: u32,
 
     /// Ridge of the least squares, against columns of norm one; 0 for none
-    #[arg(long, value_name = "R", default_value_t = 0.0)]
+    #[arg(long, value_name = "R", default_value_t = 1e-11)]
     ridge: f64,
 }
 

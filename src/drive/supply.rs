@@ -215,6 +215,56 @@ mod tests {
     }
 
     #[test]
+    fn a_correction_works_on_its_own_clock_and_is_held() {
+        use crate::drive::{
+            Between, Correction, Lookup, LookupSize, Polynomial, Spacing, Term, Word,
+        };
+        let size = LookupSize {
+            depth: 2,
+            address_bits: 20,
+            amplitude_bits: 20,
+            phase_bits: 8,
+        };
+        let words = [0, (1 << 20) - 1].map(|control| Word { control, phase: 64 });
+        // A straight line that turns the phase by a quarter, and the same as a polynomial.
+        let lookup = Lookup::new(size, Spacing::Magnitude, Between::Linear, 2, words.to_vec());
+        let polynomial = Polynomial {
+            terms: vec![Term {
+                signal_lag: 0,
+                envelope_lag: 0,
+                power: 0,
+            }],
+            coefficients: vec![Complex64::I],
+            lead: 0,
+            rate: 2,
+        };
+        let corrections = [
+            Correction::Table(lookup.unwrap()),
+            Correction::Polynomial(polynomial),
+        ];
+        let samples: Vec<_> = (0..400)
+            .map(|n| {
+                Complex64::from_polar(0.6 + 0.3 * (0.05 * f64::from(n)).sin(), 0.02 * f64::from(n))
+            })
+            .collect();
+        for correction in corrections {
+            let mut drive = SupplyDrive::new(&ideal(), 0.8, 6.0, 1e6).corrected(&correction, 8);
+            let mut track = Track::default();
+            drive.push(&samples, &mut track);
+            for n in LATENCY..400 {
+                // Four instants to a sample of the correction.
+                let held = samples[n / 4 * 4 - LATENCY];
+                let output = track.control[n] / (0.8 * 6.0) * track.phase[n];
+                assert!(
+                    (output - held * Complex64::I).norm() < 1e-6,
+                    "{n}: {output} {held}"
+                );
+                assert_eq!(track.wanted[n], samples[n - LATENCY]);
+            }
+        }
+    }
+
+    #[test]
     fn paths_are_delayed_apart() {
         let mut scheme = ideal();
         scheme.modulator.delay_s = 2.5e-6;

@@ -165,7 +165,7 @@ impl LeastSquares {
         let scaled = DMatrix::from_fn(n, n, |row, column| square[(row, column)] / norms[column]);
         let singular = scaled.clone().svd(false, false).singular_values;
         let condition = singular.max() / singular.min();
-        if ridge <= 0.0 && !(condition < WORST_CONDITION) {
+        if ridge <= 0.0 && (condition.is_nan() || condition >= WORST_CONDITION) {
             return Err(LeastSquaresError::Dependent { condition });
         }
         let target = triangle.view((0, n), (n, 1)).into_owned();

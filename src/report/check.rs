@@ -537,6 +537,12 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
         title: "Scheme".to_owned(),
         rows: scheme_rows(result.scheme()),
     });
+    if let Some(table) = &result.table {
+        groups.push(FactGroup {
+            title: "Predistortion table".to_owned(),
+            rows: super::predistort::table_rows(table),
+        });
+    }
     groups.push(FactGroup {
         title: "Sampling".to_owned(),
         rows: vec![

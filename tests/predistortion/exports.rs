@@ -242,6 +242,20 @@ fn the_hex_image_is_loaded_by_a_verilog_simulator() {
     }
 }
 
+proptest::proptest! {
+    #[test]
+    fn any_change_to_a_table_file_is_read_or_refused(at in 0usize..2000, with in proptest::prelude::any::<u8>()) {
+        let mut bytes = serde_json::to_vec(&json(&tables()[1])).expect("JSON");
+        let length = bytes.len();
+        bytes[at % length] = with;
+        if let Ok(table) = read_table("table.json", &bytes[..]) {
+            proptest::prop_assert!(table.lookup.words().len() == table.lookup.size().depth);
+            let word = table.lookup.word(0.7);
+            proptest::prop_assert!(word.control <= table.lookup.size().top_word());
+        }
+    }
+}
+
 #[test]
 fn spoilt_tables_are_refused_with_a_reason() {
     let good = json(&tables()[1]);

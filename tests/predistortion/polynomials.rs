@@ -84,8 +84,8 @@ fn coefficients_agree_with_numpy() {
             .map(|term| term.signal_lag.max(term.envelope_lag))
             .max();
         let mut least_squares = LeastSquares::new(terms.len());
-        for at in reach.expect("terms")..x.len() {
-            least_squares.push(terms.iter().map(|term| term.value(&x, at)), output[at]);
+        for (at, target) in output.iter().enumerate().skip(reach.expect("terms")) {
+            least_squares.push(terms.iter().map(|term| term.value(&x, at)), *target);
         }
         let solution = least_squares.solve(0.0).expect("a solution");
         let expected = complexes(&system["coefficients"]);

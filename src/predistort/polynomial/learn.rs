@@ -57,52 +57,67 @@ pub struct Learned {
 }
 
 /// Learns the predistorter for `wanted`. `transmit` gives the transmitter's output for a signal, as long as it,
-/// aligned with it in time and divided by the wanted gain.
+/// aligned with it in time and divided by the wanted gain. `edge` samples at the start and at the end show the
+/// transmitter starting and stopping: nothing is learned from them.
 ///
 /// # Errors
 /// What `transmit` says, or [`FitError`].
 pub fn learn<E: From<FitError>>(
     request: &PolynomialRequest,
+    edge: usize,
     wanted: &[Complex64],
     mut transmit: impl FnMut(&[Complex64]) -> Result<Vec<Complex64>, E>,
 ) -> Result<Learned, E> {
+    let edge = edge.min(wanted.len() / 4);
+    let inside = edge..wanted.len() - edge;
+    let wanted_inside = &wanted[inside.clone()];
     let mut input = wanted.to_vec();
     let mut output = transmit(&input)?;
     let (size, choice) = match request.size {
         Some(size) => (size, None),
         None => {
-            let choice = choose(request.form, request.ridge, &output, &input)?;
+            let choice = choose(
+                request.form,
+                request.ridge,
+                &output[inside.clone()],
+                &input[inside.clone()],
+            )?;
             (choice.chosen, Some(choice))
         }
     };
-    let mut best = nmse_db(wanted, &output);
+    let mut best = nmse_db(wanted_inside, &output[inside.clone()]);
     let mut passes = vec![LearningPass {
         pass: 0,
         output_nmse_db: best,
         condition: None,
         largest_coefficient: None,
-        peak: peak(wanted),
+        peak: peak(wanted_inside),
     }];
     let mut learned = None;
     let mut end = LearningEnd::RanOut;
     for pass in 1..=request.passes {
-        let found = fit(&size, request.rate, request.ridge, &output, &input)?;
+        let found = fit(
+            &size,
+            request.rate,
+            request.ridge,
+            &output[inside.clone()],
+            &input[inside.clone()],
+        )?;
         input = without_lead(&found.polynomial.apply(wanted), size.lead());
         output = transmit(&input)?;
-        let reached = nmse_db(wanted, &output);
+        let reached = nmse_db(wanted_inside, &output[inside.clone()]);
         passes.push(LearningPass {
             pass,
             output_nmse_db: reached,
             condition: Some(found.condition),
             largest_coefficient: Some(found.largest_coefficient),
-            peak: peak(&input),
+            peak: peak(&input[inside.clone()]),
         });
         let helped = best - reached;
         if helped > 0.0 {
             (best, learned) = (reached, Some(found));
         }
-        // The negation also catches what is no number.
-        if !(helped >= HELPS_DB) {
+        if helped.is_nan() || helped < HELPS_DB {
             end = LearningEnd::StoppedHelping;
             break;
         }
@@ -177,7 +192,7 @@ mod tests {
                 ridge: 0.0,
                 rate: 8,
             };
-            let learned = learn(&request, &wanted, transmit).unwrap();
+            let learned = learn(&request, 10, &wanted, transmit).unwrap();
             let (first, last) = (learned.passes[0], learned.passes[learned.passes.len() - 1]);
             assert!(first.output_nmse_db > -35.0, "{first:?}");
             assert!(
@@ -212,7 +227,7 @@ mod tests {
                 .map(|(n, x)| x + 0.01 * Complex64::cis((n * n * n) as f64))
                 .collect())
         };
-        let learned = learn(&request, &wanted, noisy).unwrap();
+        let learned = learn(&request, 10, &wanted, noisy).unwrap();
         assert_eq!(learned.end, LearningEnd::StoppedHelping);
         assert_eq!(learned.passes.len(), 2);
     }

@@ -4,5 +4,7 @@ mod documents;
 mod page;
 mod tables;
 
+pub(super) use tables::table_rows;
+
 pub use documents::{polynomial_csv, polynomial_document, predistort_document};
 pub use page::{margin_figure, page, spectra_figure, table_figure, text};

@@ -65,10 +65,7 @@ pub fn page(result: &PredistortResult, request: &Request) -> Page {
             rows: search,
         });
     }
-    let mut facts = vec![FactGroup {
-        title: "Table".to_owned(),
-        rows: table_rows(result),
-    }];
+    let mut facts = Vec::new();
     if let Some(polynomial) = &result.polynomial {
         facts.push(FactGroup {
             title: "Polynomial".to_owned(),
@@ -242,7 +239,7 @@ pub fn text(result: &PredistortResult) -> String {
         }
         format!("\n{title}\n{}\n", table.text())
     };
-    text.push_str(&pairs("Table", table_rows(result)));
+    text.push_str(&pairs("Table", table_rows(&result.table)));
     if let Some(sentence) = search_sentence(result) {
         let mut table = Table::new([
             ("varied", Align::Left),

@@ -98,8 +98,7 @@ pub(super) fn table_multiplications(table: &Table) -> usize {
 }
 
 /// The table's sizes and what became of its entries.
-pub(super) fn table_rows(result: &PredistortResult) -> Vec<(String, String)> {
-    let table = &result.table;
+pub(in crate::report) fn table_rows(table: &Table) -> Vec<(String, String)> {
     let (lookup, size) = (&table.lookup, table.lookup.size());
     let own = |name: &str, value: String| (name.to_owned(), value);
     let mut rows = vec![

@@ -18,6 +18,9 @@ use crate::transmit::MapTransmitter;
 /// Instants that are learned from, at most.
 const MOST_INSTANTS: usize = 1 << 18;
 
+/// Samples of the signal's own rate at both ends where its interpolation sees past the file.
+const EDGE: usize = 64;
+
 /// The transmitter at the polynomial's rate.
 struct Model<'a> {
     bench: &'a Bench<'a>,
@@ -82,7 +85,9 @@ pub(super) fn learn_and_check(
         gain_v: bench.map.full_amplitude_v() * bench.study.signal.level,
         alignment: None,
     };
-    let learned = learn(request, &wanted, |signal| model.transmit(signal))?;
+    let Scheme::Supply(scheme) = &bench.study.scheme;
+    let edge = SupplyDrive::settling(scheme, rate_hz) + EDGE * request.rate;
+    let learned = learn(request, edge, &wanted, |signal| model.transmit(signal))?;
     progress(0.5);
     let after = match &learned.fit {
         None => None,
