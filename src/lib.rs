@@ -33,6 +33,7 @@
 //! * Random numbers come from a stated seed; the same study and seed give the same bytes.
 
 pub mod cli;
+pub mod design;
 pub mod drive;
 pub mod input;
 pub mod limits;

@@ -51,11 +51,16 @@ impl Design {
             switch: Switch {
                 closed_ohm,
                 open_ohm: f64::INFINITY,
+                knee: None,
+                diode: None,
             },
             drain_f: self.wrc / angular_hz,
+            drain_curve: None,
+            gate_coupling_f: 0.0,
             driver: Driver {
                 duty: self.duty,
                 anchor: Anchor::Centre,
+                gate: None,
             },
             feed: self
                 .feed

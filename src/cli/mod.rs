@@ -2,6 +2,7 @@
 
 mod arguments;
 mod check;
+mod completions;
 mod console;
 mod disk;
 mod limits;
@@ -23,6 +24,10 @@ pub use output::{OutputFolder, OutputOptions};
 /// The bench of an engineer who puts an amplitude-varying signal through a switching power stage.
 #[derive(Debug, Parser)]
 #[command(name = "quietedge", version, about, long_about = None, max_term_width = 100)]
+#[command(
+    after_help = "Start with `quietedge check`: it carries out a built-in study and writes its report.
+quietedge COMMAND --help shows the options of a command, with examples."
+)]
 struct Arguments {
     #[command(subcommand)]
     command: Command,
@@ -33,12 +38,13 @@ struct Arguments {
 
 /// Options that every command takes.
 #[derive(Debug, Clone, clap::Args)]
+#[command(next_help_heading = "For every command")]
 pub struct Common {
     /// Print one JSON document on stdout and nothing else there
     #[arg(long, global = true)]
     json: bool,
 
-    /// No progress bars and no remarks on stderr
+    /// Keep progress bars and remarks off stderr; errors still go there
     #[arg(short, long, global = true)]
     quiet: bool,
 }
@@ -51,6 +57,7 @@ enum Command {
     Predistort(predistort::Arguments),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
+    Completions(completions::Arguments),
 }
 
 /// Runs the program with the process's own arguments.
@@ -76,6 +83,7 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Predistort(arguments) => predistort::run(&arguments, &console),
         Command::Signal(arguments) => signal::run(&arguments, &console),
         Command::Limits(arguments) => limits::run(&arguments, &console),
+        Command::Completions(arguments) => completions::run(&arguments, &console),
     };
     console.exit(result)
 }

@@ -60,6 +60,17 @@ pub struct MapPoint {
     pub switch_min_v: Option<f64>,
     /// Drain voltage just before the switch closes, V.
     pub closing_v: Option<f64>,
+    /// Power that the driver draws, W.
+    pub driver_w: Option<f64>,
+}
+
+/// A control at which the stage has no known orbit.
+#[derive(Debug, Clone, PartialEq, serde::Serialize, serde::Deserialize)]
+pub struct Failure {
+    /// V for supply, a fraction for width.
+    pub control: f64,
+    /// Why.
+    pub reason: String,
 }
 
 /// Where a map came from.
@@ -84,6 +95,10 @@ pub struct Map {
     phase_rad: Curve,
     supply_a: Option<Curve>,
     switch_peak_v: Option<Curve>,
+    driver_w: Option<Curve>,
+    failures: Vec<Failure>,
+    /// Between the points beside failed ones: nothing is known inside.
+    gaps: Vec<(f64, f64)>,
 }
 
 /// Why points make no map.
@@ -130,8 +145,53 @@ impl Map {
             phase_rad: Curve::new(x.clone(), phase)?,
             supply_a: optional(|point| point.supply_a)?,
             switch_peak_v: optional(|point| point.switch_peak_v)?,
+            driver_w: optional(|point| point.driver_w)?,
+            failures: Vec::new(),
+            gaps: Vec::new(),
             points,
         })
+    }
+
+    /// The same map with points that failed. Between their neighbours nothing is interpolated: forward and
+    /// inverse have no answer there.
+    #[must_use]
+    pub fn with_failures(mut self, mut failures: Vec<Failure>) -> Self {
+        failures.sort_by(|a, b| a.control.total_cmp(&b.control));
+        let mut gaps: Vec<(f64, f64)> = Vec::new();
+        for failure in &failures {
+            let after = self
+                .points
+                .partition_point(|point| point.control < failure.control);
+            // Failures outside the points only shorten the domain.
+            if after > 0 && after < self.points.len() {
+                let gap = (self.points[after - 1].control, self.points[after].control);
+                if gaps.last() != Some(&gap) {
+                    gaps.push(gap);
+                }
+            }
+        }
+        self.failures = failures;
+        self.gaps = gaps;
+        self
+    }
+
+    /// Points that failed, by control.
+    pub fn failures(&self) -> &[Failure] {
+        &self.failures
+    }
+
+    /// The end of a gap nearest to `control`, where it lies in one.
+    fn gap_edge(&self, control: f64) -> Option<f64> {
+        self.gaps
+            .iter()
+            .find(|(low, high)| *low < control && control < *high)
+            .map(|(low, high)| {
+                if control - low < high - control {
+                    *low
+                } else {
+                    *high
+                }
+            })
     }
 
     /// What is moved.
@@ -172,8 +232,11 @@ impl Map {
             .fold(0.0, f64::max)
     }
 
-    /// Output phasor at `control`, peak volts; `None` outside the domain.
+    /// Output phasor at `control`, peak volts; `None` outside the domain and in gaps.
     pub fn output_v(&self, control: f64) -> Option<Complex64> {
+        if self.gap_edge(control).is_some() {
+            return None;
+        }
         Some(Complex64::from_polar(
             self.amplitude_v.at(control)?,
             self.phase_rad.at(control)?,
@@ -185,8 +248,11 @@ impl Map {
         self.phase_rad.at(control)
     }
 
-    /// Output phasor at `control` held within the domain, and whether it had to be held.
+    /// Output phasor at `control` held within the domain and out of gaps, and whether it had to be held.
     pub fn output_held_v(&self, control: f64) -> (Complex64, bool) {
+        if let Some(edge) = self.gap_edge(control) {
+            return (self.output_held_v(edge).0, true);
+        }
         let (amplitude_v, held) = self.amplitude_v.at_held(control);
         let (phase_rad, _) = self.phase_rad.at_held(control);
         (Complex64::from_polar(amplitude_v, phase_rad), held)
@@ -197,6 +263,11 @@ impl Map {
         self.supply_a.as_ref().map(|curve| curve.at_held(control).0)
     }
 
+    /// Driver power at `control` held within the domain, W, where the map knows it.
+    pub fn driver_held_w(&self, control: f64) -> Option<f64> {
+        self.driver_w.as_ref().map(|curve| curve.at_held(control).0)
+    }
+
     /// Highest drain voltage at `control` held within the domain, V, where the map knows it.
     pub fn switch_peak_held_v(&self, control: f64) -> Option<f64> {
         self.switch_peak_v
@@ -204,9 +275,12 @@ impl Map {
             .map(|curve| curve.at_held(control).0)
     }
 
-    /// The control that gives `amplitude_v`; `None` outside the range or where the map is not monotone.
+    /// The control that gives `amplitude_v`; `None` outside the range, where the map is not monotone, and where
+    /// the control would lie in a gap.
     pub fn inverse(&self, amplitude_v: f64) -> Option<f64> {
-        self.amplitude_v.inverse(amplitude_v)
+        self.amplitude_v
+            .inverse(amplitude_v)
+            .filter(|&control| self.gap_edge(control).is_none())
     }
 
     /// The first control from which the amplitude no longer rises, where there is one: the map has no

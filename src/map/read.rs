@@ -7,8 +7,8 @@ use std::io::Read;
 
 use num_complex::Complex64;
 
-use super::{Control, Map, MapPoint, Origin};
-use crate::input::{Complaint, MAX_TEXT_BYTES, Place, Problem, nearest};
+use super::{Control, Failure, Map, MapPoint, Origin};
+use crate::input::{Complaint, Place, Problem, nearest, read_text};
 use crate::units::{self, Dimension};
 
 /// How the file is written.
@@ -33,7 +33,7 @@ pub struct MapFacts {
     pub supply_v: Option<f64>,
 }
 
-const COLUMNS: [&str; 11] = [
+const COLUMNS: [&str; 12] = [
     "control",
     "output_re_v",
     "output_im_v",
@@ -45,7 +45,11 @@ const COLUMNS: [&str; 11] = [
     "switch_peak_v",
     "switch_peak_a",
     "closing_v",
+    "driver_w",
 ];
+
+/// No volt, ampere or degree of a transmitter is larger than this.
+const MOST: f64 = 1e9;
 
 /// Reads the map in `reader`, which came from `file`; `facts` stated in the study win over the file's own
 /// where the file is silent, and must agree where it speaks.
@@ -58,25 +62,10 @@ pub fn read_map(
     reader: impl Read,
     facts: &MapFacts,
 ) -> Result<Map, Problem> {
-    let mut text = String::new();
-    let read = reader.take(MAX_TEXT_BYTES + 1).read_to_string(&mut text);
     let about = |given: String, allowed: &str| Problem::about_file(file, given, allowed);
-    match read {
-        Err(error) => {
-            return Err(about(
-                format!("a file that cannot be read ({error})"),
-                "text",
-            ));
-        }
-        Ok(size) if size as u64 > MAX_TEXT_BYTES => {
-            return Err(about(
-                format!("more than {MAX_TEXT_BYTES} bytes"),
-                "a map of bearable size",
-            ));
-        }
-        Ok(_) => {}
-    }
-    let (own, points) = match format {
+    let text = read_text(reader)
+        .map_err(|error| Problem::unreadable(file, &error, "a map, text in UTF-8"))?;
+    let (own, points, failures) = match format {
         MapFormat::Csv => from_csv(file, &text)?,
         MapFormat::Json => from_json(file, &text)?,
     };
@@ -105,20 +94,45 @@ pub fn read_map(
         agree("frequency", own.frequency_hz, facts.frequency_hz)?,
     )?;
     let supply_v = agree("supply", own.supply_v, facts.supply_v)?;
+    if points.len() < 2 {
+        return Err(about(
+            format!("{} of the points that make a map", points.len()),
+            "at least two, sorted by control",
+        ));
+    }
+    let allowed_controls = match control {
+        Control::Supply => 0.0..=MOST,
+        Control::Width => 0.0..=1.0,
+    };
     let mut map_points = Vec::with_capacity(points.len());
-    for point in points {
+    for (index, point) in points.into_iter().enumerate() {
+        if !allowed_controls.contains(&point.control) {
+            return Err(about(
+                format!("control {} in point {}", point.control, index + 1),
+                match control {
+                    Control::Supply => "a supply of 0 V or more",
+                    Control::Width => "a width from 0 to 1, a fraction of the period",
+                },
+            ));
+        }
+        if point.output_v.norm().is_nan() || point.output_v.norm() > MOST {
+            let given = format!("an output of {} V in point {}", point.output_v, index + 1);
+            return Err(about(given, "at most 1e9 V"));
+        }
         let supply_v = match control {
             Control::Supply => point.control,
             Control::Width => needed("supply", point.supply_v.or(supply_v))?,
         };
         map_points.push(point.finish(supply_v, load_ohm));
     }
-    Map::new(control, Origin::File, frequency_hz, load_ohm, map_points).map_err(|error| {
-        about(
-            error.to_string(),
-            "at least two points, sorted by control, with output",
-        )
-    })
+    Map::new(control, Origin::File, frequency_hz, load_ohm, map_points)
+        .map(|map| map.with_failures(failures))
+        .map_err(|error| {
+            about(
+                error.to_string(),
+                "at least two points, sorted by control, with output",
+            )
+        })
 }
 
 /// One row as far as the file says.
@@ -132,6 +146,7 @@ struct Row {
     switch_peak_v: Option<f64>,
     switch_peak_a: Option<f64>,
     closing_v: Option<f64>,
+    driver_w: Option<f64>,
 }
 
 impl Row {
@@ -151,11 +166,14 @@ impl Row {
             switch_peak_a: self.switch_peak_a,
             switch_min_v: None,
             closing_v: self.closing_v,
+            driver_w: self.driver_w,
         }
     }
 }
 
-fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
+type Contents = (MapFacts, Vec<Row>, Vec<Failure>);
+
+fn from_csv(file: &str, text: &str) -> Result<Contents, Problem> {
     let complain = |line: usize, key: &str, given: String, allowed: String| {
         let content = text
             .lines()
@@ -177,7 +195,11 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
             hint: None,
         })
     };
-    let facts = facts_of_comments(text, &complain)?;
+    let (facts, failures) = facts_of_comments(text, &complain)?;
+    let header_line = text
+        .lines()
+        .position(|line| !line.starts_with('#') && !line.trim().is_empty())
+        .map_or(1, |index| index + 1);
     let mut reader = csv::ReaderBuilder::new()
         .comment(Some(b'#'))
         .trim(csv::Trim::All)
@@ -186,16 +208,13 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         .headers()
         .map_err(|error| {
             complain(
-                1,
+                header_line,
                 "",
                 error.to_string(),
                 "a header of column names".to_owned(),
             )
         })?
         .clone();
-    let header_line = header
-        .position()
-        .map_or(1, |position| position.line() as usize);
     let mut columns = Vec::new();
     for name in &header {
         let column = COLUMNS
@@ -213,6 +232,14 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
                     None => problem,
                 }
             })?;
+        if columns.contains(&COLUMNS[column]) {
+            return Err(complain(
+                header_line,
+                name,
+                "the column twice".to_owned(),
+                "every column once".to_owned(),
+            ));
+        }
         columns.push(COLUMNS[column]);
     }
     let has = |name: &str| columns.contains(&name);
@@ -221,7 +248,10 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         return Err(complain(
             header_line,
             "",
-            format!("the columns {}", columns.join(", ")),
+            match columns.len() {
+                0 => "no columns".to_owned(),
+                _ => format!("the columns {}", columns.join(", ")),
+            },
             "control and either output_re_v, output_im_v or amplitude_v, phase_deg".to_owned(),
         ));
     }
@@ -231,12 +261,12 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
             let line = error
                 .position()
                 .map_or(header_line, |position| position.line() as usize);
-            complain(
-                line,
-                "",
-                format!("a row that does not fit ({error})"),
-                "one value per column".to_owned(),
-            )
+            let given = match error.kind() {
+                csv::ErrorKind::UnequalLengths { len, .. } => format!("{len} values"),
+                _ => format!("a row that cannot be read ({error})"),
+            };
+            let allowed = format!("{} values, one per column", columns.len());
+            complain(line, "", given, allowed)
         })?;
         let line = record
             .position()
@@ -247,13 +277,13 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
             let value: f64 = field
                 .parse()
                 .ok()
-                .filter(|value: &f64| value.is_finite())
+                .filter(|value: &f64| value.abs() <= MOST)
                 .ok_or_else(|| {
                     complain(
                         line,
                         name,
                         format!("\"{field}\""),
-                        "a finite number".to_owned(),
+                        format!("a number of at most {MOST:e}"),
                     )
                 })?;
             match name {
@@ -267,7 +297,8 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
                 "efficiency" => row.efficiency = Some(value),
                 "switch_peak_v" => row.switch_peak_v = Some(value),
                 "switch_peak_a" => row.switch_peak_a = Some(value),
-                _ => row.closing_v = Some(value),
+                "closing_v" => row.closing_v = Some(value),
+                _ => row.driver_w = Some(value),
             }
         }
         if !cartesian {
@@ -287,14 +318,15 @@ fn from_csv(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         }
         rows.push(row);
     }
-    Ok((facts, rows))
+    Ok((facts, rows, failures))
 }
 
 fn facts_of_comments(
     text: &str,
     complain: &impl Fn(usize, &str, String, String) -> Problem,
-) -> Result<MapFacts, Problem> {
+) -> Result<(MapFacts, Vec<Failure>), Problem> {
     let mut facts = MapFacts::default();
+    let mut failures = Vec::new();
     for (index, line) in text.lines().enumerate() {
         let Some((key, value)) = line.strip_prefix('#').and_then(|fact| fact.split_once('='))
         else {
@@ -329,13 +361,37 @@ fn facts_of_comments(
             "load_resistance" => facts.load_ohm = quantity(Dimension::Resistance)?,
             "frequency" => facts.frequency_hz = quantity(Dimension::Frequency)?,
             "supply" => facts.supply_v = quantity(Dimension::Voltage)?,
+            "failed" => {
+                let (control, reason) = value.split_once(' ').unwrap_or((value, ""));
+                let control = control
+                    .parse()
+                    .ok()
+                    .filter(|control: &f64| control.is_finite())
+                    .ok_or_else(|| {
+                        let allowed = "a control and the reason".to_owned();
+                        complain(index + 1, key, value.to_owned(), allowed)
+                    })?;
+                failures.push(Failure {
+                    control,
+                    reason: reason.to_owned(),
+                });
+            }
             _ => {}
         }
     }
-    Ok(facts)
+    Ok((facts, failures))
 }
 
-fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
+/// The words of `error`; its line and column stand in the place already.
+fn without_position(error: &serde_json::Error) -> String {
+    let text = error.to_string();
+    match text.rfind(" at line ") {
+        Some(at) => text[..at].to_owned(),
+        None => text,
+    }
+}
+
+fn from_json(file: &str, text: &str) -> Result<Contents, Problem> {
     #[derive(serde::Deserialize)]
     struct Document {
         control: Option<String>,
@@ -343,6 +399,8 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         frequency_hz: Option<f64>,
         supply_v: Option<f64>,
         points: Vec<Point>,
+        #[serde(default)]
+        failures: Vec<Failure>,
     }
     #[derive(serde::Deserialize)]
     struct Point {
@@ -354,6 +412,7 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         switch_peak_v: Option<f64>,
         switch_peak_a: Option<f64>,
         closing_v: Option<f64>,
+        driver_w: Option<f64>,
     }
     #[derive(serde::Deserialize)]
     struct Output {
@@ -374,7 +433,7 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
                 width: 1,
             }),
             key: String::new(),
-            given: error.to_string(),
+            given: without_position(&error),
             allowed: "the document of `quietedge map --json`".to_owned(),
             hint: None,
         })
@@ -401,12 +460,11 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
         ("load_ohm", facts.load_ohm),
         ("frequency_hz", facts.frequency_hz),
     ] {
-        if value.is_some_and(|value| !(value > 0.0 && value.is_finite())) {
-            return Err(Problem::about_file(
-                file,
-                format!("{name} {value:?}"),
-                "more than 0",
-            ));
+        if let Some(value) = value
+            && !(value > 0.0 && value.is_finite())
+        {
+            let given = format!("{name} {value}");
+            return Err(Problem::about_file(file, given, "more than 0"));
         }
     }
     let rows = document
@@ -421,7 +479,8 @@ fn from_json(file: &str, text: &str) -> Result<(MapFacts, Vec<Row>), Problem> {
             switch_peak_v: point.switch_peak_v,
             switch_peak_a: point.switch_peak_a,
             closing_v: point.closing_v,
+            driver_w: point.driver_w,
         })
         .collect();
-    Ok((facts, rows))
+    Ok((facts, rows, document.failures))
 }

@@ -1,7 +1,7 @@
 //! Maps solved from a stage, point by point.
 
-use super::{Control, Map, MapError, MapPoint, Origin};
-use crate::orbit::{Drive, Network, OrbitError};
+use super::{Control, Failure, Map, MapError, MapPoint, Origin};
+use crate::orbit::{Drive, Network, OrbitError, Tracker};
 
 /// Which points of a map to solve: plain data, made before anything is solved.
 #[derive(Debug, Clone, PartialEq)]
@@ -35,7 +35,7 @@ pub enum SweepError {
         /// In words.
         allowed: &'static str,
     },
-    /// A point has no orbit.
+    /// Fewer than two points have an orbit; the first that failed.
     #[error("the map point at {control} {value}: {cause}")]
     Point {
         /// `supply` or `width`.
@@ -113,28 +113,24 @@ impl Sweep {
         }
     }
 
-    /// Solves every point.
+    /// Solves every point, each from its stronger neighbour. A point without an orbit becomes a [`Failure`] of
+    /// the map.
     ///
     /// # Errors
-    /// [`SweepError`].
+    /// [`SweepError`] where fewer than two points have an orbit.
     pub fn solve(&self, network: &Network) -> Result<Map, SweepError> {
         let stage = network.stage();
-        let points = self
-            .values
-            .iter()
-            .map(|&value| {
-                let (supply_v, duty) = match self.control {
-                    Control::Supply => (value, self.duty),
-                    Control::Width => (self.supply_v, value),
-                };
-                let orbit = network
-                    .orbit(supply_v, &Drive::new(&stage.driver, duty))
-                    .map_err(|cause| SweepError::Point {
-                        control: self.control.name(),
-                        value,
-                        cause,
-                    })?;
-                Ok(MapPoint {
+        let mut tracker = Tracker::new(network);
+        let mut points = Vec::with_capacity(self.values.len());
+        let mut failures = Vec::new();
+        let mut first_cause = None;
+        for &value in self.values.iter().rev() {
+            let (supply_v, duty) = match self.control {
+                Control::Supply => (value, self.duty),
+                Control::Width => (self.supply_v, value),
+            };
+            match tracker.orbit(supply_v, &Drive::new(&stage.driver, duty)) {
+                Ok(orbit) => points.push(MapPoint {
                     control: value,
                     output_v: orbit.output_v,
                     supply_v,
@@ -144,15 +140,32 @@ impl Sweep {
                     switch_peak_a: Some(orbit.switch_peak_a),
                     switch_min_v: Some(orbit.switch_min_v),
                     closing_v: Some(orbit.closing_v),
-                })
-            })
-            .collect::<Result<Vec<_>, SweepError>>()?;
-        Ok(Map::new(
+                    driver_w: Some(orbit.driver_w),
+                }),
+                Err(cause) => {
+                    failures.push(Failure {
+                        control: value,
+                        reason: cause.to_string(),
+                    });
+                    first_cause.get_or_insert((value, cause));
+                }
+            }
+        }
+        points.reverse();
+        if let Some((value, cause)) = first_cause.filter(|_| points.len() < 2) {
+            return Err(SweepError::Point {
+                control: self.control.name(),
+                value,
+                cause,
+            });
+        }
+        let map = Map::new(
             self.control,
             Origin::Stage,
             stage.frequency_hz,
             stage.load.ohm,
             points,
-        )?)
+        )?;
+        Ok(map.with_failures(failures))
     }
 }

@@ -7,6 +7,9 @@ pub mod flow;
 pub mod least_squares;
 pub mod lowpass;
 pub mod monotone;
+pub mod newton;
+pub mod radau;
+pub mod simplex;
 pub mod small;
 pub mod window;
 

@@ -148,7 +148,7 @@ impl Curve {
 
 /// Slopes at the points: the weighted harmonic mean of the neighbouring chords, zero at a turn; at the ends
 /// the one-sided three-point estimate, limited to keep the shape.
-fn slopes(x: &[f64], y: &[f64]) -> Vec<f64> {
+pub(crate) fn slopes(x: &[f64], y: &[f64]) -> Vec<f64> {
     let count = x.len();
     let chord = |i: usize| (y[i + 1] - y[i]) / (x[i + 1] - x[i]);
     let width = |i: usize| x[i + 1] - x[i];

@@ -2,6 +2,7 @@
 
 use num_complex::Complex64;
 
+use super::curved::gate_charge_w;
 use super::linear::UnitOrbit;
 use super::network::{Drive, HARMONICS, OrbitError};
 use crate::stage::Stage;
@@ -17,6 +18,8 @@ pub struct Losses {
     pub closed_switch: f64,
     /// In the open switch.
     pub open_switch: f64,
+    /// In the diode, its drop included.
+    pub diode: f64,
     /// In the feed's resistance.
     pub feed: f64,
     /// In all rungs of the ladder.
@@ -25,12 +28,20 @@ pub struct Losses {
     pub rungs: Vec<f64>,
     /// Reaching the load at direct current and harmonics of the carrier.
     pub harmonics: f64,
+    /// In the driver: what it draws less what it delivers into the drain.
+    pub driver: f64,
 }
 
 impl Losses {
     /// Their sum, W.
     pub fn total_w(&self) -> f64 {
-        self.closed_switch + self.open_switch + self.feed + self.ladder + self.harmonics
+        self.closed_switch
+            + self.open_switch
+            + self.diode
+            + self.feed
+            + self.ladder
+            + self.harmonics
+            + self.driver
     }
 }
 
@@ -69,7 +80,11 @@ pub struct Orbit {
     pub closing_v: f64,
     /// Its slope at that instant, V/s.
     pub closing_slope_v_per_s: f64,
-    /// Supply and driver power less output and losses, relative to the supply power.
+    /// How many times a period the diode begins to conduct.
+    pub diode_conductions: usize,
+    /// Charge that one period leaves on the drain, over the charge it moves on and off.
+    pub charge_residual: f64,
+    /// Supply and driver power less output and losses, relative to the power that flows.
     pub energy_residual: f64,
 }
 
@@ -87,15 +102,17 @@ impl Orbit {
         let output_v = unit.harmonics[0] * supply_v;
         let output_w = output_v.norm_sqr() / (2.0 * load_ohm);
         let supply_w = watt(unit.supply);
-        let driver_w = 0.0;
+        let driver_w = gate_charge_w(stage);
         let rungs: Vec<f64> = unit.rungs.iter().map(|&power| watt(power)).collect();
         let losses = Losses {
             closed_switch: watt(unit.closed_switch),
             open_switch: watt(unit.open_switch),
+            diode: 0.0,
             feed: watt(unit.feed),
             ladder: rungs.iter().fold(0.0, |sum, loss| sum + loss),
             rungs,
             harmonics: watt(unit.load) - output_w,
+            driver: driver_w,
         };
         // At zero supply nothing flows and nothing is left over.
         let unit_output = unit.harmonics[0].norm_sqr() / 2.0;
@@ -105,18 +122,12 @@ impl Orbit {
             + unit.rungs.iter().sum::<f64>()
             + (unit.load - unit_output);
         let energy_residual = (unit.supply - unit_output - unit_lost) / unit.supply;
-        if energy_residual.is_nan() || energy_residual.abs() > BALANCE_TOLERANCE {
-            return Err(OrbitError::Unbalanced {
-                residual: energy_residual,
-                allowed: BALANCE_TOLERANCE,
-            });
-        }
         let fundamental = unit.harmonics[0].norm();
         let mut harmonics_dbc = [0.0; HARMONICS - 1];
         for (level, harmonic) in harmonics_dbc.iter_mut().zip(&unit.harmonics[1..]) {
             *level = 20.0 * (harmonic.norm() / fundamental).log10();
         }
-        Ok(Self {
+        Self {
             supply_v,
             drive: *drive,
             output_v,
@@ -124,7 +135,12 @@ impl Orbit {
             supply_a: unit.supply * supply_v / load_ohm,
             supply_w,
             driver_w,
-            efficiency: unit_output / unit.supply,
+            // Without driver power the ratio has a limit at zero supply.
+            efficiency: if driver_w > 0.0 {
+                output_w / (supply_w + driver_w)
+            } else {
+                unit_output / unit.supply
+            },
             losses,
             harmonics_dbc,
             switch_peak_v: unit.drain_max * supply_v,
@@ -136,7 +152,23 @@ impl Orbit {
                 * supply_v
                 * std::f64::consts::TAU
                 * stage.frequency_hz,
+            diode_conductions: 0,
+            // The state was found to return to itself to rounding.
+            charge_residual: unit.period_miss,
             energy_residual,
-        })
+        }
+        .balanced()
+    }
+
+    /// The orbit, where its energy balance closes.
+    pub(super) fn balanced(self) -> Result<Self, OrbitError> {
+        if self.energy_residual.abs() <= BALANCE_TOLERANCE {
+            Ok(self)
+        } else {
+            Err(OrbitError::Unbalanced {
+                residual: self.energy_residual,
+                allowed: BALANCE_TOLERANCE,
+            })
+        }
     }
 }

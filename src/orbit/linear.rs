@@ -61,6 +61,8 @@ pub struct UnitOrbit {
     pub closing: f64,
     /// Per radian.
     pub closing_slope: f64,
+    /// How far the state is from itself one period later, relative to its size.
+    pub period_miss: f64,
 }
 
 /// One instant of a unit waveform.
@@ -168,6 +170,8 @@ struct Cycle<const N: usize> {
     opening: Column<N>,
     /// After the whole period: equal to `closing` up to rounding.
     end: Column<N>,
+    /// By how much not, relative to the size of the state.
+    miss: f64,
 }
 
 impl<const N: usize> Sized_<N> {
@@ -241,6 +245,7 @@ impl<const N: usize> Sized_<N> {
             closing,
             opening,
             end,
+            miss: if size > 0.0 { miss / size } else { 0.0 },
         })
     }
 
@@ -346,6 +351,7 @@ impl<const N: usize> LinearSolver for Sized_<N> {
             switch_min: f64::MAX,
             closing: scale * dot(&self.open.drain, &cycle.end),
             closing_slope: scale * dot(&self.open.drain, &self.open.generator.apply(&cycle.end)),
+            period_miss: cycle.miss,
         };
         for (at, (position, moment)) in [&self.closed, &self.open]
             .into_iter()

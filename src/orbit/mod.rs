@@ -1,12 +1,24 @@
 //! STEP 2: what the stage does every period: its periodic steady state.
 
 mod balance;
+mod charge;
 mod circuit;
+mod curved;
+#[cfg(test)]
+mod curved_tests;
+mod device;
+mod gather;
 mod linear;
 mod network;
+mod period;
+mod port;
 mod reduce;
+mod shooting;
+mod step;
+mod tracker;
 mod waveform;
 
 pub use balance::{Losses, Orbit};
 pub use network::{Drive, Network, NetworkError, OrbitError};
+pub use tracker::Tracker;
 pub use waveform::Waveform;

@@ -7,8 +7,10 @@ use num_complex::Complex64;
 
 use super::balance::Orbit;
 use super::circuit::{Circuit, Input, Owner};
+use super::curved::Curved;
 use super::linear::{self, LinearSolver, Position};
 use super::reduce::{Reduced, Subspace, without_idle};
+use super::tracker::Tracker;
 use super::waveform::Waveform;
 use crate::stage::{Anchor, Driver, Stage};
 
@@ -62,12 +64,31 @@ pub enum OrbitError {
         "the stage has no unique periodic state: something in it never settles (a lossless resonance, or a blocked direct current)"
     )]
     NeverSettles,
+    /// Newton's method and every detour around it failed.
+    #[error("no periodic state was found: the solution diverged from every start")]
+    Diverged,
+    /// The work limit was reached.
+    #[error("no periodic state was found within the work limit of {work} steps")]
+    RanOut {
+        /// The limit.
+        work: u64,
+    },
+    /// The gate's edges take longer than the switch stays in one position.
+    #[error(
+        "half the gate's rise and fall take {edges_s:.3e} s, but the switch stays closed or open for only {shortest_s:.3e} s"
+    )]
+    EdgesOverlap {
+        /// Half of rise and fall, s.
+        edges_s: f64,
+        /// The shorter of the closed and the open interval, s.
+        shortest_s: f64,
+    },
     /// The energy balance does not close.
     #[error(
-        "the energy balance is off by {residual:.1e} of the supply power; at most {allowed:.0e} is accepted"
+        "the energy balance is off by {residual:.1e} of the power that flows; at most {allowed:.0e} is accepted"
     )]
     Unbalanced {
-        /// Relative to the supply power.
+        /// Relative to the power that flows.
         residual: f64,
         /// The tolerance.
         allowed: f64,
@@ -108,7 +129,15 @@ impl Drive {
 #[derive(Debug)]
 pub struct Network {
     stage: Stage,
-    solver: Box<dyn LinearSolver>,
+    model: Model,
+}
+
+#[derive(Debug)]
+pub(super) enum Model {
+    /// Linear between switching instants: solved exactly.
+    Linear(Box<dyn LinearSolver>),
+    /// Anything else about the drain: integrated.
+    Curved(Curved),
 }
 
 impl Network {
@@ -117,29 +146,14 @@ impl Network {
     /// # Errors
     /// [`NetworkError`].
     pub fn new(stage: &Stage) -> Result<Self, NetworkError> {
-        let circuit = Circuit::new(stage);
-        let subspace = Subspace::of(&circuit).ok_or(NetworkError::Undetermined)?;
-        let per_load = |ohm: f64| ohm.is_finite().then_some(ohm / stage.load.ohm);
-        let equations = |ohm| {
-            subspace
-                .equations(&circuit, ohm)
-                .ok_or(NetworkError::Undetermined)
+        let model = if stage.is_curved() {
+            Model::Curved(Curved::new(stage)?)
+        } else {
+            Model::Linear(linear_model(stage)?)
         };
-        let closed = equations(per_load(stage.switch.closed_ohm))?;
-        let open = equations(per_load(stage.switch.open_ohm))?;
-        let [closed, open] = without_idle(closed, open).ok_or(NetworkError::Undetermined)?;
-        let positions = [position(&closed, "closed")?, position(&open, "open")?];
-        let choke_ohm = match circuit.input {
-            Input::Voltage(_) => None,
-            Input::Current(_) => Some(circuit.choke_ohm),
-        };
-        let switch_ohm = stage.switch.closed_ohm / stage.load.ohm;
-        let states = closed.a.nrows();
-        let solver = linear::solver(states, positions, choke_ohm, switch_ohm)
-            .ok_or(NetworkError::TooLarge { given: states })?;
         Ok(Self {
             stage: stage.clone(),
-            solver,
+            model,
         })
     }
 
@@ -148,25 +162,61 @@ impl Network {
         &self.stage
     }
 
-    /// Number of independent states.
-    pub fn states(&self) -> usize {
-        self.solver.states()
+    pub(super) fn model(&self) -> &Model {
+        &self.model
     }
 
-    /// The periodic steady state at `supply_v` with `drive`.
+    /// Number of independent states.
+    pub fn states(&self) -> usize {
+        match &self.model {
+            Model::Linear(solver) => solver.states(),
+            Model::Curved(curved) => curved.states(),
+        }
+    }
+
+    /// The periodic steady state at `supply_v` with `drive`. For many of them use a [`Tracker`].
     ///
     /// # Errors
     /// [`OrbitError`].
     pub fn orbit(&self, supply_v: f64, drive: &Drive) -> Result<Orbit, OrbitError> {
-        check(supply_v, drive)?;
-        let unit = self.solver.solve(drive)?;
-        Orbit::scaled(&unit, &self.stage, supply_v, drive)
+        Tracker::new(self).orbit(supply_v, drive)
+    }
+
+    /// Every periodic steady state that a few different starts lead to: one where the stage is linear, and
+    /// nearly always elsewhere. The first is that of [`Network::orbit`].
+    ///
+    /// # Errors
+    /// [`OrbitError`].
+    pub fn orbits(&self, supply_v: f64, drive: &Drive) -> Result<Vec<Orbit>, OrbitError> {
+        match &self.model {
+            Model::Linear(_) => Ok(vec![self.orbit(supply_v, drive)?]),
+            Model::Curved(curved) => {
+                check(supply_v, drive)?;
+                let mut engine = curved.engine(&self.stage, drive)?;
+                let all = curved.solve_all(&self.stage, &mut engine, supply_v, drive)?;
+                Ok(all.into_iter().map(|solved| solved.orbit).collect())
+            }
+        }
     }
 
     /// The time in which a deviation from the orbit falls to 1/e, s: `-T / ln(rho)` with the spectral radius
-    /// of one period. A map is right for controls that move slowly against it.
+    /// of one period. A map is right for controls that move slowly against it. A curved stage is taken at its
+    /// own supply; one without an orbit there never settles.
     pub fn settling_s(&self, drive: &Drive) -> f64 {
-        let multipliers = self.solver.period_map(drive).complex_eigenvalues();
+        let period_map = match &self.model {
+            Model::Linear(solver) => solver.period_map(drive),
+            Model::Curved(curved) => {
+                let found = curved.engine(&self.stage, drive).and_then(|mut engine| {
+                    let supply_v = self.stage.supply_v;
+                    curved.solve(&self.stage, &mut engine, supply_v, drive, None)
+                });
+                match found {
+                    Ok(solved) => solved.found.period_map,
+                    Err(_) => return f64::INFINITY,
+                }
+            }
+        };
+        let multipliers = period_map.complex_eigenvalues();
         let largest = multipliers.iter().map(|m| m.norm()).fold(0.0, f64::max);
         // A radius of zero settles at once; one of 1 or more never does.
         if largest >= 1.0 {
@@ -187,12 +237,43 @@ impl Network {
         points: usize,
     ) -> Result<Waveform, OrbitError> {
         check(supply_v, drive)?;
-        let samples = self.solver.samples(drive, points.max(2))?;
-        Ok(Waveform::scaled(&samples, &self.stage, supply_v, drive))
+        let points = points.max(2);
+        match &self.model {
+            Model::Linear(solver) => {
+                let samples = solver.samples(drive, points)?;
+                Ok(Waveform::scaled(&samples, &self.stage, supply_v, drive))
+            }
+            Model::Curved(curved) => curved.waveform(&self.stage, supply_v, drive, points),
+        }
     }
 }
 
-fn check(supply_v: f64, drive: &Drive) -> Result<(), OrbitError> {
+fn linear_model(stage: &Stage) -> Result<Box<dyn LinearSolver>, NetworkError> {
+    let circuit = Circuit::new(stage);
+    let subspace = Subspace::of(&circuit).ok_or(NetworkError::Undetermined)?;
+    let per_load = |ohm: f64| ohm.is_finite().then_some(ohm / stage.load.ohm);
+    let equations = |ohm| {
+        subspace
+            .equations(&circuit, ohm)
+            .ok_or(NetworkError::Undetermined)
+    };
+    let closed = equations(per_load(stage.switch.closed_ohm))?;
+    let open = equations(per_load(stage.switch.open_ohm))?;
+    let [closed, open] = without_idle(closed, open)
+        .filter(|[closed, _]| closed.a.nrows() > 0)
+        .ok_or(NetworkError::Undetermined)?;
+    let positions = [position(&closed, "closed")?, position(&open, "open")?];
+    let choke_ohm = match circuit.input {
+        Input::Voltage(_) => None,
+        Input::Current(_) => Some(circuit.choke_ohm),
+    };
+    let switch_ohm = stage.switch.closed_ohm / stage.load.ohm;
+    let states = closed.a.nrows();
+    linear::solver(states, positions, choke_ohm, switch_ohm)
+        .ok_or(NetworkError::TooLarge { given: states })
+}
+
+pub(super) fn check(supply_v: f64, drive: &Drive) -> Result<(), OrbitError> {
     if !supply_v.is_finite() || supply_v < 0.0 {
         let allowed = "0 V or more";
         return Err(OrbitError::OutOfRange {

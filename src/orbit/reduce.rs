@@ -143,17 +143,7 @@ impl Tableau {
 
     /// Rows `K` with `K x = 0` for every state the network can be in.
     fn constraints(&self) -> Option<DMatrix<f64>> {
-        let svd = self.t.clone().svd(true, false);
-        let u = svd.u?;
-        let limit = RANK_TOLERANCE * svd.singular_values.max();
-        let null: Vec<_> = (0..u.ncols())
-            .filter(|&i| svd.singular_values[i] <= limit)
-            .collect();
-        let mut rows = DMatrix::zeros(null.len(), self.h.ncols());
-        for (row, &column) in null.iter().enumerate() {
-            rows.set_row(row, &(u.column(column).transpose() * &self.h));
-        }
-        Some(rows)
+        Some(left_null(&self.t, RANK_TOLERANCE)?.transpose() * &self.h)
     }
 }
 
@@ -168,20 +158,7 @@ impl Subspace {
                 basis: DMatrix::identity(states, states),
             });
         }
-        // The null space of K is the span of the eigenvectors of I - K+ K with eigenvalue one: take the
-        // right singular vectors past the rank, from a square matrix so that all are there.
-        let square = constraints.transpose() * &constraints;
-        let svd = square.svd(false, true);
-        let v_t = svd.v_t?;
-        // Squared singular values: the tolerance is squared, but never below rounding.
-        let limit = 1e-14 * svd.singular_values.max();
-        let free: Vec<_> = (0..states)
-            .filter(|&i| svd.singular_values[i] <= limit)
-            .collect();
-        let mut basis = DMatrix::zeros(states, free.len());
-        for (column, &row) in free.iter().enumerate() {
-            basis.set_column(column, &v_t.row(row).transpose());
-        }
+        let basis = left_null(&constraints.transpose(), RANK_TOLERANCE)?;
         Some(Self { constraints, basis })
     }
 
@@ -296,13 +273,26 @@ fn left_null(matrix: &DMatrix<f64>, tolerance: f64) -> Option<DMatrix<f64>> {
     // Square, so that every left vector is there.
     let mut square = DMatrix::zeros(rows, rows.max(matrix.ncols()));
     square.columns_mut(0, matrix.ncols()).copy_from(matrix);
-    let svd = square.svd(true, false);
-    let u = svd.u?;
+    let svd = square.clone().svd(true, true);
+    let (u, v_t) = (svd.u.as_ref()?, svd.v_t.as_ref()?);
     let limit = tolerance * svd.singular_values.max().max(1.0);
-    let null: Vec<_> = (0..u.ncols())
-        .filter(|&i| svd.singular_values[i] <= limit)
-        .collect();
-    Some(DMatrix::from_fn(rows, null.len(), |row, column| {
-        u[(row, null[column])]
-    }))
+    let (null, rest): (Vec<_>, Vec<_>) =
+        (0..u.ncols()).partition(|&i| svd.singular_values[i] <= limit);
+    let mut vectors = u.select_columns(&null);
+    // The decomposition stops at some 1e-11 where singular values crowd: what its vectors leave of the matrix is
+    // projected out of them along the others.
+    let (others, opposite) = (u.select_columns(&rest), v_t.select_rows(&rest));
+    for _ in 0..REFINEMENTS {
+        let mut part = &opposite * square.transpose() * &vectors;
+        for (mut row, &index) in part.row_iter_mut().zip(&rest) {
+            row /= svd.singular_values[index];
+        }
+        vectors -= &others * part;
+    }
+    // Orthonormal again.
+    Some(if null.is_empty() {
+        vectors
+    } else {
+        vectors.qr().q()
+    })
 }

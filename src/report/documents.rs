@@ -8,8 +8,19 @@ use crate::orbit::Orbit;
 use crate::stage::Stage;
 use crate::study::CheckResult;
 
-/// The document of `quietedge solve`.
-pub fn solve_document(stage: &Stage, orbit: &Orbit) -> Value {
+/// The document of `quietedge solve`; `others` are further periodic states of the same stage.
+pub fn solve_document(stage: &Stage, orbit: &Orbit, others: &[Orbit]) -> Value {
+    let others: Vec<Value> = others
+        .iter()
+        .map(|other| {
+            json!({
+                "output_v": other.output_v_parts(),
+                "output_w": other.output_w,
+                "supply_a": other.supply_a,
+                "switch_peak_v": other.switch_peak_v,
+            })
+        })
+        .collect();
     json!({
         "stage": stage.title,
         "frequency_hz": stage.frequency_hz,
@@ -31,8 +42,11 @@ pub fn solve_document(stage: &Stage, orbit: &Orbit) -> Value {
             "closing_v": orbit.closing_v,
             "closing_slope_v_per_s": orbit.closing_slope_v_per_s,
             "harmonics_dbc": orbit.harmonics_dbc,
+            "diode_conductions": orbit.diode_conductions,
+            "charge_residual": orbit.charge_residual,
             "energy_residual": orbit.energy_residual,
         },
+        "other_orbits": others,
     })
 }
 
@@ -67,6 +81,7 @@ pub fn map_document(title: &str, map: &Map) -> Value {
                 "switch_peak_a": point.switch_peak_a,
                 "switch_min_v": point.switch_min_v,
                 "closing_v": point.closing_v,
+                "driver_w": point.driver_w,
             })
         })
         .collect();
@@ -76,6 +91,7 @@ pub fn map_document(title: &str, map: &Map) -> Value {
         "frequency_hz": map.frequency_hz(),
         "load_ohm": map.load_ohm(),
         "points": points,
+        "failures": map.failures(),
     })
 }
 
@@ -92,8 +108,11 @@ pub fn map_csv(title: &str, map: &Map) -> String {
     for (key, value) in facts {
         let _ = writeln!(text, "# {key} = {value}");
     }
+    for failure in map.failures() {
+        let _ = writeln!(text, "# failed = {} {}", failure.control, failure.reason);
+    }
     type Column = (&'static str, fn(&crate::map::MapPoint) -> Option<f64>);
-    let columns: [Column; 9] = [
+    let columns: [Column; 10] = [
         ("control", |point| Some(point.control)),
         ("output_re_v", |point| Some(point.output_v.re)),
         ("output_im_v", |point| Some(point.output_v.im)),
@@ -103,6 +122,7 @@ pub fn map_csv(title: &str, map: &Map) -> String {
         ("switch_peak_v", |point| point.switch_peak_v),
         ("switch_peak_a", |point| point.switch_peak_a),
         ("closing_v", |point| point.closing_v),
+        ("driver_w", |point| point.driver_w),
     ];
     let present: Vec<&Column> = columns
         .iter()

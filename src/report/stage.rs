@@ -33,13 +33,20 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         row(
             "efficiency",
             format!("{:.2} %", 100.0 * orbit.efficiency),
-            "output over supply power; no driver power in this model".to_owned(),
+            if orbit.driver_w > 0.0 {
+                "output over supply and driver power".to_owned()
+            } else {
+                "output over supply power; the file tells no driver power".to_owned()
+            },
         ),
         lost("lost in closed switch", orbit.losses.closed_switch),
         lost("lost in open switch", orbit.losses.open_switch),
+        lost("lost in diode", orbit.losses.diode),
         lost("lost in feed", orbit.losses.feed),
         lost("lost in ladder", orbit.losses.ladder),
         lost("harmonics in load", orbit.losses.harmonics),
+        lost("lost in driver", orbit.losses.driver),
+        lost("drawn by driver", orbit.driver_w),
         row(
             "peak drain voltage",
             quantity(orbit.switch_peak_v, "V", 4),
@@ -51,7 +58,12 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         row(
             "lowest drain voltage",
             quantity(orbit.switch_min_v, "V", 4),
-            "a diode would conduct below about -0.7 V".to_owned(),
+            match (stage.switch.diode, orbit.diode_conductions) {
+                (None, _) => "a diode would conduct below about -0.7 V".to_owned(),
+                (Some(_), 0) => "the diode never conducts".to_owned(),
+                (Some(_), 1) => "the diode conducts once a period".to_owned(),
+                (Some(_), times) => format!("the diode conducts {times} times a period"),
+            },
         ),
         row(
             "peak switch current",
@@ -80,7 +92,7 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
     rows.push(row(
         "energy residual",
         format!("{:.1e}", orbit.energy_residual),
-        "of the supply power".to_owned(),
+        "of the power that flows".to_owned(),
     ));
     rows
 }
@@ -202,8 +214,17 @@ pub fn map_text(title: &str, map: &Map) -> String {
             quantity(control, map.control().unit(), 4)
         ),
     };
+    let mut failed = String::new();
+    if let Some(first) = map.failures().first() {
+        failed = format!(
+            "\n{} points have no orbit and are left out; nothing is interpolated over them. First: {}: {}",
+            map.failures().len(),
+            quantity(first.control, map.control().unit(), 4),
+            first.reason
+        );
+    }
     format!(
-        "{title}: {} of {} points over {}\n{monotone}\n\n{}",
+        "{title}: {} of {} points over {}\n{monotone}{failed}\n\n{}",
         shown,
         points.len(),
         map.describe(),

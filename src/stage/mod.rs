@@ -1,9 +1,14 @@
 //! STEP 1: what the hardware is. A stage file becomes a [`Stage`].
 
+mod device;
 mod ladder;
 mod read;
+mod read_device;
+mod write;
 
+pub use device::{Device, Diode, DrainCurve, Gate, Junction, Knee};
 pub use ladder::{Arm, Element, Part, Rung};
+pub use write::TABLE_NAME;
 
 /// Which edge of the closed interval stays when its width changes.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
@@ -30,6 +35,10 @@ pub struct Stage {
     pub switch: Switch,
     /// Fixed capacitance from the drain to ground, F.
     pub drain_f: f64,
+    /// What the drain has in addition that depends on its voltage.
+    pub drain_curve: Option<DrainCurve>,
+    /// Capacitance between gate and drain, F; more than 0 only with a gate that swings.
+    pub gate_coupling_f: f64,
     /// When the switch is closed.
     pub driver: Driver,
     /// From the supply to the drain.
@@ -47,6 +56,10 @@ pub struct Switch {
     pub closed_ohm: f64,
     /// Resistance while open, ohm; infinite where the file gives none.
     pub open_ohm: f64,
+    /// The limit of its current, where there is one.
+    pub knee: Option<Knee>,
+    /// Conducts from ground to the drain.
+    pub diode: Option<Diode>,
 }
 
 /// When the switch is closed.
@@ -56,6 +69,8 @@ pub struct Driver {
     pub duty: f64,
     /// Which edge stays when the width is modulated.
     pub anchor: Anchor,
+    /// What the driver does to the gate, where it is told.
+    pub gate: Option<Gate>,
 }
 
 /// From the supply to the drain.
@@ -88,5 +103,13 @@ impl Stage {
     /// One period of the carrier, s.
     pub fn period_s(&self) -> f64 {
         1.0 / self.frequency_hz
+    }
+
+    /// Whether anything makes it more than linear between switching instants.
+    pub fn is_curved(&self) -> bool {
+        self.drain_curve.is_some()
+            || self.gate_coupling_f > 0.0
+            || self.switch.knee.is_some()
+            || self.switch.diode.is_some()
     }
 }

@@ -2,8 +2,9 @@
 
 use std::f64::consts::TAU;
 
-use super::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
-use crate::input::{Document, Problem, Range, Section};
+use super::read_device::{Drain, diode, drain, gate, knee};
+use super::{Anchor, Arm, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use crate::input::{Document, Files, Problem, Range, Section};
 use crate::units::Dimension;
 
 /// The anchors by their names in files.
@@ -17,23 +18,53 @@ const ANCHORS: [(&str, Anchor); 3] = [
 const DUTY: Range = Range::Within(0.01, 0.99);
 
 impl Stage {
-    /// Reads the stage in `text`, which came from `file`.
+    /// Reads the stage in `text`, which came from `file`, and the tables it names from `files`. Names of tables
+    /// are relative to the folder of `file`.
+    ///
+    /// # Errors
+    /// The first thing wrong, with its place.
+    pub fn read(file: &str, text: &str, files: &dyn Files) -> Result<Self, Problem> {
+        Self::parse_from(file, file, text, Some(files))
+    }
+
+    /// As [`Stage::read`], where `files` know the file as `name` and messages show it as `shown`.
+    ///
+    /// # Errors
+    /// The first thing wrong, with its place.
+    pub fn read_as(
+        shown: &str,
+        name: &str,
+        text: &str,
+        files: &dyn Files,
+    ) -> Result<Self, Problem> {
+        Self::parse_from(shown, name, text, Some(files))
+    }
+
+    /// Reads the stage in `text`, which came from `file` and names no tables.
     ///
     /// # Errors
     /// The first thing wrong, with its place.
     pub fn parse(file: &str, text: &str) -> Result<Self, Problem> {
-        let document = Document::parse(file, text)?;
+        Self::parse_from(file, file, text, None)
+    }
+
+    fn parse_from(
+        shown: &str,
+        name: &str,
+        text: &str,
+        files: Option<&dyn Files>,
+    ) -> Result<Self, Problem> {
+        let document = Document::parse(shown, text)?;
         let root = document.root();
         let frequency_hz = root.quantity("frequency", Dimension::Frequency, Range::Positive)?;
-        let title = root.maybe_text("title")?.unwrap_or(file).to_owned();
+        let title = root.maybe_text("title")?.unwrap_or(shown).to_owned();
 
         let supply = root.section("supply")?;
         let supply_v = supply.quantity("voltage", Dimension::Voltage, Range::Positive)?;
         supply.finish()?;
 
-        let drain = root.section("drain")?;
-        let drain_f = drain.quantity("capacitance", Dimension::Capacitance, Range::Positive)?;
-        drain.finish()?;
+        let folder = name.rsplit_once('/').map(|(folder, _)| folder);
+        let drain = drain(&root.section("drain")?, files, folder)?;
 
         let load_section = root.section("load")?;
         let (ladder, load) = load(&load_section, frequency_hz)?;
@@ -44,14 +75,73 @@ impl Stage {
             frequency_hz,
             supply_v,
             switch: switch(&root.section("switch")?)?,
-            drain_f,
+            drain_f: drain.farad,
+            drain_curve: drain.curve,
+            gate_coupling_f: drain.gate_coupling_f,
             driver: driver(root.maybe_section("driver")?)?,
             feed: feed(&root.section("feed")?)?,
             ladder,
             load,
         };
+        if stage.gate_coupling_f > 0.0 && stage.driver.gate.is_none() {
+            let section = root.section("drain")?;
+            return Err(section.problem(
+                "gate_coupling",
+                "gate_coupling only where [driver] has a swing with rise and fall",
+            ));
+        }
         root.finish()?;
         Ok(stage)
+    }
+}
+
+impl Device {
+    /// Reads a device in `text`, shown as `shown` and known to `files` as `name`: the tables `[switch]`, `[drain]`
+    /// and `[driver]` of a stage file, without duty and anchor.
+    ///
+    /// # Errors
+    /// The first thing wrong, with its place.
+    pub fn read_as(
+        shown: &str,
+        name: &str,
+        text: &str,
+        files: &dyn Files,
+    ) -> Result<Self, Problem> {
+        let document = Document::parse(shown, text)?;
+        let root = document.root();
+        root.maybe_text("title")?;
+        let folder = name.rsplit_once('/').map(|(folder, _)| folder);
+        let drain = match root.maybe_section("drain")? {
+            Some(section) => drain(&section, Some(files), folder)?,
+            None => Drain {
+                farad: 0.0,
+                curve: None,
+                gate_coupling_f: 0.0,
+            },
+        };
+        let gate = match root.maybe_section("driver")? {
+            Some(section) => {
+                let gate = gate(&section)?;
+                section.finish()?;
+                gate
+            }
+            None => None,
+        };
+        if drain.gate_coupling_f > 0.0 && gate.is_none() {
+            return Err(root.section("drain")?.problem(
+                "gate_coupling",
+                "gate_coupling only where [driver] has a swing with rise and fall",
+            ));
+        }
+        let device = Self {
+            switch: switch(&root.section("switch")?)?,
+            drain_f: drain.farad,
+            drain_curve: drain.curve,
+            gate_coupling_f: drain.gate_coupling_f,
+            gate,
+        };
+        root.finish()?;
+        Ok(device)
     }
 }
 
@@ -64,10 +154,14 @@ fn switch(section: &Section<'_>) -> Result<Switch, Problem> {
     if open_ohm <= closed_ohm {
         return Err(section.problem("open_resistance", "more than closed_resistance"));
     }
+    let knee = knee(section)?;
+    let diode = diode(section)?;
     section.finish()?;
     Ok(Switch {
         closed_ohm,
         open_ohm,
+        knee,
+        diode,
     })
 }
 
@@ -75,6 +169,7 @@ fn driver(section: Option<Section<'_>>) -> Result<Driver, Problem> {
     let mut driver = Driver {
         duty: 0.5,
         anchor: Anchor::Centre,
+        gate: None,
     };
     if let Some(section) = section {
         driver.duty = section
@@ -83,6 +178,7 @@ fn driver(section: Option<Section<'_>>) -> Result<Driver, Problem> {
         driver.anchor = section
             .maybe_choice("anchor", &ANCHORS)?
             .unwrap_or(driver.anchor);
+        driver.gate = gate(&section)?;
         section.finish()?;
     }
     Ok(driver)
@@ -140,7 +236,13 @@ fn rung(section: &Section<'_>, angular_hz: f64) -> Result<Rung, Problem> {
     section.finish()?;
     let one_of = "exactly one of series, shunt, tank in each [[load.ladder]]";
     if found.len() != 1 {
-        return Err(section.problem_here(format!("{} of them", found.len()), one_of));
+        let given: Vec<&str> = section.keys().collect();
+        let given = if given.is_empty() {
+            "none of them".to_owned()
+        } else {
+            given.join(" and ")
+        };
+        return Err(section.problem_here(given, one_of));
     }
     let (arm, section) = found.remove(0);
     Ok(Rung {

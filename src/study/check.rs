@@ -307,7 +307,7 @@ fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement
         evm_p95_percent: None,
         evm_p99_percent: None,
         modulation: None,
-        // At full supply: a linear stage keeps their ratio at any supply.
+        // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
         harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
     };
     judge(&measured, &study.limits)
@@ -401,7 +401,11 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     }
     if let Some(stage) = &result.stage {
         // A silicon junction starts to conduct at about 0.7 V (common practice).
-        if stage.orbit.switch_min_v < -0.7 {
+        let modelled = match &result.study.hardware {
+            Hardware::Stage(stage) => stage.switch.diode.is_some(),
+            Hardware::Map(_) => true,
+        };
+        if !modelled && stage.orbit.switch_min_v < -0.7 {
             warnings.push(Warning::DiodeWouldConduct {
                 lowest_v: stage.orbit.switch_min_v,
             });

@@ -106,13 +106,9 @@ impl Study {
     /// The first thing wrong in any of the files, with its place.
     pub fn read(name: &str, files: &dyn Files) -> Result<Self, Problem> {
         let shown = files.display(name);
-        let text = files.text(name).map_err(|error| {
-            Problem::about_file(
-                &shown,
-                format!("a file that cannot be read ({error})"),
-                "a study file",
-            )
-        })?;
+        let text = files
+            .text(name)
+            .map_err(|error| Problem::unreadable(&shown, &error, "a study file, TOML in UTF-8"))?;
         let document = Document::parse(&shown, &text)?;
         let root = document.root();
         let signal = root.section("signal")?;
@@ -214,7 +210,9 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
                 format!("a file that can be read ({shown}: {error})"),
             )
         })?;
-        return Ok(Hardware::Stage(Box::new(Stage::parse(&shown, &text)?)));
+        return Ok(Hardware::Stage(Box::new(Stage::read_as(
+            &shown, name, &text, files,
+        )?)));
     }
     let (name, facts) = map_choice(root)?;
     let shown = files.display(name);

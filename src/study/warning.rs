@@ -24,7 +24,7 @@ pub enum Warning {
         /// Part of all instants.
         fraction: f64,
     },
-    /// The linear stage goes below ground, where a real device conducts.
+    /// The stage goes below ground, where a real device conducts, and has no diode.
     DiodeWouldConduct {
         /// Lowest drain voltage at full supply, V.
         lowest_v: f64,
@@ -74,7 +74,7 @@ impl fmt::Display for Warning {
             ),
             Self::DiodeWouldConduct { lowest_v } => write!(
                 f,
-                "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the linear stage does not",
+                "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the stage file has no diode",
                 show(*lowest_v, "V", 3)
             ),
             Self::SlowStage {

@@ -16,6 +16,8 @@ pub struct Energy {
     pub stage_w: f64,
     /// Sum of powers that the modulator draws, W.
     pub modulator_w: f64,
+    /// Sum of powers that the driver draws, W; zero where the map knows none.
+    pub driver_w: f64,
 }
 
 impl Energy {
@@ -24,14 +26,14 @@ impl Energy {
         self.output_w / self.samples as f64
     }
 
-    /// Output over what the stage draws.
+    /// Output over what the stage and its driver draw.
     pub fn stage_efficiency(&self) -> f64 {
-        self.output_w / self.stage_w
+        self.output_w / (self.stage_w + self.driver_w)
     }
 
-    /// Output over what the modulator draws.
+    /// Output over what the modulator and the driver draw.
     pub fn efficiency(&self) -> f64 {
-        self.output_w / self.modulator_w
+        self.output_w / (self.modulator_w + self.driver_w)
     }
 }
 
@@ -68,6 +70,7 @@ impl<'a> MapTransmitter<'a> {
             self.energy.output_w += output.norm_sqr() / (2.0 * load_ohm);
             let stage_w = control * self.map.supply_held_a(control).unwrap_or(f64::NAN);
             self.energy.stage_w += stage_w;
+            self.energy.driver_w += self.map.driver_held_w(control).unwrap_or(0.0);
             self.energy.modulator_w += stage_w / self.modulator.efficiency + self.modulator.idle_w;
             output_v.push(output);
         }

@@ -1,0 +1,698 @@
+//! One period of the curved stage, integrated event by event.
+//!
+//! The period is cut where the switch is thrown and where the gate's edges begin and end. Within a segment steps lie
+//! on its binary fractions, so that the matrices of a length are made once and used again in every period of every
+//! orbit with the same drive; where the diode's corner is crossed, a step of exactly the right length ends on it.
+//! The current is continuous there, so that sensitivities pass through unchanged.
+
+use std::f64::consts::TAU;
+use std::sync::Arc;
+
+use super::charge::Charge;
+use super::device::{Device, Side, Throw};
+use super::network::{Drive, OrbitError};
+use super::port::{Port, dot};
+use super::step::{Solved, Start, Step};
+use crate::math::radau::{ESTIMATE_ORDER, RADAU, STAGES, evaluate};
+use crate::stage::Stage;
+
+/// The finest binary fraction of a segment.
+const LEVELS: u32 = 40;
+
+/// The longest step, rad: the quadrature of the fifth harmonic stays below 1e-9 with it.
+const LONGEST_RAD: f64 = TAU / 32.0;
+
+/// The estimated error of a step relative to the largest voltage of the period. The estimate has order 5, the
+/// method 9: the error itself is about the estimate to the power 5/3.
+const TOLERANCE: f64 = 2e-6;
+
+/// Units of work an orbit may take: one for each step, more for new matrices. About two seconds.
+pub const WORK_LIMIT: u64 = 1_000_000;
+
+/// What stops a period.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Stop {
+    /// The work limit.
+    RanOut,
+    /// A step that does not solve at any length.
+    NoStep,
+}
+
+#[derive(Debug)]
+struct Segment {
+    /// From the closing instant, rad.
+    from: f64,
+    length: f64,
+    throw: Throw,
+    /// Current of the gate's edge into the drain.
+    source: f64,
+    tables: Vec<Option<Arc<Step>>>,
+    /// The level that the first step had last time.
+    first_level: u32,
+}
+
+/// State at the closing instant; `u` is the input.
+#[derive(Debug, Clone, PartialEq)]
+pub struct State {
+    pub v: f64,
+    pub q: f64,
+    pub x: Vec<f64>,
+    pub u: f64,
+}
+
+/// What errors are relative to.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Scales {
+    pub v: f64,
+    pub q: f64,
+    pub x: f64,
+}
+
+/// Ends of steps in each segment, in finest fractions.
+pub type Mesh = Vec<Vec<u64>>;
+
+/// Whether sensitivities are wanted.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum Sensitivity {
+    Carried,
+    Left,
+}
+
+/// What became of a period.
+#[derive(Debug, Clone)]
+pub struct Period {
+    pub end: State,
+    /// Integral of the drain voltage.
+    pub area: f64,
+    /// For each column (charge, rest, input at the start): charge and rest at the end, then the area.
+    pub columns: Vec<Vec<f64>>,
+    pub mesh: Mesh,
+    /// Largest magnitudes met.
+    pub peaks: Scales,
+    /// Largest estimated error over its tolerance.
+    pub error: f64,
+}
+
+/// A step that was taken, for those who watch.
+#[derive(Debug)]
+pub struct Passed<'a> {
+    pub step: &'a Step,
+    pub start: Start<'a>,
+    pub solved: &'a Solved,
+    /// Where it starts, rad after the closing instant.
+    pub from: f64,
+    pub throw: Throw,
+    pub side: Side,
+}
+
+/// The equations and everything that is kept between periods.
+#[derive(Debug)]
+pub struct Engine {
+    pub port: Arc<Port>,
+    charge: Charge,
+    device: Device,
+    straight: Device,
+    segments: Vec<Segment>,
+    /// 0: the straight stand-in, 1: the stage as it is.
+    pub blend: f64,
+    stand_in: f64,
+    pub work: u64,
+}
+
+#[derive(Debug, Clone, Copy)]
+enum At {
+    Grid(u64),
+    Free(f64),
+}
+
+impl Engine {
+    /// # Errors
+    /// [`OrbitError::EdgesOverlap`].
+    pub fn new(stage: &Stage, port: Arc<Port>, drive: &Drive) -> Result<Self, OrbitError> {
+        let scale = TAU * stage.frequency_hz * stage.load.ohm;
+        let fixed = (stage.drain_f + stage.gate_coupling_f + port.ladder_farad) * scale;
+        let charge = Charge::new(fixed, stage.drain_curve.as_ref(), scale);
+        let device = Device::new(stage);
+        let stand_in = charge.at(stage.supply_v).1;
+        Ok(Self {
+            straight: device.straightened(),
+            device,
+            charge,
+            segments: segments(stage, drive)?,
+            blend: 1.0,
+            stand_in,
+            port,
+            work: 0,
+        })
+    }
+
+    /// Charge and capacitance at a drain voltage.
+    pub fn charge(&self, v: f64) -> (f64, f64) {
+        if self.blend == 1.0 {
+            return self.charge.at(v);
+        }
+        let (q, c) = self.charge.at(v);
+        let rest = 1.0 - self.blend;
+        (
+            rest * self.stand_in * v + self.blend * q,
+            rest * self.stand_in + self.blend * c,
+        )
+    }
+
+    /// Current and conductance of the device.
+    pub fn current(&self, throw: Throw, side: Side, v: f64) -> (f64, f64) {
+        if self.blend == 1.0 {
+            return self.device.current(throw, side, v);
+        }
+        let (i, g) = self.device.current(throw, side, v);
+        let (si, sg) = self.straight.current(throw, Side::Above, v);
+        let rest = 1.0 - self.blend;
+        (rest * si + self.blend * i, rest * sg + self.blend * g)
+    }
+
+    /// The switch and its diode.
+    pub fn device(&self) -> &Device {
+        &self.device
+    }
+
+    /// A state with this charge, its voltage found.
+    pub fn settle_voltage(&self, state: &mut State) {
+        if self.blend == 1.0 {
+            state.v = self.charge.voltage(state.q, state.v);
+            return;
+        }
+        for _ in 0..100 {
+            let (q, c) = self.charge(state.v);
+            let change = (q - state.q) / c;
+            state.v -= change;
+            if change.abs() <= 1e-15 * state.v.abs() {
+                break;
+            }
+        }
+    }
+
+    fn side(&self, v: f64) -> Side {
+        match self.device.corner() {
+            Some(corner) if v < corner => Side::Below,
+            _ => Side::Above,
+        }
+    }
+
+    fn table(&mut self, segment: usize, level: u32) -> Option<Arc<Step>> {
+        let slot = level as usize;
+        if let Some(step) = &self.segments[segment].tables[slot] {
+            return Some(Arc::clone(step));
+        }
+        let length = self.segments[segment].length * 0.5f64.powi(level as i32);
+        let step = Arc::new(self.fresh(length)?);
+        self.segments[segment].tables[slot] = Some(Arc::clone(&step));
+        Some(step)
+    }
+
+    fn fresh(&mut self, length: f64) -> Option<Step> {
+        self.work += 10 + (self.port.rest * self.port.rest / 4) as u64;
+        Step::new(&self.port, length)
+    }
+
+    /// Integrates one period from `start`.
+    ///
+    /// # Errors
+    /// [`Stop`].
+    pub fn run(
+        &mut self,
+        start: &State,
+        scales: &Scales,
+        mesh: Option<&Mesh>,
+        sensitivity: Sensitivity,
+        watch: &mut dyn FnMut(&Passed<'_>),
+    ) -> Result<Period, Stop> {
+        let rest = self.port.rest;
+        let mut columns = Vec::new();
+        if sensitivity == Sensitivity::Carried {
+            for column in 0..rest + 2 {
+                let mut entries = vec![0.0; rest + 2];
+                if column <= rest {
+                    entries[column] = 1.0;
+                }
+                columns.push(entries);
+            }
+        }
+        let mut period = Period {
+            end: start.clone(),
+            area: 0.0,
+            columns,
+            mesh: vec![Vec::new(); self.segments.len()],
+            peaks: Scales {
+                v: start.v.abs(),
+                q: start.q.abs(),
+                x: start.x.iter().fold(0.0, |m, x| m.max(x.abs())),
+            },
+            error: 0.0,
+        };
+        let mut side = self.side(start.v);
+        for segment in 0..self.segments.len() {
+            let given = mesh.map(|mesh| mesh[segment].as_slice());
+            side = self.segment(segment, side, scales, given, &mut period, watch)?;
+        }
+        Ok(period)
+    }
+
+    fn segment(
+        &mut self,
+        index: usize,
+        mut side: Side,
+        scales: &Scales,
+        mut given: Option<&[u64]>,
+        period: &mut Period,
+        watch: &mut dyn FnMut(&Passed<'_>),
+    ) -> Result<Side, Stop> {
+        const END: u64 = 1 << LEVELS;
+        let (from, length, throw, source) = {
+            let s = &self.segments[index];
+            (s.from, s.length, s.throw, s.source)
+        };
+        let unit = length / END as f64;
+        let coarsest = (length / LONGEST_RAD).log2().ceil().max(0.0) as u32;
+        let mut level = self.segments[index].first_level.max(coarsest);
+        let mut at = At::Grid(0);
+        let mut before: Option<(f64, [f64; STAGES], f64)> = None;
+        let (mut first, mut flips, mut mesh_at) = (true, 0, 0);
+        loop {
+            self.work += 1;
+            if self.work > WORK_LIMIT {
+                return Err(Stop::RanOut);
+            }
+            let here = match at {
+                At::Grid(p) if p >= END => break,
+                At::Grid(p) => p as f64 * unit,
+                At::Free(t) => t,
+            };
+            let target = match given {
+                Some(mesh) => {
+                    while mesh
+                        .get(mesh_at)
+                        .is_some_and(|&end| end as f64 * unit <= here)
+                    {
+                        mesh_at += 1;
+                    }
+                    mesh.get(mesh_at).copied().unwrap_or(END)
+                }
+                None => self.next_end(at, here, unit, &mut level),
+            };
+            let step = match at {
+                At::Grid(p) if (target - p).is_power_of_two() => {
+                    self.table(index, LEVELS - (target - p).trailing_zeros())
+                }
+                _ => {
+                    let length = target as f64 * unit - here;
+                    self.fresh(length).map(Arc::new)
+                }
+            }
+            .ok_or(Stop::NoStep)?;
+            let h = step.length;
+            let begin = Start {
+                v: period.end.v,
+                q: period.end.q,
+                x: &period.end.x,
+                u: period.end.u,
+                source,
+            };
+            let guess = self.guess(&begin, throw, side, h, before.as_ref(), scales.v);
+            let solved = step.solve(
+                &begin,
+                &guess,
+                scales.v,
+                |v| self.charge(v),
+                |v| self.current(throw, side, v),
+            );
+            let level_of = |h: f64| (length / h).log2().ceil().max(0.0) as u32;
+            let Some(solved) = solved else {
+                level = level_of(h) + 2;
+                given = None;
+                before = None;
+                if level > LEVELS {
+                    return Err(Stop::NoStep);
+                }
+                continue;
+            };
+            let error = self.error(&step, &begin, &solved, throw, side, scales);
+            let factor = (0.9 * error.powf(-1.0 / (ESTIMATE_ORDER + 1) as f64)).clamp(0.1, 8.0);
+            if given.is_none() && !(error <= 1.0) {
+                level = level_of(h * factor).max(level_of(h) + 1);
+                if level > LEVELS {
+                    return Err(Stop::NoStep);
+                }
+                continue;
+            }
+            let crossing = if flips < 3 {
+                self.crossing(begin.v, &solved.v, side, scales.v)
+            } else {
+                None
+            };
+            if let Some(theta) = crossing {
+                let other = match side {
+                    Side::Above => Side::Below,
+                    Side::Below => Side::Above,
+                };
+                before = None;
+                if theta * h <= 1e-13 * TAU {
+                    side = other;
+                    flips += 1;
+                    continue;
+                }
+                let (short, solved) =
+                    self.locate(&begin, throw, side, theta * h, h, &solved, scales)?;
+                let passed = Passed {
+                    step: &short,
+                    start: begin,
+                    solved: &solved,
+                    from: from + here,
+                    throw,
+                    side,
+                };
+                watch(&passed);
+                let end = self.commit(&short, &solved, period);
+                period.end = end;
+                side = other;
+                flips = 0;
+                at = At::Free(here + short.length);
+                continue;
+            }
+            watch(&Passed {
+                step: &step,
+                start: begin,
+                solved: &solved,
+                from: from + here,
+                throw,
+                side,
+            });
+            let poly = RADAU.polynomial(period.end.v, &solved.v);
+            before = Some((period.end.v, poly, h));
+            let end = self.commit(&step, &solved, period);
+            period.end = end;
+            period.error = period.error.max(error);
+            period.mesh[index].push(target);
+            at = At::Grid(target);
+            flips = 0;
+            if first {
+                self.segments[index].first_level = level_of(h);
+                first = false;
+            }
+            level = level_of(h * factor).max(coarsest);
+        }
+        Ok(side)
+    }
+
+    /// The end of the next step: on the grid of the coarsest level that is fine enough and lined up.
+    fn next_end(&self, at: At, here: f64, unit: f64, level: &mut u32) -> u64 {
+        match at {
+            At::Grid(p) => {
+                if p > 0 {
+                    *level = (*level).max(LEVELS - p.trailing_zeros());
+                }
+                p + (1u64 << (LEVELS - *level))
+            }
+            At::Free(_) => {
+                let span = 1u64 << (LEVELS - *level);
+                let passed = (here / (unit * span as f64)).floor();
+                let mut target = (passed as u64 + 1) * span;
+                // Not a sliver.
+                if (target as f64 * unit - here) < 0.02 * span as f64 * unit
+                    && target + span <= 1 << LEVELS
+                {
+                    target += span;
+                }
+                target.min(1 << LEVELS)
+            }
+        }
+    }
+
+    fn guess(
+        &self,
+        begin: &Start<'_>,
+        throw: Throw,
+        side: Side,
+        h: f64,
+        before: Option<&(f64, [f64; STAGES], f64)>,
+        scale_v: f64,
+    ) -> [f64; STAGES] {
+        let nodes = &RADAU.nodes;
+        if let Some((start, poly, length)) = before {
+            let ratio = h / length;
+            if ratio < 2.5 {
+                return nodes.map(|c| evaluate(*start, poly, 1.0 + c * ratio).0);
+            }
+        }
+        let rise = h * self.slope(begin, throw, side);
+        if rise.abs() < 0.3 * scale_v {
+            nodes.map(|c| begin.v + c * rise)
+        } else {
+            [begin.v; STAGES]
+        }
+    }
+
+    /// Slope of the drain voltage.
+    fn slope(&self, at: &Start<'_>, throw: Throw, side: Side) -> f64 {
+        let port = &self.port;
+        let flow = port.alpha * at.v + dot(&port.a, at.x) + port.beta * at.u + at.source
+            - self.current(throw, side, at.v).0;
+        flow / self.charge(at.v).1
+    }
+
+    /// The slope of the drain voltage at the end of a period, with the switch still open.
+    pub fn slope_before_closing(&self, state: &State) -> f64 {
+        let start = Start {
+            v: state.v,
+            q: state.q,
+            x: &state.x,
+            u: state.u,
+            source: self.segments.last().map_or(0.0, |s| s.source),
+        };
+        self.slope(&start, Throw::Open, self.side(state.v))
+    }
+
+    /// The estimated error over its tolerance.
+    fn error(
+        &self,
+        step: &Step,
+        begin: &Start<'_>,
+        solved: &Solved,
+        throw: Throw,
+        side: Side,
+        scales: &Scales,
+    ) -> f64 {
+        let radau = &*RADAU;
+        let port = &self.port;
+        let weight = step.length * radau.start_weight;
+        let flow =
+            port.alpha * begin.v + dot(&port.a, begin.x) + port.beta * begin.u + begin.source
+                - self.current(throw, side, begin.v).0;
+        let mut charge = weight * flow;
+        for i in 0..STAGES {
+            charge += radau.error[i] * (solved.q[i] - begin.q);
+        }
+        let last = STAGES - 1;
+        let volt = charge / (solved.c[last] + weight * (solved.g[last] - port.alpha));
+        let rest = step.rest_error(begin, &solved.v);
+        let error = (volt.abs() / scales.v).max(rest / scales.x) / TOLERANCE;
+        if error.is_finite() {
+            error.max(1e-12)
+        } else {
+            1e6
+        }
+    }
+
+    /// Where in a step (0..1) the drain first leaves its side of the diode's corner.
+    fn crossing(
+        &self,
+        start: f64,
+        values: &[f64; STAGES],
+        side: Side,
+        scale_v: f64,
+    ) -> Option<f64> {
+        let corner = self.device.corner()?;
+        let sign = match side {
+            Side::Above => 1.0,
+            Side::Below => -1.0,
+        };
+        let (low, high) = values
+            .iter()
+            .fold((start, start), |(l, h), &v| (l.min(v), h.max(v)));
+        let nearest = match side {
+            Side::Above => low - corner,
+            Side::Below => corner - high,
+        };
+        if nearest > 0.3 * (high - low) {
+            return None;
+        }
+        let margin = 1e-11 * scale_v;
+        let poly = RADAU.polynomial(start, values);
+        let beyond = |theta: f64| sign * (evaluate(start, &poly, theta).0 - corner);
+        const PARTS: usize = 20;
+        let mut before = 0.0;
+        for part in 1..=PARTS {
+            let theta = part as f64 / PARTS as f64;
+            if beyond(theta) < -margin {
+                let (mut low, mut high) = (before, theta);
+                if beyond(low) <= 0.0 {
+                    return Some(low);
+                }
+                for _ in 0..60 {
+                    let middle = 0.5 * (low + high);
+                    if beyond(middle) > 0.0 {
+                        low = middle;
+                    } else {
+                        high = middle;
+                    }
+                }
+                return Some(0.5 * (low + high));
+            }
+            before = theta;
+        }
+        None
+    }
+
+    /// The step that ends on the diode's corner, near `length` and no longer than `longest`.
+    #[expect(clippy::too_many_arguments, reason = "one call, all of it needed")]
+    fn locate(
+        &mut self,
+        begin: &Start<'_>,
+        throw: Throw,
+        side: Side,
+        length: f64,
+        longest: f64,
+        whole: &Solved,
+        scales: &Scales,
+    ) -> Result<(Step, Solved), Stop> {
+        let corner = self.device.corner().unwrap_or(0.0);
+        let radau = &*RADAU;
+        let mut length = length;
+        let poly = radau.polynomial(begin.v, &whole.v);
+        let mut guess = radau
+            .nodes
+            .map(|c| evaluate(begin.v, &poly, c * length / longest).0);
+        let mut attempt = 0;
+        loop {
+            let step = self.fresh(length).ok_or(Stop::NoStep)?;
+            let solved = step
+                .solve(
+                    begin,
+                    &guess,
+                    scales.v,
+                    |v| self.charge(v),
+                    |v| self.current(throw, side, v),
+                )
+                .ok_or(Stop::NoStep)?;
+            let miss = solved.v[STAGES - 1] - corner;
+            let poly = radau.polynomial(begin.v, &solved.v);
+            let slope = evaluate(begin.v, &poly, 1.0).1 / length;
+            let next = length - miss / slope;
+            attempt += 1;
+            let usable = next > 0.0 && next < 1.5 * longest;
+            if miss.abs() <= 1e-11 * scales.v || attempt >= 5 || !usable {
+                return Ok((step, solved));
+            }
+            guess = solved.v;
+            length = next;
+        }
+    }
+
+    /// Carries sensitivities, area and peaks over a step and returns its end.
+    fn commit(&self, step: &Step, solved: &Solved, period: &mut Period) -> State {
+        let radau = &*RADAU;
+        let last = STAGES - 1;
+        let rest = self.port.rest;
+        let mut scratch = [0.0; super::linear::MAX_STATES];
+        let weights = &radau.a[last];
+        for (number, column) in period.columns.iter_mut().enumerate() {
+            let du = if number == rest + 1 { 1.0 } else { 0.0 };
+            let dv = step.vary(solved, column[0], &column[1..=rest], du);
+            step.rest_at(last, &column[1..=rest], &dv, du, &mut scratch[..rest]);
+            column[0] = solved.c[last] * dv[last];
+            column[1..=rest].copy_from_slice(&scratch[..rest]);
+            for (weight, dv) in weights.iter().zip(&dv) {
+                column[rest + 1] += step.length * weight * dv;
+            }
+        }
+        for (weight, v) in weights.iter().zip(&solved.v) {
+            period.area += step.length * weight * v;
+            period.peaks.v = period.peaks.v.max(v.abs());
+        }
+        for q in &solved.q {
+            period.peaks.q = period.peaks.q.max(q.abs());
+        }
+        let start = &period.end;
+        let mut x = vec![0.0; rest];
+        step.rest_at(last, &start.x, &solved.v, start.u, &mut x);
+        for x in &x {
+            period.peaks.x = period.peaks.x.max(x.abs());
+        }
+        State {
+            v: solved.v[last],
+            q: solved.q[last],
+            x,
+            u: start.u,
+        }
+    }
+
+    /// The end of a part of a step that was taken, to the order of the method.
+    pub fn part(
+        &mut self,
+        begin: &Start<'_>,
+        throw: Throw,
+        side: Side,
+        length: f64,
+        guess: &[f64; STAGES],
+        scales: &Scales,
+    ) -> Option<f64> {
+        let step = self.fresh(length)?;
+        let solved = step.solve(
+            begin,
+            guess,
+            scales.v,
+            |v| self.charge(v),
+            |v| self.current(throw, side, v),
+        )?;
+        Some(solved.v[STAGES - 1])
+    }
+}
+
+/// The period from closing to closing, cut at every instant where the equations change.
+fn segments(stage: &Stage, drive: &Drive) -> Result<Vec<Segment>, OrbitError> {
+    let (width, open) = (drive.width_rad, TAU - drive.width_rad);
+    let mut cuts = vec![(0.0, Throw::Closed, 0.0), (width, Throw::Open, 0.0)];
+    if let Some(gate) = stage.driver.gate.filter(|_| stage.gate_coupling_f > 0.0) {
+        let rad = |second: f64| TAU * stage.frequency_hz * second;
+        let (rise, fall) = (rad(gate.rise_s), rad(gate.fall_s));
+        if 0.5 * (rise + fall) > width.min(open) {
+            return Err(OrbitError::EdgesOverlap {
+                edges_s: 0.5 * (gate.rise_s + gate.fall_s),
+                shortest_s: width.min(open) / rad(1.0),
+            });
+        }
+        let coupling = rad(1.0) * stage.gate_coupling_f * stage.load.ohm * gate.swing_v;
+        let (up, down) = (coupling / rise, -coupling / fall);
+        cuts = vec![
+            (0.0, Throw::Closed, up),
+            (0.5 * rise, Throw::Closed, 0.0),
+            (width - 0.5 * fall, Throw::Closed, down),
+            (width, Throw::Open, down),
+            (width + 0.5 * fall, Throw::Open, 0.0),
+            (TAU - 0.5 * rise, Throw::Open, up),
+        ];
+    }
+    let ends: Vec<f64> = cuts.iter().skip(1).map(|cut| cut.0).chain([TAU]).collect();
+    Ok(cuts
+        .into_iter()
+        .zip(ends)
+        .filter(|((from, ..), to)| to - from > 1e-12)
+        .map(|((from, throw, source), to)| Segment {
+            from,
+            length: to - from,
+            throw,
+            source,
+            tables: vec![None; LEVELS as usize + 1],
+            first_level: 8,
+        })
+        .collect())
+}

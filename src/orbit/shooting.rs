@@ -1,0 +1,371 @@
+//! The periodic state of a curved stage: Newton's method on the map of one period.
+//!
+//! Unknown are charge and rest at the closing instant, and the choke's current where there is a choke, whose
+//! condition is that the mean drain voltage and the drop across the feed add up to the supply. Sensitivities are
+//! those of the steps taken, so that convergence is quadratic once the steps no longer change: they are frozen when
+//! the state is close.
+
+use std::f64::consts::TAU;
+
+use nalgebra::{DMatrix, DVector};
+
+use super::network::OrbitError;
+use super::period::{Engine, Mesh, Period, Scales, Sensitivity, State, Stop};
+use super::port::Source;
+
+/// Newton steps before giving up.
+const MAX_NEWTON: usize = 24;
+
+/// The correction below which the last one is made and the state called periodic, relative to the scales.
+const CLOSE: f64 = 1e-8;
+
+/// How far the state may be from itself one period later, relative to the scales.
+const PERIODIC: f64 = 1e-11;
+
+/// The correction below which steps are frozen.
+const FREEZE: f64 = 1e-2;
+
+/// The estimated error of frozen steps over the tolerance that is still accepted.
+const COARSE: f64 = 8.0;
+
+/// Periods of plain settling where Newton's method and every detour failed.
+const SETTLING: usize = 60;
+
+/// A periodic state.
+#[derive(Debug, Clone)]
+pub struct Found {
+    pub state: State,
+    pub scales: Scales,
+    pub mesh: Mesh,
+    /// What one period does to a deviation of charge and rest.
+    pub period_map: DMatrix<f64>,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Fail {
+    Singular,
+    Diverged,
+    RanOut,
+}
+
+impl From<Stop> for Fail {
+    fn from(stop: Stop) -> Self {
+        match stop {
+            Stop::RanOut => Self::RanOut,
+            Stop::NoStep => Self::Diverged,
+        }
+    }
+}
+
+impl From<Fail> for OrbitError {
+    fn from(fail: Fail) -> Self {
+        match fail {
+            Fail::Singular => Self::NeverSettles,
+            Fail::Diverged => Self::Diverged,
+            Fail::RanOut => Self::RanOut {
+                work: super::period::WORK_LIMIT,
+            },
+        }
+    }
+}
+
+/// Finds the periodic state at `supply_v`, from `near` where that is given, else from the straight stand-in.
+///
+/// # Errors
+/// [`OrbitError::NeverSettles`], [`OrbitError::Diverged`], [`OrbitError::RanOut`].
+pub fn find(
+    engine: &mut Engine,
+    supply_v: f64,
+    least_scale_v: f64,
+    near: Option<&Found>,
+) -> Result<Found, OrbitError> {
+    engine.work = 0;
+    engine.blend = 1.0;
+    if let Some(near) = near {
+        match newton(engine, near.state.clone(), near.scales, supply_v) {
+            Ok(found) => return Ok(found),
+            Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
+            Err(_) => {}
+        }
+    }
+    let (state, scales) = straight(engine, supply_v, least_scale_v)?;
+    let failed = match newton(engine, state.clone(), scales, supply_v) {
+        Ok(found) => return Ok(found),
+        Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
+        Err(fail) => fail,
+    };
+    if let Some(found) = bend(engine, state.clone(), scales, supply_v)? {
+        return Ok(found);
+    }
+    engine.blend = 1.0;
+    let settled = settle(engine, state, scales, SETTLING)?;
+    match newton(engine, settled, scales, supply_v) {
+        Ok(found) => Ok(found),
+        Err(Fail::RanOut) => Err(Fail::RanOut.into()),
+        // The first attempt's reason says most.
+        Err(_) => Err(failed.into()),
+    }
+}
+
+/// The orbit from rest, for a search of further solutions.
+///
+/// # Errors
+/// As [`find`].
+pub fn find_from(
+    engine: &mut Engine,
+    supply_v: f64,
+    mut state: State,
+    scales: Scales,
+) -> Result<Found, OrbitError> {
+    engine.work = 0;
+    engine.blend = 1.0;
+    engine.settle_voltage(&mut state);
+    Ok(newton(engine, state, scales, supply_v)?)
+}
+
+/// The stage with a fixed capacitance, a straight switch and no diode: linear, so one Newton step from rest.
+fn straight(
+    engine: &mut Engine,
+    supply_v: f64,
+    least_scale_v: f64,
+) -> Result<(State, Scales), Fail> {
+    engine.blend = 0.0;
+    let rest = engine.port.rest;
+    let u = match engine.port.source {
+        Source::Voltage => supply_v,
+        Source::Choke(_) => 0.0,
+    };
+    let mut state = State {
+        v: 0.0,
+        q: 0.0,
+        x: vec![0.0; rest],
+        u,
+    };
+    let size = least_scale_v.max(supply_v);
+    let mut scales = Scales {
+        v: size,
+        q: engine.charge(size).0.abs(),
+        x: size,
+    };
+    let period = engine.run(&state, &scales, None, Sensitivity::Carried, &mut |_| {})?;
+    let (change, _) = correction(engine, &state, &period, supply_v).ok_or(Fail::Singular)?;
+    apply(engine, &mut state, &change, 1.0);
+    engine.blend = 1.0;
+    // The charge of the curve at the voltage that the straight one has.
+    state.q = engine.charge(state.v).0;
+    let x = state.x.iter().fold(0.0f64, |m, x| m.max(x.abs()));
+    scales.x = scales.x.max(x);
+    scales.v = scales.v.max(state.v.abs());
+    Ok((state, scales))
+}
+
+/// From the straight stand-in to the stage as it is, in steps that halve where Newton's method fails.
+fn bend(
+    engine: &mut Engine,
+    mut state: State,
+    mut scales: Scales,
+    supply_v: f64,
+) -> Result<Option<Found>, OrbitError> {
+    let (mut blend, mut step) = (0.0f64, 0.25f64);
+    while step > 1e-3 {
+        let next = (blend + step).min(1.0);
+        engine.blend = next;
+        let mut start = state.clone();
+        start.q = engine.charge(start.v).0;
+        match newton(engine, start, scales, supply_v) {
+            Ok(found) if next == 1.0 => return Ok(Some(found)),
+            Ok(found) => {
+                state = found.state;
+                scales = found.scales;
+                blend = next;
+                step *= 1.5;
+            }
+            Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
+            Err(_) => step *= 0.5,
+        }
+    }
+    Ok(None)
+}
+
+/// `periods` periods one after the other: the slow way, and the twin that Newton's method is held against.
+///
+/// # Errors
+/// As [`find`].
+pub fn settle(
+    engine: &mut Engine,
+    mut state: State,
+    scales: Scales,
+    periods: usize,
+) -> Result<State, OrbitError> {
+    let mut scales = scales;
+    for _ in 0..periods {
+        let period = engine
+            .run(&state, &scales, None, Sensitivity::Left, &mut |_| {})
+            .map_err(Fail::from)?;
+        scales = grown(&scales, &period);
+        state = period.end;
+    }
+    Ok(state)
+}
+
+fn grown(scales: &Scales, period: &Period) -> Scales {
+    // Scales follow the orbit down as well, but not to nothing.
+    Scales {
+        v: period.peaks.v.max(1e-3 * scales.v),
+        q: period.peaks.q.max(1e-3 * scales.q),
+        x: period.peaks.x.max(1e-3 * scales.x),
+    }
+}
+
+fn newton(
+    engine: &mut Engine,
+    mut state: State,
+    mut scales: Scales,
+    supply_v: f64,
+) -> Result<Found, Fail> {
+    engine.settle_voltage(&mut state);
+    if engine.port.source == Source::Voltage {
+        state.u = supply_v;
+    }
+    let mut mesh: Option<Mesh> = None;
+    let mut last: Option<(State, DVector<f64>, f64, f64)> = None;
+    for _ in 0..MAX_NEWTON {
+        let run = engine.run(
+            &state,
+            &scales,
+            mesh.as_ref(),
+            Sensitivity::Carried,
+            &mut |_| {},
+        );
+        let size = match &run {
+            Ok(period) => residual_size(engine, &state, period, supply_v, &scales),
+            Err(Stop::RanOut) => return Err(Fail::RanOut),
+            Err(Stop::NoStep) => f64::INFINITY,
+        };
+        // A worse state than the one before: go back half of the way.
+        if let Some((from, change, damping, before)) = &mut last
+            && (!(size.is_finite()) || (size > 1.5 * *before && size > 1e-6))
+        {
+            *damping *= 0.4;
+            if *damping < 0.01 {
+                return Err(Fail::Diverged);
+            }
+            state = from.clone();
+            let (change, damping) = (change.clone(), *damping);
+            apply(engine, &mut state, &change, damping);
+            continue;
+        }
+        let Ok(period) = run else {
+            return Err(Fail::Diverged);
+        };
+        scales = grown(&scales, &period);
+        let Some((change, period_map)) = correction(engine, &state, &period, supply_v) else {
+            return Err(Fail::Singular);
+        };
+        let relative = relative_size(engine, &change, &scales);
+        if !relative.is_finite() || relative > 1e9 {
+            return Err(Fail::Singular);
+        }
+        // Frozen steps that turn out too long for this state are chosen again.
+        let fine = period.error <= COARSE;
+        if relative <= CLOSE && mesh.is_some() && size <= PERIODIC && fine {
+            return Ok(Found {
+                state,
+                scales,
+                mesh: period.mesh,
+                period_map,
+            });
+        }
+        last = Some((state.clone(), change.clone(), 1.0, size));
+        apply(engine, &mut state, &change, 1.0);
+        mesh = (relative < FREEZE && fine).then_some(period.mesh);
+    }
+    Err(Fail::Diverged)
+}
+
+fn residual(engine: &Engine, state: &State, period: &Period, supply_v: f64) -> DVector<f64> {
+    let rest = engine.port.rest;
+    let choke = matches!(engine.port.source, Source::Choke(_));
+    let mut residual = DVector::zeros(rest + 1 + usize::from(choke));
+    residual[0] = period.end.q - state.q;
+    for i in 0..rest {
+        residual[i + 1] = period.end.x[i] - state.x[i];
+    }
+    if let Source::Choke(ohm) = engine.port.source {
+        residual[rest + 1] = period.area / TAU + ohm * state.u - supply_v;
+    }
+    residual
+}
+
+fn residual_size(
+    engine: &Engine,
+    state: &State,
+    period: &Period,
+    supply_v: f64,
+    scales: &Scales,
+) -> f64 {
+    let rest = engine.port.rest;
+    residual(engine, state, period, supply_v)
+        .iter()
+        .enumerate()
+        .map(|(i, r)| match i {
+            0 => r.abs() / scales.q,
+            _ if i <= rest => r.abs() / scales.x,
+            _ => r.abs() / scales.v,
+        })
+        .fold(
+            0.0,
+            |worst: f64, r| if r > worst || r.is_nan() { r } else { worst },
+        )
+}
+
+/// The Newton step, and the map of one period without the choke's condition.
+fn correction(
+    engine: &Engine,
+    state: &State,
+    period: &Period,
+    supply_v: f64,
+) -> Option<(DVector<f64>, DMatrix<f64>)> {
+    let rest = engine.port.rest;
+    let residual = residual(engine, state, period, supply_v);
+    let period_map = DMatrix::from_fn(rest + 1, rest + 1, |i, j| period.columns[j][i]);
+    let size = residual.len();
+    let matrix = DMatrix::from_fn(size, size, |i, j| {
+        let derivative = period.columns[j][i];
+        if i == rest + 1 {
+            let feed = match engine.port.source {
+                Source::Choke(ohm) if j == rest + 1 => ohm,
+                _ => 0.0,
+            };
+            derivative / TAU + feed
+        } else if i == j {
+            derivative - 1.0
+        } else {
+            derivative
+        }
+    });
+    let change = matrix.lu().solve(&(-residual))?;
+    change
+        .iter()
+        .all(|x| x.is_finite())
+        .then_some((change, period_map))
+}
+
+fn relative_size(engine: &Engine, change: &DVector<f64>, scales: &Scales) -> f64 {
+    let rest = engine.port.rest;
+    (0..=rest)
+        .map(|i| change[i].abs() / if i == 0 { scales.q } else { scales.x })
+        .fold(0.0, f64::max)
+}
+
+fn apply(engine: &Engine, state: &mut State, change: &DVector<f64>, damping: f64) {
+    let rest = engine.port.rest;
+    state.q += damping * change[0];
+    for i in 0..rest {
+        state.x[i] += damping * change[i + 1];
+    }
+    if change.len() > rest + 1 {
+        state.u += damping * change[rest + 1];
+    }
+    engine.settle_voltage(state);
+}
