@@ -8,6 +8,7 @@ mod disk;
 mod limits;
 mod map;
 mod output;
+mod predistort;
 mod signal;
 mod solve;
 
@@ -53,6 +54,7 @@ enum Command {
     Check(check::Arguments),
     Solve(solve::Arguments),
     Map(map::Arguments),
+    Predistort(predistort::Arguments),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
     Completions(completions::Arguments),
@@ -78,6 +80,7 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Check(arguments) => check::run(&arguments, &console),
         Command::Solve(arguments) => solve::run(&arguments, &console),
         Command::Map(arguments) => map::run(&arguments, &console),
+        Command::Predistort(arguments) => predistort::run(&arguments, &console),
         Command::Signal(arguments) => signal::run(&arguments, &console),
         Command::Limits(arguments) => limits::run(&arguments, &console),
         Command::Completions(arguments) => completions::run(&arguments, &console),
