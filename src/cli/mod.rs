@@ -6,6 +6,7 @@ mod console;
 mod disk;
 mod limits;
 mod map;
+mod measure;
 mod output;
 mod signal;
 mod solve;
@@ -47,6 +48,7 @@ enum Command {
     Check(check::Arguments),
     Solve(solve::Arguments),
     Map(map::Arguments),
+    Measure(measure::Arguments),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
 }
@@ -71,6 +73,7 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Check(arguments) => check::run(&arguments, &console),
         Command::Solve(arguments) => solve::run(&arguments, &console),
         Command::Map(arguments) => map::run(&arguments, &console),
+        Command::Measure(arguments) => measure::run(&arguments, &console),
         Command::Signal(arguments) => signal::run(&arguments, &console),
         Command::Limits(arguments) => limits::run(&arguments, &console),
     };

@@ -2,7 +2,7 @@
 
 use crate::input::Problem;
 use crate::map::SweepError;
-use crate::metrics::{PairError, SpectrumError};
+use crate::metrics::{PairError, SpectrumError, SyncError};
 use crate::orbit::{NetworkError, OrbitError};
 use crate::signal::SignalError;
 
@@ -30,6 +30,21 @@ pub enum StudyError {
     /// Output and wanted signal cannot be compared.
     #[error("the comparison of output and wanted signal: {0}")]
     Pair(#[from] PairError),
+    /// A capture cannot be laid against its reference.
+    #[error("the comparison with the reference: {0}")]
+    Sync(#[from] SyncError),
+    /// A capture is shorter than one spectrum.
+    #[error(
+        "{given} samples were captured, or follow the reference: at least {needed} are needed for a spectrum in {resolution_hz} Hz. Use a longer capture, or limits with a wider bandwidth"
+    )]
+    CaptureTooShort {
+        /// Samples that count.
+        given: u64,
+        /// Samples needed.
+        needed: u64,
+        /// The finest resolution that is wanted.
+        resolution_hz: f64,
+    },
     /// Too few samples are left once the start and the end are taken off.
     #[error(
         "the signal has {given} samples: too few, at least {needed} are needed for a spectrum in {resolution_hz} Hz beside start and end. Use a longer signal, or limits with a wider bandwidth"

@@ -1,16 +1,22 @@
 //! One study from file to verdict.
 
+mod average;
 mod built_in;
 mod check;
 mod error;
 mod load;
+mod measure;
 mod result;
 mod run;
+mod scale;
 mod warning;
 
+pub use average::Averaged;
 pub use built_in::{BuiltIn, DEFAULT_STUDY};
 pub use check::check;
 pub use error::StudyError;
 pub use load::{Hardware, SignalChoice, Study};
+pub use measure::{CaptureMetrics, MeasureRequest, MeasureResult, measure};
 pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
+pub use scale::Scale;
 pub use warning::Warning;
