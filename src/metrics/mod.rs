@@ -10,6 +10,7 @@ mod occupied;
 mod pair;
 mod plan;
 mod spectrum;
+pub mod symbols;
 mod sync;
 mod welch;
 
@@ -22,5 +23,6 @@ pub use occupied::{OccupiedBand, occupied_bandwidth};
 pub use pair::PairError;
 pub use plan::{Hold, SpectrumPlan};
 pub use spectrum::{Spectrum, SpectrumError};
+pub use symbols::{SymbolError, SymbolFigures, SymbolFormat, symbol_errors};
 pub use sync::{PairReader, Reference, Repeat, Sync, SyncError, synchronize};
 pub use welch::SpectrumMeter;

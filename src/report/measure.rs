@@ -4,7 +4,8 @@ use serde_json::{Value, json};
 
 use super::check::Request;
 use super::figures::{
-    CcdfCurve, CcdfFigure, CloudFigure, MaskLine, SpectrumCurve, SpectrumFigure, WorstPoint,
+    CcdfCurve, CcdfFigure, CloudFigure, ConstellationFigure, MaskLine, SpectrumCurve,
+    SpectrumFigure, WorstPoint,
 };
 use super::page::{
     CaptionedFigure, CheckRow, Conditions, DataTable, FactGroup, Headline, KeyFigure, Outcome, Page,
@@ -13,6 +14,7 @@ use super::table::{Align, Table};
 use super::text::{quantity, signed};
 use crate::limits::Obtained;
 use crate::metrics::Spectrum;
+use crate::signal::Modulation;
 use crate::study::{MeasureResult, Scale, SignalFacts};
 use crate::units;
 use crate::verdict::{self, Check};
@@ -146,14 +148,36 @@ fn key_rows(result: &MeasureResult) -> Vec<[String; 3]> {
             signed(metrics.occupied_centre_hz, "Hz", 4)
         ),
     ));
-    if let (Some(evm), Some(peak)) = (metrics.evm_percent, metrics.evm_peak_percent) {
+    if let Some(symbols) = &result.symbols {
+        rows.push(row(
+            "EVM of symbols",
+            format!("{:.3} %", symbols.evm_percent),
+            format!(
+                "RMS of {} points; 95 % below {:.2} %, peak {:.2} %; sent points {}",
+                symbols.points,
+                symbols.evm_p95_percent,
+                symbols.evm_peak_percent,
+                if symbols.sent_from == "reference" {
+                    "from the reference"
+                } else {
+                    "decided"
+                }
+            ),
+        ));
+    }
+    if let Some(evm) = metrics.waveform_evm_percent {
         let band = metrics
             .evm_band_hz
             .map_or("all sampled".to_owned(), |band| quantity(band, "Hz", 4));
         rows.push(row(
-            "EVM",
+            "EVM of the waveform",
             format!("{evm:.3} %"),
-            format!("RMS of the waveform in {band}; peak {peak:.2} %"),
+            match metrics.evm_peak_percent {
+                Some(peak) if result.symbols.is_none() => {
+                    format!("RMS in {band}; peak {peak:.2} %")
+                }
+                _ => format!("RMS in {band}"),
+            },
         ));
     }
     if let Some(nmse) = metrics.nmse_db {
@@ -195,6 +219,7 @@ fn key_rows(result: &MeasureResult) -> Vec<[String; 3]> {
 
 fn figures(result: &MeasureResult) -> Vec<CaptionedFigure> {
     let mut figures = vec![measured_spectrum_figure(result)];
+    figures.extend(constellation_figure(result));
     figures.extend(cloud_figures(result));
     let mut curves = vec![CcdfCurve {
         name: "capture".to_owned(),
@@ -316,6 +341,32 @@ pub fn measured_spectrum_figure(result: &MeasureResult) -> CaptionedFigure {
         }
     );
     CaptionedFigure { figure, caption }
+}
+
+/// Received points, where the format is known.
+fn constellation_figure(result: &MeasureResult) -> Option<CaptionedFigure> {
+    let (symbols, format) = (result.symbols.as_ref()?, result.request.format?);
+    let modulation = format.modulation();
+    let mut sent: Vec<_> = (0..1u32 << modulation.bits())
+        .map(|word| modulation.point(word))
+        .collect();
+    if modulation == Modulation::Pi4Dqpsk {
+        let turn = num_complex::Complex64::cis(std::f64::consts::FRAC_PI_4);
+        sent.extend(sent.clone().iter().map(|point| point * turn));
+    }
+    let figure = ConstellationFigure {
+        title: "Constellation".to_owned(),
+        received: symbols.constellation.clone(),
+        sent,
+    }
+    .figure();
+    Some(CaptionedFigure {
+        figure,
+        caption: format!(
+            "Received points over their gain; EVM {:.3} % RMS of {} points.",
+            symbols.evm_percent, symbols.points
+        ),
+    })
 }
 
 /// Amplitude over amplitude and phase over amplitude.
@@ -554,6 +605,8 @@ pub fn measure_document(result: &MeasureResult) -> Value {
         "metrics": result.metrics,
         "bend": result.bend,
         "averaged": result.averaged,
+        "format": result.request.format,
+        "symbols": result.symbols,
         "verdict": judged(result).then_some(&result.judgement.verdict),
         "warnings": result.warnings,
     })

@@ -2,7 +2,7 @@
 
 use crate::input::Problem;
 use crate::map::SweepError;
-use crate::metrics::{PairError, SpectrumError, SyncError};
+use crate::metrics::{PairError, SpectrumError, SymbolError, SyncError};
 use crate::orbit::{NetworkError, OrbitError};
 use crate::signal::SignalError;
 
@@ -33,6 +33,9 @@ pub enum StudyError {
     /// A capture cannot be laid against its reference.
     #[error("the comparison with the reference: {0}")]
     Sync(#[from] SyncError),
+    /// The symbols of a known format cannot be read.
+    #[error("the symbols: {0}")]
+    Symbols(#[from] SymbolError),
     /// A capture is shorter than one spectrum.
     #[error(
         "{given} samples were captured, or follow the reference: at least {needed} are needed for a spectrum in {resolution_hz} Hz. Use a longer capture, or limits with a wider bandwidth"

@@ -9,9 +9,10 @@ use crate::math::Window;
 use crate::metrics::{
     AdjacentChannel, Alignment, Bend, BendMeter, ChannelFilter, EnvelopeFigures, EnvelopeMeter,
     ErrorFigures, ErrorMeter, Hold, PairReader, Reference, Repeat, Spectrum, SpectrumMeter,
-    SpectrumPlan, Sync, adjacent_channels, occupied_bandwidth, synchronize,
+    SpectrumPlan, SymbolFigures, SymbolFormat, Sync, adjacent_channels, occupied_bandwidth,
+    symbol_errors, synchronize,
 };
-use crate::signal::Source;
+use crate::signal::{Samples, Source};
 use crate::units::dbm_from_watt;
 use crate::verdict::{Judgement, MaskMargin, Measured, Wanted, judge};
 
@@ -23,6 +24,9 @@ const BLOCK: usize = 1 << 14;
 
 /// Resolution of the spectrum where neither limits nor the user ask for one, as a part of the rate.
 const DEFAULT_RESOLUTION: f64 = 1.0 / 1024.0;
+
+/// Samples whose symbols are compared with a reference, at most: 64 MB for each of the two.
+const MOST_SYMBOL_SAMPLES: usize = 1 << 22;
 
 /// Fewer segments than this are worth a warning.
 const FEW_SEGMENTS: u64 = 25;
@@ -47,6 +51,8 @@ pub struct MeasureRequest {
     pub window: Window,
     /// Resolution that the user wants, Hz.
     pub resolution_hz: Option<f64>,
+    /// The signal's format, where it is known.
+    pub format: Option<SymbolFormat>,
     /// Full width in which the EVM is taken, Hz; by the limits' channel, else all of the lower rate.
     pub band_hz: Option<f64>,
 }
@@ -80,6 +86,8 @@ pub struct MeasureResult {
     pub bend: Option<Bend>,
     /// The mean of all periods against the reference.
     pub averaged: Option<Averaged>,
+    /// Errors of symbols, where the format is known.
+    pub symbols: Option<SymbolFigures>,
     /// What limits how far this can be trusted.
     pub warnings: Vec<String>,
 }
@@ -102,11 +110,17 @@ pub struct CaptureMetrics {
     pub occupied_hz: f64,
     /// Middle of that width, Hz from offset 0.
     pub occupied_centre_hz: f64,
-    /// RMS error in the band.
+    /// RMS error: of symbols where their format is known, else of the waveform in the band.
     pub evm_percent: Option<f64>,
-    /// Largest error in the band.
+    /// Largest error of the same.
     pub evm_peak_percent: Option<f64>,
-    /// The band of both, full width.
+    /// Error that 95 % of the symbols do not exceed.
+    pub evm_p95_percent: Option<f64>,
+    /// What the three are of: `symbols` or `waveform`.
+    pub evm_of: Option<&'static str>,
+    /// RMS error of the waveform in the band.
+    pub waveform_evm_percent: Option<f64>,
+    /// The band of the waveform's, full width.
     pub evm_band_hz: Option<f64>,
     /// Mean square error in all of the sampled band.
     pub nmse_db: Option<f64>,
@@ -181,6 +195,7 @@ struct Compared {
     spectrum: Spectrum,
     envelope: EnvelopeFigures,
     averaged: Option<Averaged>,
+    symbols: Option<SymbolFigures>,
 }
 
 /// Measures `capture`, against `reference` where there is one.
@@ -225,6 +240,20 @@ pub fn measure(
         }
     };
     progress(0.9);
+    let symbols = match (&request.format, &compared) {
+        (None, _) => None,
+        (Some(_), Some(compared)) => compared.symbols.clone(),
+        (Some(format), None) => Some(symbol_errors(format, capture, None)?),
+    };
+    let waveform = compared.as_ref().map(|c| c.errors);
+    let evm_percent = match &symbols {
+        Some(symbols) => Some(symbols.evm_percent),
+        None => waveform.map(|errors| errors.evm_percent),
+    };
+    let evm_peak_percent = match &symbols {
+        Some(symbols) => Some(symbols.evm_peak_percent),
+        None => waveform.map(|errors| errors.evm_peak_percent),
+    };
     let factor = request.scale.watts_a_unit();
     let mut spectrum = meters.fine.finish()?;
     let mut peak_spectra: Vec<Spectrum> = meters
@@ -246,10 +275,10 @@ pub fn measure(
         peak_hold: &peak_spectra,
         mean_w: envelope.mean_w,
         peak_w: envelope.peak_w,
-        evm_percent: compared.as_ref().map(|c| c.errors.evm_percent),
-        evm_peak_percent: compared.as_ref().map(|c| c.errors.evm_peak_percent),
-        evm_p95_percent: None,
-        evm_p99_percent: None,
+        evm_percent,
+        evm_peak_percent,
+        evm_p95_percent: symbols.as_ref().map(|s| s.evm_p95_percent),
+        evm_p99_percent: symbols.as_ref().map(|s| s.evm_p99_percent),
         modulation: None,
         harmonics_dbc: None,
     };
@@ -275,8 +304,15 @@ pub fn measure(
         }),
         occupied_hz: occupied.width_hz(),
         occupied_centre_hz: (occupied.from_hz + occupied.to_hz) / 2.0,
-        evm_percent: compared.as_ref().map(|c| c.errors.evm_percent),
-        evm_peak_percent: compared.as_ref().map(|c| c.errors.evm_peak_percent),
+        evm_percent,
+        evm_peak_percent,
+        evm_p95_percent: symbols.as_ref().map(|s| s.evm_p95_percent),
+        evm_of: match (&symbols, &waveform) {
+            (Some(_), _) => Some("symbols"),
+            (None, Some(_)) => Some("waveform"),
+            (None, None) => None,
+        },
+        waveform_evm_percent: waveform.map(|errors| errors.evm_percent),
         evm_band_hz: compared.as_ref().and_then(|c| c.errors.band_hz),
         nmse_db: compared
             .as_ref()
@@ -343,6 +379,7 @@ pub fn measure(
         reference_envelope,
         bend,
         averaged,
+        symbols,
         warnings,
     })
 }
@@ -386,13 +423,26 @@ fn compare(
     let mut again = Reference::again(reference, sent.samples, looped, rate_hz);
     let mut reader = PairReader::of(capture, &mut again, &sync)?;
     let (mut x, mut y) = (Vec::new(), Vec::new());
+    let mut kept = [Vec::new(), Vec::new()];
     while reader.read(&mut x, &mut y)? > 0 {
+        if request.format.is_some() && kept[0].len() < MOST_SYMBOL_SAMPLES {
+            kept[0].extend_from_slice(&x);
+            kept[1].extend_from_slice(&y);
+        }
         meters.push(&y);
         sent_meter.push(&x);
         errors.push(&x, &y)?;
         bend.push(&x, &y);
     }
     drop(reader);
+    let symbols = match &request.format {
+        None => None,
+        Some(format) => {
+            let [sent, received] = kept.map(|samples| Samples::new(rate_hz, samples));
+            let (mut sent, mut received) = (sent, received);
+            Some(symbol_errors(format, &mut received, Some(&mut sent))?)
+        }
+    };
     let averaged = if looped {
         average(capture, reference, sent, &sync)?
     } else {
@@ -410,6 +460,7 @@ fn compare(
                 .finish()
                 .ok_or(StudyError::SilentSignal)?,
             averaged,
+            symbols,
         },
     ))
 }

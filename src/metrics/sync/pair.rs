@@ -25,20 +25,8 @@ pub struct Reference<'a> {
 impl<'a> Reference<'a> {
     /// `ratio` is the reference's rate over the capture's.
     pub(super) fn new(source: &'a mut dyn Source, samples: u64, looped: bool, ratio: f64) -> Self {
-        Self::with_kernel(
-            source,
-            samples,
-            looped,
-            Arc::new(Kernel::interpolator(0.5 * (1.0 / ratio).min(1.0))),
-        )
-    }
-
-    fn with_kernel(
-        source: &'a mut dyn Source,
-        samples: u64,
-        looped: bool,
-        kernel: Arc<Kernel>,
-    ) -> Self {
+        // A reference sampled faster than the capture is kept below half the capture's rate.
+        let kernel = Arc::new(Kernel::interpolator(0.5 * (1.0 / ratio).min(1.0)));
         Self {
             source,
             samples,
@@ -58,6 +46,11 @@ impl<'a> Reference<'a> {
     /// Samples of one period, or of all.
     pub fn samples(&self) -> u64 {
         self.samples
+    }
+
+    /// Samples to each side that a value between samples is made of.
+    pub(super) fn reach(&self) -> usize {
+        self.kernel.half()
     }
 
     /// True where it repeats itself.

@@ -260,8 +260,11 @@ fn overlap(grid: &Grid, capture: u64, reference: &Reference<'_>) -> (u64, u64) {
         return (0, capture);
     }
     let at = |position: f64| grid.centre + (position - grid.position) / grid.step;
-    let from = at(0.0).ceil().max(0.0) as u64;
-    let to = (at(reference.samples() as f64 - 1.0).floor() + 1.0).clamp(0.0, capture as f64) as u64;
+    // Near its ends a reference that was sent once is not known between its samples.
+    let guard = (reference.reach() as f64).min(reference.samples() as f64 / 8.0);
+    let last = reference.samples() as f64 - 1.0 - guard;
+    let from = at(guard).ceil().max(0.0) as u64;
+    let to = (at(last).floor() + 1.0).clamp(0.0, capture as f64) as u64;
     (from.min(to), to)
 }
 

@@ -5,6 +5,7 @@
 mod bend;
 mod ccdf;
 mod cloud;
+mod constellation;
 mod envelope;
 mod map;
 mod mask;
@@ -14,6 +15,7 @@ mod waveform;
 pub use bend::{BendCurve, BendFigure};
 pub use ccdf::{CcdfCurve, CcdfFigure};
 pub use cloud::CloudFigure;
+pub use constellation::ConstellationFigure;
 pub use envelope::{EnvelopeCurve, EnvelopeFigure};
 pub use map::MapFigure;
 pub use mask::{MaskFigure, MaskLine};
