@@ -5,16 +5,22 @@ use std::path::{Path, PathBuf};
 use serde::Serialize;
 
 use super::disk::Disk;
-use super::{Console, Ending, Failure};
+use super::{Console, Ending, Failure, OutputFolder, OutputOptions};
 use crate::input::Files;
 use crate::limits::{
     Conditions, Corner, Evaluated, Kind, Library, LimitSet, Limits, Mask, Obtained, Segment, Term,
     evaluate, table_rows,
 };
+use crate::report::limits::limits_figure;
 use crate::units::{self, Dimension, show};
 
 /// List the limit sets, or show one of them with where its numbers come from
 #[derive(Debug, clap::Args)]
+#[command(after_help = "Examples:
+  quietedge limits
+  quietedge limits fcc_90_210_mask_d --power 5W --out mask      (limits.svg, limits.png, limits.json)
+  quietedge limits --file my.limits.toml
+  quietedge limits my_mask --file my.limits.toml")]
 pub struct Arguments {
     /// The set to show; all are listed without
     name: Option<String>,
@@ -38,6 +44,9 @@ pub struct Arguments {
     /// Show only the rows for this class of equipment
     #[arg(long, value_name = "WORD")]
     class: Option<String>,
+
+    #[command(flatten)]
+    output: OutputOptions,
 }
 
 fn power_w(text: &str) -> Result<f64, String> {
@@ -61,7 +70,11 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     for path in &arguments.file {
         add(&mut library, path)?;
     }
+    let names = ["limits.svg", "limits.png", "limits.json"];
     match &arguments.name {
+        None if arguments.output.out.is_some() => {
+            return Err(Failure::new("--out: name the set whose picture is wanted"));
+        }
         None => {
             let sets: Vec<Listed<'_>> = library.sets().iter().map(Listed::of).collect();
             console.print_json(&serde_json::json!({ "sets": sets }))?;
@@ -101,6 +114,24 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
                     .filter_map(|segment| evaluate(mask, segment, &conditions).ok())
                     .collect();
                 object.insert("evaluated".to_owned(), serde_json::to_value(levels)?);
+            }
+            let folder = OutputFolder::claim_option(&arguments.output, &names)?;
+            if let Some(folder) = folder {
+                let figure = limits_figure(set, class, &conditions)
+                    .map_err(|error| Failure::new(format!("no picture of {name}: {error}")))?
+                    .ok_or_else(|| {
+                        Failure::new(format!(
+                            "{name} limits no levels over the offset: nothing to draw"
+                        ))
+                    })?;
+                folder.write(names[0], figure.svg()?.as_bytes())?;
+                folder.write(names[1], &figure.png()?)?;
+                folder.write(names[2], &serde_json::to_vec_pretty(&document)?)?;
+                console.remark(&format!(
+                    "wrote {} into {}",
+                    names.join(", "),
+                    folder.display()
+                ));
             }
             console.print_json(&document)?;
             console.print(&page(set, class, &conditions))?;

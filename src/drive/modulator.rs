@@ -107,7 +107,10 @@ impl SupplyModulator {
             if first {
                 filter.settle(volt);
             }
-            volt = filter.push(volt);
+            volt = match self.settings.converter {
+                Some(_) => filter.push_held(volt),
+                None => filter.push(volt),
+            };
         }
         if let (Some(slew), Some(last)) = (self.settings.slew_v_per_s, self.supply_v) {
             let most = slew / self.rate_hz;
@@ -122,7 +125,8 @@ impl SupplyModulator {
         volt.clamp(0.0, self.full_v)
     }
 
-    /// The converter's output averaged over the sample that ends now. It samples the asked voltage at its own
+    /// The converter's output averaged over the sample that ends now (so that without a filter behind it, it
+    /// lags by half a sample). It samples the asked voltage at its own
     /// ticks, on the straight line between two instants; averaging keeps edges between instants at
     /// their right weight.
     fn convert(&mut self, converter: Converter, asked_v: f64, first: bool) -> f64 {

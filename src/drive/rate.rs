@@ -37,12 +37,15 @@ impl RateReason {
     }
 }
 
+/// A bandwidth past this many times the signal's rate is transparent to it and asks for nothing more.
+const TRANSPARENT: f64 = 8.0;
+
 /// The factor by which a signal of `signal_rate_hz` must be oversampled for `scheme`, a power of two, and why.
 /// `span_hz` is the whole range from the lowest to the highest offset that limits ask for, 0 for none.
 ///
-/// Common practice, checked afterwards by doubling: eight times the signal's rate for the width of its
-/// magnitude and phase, ten times every bandwidth, eight times every tone and converter, and a quarter more
-/// than the span.
+/// Common practice, checked afterwards against half of it: eight times the signal's rate for the width of
+/// its magnitude and phase, four times every bandwidth that is not far wider than the signal, four times
+/// every tone and converter, and a quarter more than the span.
 pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usize, RateReason) {
     let Scheme::Supply(SupplyScheme {
         modulator,
@@ -55,23 +58,65 @@ pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usiz
             wanted = (rate_hz, reason);
         }
     };
+    let band = |bandwidth_hz: Option<f64>| {
+        4.0 * bandwidth_hz
+            .unwrap_or(0.0)
+            .min(TRANSPARENT * signal_rate_hz)
+    };
     ask(1.25 * span_hz, RateReason::LimitsSpan);
+    ask(band(modulator.bandwidth_hz), RateReason::ModulatorBandwidth);
+    ask(band(phase_path.bandwidth_hz), RateReason::PhaseBandwidth);
     ask(
-        10.0 * modulator.bandwidth_hz.unwrap_or(0.0),
-        RateReason::ModulatorBandwidth,
-    );
-    ask(
-        10.0 * phase_path.bandwidth_hz.unwrap_or(0.0),
-        RateReason::PhaseBandwidth,
-    );
-    ask(
-        8.0 * modulator.converter.map_or(0.0, |c| c.rate_hz),
+        4.0 * modulator.converter.map_or(0.0, |c| c.rate_hz),
         RateReason::Converter,
     );
     ask(
-        8.0 * modulator.ripple.map_or(0.0, |r| r.frequency_hz),
+        4.0 * modulator.ripple.map_or(0.0, |r| r.frequency_hz),
         RateReason::Ripple,
     );
     let factor = (wanted.0 / signal_rate_hz).log2().ceil().clamp(0.0, 30.0);
     ((1usize << factor as u32).min(MAX_FACTOR), wanted.1)
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::drive::{Modulator, PhasePath, Ripple, Shape, Shaping};
+
+    fn factor(modulator: Modulator, span_hz: f64) -> (usize, RateReason) {
+        let scheme = Scheme::Supply(SupplyScheme {
+            shaping: Shaping {
+                shape: Shape::Corner,
+                floor: 0.0,
+            },
+            modulator,
+            phase_path: PhasePath::default(),
+        });
+        oversampling(&scheme, 1e6, span_hz)
+    }
+
+    #[test]
+    fn the_widest_imperfection_decides() {
+        let ideal = Modulator::default();
+        assert_eq!(factor(ideal, 0.0), (8, RateReason::PolarExpansion));
+        assert_eq!(factor(ideal, 20e6), (32, RateReason::LimitsSpan));
+        let band = Modulator {
+            bandwidth_hz: Some(5e6),
+            ..ideal
+        };
+        assert_eq!(factor(band, 0.0), (32, RateReason::ModulatorBandwidth));
+        let wide = Modulator {
+            bandwidth_hz: Some(1e12),
+            ..ideal
+        };
+        assert_eq!(factor(wide, 0.0), (32, RateReason::ModulatorBandwidth));
+        let ripple = Some(Ripple {
+            amplitude_v: 0.1,
+            frequency_hz: 1e12,
+        });
+        assert_eq!(
+            factor(Modulator { ripple, ..ideal }, 0.0),
+            (MAX_FACTOR, RateReason::Ripple)
+        );
+    }
 }

@@ -103,12 +103,12 @@ impl SupplyDrive {
     pub fn push(&mut self, samples: &[Complex64], track: &mut Track) {
         for &sample in samples {
             let wanted = self.wanted.push(sample);
-            let magnitude = self.magnitude.push(sample).norm();
-            let asked_v = self.full_v * self.shaping.apply(self.level * magnitude);
+            let delayed = magnitude(self.magnitude.push(sample));
+            let asked_v = self.full_v * self.shaping.apply(self.level * delayed);
             track.wanted.push(wanted);
             track
                 .asked
-                .push(self.full_v * self.shaping.apply(self.level * wanted.norm()));
+                .push(self.full_v * self.shaping.apply(self.level * magnitude(wanted)));
             track.control.push(self.modulator.push(asked_v));
             let angle = self.angle.push(sample);
             track.phase.push(self.phase(angle));
@@ -129,8 +129,13 @@ impl SupplyDrive {
     }
 }
 
+/// Without the care against overflow that full-scale samples do not need.
+fn magnitude(sample: Complex64) -> f64 {
+    sample.norm_sqr().sqrt()
+}
+
 fn unit(sample: Complex64) -> Option<Complex64> {
-    let magnitude = sample.norm();
+    let magnitude = magnitude(sample);
     (magnitude > NO_PHASE).then(|| sample / magnitude)
 }
 

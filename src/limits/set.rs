@@ -96,7 +96,7 @@ impl Provenance {
             Obtained::SecondHand => Some(format!("numbers read second-hand{doubt}: {document}")),
             Obtained::Read if self.memory_parts.is_empty() => None,
             Obtained::Read => Some(format!(
-                "recalled from memory, not read: {}",
+                "read in the document but for {}, recalled from memory",
                 self.memory_parts.join(", ")
             )),
         }

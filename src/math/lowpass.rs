@@ -69,6 +69,15 @@ where
         }
     }
 
+    /// The output at the end of a sample period over which the input had the mean `mean`, as behind a
+    /// converter that holds its values: the period's input is taken as constant.
+    pub fn push_held(&mut self, mean: T) -> T {
+        if let Some(first) = self.sections.first_mut() {
+            first.last = mean;
+        }
+        self.push(mean)
+    }
+
     /// The output at the instant of `input`.
     pub fn push(&mut self, input: T) -> T {
         self.sections
@@ -154,6 +163,19 @@ mod tests {
             let expected = 1.0 / Complex64::new(1.0 - x * x, 2f64.sqrt() * x);
             let error = (gain(2, x) / expected).arg().abs();
             assert!(error < 1e-3, "{x}: {error}");
+        }
+    }
+
+    #[test]
+    fn a_held_step_is_the_step_response() {
+        // Second order, unit step at time 0: 1 - e^(-a) (cos a + sin a), a = w t / sqrt 2.
+        let mut filter = Lowpass::<f64>::new(2, 1.0, 50.0);
+        filter.settle(0.0);
+        for n in 1..200 {
+            let a = TAU * f64::from(n) / 50.0 / 2f64.sqrt();
+            let expected = 1.0 - (-a).exp() * (a.cos() + a.sin());
+            let got = filter.push_held(1.0);
+            assert!((got - expected).abs() < 1e-12, "{n}: {got} {expected}");
         }
     }
 

@@ -89,7 +89,7 @@ impl Curve {
     /// held in a bracket.
     pub fn inverse(&self, y: f64) -> Option<f64> {
         let count = self.y.len();
-        if !self.rises() || !(self.y[0] <= y && y <= self.y[count - 1]) {
+        if !(self.rises() && self.y[0] <= y && y <= self.y[count - 1]) {
             return None;
         }
         let piece = self.y[1..count - 1].partition_point(|&knot| knot <= y);
@@ -174,11 +174,11 @@ fn slopes(x: &[f64], y: &[f64]) -> Vec<f64> {
         width(count - 2),
         width(count - 3),
     );
-    for i in 1..count - 1 {
+    for (i, slope) in slope.iter_mut().enumerate().take(count - 1).skip(1) {
         let (left, right) = (chord(i - 1), chord(i));
         if left * right > 0.0 {
             let (w1, w2) = (2.0 * width(i) + width(i - 1), width(i) + 2.0 * width(i - 1));
-            slope[i] = (w1 + w2) / (w1 / left + w2 / right);
+            *slope = (w1 + w2) / (w1 / left + w2 / right);
         }
     }
     slope

@@ -105,7 +105,7 @@ impl Orbit {
             + unit.rungs.iter().sum::<f64>()
             + (unit.load - unit_output);
         let energy_residual = (unit.supply - unit_output - unit_lost) / unit.supply;
-        if !(energy_residual.abs() <= BALANCE_TOLERANCE) {
+        if energy_residual.is_nan() || energy_residual.abs() > BALANCE_TOLERANCE {
             return Err(OrbitError::Unbalanced {
                 residual: energy_residual,
                 allowed: BALANCE_TOLERANCE,

@@ -232,7 +232,7 @@ impl<const N: usize> Sized_<N> {
             .fold(0.0, |size: f64, x| size.max(x.abs()));
         let miss = (0..n).fold(0.0, |miss: f64, i| miss.max((end[i] - closing[i]).abs()));
         // A state that does not return to itself has no business being called periodic.
-        if !(miss <= 1e-8 * size.max(1e-300)) || size > 1e9 {
+        if miss.is_nan() || miss > 1e-8 * size.max(1e-300) || size > 1e9 {
             return Err(OrbitError::NeverSettles);
         }
         Ok(Cycle {

@@ -202,7 +202,7 @@ fn check(supply_v: f64, drive: &Drive) -> Result<(), OrbitError> {
         });
     }
     let duty = drive.duty();
-    if !(duty > 1e-6 && duty < 1.0 - 1e-6) || !drive.closing_rad.is_finite() {
+    if !(duty > 1e-6 && duty < 1.0 - 1e-6 && drive.closing_rad.is_finite()) {
         let allowed = "more than 0 and less than 1";
         return Err(OrbitError::OutOfRange {
             what: "width",

@@ -18,6 +18,10 @@ use super::circuit::{Branch, Circuit, GROUND, Input, Normalised, Owner};
 /// one in magnitude, so rounding is near 1e-15.
 const RANK_TOLERANCE: f64 = 1e-12;
 
+/// Refinements of the solution of the network equations. Each one takes the error down by the ratio of rounding
+/// to the smallest singular value, which is 1e-4 or better within [`RANK_TOLERANCE`].
+const REFINEMENTS: usize = 2;
+
 /// `dy/dtheta = A y + b u`; every quantity of interest is `row . (y, u)`.
 #[derive(Debug, Clone)]
 pub struct Reduced {
@@ -201,12 +205,17 @@ impl Subspace {
             .view_mut((0, 0), (size, states))
             .copy_from(&(&tableau.h * &self.basis));
         right.view_mut((0, states), (size, 1)).copy_from(&tableau.g);
-        let svd = left.svd(true, true);
+        let svd = left.clone().svd(true, true);
         let limit = RANK_TOLERANCE * svd.singular_values.max();
         if svd.singular_values.min() <= limit {
             return None;
         }
-        let solution = svd.solve(&right, limit).ok()?;
+        let mut solution = svd.solve(&right, limit).ok()?;
+        // A switch of next to no resistance makes the smallest singular value small, and the decomposition's
+        // rounding divided by it large: refining against the equations themselves takes it out again.
+        for _ in 0..REFINEMENTS {
+            solution += svd.solve(&(&right - &left * &solution), limit).ok()?;
+        }
         let rate = self.basis.transpose() * &tableau.derivative * &solution;
         let row = |index: usize| solution.row(index).transpose();
         let supply = match tableau.source {

@@ -12,7 +12,7 @@ use super::stage::{control_quantity, orbit_rows, phases_deg, waveform_figure};
 use super::table::{Align, Table};
 use super::text::quantity;
 use crate::drive::Scheme;
-use crate::limits::{Detector, Obtained};
+use crate::limits::Detector;
 use crate::study::{CheckResult, Hardware};
 use crate::units;
 use crate::verdict::{self, Check, MaskMargin};
@@ -110,19 +110,11 @@ fn headline(result: &CheckResult) -> Headline {
     let decided = deciding(result);
     Headline {
         outcome: outcome(result.judgement.verdict.outcome),
-        reason: decided.map_or_else(String::new, reason),
+        reason: decided.map_or_else(String::new, |check| {
+            format!("{}: {}", check.name, check.reason)
+        }),
         margin_db: decided.and_then(|check| check.margin_db),
     }
-}
-
-/// A check's reason, with the caution where its numbers were not read in the source.
-fn reason(check: &Check) -> String {
-    let doubt = match check.obtained {
-        Some(Obtained::Memory) => " Limit recalled from memory: check it against the document.",
-        Some(Obtained::SecondHand) => " Limit read second-hand: check it against the document.",
-        _ => "",
-    };
-    format!("{}{doubt}", check.reason)
 }
 
 fn check_rows(result: &CheckResult) -> Vec<CheckRow> {
@@ -136,10 +128,10 @@ fn check_rows(result: &CheckResult) -> Vec<CheckRow> {
         .map(|check| CheckRow {
             name: check.name.clone(),
             outcome: outcome(check.outcome),
-            found: String::new(),
-            allowed: String::new(),
+            found: check.found.clone().unwrap_or_default(),
+            allowed: check.allowed.clone().unwrap_or_default(),
             margin_db: check.margin_db,
-            reason: reason(check),
+            reason: check.reason.clone(),
         })
         .collect()
 }
@@ -548,7 +540,7 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
             own(
                 "check by doubling",
                 format!(
-                    "from {}x to {}x margins moved by {:.3} dB at most",
+                    "from {}x to {}x margins moved by {:.3} dB at most (those past 30 dB not counted)",
                     rate.convergence.against_factor, rate.factor, rate.convergence.moved_db
                 ),
             ),
@@ -648,17 +640,16 @@ pub fn text(result: &CheckResult) -> String {
     let mut checks = Table::new([
         ("", Align::Left),
         ("margin", Align::Right),
+        ("found", Align::Right),
+        ("allowed", Align::Right),
         ("check", Align::Left),
-        ("reason", Align::Left),
     ]);
     for row in check_rows(result) {
-        checks.row([
-            row.outcome.word().to_owned(),
-            row.margin_db
-                .map_or("-".to_owned(), |margin| format!("{margin:+.2} dB")),
-            row.name,
-            row.reason,
-        ]);
+        let margin = row
+            .margin_db
+            .map_or("-".to_owned(), |margin| format!("{margin:+.2} dB"));
+        let word = row.outcome.word().to_owned();
+        checks.row([word, margin, row.found, row.allowed, row.name]);
     }
     let mut numbers = Table::new([("", Align::Left), ("", Align::Right), ("", Align::Left)]);
     for row in key_rows(result) {
@@ -666,6 +657,9 @@ pub fn text(result: &CheckResult) -> String {
     }
     let word = outcome(verdict.outcome).word().to_uppercase();
     let mut text = format!("{word}: {}\n", result.study.title);
+    if let Some(check) = deciding(result) {
+        text.push_str(&format!("{}: {}\n", check.name, check.reason));
+    }
     for (title, table) in [("Checks", checks), ("Numbers", numbers)] {
         text.push_str(&format!("\n{title}\n{}\n", table.text()));
     }

@@ -14,6 +14,7 @@ pub mod check;
 pub mod documents;
 mod error;
 pub mod figures;
+pub mod limits;
 pub mod measure;
 pub mod page;
 pub mod palette;

@@ -21,6 +21,9 @@ const MAP_POINTS: usize = 201;
 /// How far a margin may move when the sampling is doubled, dB.
 const CONVERGED_DB: f64 = 0.1;
 
+/// Margins past this in both runs do not count, dB: no decision hangs on them, and numerical floors lie there.
+const FAR_WITHIN_DB: f64 = 30.0;
+
 /// How often the sampling is doubled beyond the first comparison.
 const MORE_DOUBLINGS: usize = 2;
 
@@ -71,37 +74,37 @@ pub fn check(
         signal_samples: signal.samples,
     };
 
-    // Work in units of the first factor's passes: 1 + 2 for the first comparison.
-    let first_instants = signal.samples as f64 * factor as f64;
+    // The chosen factor is held against half of it, and doubled while that moves the margins.
+    let instants = signal.samples as f64 * factor as f64;
     let mut done = 0.0;
-    let mut tick = |instants: u64| {
-        done += instants as f64 / first_instants / 2.0;
-        progress((done / 3.0).min(1.0));
+    let mut tick = |count: u64| {
+        done += count as f64 / instants / 3.0;
+        progress(done.min(1.0));
     };
-    let mut coarse = chain.run(source, &mut tick)?;
-    let mut judged = verdict_of(study, &coarse);
     let mut convergence = Convergence {
         against_factor: factor,
-        moved_db: 0.0,
+        moved_db: f64::NAN,
     };
+    chain.factor = (factor / 2).max(1);
+    let mut run = chain.run(source, &mut tick)?;
+    let mut judgement = verdict_of(study, stage.as_ref(), &run);
     for _ in 0..=MORE_DOUBLINGS {
         let instants = 2 * chain.factor as u64 * signal.samples;
-        if 2 * chain.factor > MAX_FACTOR || instants > MOST_INSTANTS {
+        if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS) {
             break;
         }
         chain.factor *= 2;
-        let fine = chain.run(source, &mut tick)?;
-        let finer = verdict_of(study, &fine);
+        let finer = chain.run(source, &mut tick)?;
+        let finer_judgement = verdict_of(study, stage.as_ref(), &finer);
         convergence = Convergence {
-            against_factor: coarse.factor,
-            moved_db: largest_move(&judged, &finer),
+            against_factor: run.factor,
+            moved_db: largest_move(&judgement, &finer_judgement),
         };
-        (coarse, judged) = (fine, finer);
+        (run, judgement) = (finer, finer_judgement);
         if convergence.moved_db <= CONVERGED_DB {
             break;
         }
     }
-    let (run, judgement) = (coarse, judged);
     let metrics = metrics(study, &run, &judgement)?;
     let mut result = CheckResult {
         study: study.clone(),
@@ -133,7 +136,7 @@ pub fn check(
 /// The map, and the stage at full supply where there is one.
 fn hardware(hardware: &Hardware) -> Result<(Map, Option<StageFacts>), StudyError> {
     let stage = match hardware {
-        Hardware::Map(map) => return Ok((map.clone(), None)),
+        Hardware::Map(map) => return Ok((Map::clone(map), None)),
         Hardware::Stage(stage) => stage,
     };
     let network = Network::new(stage)?;
@@ -179,7 +182,7 @@ fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, S
     })
 }
 
-fn verdict_of(study: &Study, run: &Run) -> Judgement {
+fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement {
     let measured = Measured {
         fine: &run.output_spectrum,
         peak_hold: &run.peak_spectra,
@@ -190,13 +193,14 @@ fn verdict_of(study: &Study, run: &Run) -> Judgement {
         evm_p95_percent: None,
         evm_p99_percent: None,
         modulation: None,
-        harmonics_dbc: None,
+        // At full supply: a linear stage keeps their ratio at any supply.
+        harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
     };
     judge(&measured, &study.limits)
 }
 
-/// The largest movement of any margin between two verdicts on the same limits, dB. A check that is decided in
-/// only one of them counts as infinite.
+/// The largest movement of any margin that counts between two verdicts on the same limits, dB. A check that is
+/// decided in only one of them counts as infinite.
 fn largest_move(before: &Judgement, after: &Judgement) -> f64 {
     let pairs = before.verdict.checks.iter().map(|check| {
         let other = after
@@ -205,6 +209,7 @@ fn largest_move(before: &Judgement, after: &Judgement) -> f64 {
             .iter()
             .find(|other| other.name == check.name && other.set == check.set);
         match (check.margin_db, other.and_then(|other| other.margin_db)) {
+            (Some(a), Some(b)) if a.min(b) > FAR_WITHIN_DB => 0.0,
             (Some(a), Some(b)) => (a - b).abs(),
             (None, None) => 0.0,
             _ => f64::INFINITY,
@@ -262,14 +267,13 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
         convergence,
         ..
     } = result.rate;
-    // The negation also catches a movement that is no number.
-    if !(convergence.moved_db <= CONVERGED_DB) {
+    if convergence.moved_db.is_nan() || convergence.moved_db > CONVERGED_DB {
         warnings.push(Warning::NotConverged {
             moved_db: convergence.moved_db,
             factor,
         });
     }
-    if convergence.against_factor == factor {
+    if factor == MAX_FACTOR {
         warnings.push(Warning::RateLimited { factor });
     }
     let highest = result.signal.peak * result.study.signal.level;

@@ -38,9 +38,9 @@ pub struct Study {
 #[derive(Debug, Clone)]
 pub enum Hardware {
     /// A stage, to be solved.
-    Stage(Stage),
+    Stage(Box<Stage>),
     /// A map from a file.
-    Map(Map),
+    Map(Box<Map>),
 }
 
 impl Hardware {
@@ -180,7 +180,7 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
                 format!("a file that can be read ({shown}: {error})"),
             )
         })?;
-        return Ok(Hardware::Stage(Stage::parse(&shown, &text)?));
+        return Ok(Hardware::Stage(Box::new(Stage::parse(&shown, &text)?)));
     }
     let (name, facts) = map_choice(root)?;
     let shown = files.display(name);
@@ -192,7 +192,9 @@ fn hardware(root: &Section<'_>, files: &dyn Files) -> Result<Hardware, Problem> 
     let reader = files.open(name).map_err(|error| {
         root.problem("map", format!("a file that can be read ({shown}: {error})"))
     })?;
-    Ok(Hardware::Map(read_map(&shown, format, reader, &facts)?))
+    Ok(Hardware::Map(Box::new(read_map(
+        &shown, format, reader, &facts,
+    )?)))
 }
 
 /// `map = "file"` or a table with the facts that the file does not hold.

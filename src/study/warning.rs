@@ -70,7 +70,7 @@ impl fmt::Display for Warning {
             Self::HeldAtEdge { fraction } => write!(
                 f,
                 "the control left the map at {} of all instants and was held at its edge: lower the level or extend the map",
-                show(100.0 * fraction, "%", 3).replace(" %", " %")
+                show(100.0 * fraction, "%", 3)
             ),
             Self::DiodeWouldConduct { lowest_v } => write!(
                 f,

@@ -1,7 +1,6 @@
 //! Power in neighbouring channels.
 
-use super::judge::{Gathered, Measured};
-use super::outcome::Outcome;
+use super::judge::{Gathered, Measured, Ruling};
 use super::reading::level_dbm;
 use super::rows::{pick, room};
 use crate::limits::{
@@ -74,11 +73,9 @@ pub(super) fn adjacent(
         })
         .collect();
     if rows.is_empty() {
-        gathered.check(
+        gathered.undecided(
             Some(set),
             set.name.clone(),
-            Outcome::Undecided,
-            None,
             format!(
                 "no row is for {} of output power and the class and channel stated",
                 show(measured.mean_w, "W", 4)
@@ -144,7 +141,7 @@ pub(super) fn pair(
     let (rows, main_w) = match read {
         Ok(read) => read,
         Err(error) => {
-            gathered.check(set, name, Outcome::Undecided, None, error.to_string());
+            gathered.undecided(set, name, error.to_string());
             return;
         }
     };
@@ -190,11 +187,11 @@ pub(super) fn pair(
         room(margin_db),
         pair.why,
     );
-    gathered.check(
-        set,
-        name,
-        Outcome::of_margin(margin_db),
-        Some(margin_db),
+    let ruling = Ruling {
+        margin_db,
+        found: format!("{level_db:.2} dB"),
+        allowed: format!("{:.2} dB", limit_dbm - main_dbm),
         reason,
-    );
+    };
+    gathered.decided(set, name, ruling);
 }

@@ -9,7 +9,7 @@ use super::outcome::{Check, MaskMargin, Outcome, Verdict};
 use super::reading::Bands;
 use super::rows;
 use super::wanted::conditions;
-use crate::limits::{Conditions, Kind, LimitSet, Limits};
+use crate::limits::{Conditions, Kind, LimitSet, Limits, Obtained};
 use crate::metrics::{AdjacentChannel, Spectrum};
 
 /// What was measured at the output.
@@ -62,27 +62,71 @@ pub(super) struct Gathered {
     pub warnings: Vec<String>,
 }
 
+/// A reading held against its limit.
+#[derive(Debug)]
+pub(super) struct Ruling {
+    /// Distance to the limit, dB; positive is within.
+    pub margin_db: f64,
+    /// The reading with its unit.
+    pub found: String,
+    /// The limit with its unit.
+    pub allowed: String,
+    /// What was read where, and what is allowed there.
+    pub reason: String,
+}
+
 impl Gathered {
-    /// Adds a check of `set`, or of the study itself; the reason says how far the set can be trusted.
-    pub(super) fn check(
+    /// Adds a check of `set`, or of the study itself, that could not be made.
+    pub(super) fn undecided(&mut self, set: Option<&LimitSet>, name: String, reason: String) {
+        self.add(set, name, Outcome::Undecided, None, None, reason);
+    }
+
+    /// Adds a check of `set`, or of the study itself, with the reading that was held against its limit.
+    pub(super) fn decided(&mut self, set: Option<&LimitSet>, name: String, ruling: Ruling) {
+        let Ruling {
+            margin_db,
+            found,
+            allowed,
+            reason,
+        } = ruling;
+        let outcome = Outcome::of_margin(margin_db);
+        self.add(
+            set,
+            name,
+            outcome,
+            Some(margin_db),
+            Some((found, allowed)),
+            reason,
+        );
+    }
+
+    /// The reason says where a set's numbers were not read in its source.
+    fn add(
         &mut self,
         set: Option<&LimitSet>,
         name: String,
         outcome: Outcome,
         margin_db: Option<f64>,
+        reading: Option<(String, String)>,
         reason: String,
     ) {
-        let caution = set.and_then(|set| set.provenance.caution());
+        let provenance = set.map(|set| &set.provenance);
+        let caution = provenance
+            .filter(|provenance| provenance.obtained != Obtained::Read)
+            .and_then(|provenance| provenance.caution());
+        let (found, allowed) = reading.unzip();
         self.checks.push(Check {
             name,
             outcome,
             margin_db: margin_db.filter(|margin| margin.is_finite()),
+            found,
+            allowed,
             reason: match caution {
                 Some(caution) => format!("{reason} ({caution})"),
                 None => reason,
             },
             set: set.map(|set| set.name.clone()),
-            obtained: set.map(|set| set.provenance.obtained),
+            obtained: provenance.map(|provenance| provenance.obtained),
         });
     }
 
@@ -103,13 +147,7 @@ pub fn judge(measured: &Measured<'_>, limits: &Limits) -> Judgement {
     if let Some(reason) = unusable(measured)
         && !limits.is_empty()
     {
-        gathered.check(
-            None,
-            "output".to_owned(),
-            Outcome::Undecided,
-            None,
-            reason.to_owned(),
-        );
+        gathered.undecided(None, "output".to_owned(), reason.to_owned());
         return gathered.finish();
     }
     let bands = Bands::new(measured.fine);

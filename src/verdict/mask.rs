@@ -1,7 +1,7 @@
 //! Masks: every segment on both sides, in its own bandwidth and against its own reference.
 
-use super::judge::{Gathered, Measured};
-use super::outcome::{MaskMargin, Outcome, Side, Unit};
+use super::judge::{Gathered, Measured, Ruling};
+use super::outcome::{MaskMargin, Side, Unit};
 use super::reading::{Bands, Reader, centres, level_dbm};
 use super::reference::{Level, level};
 use super::wanted::bandwidth_hz;
@@ -66,13 +66,7 @@ impl MaskJudge<'_> {
     }
 
     fn undecided(&self, gathered: &mut Gathered, name: String, error: NotStated) {
-        gathered.check(
-            Some(self.set),
-            name,
-            Outcome::Undecided,
-            None,
-            error.to_string(),
-        );
+        gathered.undecided(Some(self.set), name, error.to_string());
     }
 
     /// The reference of every segment that can be read, by its place in the mask, dBm.
@@ -134,7 +128,7 @@ impl MaskJudge<'_> {
                 // The same limit was judged up to where the rule changes the bandwidth.
                 gathered.warnings.push(format!("{name}: {reason}"));
             } else {
-                gathered.check(Some(self.set), name, Outcome::Undecided, None, reason);
+                gathered.undecided(Some(self.set), name, reason);
             }
             return Ok(Seen::Unseen);
         };
@@ -155,7 +149,7 @@ impl MaskJudge<'_> {
                 // The same limit was judged up to where the rule changes the bandwidth.
                 gathered.warnings.push(format!("{name}: {reason}"));
             } else {
-                gathered.check(Some(self.set), name, Outcome::Undecided, None, reason);
+                gathered.undecided(Some(self.set), name, reason);
             }
             return Ok(Seen::Unseen);
         }
@@ -212,13 +206,15 @@ impl MaskJudge<'_> {
                 show(bands.spectrum().enbw_hz, "Hz", 4)
             ));
         }
-        gathered.check(
-            Some(self.set),
-            name,
-            Outcome::of_margin(worst.margin_db),
-            Some(worst.margin_db),
+        let (level_db, limit_db, unit) = shown(&worst, reference.dbm);
+        let in_unit = |level: f64| format!("{level:.2} {}", unit.word());
+        let ruling = Ruling {
+            margin_db: worst.margin_db,
+            found: in_unit(level_db),
+            allowed: in_unit(limit_db),
             reason,
-        );
+        };
+        gathered.decided(Some(self.set), name, ruling);
         Ok(Seen::Judged)
     }
 

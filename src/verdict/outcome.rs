@@ -38,6 +38,10 @@ pub struct Check {
     pub outcome: Outcome,
     /// Distance to the limit, dB; positive is within.
     pub margin_db: Option<f64>,
+    /// The reading with its unit; none where nothing was read.
+    pub found: Option<String>,
+    /// The limit with its unit.
+    pub allowed: Option<String>,
     /// What was read where, and what is allowed there.
     pub reason: String,
     /// The set that holds the limit; none for the study's own.
@@ -63,6 +67,8 @@ impl Verdict {
                 name: "limits".to_owned(),
                 outcome: Outcome::Undecided,
                 margin_db: None,
+                found: None,
+                allowed: None,
                 reason: "no limit was named: add sets, evm_percent or acpr rows to [limits]"
                     .to_owned(),
                 set: None,

@@ -1,8 +1,7 @@
 //! Error vectors, harmonics, and the limits that a study states itself.
 
 use super::adjacent::{Pair, pair};
-use super::judge::{Gathered, Measured};
-use super::outcome::Outcome;
+use super::judge::{Gathered, Measured, Ruling};
 use super::reading::level_dbm;
 use crate::limits::{
     Applies, ErrorRow, LimitSet, Limits, Modulation, Spurious, SpuriousRow, Statistic,
@@ -61,11 +60,9 @@ pub(super) fn modulation(
         })
         .collect();
     if rows.is_empty() {
-        gathered.check(
+        gathered.undecided(
             Some(set),
             set.name.clone(),
-            Outcome::Undecided,
-            None,
             format!(
                 "the set has no row for {}: state modulation in [limits]",
                 wanted.unwrap_or("this class")
@@ -152,14 +149,15 @@ fn error_vector(
                 "{what} is {value:.3} %, limit {limit_percent:.2} %: {}{why}",
                 room(margin_db)
             );
-            gathered.check(set, name, Outcome::of_margin(margin_db), Some(margin_db), reason);
+            let ruling = Ruling {
+                margin_db,
+                found: format!("{value:.3} %"),
+                allowed: format!("{limit_percent:.2} %"),
+                reason,
+            };
+            gathered.decided(set, name, ruling);
         }
-        None => gathered.check(
-            set,
-            name,
-            Outcome::Undecided,
-            None,
-            format!(
+        None => gathered.undecided(set, name, format!(
                 "the {what} was not measured (it needs the reference signal, for symbols also the signal's format); limit {limit_percent:.2} %{why}"
             ),
         ),
@@ -199,11 +197,9 @@ pub(super) fn spurious(
         !doubled
     });
     let Some((row, why)) = pick(&rows, |row| &row.applies, limit_db, class) else {
-        gathered.check(
+        gathered.undecided(
             Some(set),
             set.name.clone(),
-            Outcome::Undecided,
-            None,
             format!(
                 "no row is for {} of output power",
                 show(measured.mean_w, "W", 4)
@@ -228,19 +224,17 @@ pub(super) fn spurious(
                 index + 2,
                 room(margin_db)
             );
-            gathered.check(
-                Some(set),
-                name,
-                Outcome::of_margin(margin_db),
-                Some(margin_db),
+            let ruling = Ruling {
+                margin_db,
+                found: format!("{level_db:.2} dB"),
+                allowed: format!("{limit:.2} dB"),
                 reason,
-            );
+            };
+            gathered.decided(Some(set), name, ruling);
         }
-        _ => gathered.check(
+        _ => gathered.undecided(
             Some(set),
             name,
-            Outcome::Undecided,
-            None,
             format!("no harmonics are known for this signal; limit {limit:.2} dB{why}"),
         ),
     }

@@ -30,10 +30,21 @@ fn mask_d_at_5_watt_is_56_99_db_below_the_peak() {
         "100 Hz (peak hold)",
         "-56.99 dB",
         "40.00 dBm",
-        "memory",
     ] {
         assert!(check.reason.contains(part), "{part}: {}", check.reason);
     }
+    assert_eq!(check.found.as_deref(), Some("-60.00 dB"));
+    assert_eq!(check.allowed.as_deref(), Some("-56.99 dB"));
+    // One number of the set was recalled: said once, for the set.
+    let warned = |text: &String| text.contains("authorized_bandwidth_hz, recalled from memory");
+    assert_eq!(
+        judgement
+            .warnings
+            .iter()
+            .filter(|text| warned(text))
+            .count(),
+        1
+    );
 }
 
 #[test]
