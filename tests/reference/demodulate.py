@@ -70,16 +70,22 @@ def single_carrier(order, a, sps, delay, cubic, noise, seed):
         n = n[(n >= 0) & (n < length)]
         x[n] += s[k] * rrc((n - middle) / sps, a)
     y = spoil(x, rng, cubic, noise)
-    # Symbols that the product's filter sees whole.
-    half = int(np.ceil(np.clip(16 / a, 32, 160)))
-    first, last = half + 2, count + 2 * span - half - 2
-    indices = np.arange(max(first - span, 0), min(last - span, count))
+    # Cut where the first and the last symbol stand: no stretch without symbols is left.
+    cut = int(span * sps)
+    y = y[cut:length - cut]
+    length = y.size
+    # Symbols that a filter of this length sees whole.
+    half = int(np.ceil(np.clip(16 / a, 32, 160) * sps))
+    offset = span * sps + delay - cut
+    first = int(np.ceil((half - offset) / sps))
+    total = int((length - 2 * half - 2) // sps) - 1
+    indices = np.arange(first, first + total)
 
     def received(shift):
         z = np.empty(indices.size, complex)
         for i, k in enumerate(indices):
-            middle = (span + k) * sps + delay + shift
-            n = np.arange(int(np.ceil(middle - half * sps)), int(np.floor(middle + half * sps)) + 1)
+            middle = k * sps + offset + shift
+            n = np.arange(int(np.ceil(middle - half)), int(np.floor(middle + half)) + 1)
             n = n[(n >= 0) & (n < length)]
             z[i] = y[n].dot(rrc((n - middle) / sps, a)) / sps
         return z
