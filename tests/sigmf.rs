@@ -154,9 +154,12 @@ fn what_cannot_be_read_is_refused_with_its_reason() {
             .to_string();
         assert!(error.contains(phrase), "{meta}: {error}");
     }
-    let error = read(&Memory(HashMap::new()), "x.sigmf")
-        .unwrap_err()
-        .to_string();
+    let error = read(
+        &Memory(HashMap::from([("x.sigmf".to_owned(), Vec::new())])),
+        "x.sigmf",
+    )
+    .unwrap_err()
+    .to_string();
     assert!(error.contains("archive"), "{error}");
 }
 

@@ -130,6 +130,7 @@ pub fn check_document(result: &CheckResult) -> Value {
         "level": result.study.signal.level,
         "sampling": result.rate,
         "metrics": result.metrics,
+        "symbols": result.symbols,
         "verdict": result.judgement.verdict,
         "warnings": result.warnings,
     })

@@ -107,6 +107,22 @@ impl FormatOptions {
         })
     }
 
+    /// As [`FormatOptions::from_section`] for the table `[signal]` of a study, where `format` may also be a table
+    /// that describes the signal itself.
+    ///
+    /// # Errors
+    /// As [`FormatOptions::from_section`].
+    pub fn from_study(section: &Section<'_>) -> Result<Self, Problem> {
+        if !matches!(section.maybe_section("format"), Ok(Some(_))) {
+            return Self::from_section(section);
+        }
+        Ok(Self {
+            format: None,
+            rate_hz: section.maybe_quantity("rate", Dimension::Frequency, Range::Positive)?,
+            full_scale: section.maybe_quantity("full_scale", Dimension::Ratio, Range::Positive)?,
+        })
+    }
+
     /// These options, completed by `other`.
     ///
     /// # Errors

@@ -3,6 +3,7 @@
 mod average;
 mod built_in;
 mod check;
+mod collect;
 mod error;
 mod load;
 mod measure;
