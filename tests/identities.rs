@@ -84,11 +84,16 @@ fn stage() -> impl Strategy<Value = Stage> {
                 switch: Switch {
                     closed_ohm,
                     open_ohm,
+                    knee: None,
+                    diode: None,
                 },
                 drain_f: 1.0 / drain,
+                drain_curve: None,
+                gate_coupling_f: 0.0,
                 driver: Driver {
                     duty,
                     anchor: Anchor::Centre,
+                    gate: None,
                 },
                 feed,
                 ladder,

@@ -4,6 +4,7 @@ mod arguments;
 mod check;
 mod completions;
 mod console;
+mod design;
 mod disk;
 mod limits;
 mod map;
@@ -53,6 +54,7 @@ pub struct Common {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Arguments),
+    Design(design::Arguments),
     Solve(solve::Arguments),
     Map(map::Arguments),
     Predistort(predistort::Arguments),
@@ -80,6 +82,7 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
     let console = Console::new(&arguments.common);
     let result = match arguments.command {
         Command::Check(arguments) => check::run(&arguments, &console),
+        Command::Design(arguments) => design::run(&arguments, &console),
         Command::Solve(arguments) => solve::run(&arguments, &console),
         Command::Map(arguments) => map::run(&arguments, &console),
         Command::Predistort(arguments) => predistort::run(&arguments, &console),

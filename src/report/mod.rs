@@ -11,6 +11,7 @@
 
 pub mod cautions;
 pub mod check;
+pub mod design;
 pub mod documents;
 mod error;
 pub mod figures;

@@ -148,12 +148,9 @@ impl Chain<'_> {
             track.clear();
             output_v.clear();
             drive.push(&samples[..count], &mut track);
-            if first < start {
-                transmitter.restart();
-            }
-            transmitter.push(&track, &mut output_v);
             let inside = |at: u64| (at.clamp(first, first + count as u64) - first) as usize;
             let range = inside(start)..inside(end);
+            transmitter.push(&track, range.clone(), &mut output_v);
             if !range.is_empty() {
                 take(&Piece {
                     first,

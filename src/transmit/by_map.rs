@@ -59,12 +59,23 @@ impl<'a> MapTransmitter<'a> {
         }
     }
 
-    /// Appends the output for every instant of `track`, peak volts across the load.
-    pub fn push(&mut self, track: &Track, output_v: &mut Vec<Complex64>) {
+    /// Appends the output for every instant of `track`, peak volts across the load. Energies are summed over the
+    /// instants in `counted` only: start and end of a signal are no part of it.
+    pub fn push(
+        &mut self,
+        track: &Track,
+        counted: std::ops::Range<usize>,
+        output_v: &mut Vec<Complex64>,
+    ) {
         let load_ohm = self.map.load_ohm();
-        for (&control, &phase) in track.control.iter().zip(&track.phase) {
+        self.energy.samples += counted.len() as u64;
+        for (at, (&control, &phase)) in track.control.iter().zip(&track.phase).enumerate() {
             let (gain_v, held) = self.map.output_held_v(control);
             let output = gain_v * phase;
+            output_v.push(output);
+            if !counted.contains(&at) {
+                continue;
+            }
             self.held += u64::from(held);
             self.highest_control = self.highest_control.max(control);
             self.energy.output_w += output.norm_sqr() / (2.0 * load_ohm);
@@ -72,15 +83,7 @@ impl<'a> MapTransmitter<'a> {
             self.energy.stage_w += stage_w;
             self.energy.driver_w += self.map.driver_held_w(control).unwrap_or(0.0);
             self.energy.modulator_w += stage_w / self.modulator.efficiency + self.modulator.idle_w;
-            output_v.push(output);
         }
-        self.energy.samples += track.len() as u64;
-    }
-
-    /// Forgets the sums: what came before was settling.
-    pub fn restart(&mut self) {
-        self.energy = Energy::default();
-        self.held = 0;
     }
 
     /// The sums so far. Powers drawn are not a number where the map knows no supply current.

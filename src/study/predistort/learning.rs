@@ -45,7 +45,7 @@ impl Model<'_> {
         padded.resize(signal.len() + 2 * reach + 2 * LATENCY, Complex64::ZERO);
         let (mut track, mut output) = (Track::default(), Vec::with_capacity(padded.len()));
         drive.push(&padded, &mut track);
-        transmitter.push(&track, &mut output);
+        transmitter.push(&track, 0..track.len(), &mut output);
         let alignment = match self.alignment {
             Some(alignment) => alignment,
             None => {
