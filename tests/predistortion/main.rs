@@ -34,6 +34,7 @@ pub fn map_of(full_v: f64, count: usize, output: impl Fn(f64) -> Complex64) -> M
                 output_v: output(part),
                 supply_v: part * full_v,
                 supply_a: None,
+                driver_w: None,
                 efficiency: None,
                 switch_peak_v: None,
                 switch_peak_a: None,
