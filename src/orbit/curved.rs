@@ -6,11 +6,11 @@ use std::sync::Arc;
 use super::balance::{Losses, Orbit};
 use super::circuit::Owner;
 use super::device::{Side, Throw};
-use super::gather::Gathered;
+use super::gather::{Gathered, Gatherer};
 use super::network::{Drive, HARMONICS, OrbitError};
 #[cfg(test)]
-use super::period::Scales;
-use super::period::{Engine, Passed, Sensitivity, State};
+use super::period::Observe;
+use super::period::{Engine, Nobody, Passed, Scales, Sensitivity, State, WORK_LIMIT};
 use super::port::{Port, Row, Source};
 use super::shooting::{self, Found};
 use super::waveform::Waveform;
@@ -62,15 +62,17 @@ impl Curved {
         engine: &mut Engine,
         supply_v: f64,
         drive: &Drive,
-        near: Option<&Found>,
+        near: Option<(State, Scales)>,
     ) -> Result<Solved, OrbitError> {
+        let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
         let found = shooting::find(
             engine,
             effective_supply_v(stage, supply_v),
             least_scale_v(stage, engine),
             near,
+            &mut gatherer,
         )?;
-        self.figures(stage, engine, supply_v, drive, found)
+        self.figures(stage, engine, supply_v, drive, found, gatherer.sums)
     }
 
     /// Every periodic state that a few different starts lead to; the first is that of [`Curved::solve`].
@@ -87,7 +89,11 @@ impl Curved {
         let first = self.solve(stage, engine, supply_v, drive, None)?;
         let scales = first.found.scales;
         let nominal = first.found.state.clone();
+        let costly = engine.work > WORK_LIMIT / 10;
         let mut all = vec![first];
+        if costly {
+            return Ok(all);
+        }
         let scaled = |factor: f64| State {
             v: nominal.v * factor,
             q: nominal.q * factor,
@@ -95,20 +101,19 @@ impl Curved {
             u: nominal.u * factor,
         };
         let mut starts: Vec<State> = [0.0, 0.3, 3.0, -1.0].map(scaled).to_vec();
-        // What the straight stage with the capacitance of a quarter and of four times the supply would do.
+        // The orbits of a quarter and of four times the supply.
         for factor in [0.25, 4.0] {
-            if let Ok(found) = shooting::find(
-                engine,
-                effective_supply_v(stage, supply_v * factor),
-                least_scale_v(stage, engine),
-                None,
-            ) {
+            let supply = effective_supply_v(stage, supply_v * factor);
+            let least = least_scale_v(stage, engine);
+            if let Ok(found) = shooting::find(engine, supply, least, None, &mut Nobody) {
                 starts.push(found.state);
             }
         }
+        let supply = effective_supply_v(stage, supply_v);
         for state in starts {
-            let supply = effective_supply_v(stage, supply_v);
-            let Ok(found) = shooting::find_from(engine, supply, state, scales) else {
+            let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
+            let found = shooting::find_from(engine, supply, state, scales, &mut gatherer);
+            let Ok(found) = found else {
                 continue;
             };
             let known = all.iter().any(|solved| {
@@ -121,7 +126,12 @@ impl Curved {
                     .fold((a.q - b.q).abs() / scales.q, f64::max);
                 apart < 1e-5
             });
-            if !known && let Ok(solved) = self.figures(stage, engine, supply_v, drive, found) {
+            if known {
+                continue;
+            }
+            if let Ok(solved) =
+                self.figures(stage, engine, supply_v, drive, found, gatherer.sums)
+            {
                 all.push(solved);
             }
         }
@@ -135,27 +145,16 @@ impl Curved {
         supply_v: f64,
         drive: &Drive,
         found: Found,
+        mut sums: Gathered,
     ) -> Result<Solved, OrbitError> {
-        let port = Arc::clone(&self.port);
-        let mut sums = Gathered::new(&port, drive.closing_rad);
-        let device = engine.device().clone();
-        let period = engine
-            .run(
-                &found.state,
-                &found.scales,
-                Some(&found.mesh),
-                Sensitivity::Left,
-                &mut |passed: &Passed<'_>| sums.watch(&device, &port, passed),
-            )
-            .map_err(|_| OrbitError::Diverged)?;
         sums.sharpen(engine, &found.scales);
-        let slope = engine.slope_before_closing(&period.end);
+        let slope = engine.slope_before_closing(&found.end);
         let orbit = orbit(
             stage,
-            &port,
+            &self.port,
             engine,
             &sums,
-            &period.end,
+            &found.end,
             slope,
             effective_supply_v(stage, supply_v),
             drive,
@@ -182,7 +181,7 @@ impl Curved {
         let mut engine = self.engine(stage, drive)?;
         let supply = effective_supply_v(stage, supply_v);
         let least = least_scale_v(stage, &engine);
-        let found = shooting::find(&mut engine, supply, least, None)?;
+        let found = shooting::find(&mut engine, supply, least, None, &mut Nobody)?;
         let port = Arc::clone(&self.port);
         let device = engine.device().clone();
         let spans = [(0.0, drive.width_rad), (drive.width_rad, TAU - drive.width_rad)];
@@ -268,7 +267,7 @@ impl Curved {
         let u = match self.port.source {
             Source::Voltage => supply_v,
             Source::Choke(_) => {
-                let found = shooting::find(&mut engine, supply_v, least, None)?;
+                let found = shooting::find(&mut engine, supply_v, least, None, &mut Nobody)?;
                 found.state.u
             }
         };
@@ -286,17 +285,21 @@ impl Curved {
             x: size,
         };
         let state = shooting::settle(&mut engine, rest, scales, periods)?;
+        let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
         let period = engine
-            .run(&state, &scales, None, Sensitivity::Carried, &mut |_| {})
+            .run(&state, &scales, None, Sensitivity::Left, &mut |passed| {
+                gatherer.step(passed);
+            })
             .map_err(|_| OrbitError::Diverged)?;
         let found = Found {
             state,
             scales: period.peaks,
             mesh: period.mesh,
             period_map: nalgebra::DMatrix::zeros(0, 0),
+            end: period.end,
         };
         Ok(self
-            .figures(stage, &mut engine, supply_v, drive, found)?
+            .figures(stage, &mut engine, supply_v, drive, found, gatherer.sums)?
             .orbit)
     }
 }

@@ -3,11 +3,13 @@
 //! Integrals use the quadrature of the collocation itself (order 9), so that energy balances to the error of the
 //! steps; extremes come from the dense output and are solved for again with a step of exactly their length.
 
+use std::sync::Arc;
+
 use num_complex::Complex64;
 
-use super::device::{Side, Throw};
+use super::device::{Device, Side, Throw};
 use super::network::HARMONICS;
-use super::period::{Engine, Passed, Scales};
+use super::period::{Engine, Observe, Passed, Scales};
 use super::port::Port;
 use super::step::Start;
 use crate::math::radau::{RADAU, STAGES, evaluate};
@@ -90,7 +92,7 @@ impl Gathered {
         }
     }
 
-    pub fn watch(&mut self, engine_device: &super::device::Device, port: &Port, passed: &Passed<'_>) {
+    fn watch(&mut self, engine_device: &Device, port: &Port, passed: &Passed<'_>) {
         let radau = &*RADAU;
         let (rest, h) = (port.rest, passed.step.length);
         let size = rest + 2;
@@ -170,6 +172,34 @@ impl Gathered {
                 }
             }
         }
+    }
+}
+
+/// Sums that follow the last period of a solution.
+#[derive(Debug)]
+pub struct Gatherer {
+    pub sums: Gathered,
+    port: Arc<Port>,
+    device: Device,
+}
+
+impl Gatherer {
+    pub fn new(port: &Arc<Port>, device: &Device, closing_rad: f64) -> Self {
+        Self {
+            sums: Gathered::new(port, closing_rad),
+            port: Arc::clone(port),
+            device: device.clone(),
+        }
+    }
+}
+
+impl Observe for Gatherer {
+    fn begin(&mut self) {
+        self.sums = Gathered::new(&self.port, self.sums.closing_rad);
+    }
+
+    fn step(&mut self, passed: &Passed<'_>) {
+        self.sums.watch(&self.device, &self.port, passed);
     }
 }
 

@@ -14,7 +14,7 @@ use super::network::{Drive, OrbitError};
 use super::port::{Port, dot};
 use super::step::{Solved, Start, Step};
 use crate::math::radau::{ESTIMATE_ORDER, RADAU, STAGES, evaluate};
-use crate::stage::Stage;
+use crate::stage::{DrainCurve, Stage};
 
 /// The finest binary fraction of a segment.
 const LEVELS: u32 = 40;
@@ -26,8 +26,13 @@ const LONGEST_RAD: f64 = TAU / 32.0;
 /// method 9: the error itself is about the estimate to the power 5/3.
 const TOLERANCE: f64 = 2e-6;
 
-/// Units of work an orbit may take: one for each step, more for new matrices. About two seconds.
-pub const WORK_LIMIT: u64 = 1_000_000;
+/// The same for a table: the third derivative of its charge jumps at every point, where the method has no higher
+/// order than the estimate.
+const TABLE_TOLERANCE: f64 = 5e-8;
+
+/// Units of work an orbit may take: one for each step of a small stage, more for large stages and for new matrices.
+/// An ordinary orbit takes some thousands; the limit is reached after about a second.
+pub const WORK_LIMIT: u64 = 250_000;
 
 /// What stops a period.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -70,6 +75,23 @@ pub struct Scales {
 
 /// Ends of steps in each segment, in finest fractions.
 pub type Mesh = Vec<Vec<u64>>;
+
+/// Someone who follows the last period of a solution.
+pub trait Observe {
+    /// A period begins; what was seen before does not count.
+    fn begin(&mut self);
+    /// A step was taken.
+    fn step(&mut self, passed: &Passed<'_>);
+}
+
+/// Looks away.
+#[derive(Debug)]
+pub struct Nobody;
+
+impl Observe for Nobody {
+    fn begin(&mut self) {}
+    fn step(&mut self, _: &Passed<'_>) {}
+}
 
 /// Whether sensitivities are wanted.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -115,6 +137,7 @@ pub struct Engine {
     segments: Vec<Segment>,
     /// 0: the straight stand-in, 1: the stage as it is.
     pub blend: f64,
+    tolerance: f64,
     stand_in: f64,
     pub work: u64,
 }
@@ -140,6 +163,10 @@ impl Engine {
             charge,
             segments: segments(stage, drive)?,
             blend: 1.0,
+            tolerance: match stage.drain_curve {
+                Some(DrainCurve::Table(_)) => TABLE_TOLERANCE,
+                _ => TOLERANCE,
+            },
             stand_in,
             port,
             work: 0,
@@ -213,7 +240,7 @@ impl Engine {
     }
 
     fn fresh(&mut self, length: f64) -> Option<Step> {
-        self.work += 10 + (self.port.rest * self.port.rest / 4) as u64;
+        self.work += 4 + (self.port.rest * self.port.rest / 2) as u64;
         Step::new(&self.port, length)
     }
 
@@ -281,7 +308,7 @@ impl Engine {
         let mut before: Option<(f64, [f64; STAGES], f64)> = None;
         let (mut first, mut flips, mut mesh_at) = (true, 0, 0);
         loop {
-            self.work += 1;
+            self.work += 1 + (self.port.rest / 4) as u64;
             if self.work > WORK_LIMIT {
                 return Err(Stop::RanOut);
             }
@@ -494,7 +521,7 @@ impl Engine {
         let last = STAGES - 1;
         let volt = charge / (solved.c[last] + weight * (solved.g[last] - port.alpha));
         let rest = step.rest_error(begin, &solved.v);
-        let error = (volt.abs() / scales.v).max(rest / scales.x) / TOLERANCE;
+        let error = (volt.abs() / scales.v).max(rest / scales.x) / self.tolerance;
         if error.is_finite() { error.max(1e-12) } else { 1e6 }
     }
 

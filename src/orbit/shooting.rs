@@ -10,17 +10,22 @@ use std::f64::consts::TAU;
 use nalgebra::{DMatrix, DVector};
 
 use super::network::OrbitError;
-use super::period::{Engine, Mesh, Period, Scales, Sensitivity, State, Stop};
+use super::period::{
+    Engine, Mesh, Observe, Period, Scales, Sensitivity, State, Stop,
+};
 use super::port::Source;
 
 /// Newton steps before giving up.
 const MAX_NEWTON: usize = 24;
 
-/// The correction below which the last one is made and the state called periodic, relative to the scales.
-const CLOSE: f64 = 1e-8;
+/// The correction after which the state should be periodic, relative to the scales: convergence is quadratic.
+const CLOSE: f64 = 1e-7;
 
-/// How far the state may be from itself one period later, relative to the scales.
+/// How far the rest may be from itself one period later, relative to its scale.
 const PERIODIC: f64 = 1e-11;
+
+/// The same for the charge. It moves on and off by at least twice its scale, so that this keeps the promise of 1e-12.
+const PERIODIC_CHARGE: f64 = 1.5e-12;
 
 /// The correction below which steps are frozen.
 const FREEZE: f64 = 1e-2;
@@ -39,6 +44,8 @@ pub struct Found {
     pub mesh: Mesh,
     /// What one period does to a deviation of charge and rest.
     pub period_map: DMatrix<f64>,
+    /// The state one period later.
+    pub end: State,
 }
 
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -77,29 +84,30 @@ pub fn find(
     engine: &mut Engine,
     supply_v: f64,
     least_scale_v: f64,
-    near: Option<&Found>,
+    near: Option<(State, Scales)>,
+    observer: &mut dyn Observe,
 ) -> Result<Found, OrbitError> {
     engine.work = 0;
     engine.blend = 1.0;
-    if let Some(near) = near {
-        match newton(engine, near.state.clone(), near.scales, supply_v) {
+    if let Some((state, scales)) = near {
+        match newton(engine, state, scales, supply_v, observer) {
             Ok(found) => return Ok(found),
             Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
             Err(_) => {}
         }
     }
     let (state, scales) = straight(engine, supply_v, least_scale_v)?;
-    let failed = match newton(engine, state.clone(), scales, supply_v) {
+    let failed = match newton(engine, state.clone(), scales, supply_v, observer) {
         Ok(found) => return Ok(found),
         Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
         Err(fail) => fail,
     };
-    if let Some(found) = bend(engine, state.clone(), scales, supply_v)? {
+    if let Some(found) = bend(engine, state.clone(), scales, supply_v, observer)? {
         return Ok(found);
     }
     engine.blend = 1.0;
     let settled = settle(engine, state, scales, SETTLING)?;
-    match newton(engine, settled, scales, supply_v) {
+    match newton(engine, settled, scales, supply_v, observer) {
         Ok(found) => Ok(found),
         Err(Fail::RanOut) => Err(Fail::RanOut.into()),
         // The first attempt's reason says most.
@@ -107,7 +115,7 @@ pub fn find(
     }
 }
 
-/// The orbit from rest, for a search of further solutions.
+/// The orbit near `state`, for a search of further solutions.
 ///
 /// # Errors
 /// As [`find`].
@@ -116,11 +124,12 @@ pub fn find_from(
     supply_v: f64,
     mut state: State,
     scales: Scales,
+    observer: &mut dyn Observe,
 ) -> Result<Found, OrbitError> {
     engine.work = 0;
     engine.blend = 1.0;
     engine.settle_voltage(&mut state);
-    Ok(newton(engine, state, scales, supply_v)?)
+    Ok(newton(engine, state, scales, supply_v, observer)?)
 }
 
 /// The stage with a fixed capacitance, a straight switch and no diode: linear, so one Newton step from rest.
@@ -165,6 +174,7 @@ fn bend(
     mut state: State,
     mut scales: Scales,
     supply_v: f64,
+    observer: &mut dyn Observe,
 ) -> Result<Option<Found>, OrbitError> {
     let (mut blend, mut step) = (0.0f64, 0.25f64);
     while step > 1e-3 {
@@ -172,7 +182,7 @@ fn bend(
         engine.blend = next;
         let mut start = state.clone();
         start.q = engine.charge(start.v).0;
-        match newton(engine, start, scales, supply_v) {
+        match newton(engine, start, scales, supply_v, observer) {
             Ok(found) if next == 1.0 => return Ok(Some(found)),
             Ok(found) => {
                 state = found.state;
@@ -222,6 +232,7 @@ fn newton(
     mut state: State,
     mut scales: Scales,
     supply_v: f64,
+    observer: &mut dyn Observe,
 ) -> Result<Found, Fail> {
     engine.settle_voltage(&mut state);
     if engine.port.source == Source::Voltage {
@@ -268,17 +279,34 @@ fn newton(
         }
         // Frozen steps that turn out too long for this state are chosen again.
         let fine = period.error <= COARSE;
-        if relative <= CLOSE && mesh.is_some() && size <= PERIODIC && fine {
-            return Ok(Found {
-                state,
-                scales,
-                mesh: period.mesh,
-                period_map,
-            });
-        }
         last = Some((state.clone(), change.clone(), 1.0, size));
         apply(engine, &mut state, &change, 1.0);
         mesh = (relative < FREEZE && fine).then_some(period.mesh);
+        if relative <= CLOSE && mesh.is_some() {
+            observer.begin();
+            let run = engine.run(
+                &state,
+                &scales,
+                mesh.as_ref(),
+                Sensitivity::Left,
+                &mut |passed| observer.step(passed),
+            );
+            let period = match run {
+                Ok(period) => period,
+                Err(Stop::RanOut) => return Err(Fail::RanOut),
+                Err(Stop::NoStep) => return Err(Fail::Diverged),
+            };
+            let parts = residual_parts(engine, &state, &period, supply_v, &scales);
+            if parts[0] <= PERIODIC_CHARGE && parts[1] <= PERIODIC && parts[2] <= PERIODIC {
+                return Ok(Found {
+                    state,
+                    scales,
+                    mesh: period.mesh,
+                    period_map,
+                    end: period.end,
+                });
+            }
+        }
     }
     Err(Fail::Diverged)
 }
@@ -297,6 +325,31 @@ fn residual(engine: &Engine, state: &State, period: &Period, supply_v: f64) -> D
     residual
 }
 
+/// The largest residual of charge, of the rest and of the choke's condition, each over its scale.
+fn residual_parts(
+    engine: &Engine,
+    state: &State,
+    period: &Period,
+    supply_v: f64,
+    scales: &Scales,
+) -> [f64; 3] {
+    let rest = engine.port.rest;
+    let mut parts = [0.0f64; 3];
+    for (i, r) in residual(engine, state, period, supply_v).iter().enumerate() {
+        let (part, scale) = match i {
+            0 => (0, scales.q),
+            _ if i <= rest => (1, scales.x),
+            _ => (2, scales.v),
+        };
+        let size = r.abs() / scale;
+        // The comparison keeps what is not a number.
+        if !(size <= parts[part]) {
+            parts[part] = size;
+        }
+    }
+    parts
+}
+
 fn residual_size(
     engine: &Engine,
     state: &State,
@@ -304,16 +357,9 @@ fn residual_size(
     supply_v: f64,
     scales: &Scales,
 ) -> f64 {
-    let rest = engine.port.rest;
-    residual(engine, state, period, supply_v)
+    residual_parts(engine, state, period, supply_v, scales)
         .iter()
-        .enumerate()
-        .map(|(i, r)| match i {
-            0 => r.abs() / scales.q,
-            _ if i <= rest => r.abs() / scales.x,
-            _ => r.abs() / scales.v,
-        })
-        .fold(0.0, |worst: f64, r| if r > worst || r.is_nan() { r } else { worst })
+        .fold(0.0, |worst: f64, &r| if r > worst || r.is_nan() { r } else { worst })
 }
 
 /// The Newton step, and the map of one period without the choke's condition.

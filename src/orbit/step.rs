@@ -10,8 +10,6 @@
 //! with the current `s` of the gate's edge and the device's current `i`. All matrices depend on the step's length
 //! only and are kept.
 
-use nalgebra::DMatrix;
-
 use super::port::{Port, dot};
 use crate::math::radau::{RADAU, STAGES};
 
@@ -60,45 +58,60 @@ pub struct Solved {
 /// The most iterations of one step: convergence is quadratic, more than this many means too long a step.
 const MAX_ITERATIONS: usize = 12;
 
+/// The change of the voltages, relative to their scale, after which they are exact to rounding: convergence is
+/// quadratic, with a factor of the capacitance's relative slope.
+const ACCEPTED: f64 = 1e-7;
+
 impl Step {
     pub fn new(port: &Port, length: f64) -> Option<Self> {
         let n = port.rest;
         let radau = &*RADAU;
         let s = STAGES;
         let h = length;
+        // Columns: x_0, the stages' v, u.
         let columns = n + s + 1;
-        let mut stages = DMatrix::zeros(s * n, columns);
-        if n > 0 {
-            let system = DMatrix::from_fn(s * n, s * n, |row, column| {
-                let (i, p, j, q) = (row / n, row % n, column / n, column % n);
+        let mut stages = Eliminated::new(s * n, columns, |row, column| {
+            let (i, p) = (row / n, row % n);
+            if column < s * n {
+                let (j, q) = (column / n, column % n);
                 let unit = if row == column { 1.0 } else { 0.0 };
-                unit - h * radau.a[i][j] * port.b[p * n + q]
-            });
-            let right = DMatrix::from_fn(s * n, columns, |row, column| {
-                let (i, p) = (row / n, row % n);
-                if column < n {
-                    f64::from(u8::from(p == column))
-                } else if column < n + s {
-                    h * radau.a[i][column - n] * port.c[p]
-                } else {
-                    h * radau.nodes[i] * port.d[p]
-                }
-            });
-            stages = system.lu().solve(&right)?;
+                return unit - h * radau.a[i][j] * port.b[p * n + q];
+            }
+            let column = column - s * n;
+            if column < n {
+                f64::from(u8::from(p == column))
+            } else if column < n + s {
+                h * radau.a[i][column - n] * port.c[p]
+            } else {
+                h * radau.nodes[i] * port.d[p]
+            }
+        });
+        stages.solve()?;
+        let mut phi = Vec::with_capacity(s * n * n);
+        let mut psi = Vec::with_capacity(s * n * s);
+        let mut chi = Vec::with_capacity(s * n);
+        for row in 0..s * n {
+            let row = stages.row(row);
+            phi.extend_from_slice(&row[..n]);
+            psi.extend_from_slice(&row[n..n + s]);
+            chi.push(row[n + s]);
         }
-        let phi = (0..s * n * n)
-            .map(|at| stages[(at / n, at % n)])
-            .collect();
-        let psi = (0..s * n * s)
-            .map(|at| stages[(at / s, n + at % s)])
-            .collect();
-        let chi = (0..s * n).map(|at| stages[(at, n + s)]).collect();
-        // h A (a . X) for every column.
-        let seen = |j: usize, column: usize| -> f64 {
-            (0..n).map(|p| port.a[p] * stages[(j * n + p, column)]).sum()
-        };
+        // a . X for every column, then h A times that.
+        let mut seen = vec![0.0; s * columns];
+        for j in 0..s {
+            for p in 0..n {
+                for (sum, x) in seen[j * columns..(j + 1) * columns]
+                    .iter_mut()
+                    .zip(stages.row(j * n + p))
+                {
+                    *sum += port.a[p] * x;
+                }
+            }
+        }
         let gathered = |i: usize, column: usize| -> f64 {
-            (0..s).map(|j| h * radau.a[i][j] * seen(j, column)).sum()
+            (0..s)
+                .map(|j| h * radau.a[i][j] * seen[j * columns + column])
+                .sum()
         };
         let k = (0..s * n).map(|at| gathered(at / n, at % n)).collect();
         let m = std::array::from_fn(|i| {
@@ -124,18 +137,21 @@ impl Step {
     }
 
     /// The filtered error of the rest as a linear function of what the step knows.
-    fn estimate(&mut self, port: &Port, stages: &DMatrix<f64>) -> Option<()> {
+    fn estimate(&mut self, port: &Port, stages: &Eliminated) -> Option<()> {
         let (n, s, h) = (self.rest, STAGES, self.length);
         let radau = &*RADAU;
         let weight = h * radau.start_weight;
-        if n == 0 {
-            return Some(());
-        }
         let sum: f64 = radau.error.iter().sum();
         // Columns: x_0, v_0, the stages' v, u.
-        let right = DMatrix::from_fn(n, n + s + 2, |p, column| {
+        let mut error = Eliminated::new(n, n + s + 2, |p, column| {
+            if column < n {
+                return f64::from(u8::from(p == column)) - weight * port.b[p * n + column];
+            }
+            let column = column - n;
             let folded = |column: usize| -> f64 {
-                (0..s).map(|i| radau.error[i] * stages[(i * n + p, column)]).sum()
+                (0..s)
+                    .map(|i| radau.error[i] * stages.row(i * n + p)[column])
+                    .sum()
             };
             if column < n {
                 let unit = if p == column { sum } else { 0.0 };
@@ -148,15 +164,13 @@ impl Step {
                 weight * port.d[p] + folded(n + s)
             }
         });
-        let filter = DMatrix::from_fn(n, n, |p, q| {
-            f64::from(u8::from(p == q)) - weight * port.b[p * n + q]
-        });
-        let error = filter.lu().solve(&right)?;
-        self.error_x = (0..n * n).map(|at| error[(at / n, at % n)]).collect();
-        self.error_v = (0..n * (s + 1))
-            .map(|at| error[(at / (s + 1), n + at % (s + 1))])
-            .collect();
-        self.error_u = (0..n).map(|p| error[(p, n + s + 1)]).collect();
+        error.solve()?;
+        for p in 0..n {
+            let row = error.row(p);
+            self.error_x.extend_from_slice(&row[..n]);
+            self.error_v.extend_from_slice(&row[n..=n + s]);
+            self.error_u.push(row[n + s + 1]);
+        }
         Some(())
     }
 
@@ -214,7 +228,7 @@ impl Step {
             if !change.is_finite() || (iteration > 3 && change > 2.0 * last) {
                 return None;
             }
-            if change <= 1e-9 * scale_v {
+            if change <= ACCEPTED * scale_v {
                 for j in 0..STAGES {
                     // To first order, which is to rounding here.
                     solved.q[j] += solved.c[j] * miss[j];
@@ -314,5 +328,99 @@ impl Factors {
             }
             right[i] /= self.lu[i][i];
         }
+    }
+}
+
+/// A system of equations with its right sides beside it, row by row.
+#[derive(Debug)]
+struct Eliminated {
+    size: usize,
+    width: usize,
+    entries: Vec<f64>,
+}
+
+impl Eliminated {
+    fn new(size: usize, sides: usize, entry: impl Fn(usize, usize) -> f64) -> Self {
+        let width = size + sides;
+        let mut entries = Vec::with_capacity(size * width);
+        for row in 0..size {
+            for column in 0..width {
+                entries.push(entry(row, column));
+            }
+        }
+        Self {
+            size,
+            width,
+            entries,
+        }
+    }
+
+    /// Elimination with partial pivoting, the solutions left in place of the right sides.
+    fn solve(&mut self) -> Option<()> {
+        let (size, width) = (self.size, self.width);
+        for pivot in 0..size {
+            let mut best = pivot;
+            for row in pivot + 1..size {
+                if self.entries[row * width + pivot].abs()
+                    > self.entries[best * width + pivot].abs()
+                {
+                    best = row;
+                }
+            }
+            if best != pivot {
+                for column in pivot..width {
+                    self.entries
+                        .swap(pivot * width + column, best * width + column);
+                }
+            }
+            let (above, below) = self.entries.split_at_mut((pivot + 1) * width);
+            let head_row = &mut above[pivot * width..];
+            let head = head_row[pivot];
+            if head == 0.0 || !head.is_finite() {
+                return None;
+            }
+            for entry in &mut head_row[pivot + 1..] {
+                *entry /= head;
+            }
+            for row in below.chunks_exact_mut(width) {
+                let factor = row[pivot];
+                if factor != 0.0 {
+                    for (entry, over) in row[pivot + 1..].iter_mut().zip(&head_row[pivot + 1..]) {
+                        *entry -= factor * over;
+                    }
+                }
+            }
+        }
+        for pivot in (1..size).rev() {
+            let (above, below) = self.entries.split_at_mut(pivot * width);
+            let solved = &below[size..width];
+            for row in above.chunks_exact_mut(width) {
+                let factor = row[pivot];
+                for (entry, under) in row[size..].iter_mut().zip(solved) {
+                    *entry -= factor * under;
+                }
+            }
+        }
+        Some(())
+    }
+
+    /// The solutions of one row.
+    fn row(&self, row: usize) -> &[f64] {
+        &self.entries[row * self.width + self.size..(row + 1) * self.width]
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn elimination_solves_a_system_that_needs_pivoting() {
+        // 2 y = 4, x + y = 5 beside a second side: solutions (3, 2) and (-1, 1).
+        let rows = [[0.0, 2.0, 4.0, 2.0], [1.0, 1.0, 5.0, 0.0]];
+        let mut system = Eliminated::new(2, 2, |row, column| rows[row][column]);
+        system.solve().unwrap();
+        assert_eq!(system.row(0), [3.0, -1.0]);
+        assert_eq!(system.row(1), [2.0, 1.0]);
     }
 }
