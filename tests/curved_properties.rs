@@ -24,7 +24,12 @@ fn device() -> impl Strategy<Value = (String, String, String)> {
         format!("junction = {{ zero_bias = {c}, potential = {phi}, grading = {m} }}\n")
     });
     let fixed = around(20e-12, 4.0).prop_map(|c| format!("capacitance = {c}\n"));
-    let coupling = (around(2e-12, 3.0), around(3.0, 1.0), around(2e-10, 2.0), around(2e-10, 2.0));
+    let coupling = (
+        around(2e-12, 3.0),
+        around(3.0, 1.0),
+        around(2e-10, 2.0),
+        around(2e-10, 2.0),
+    );
     let coupled = prop_oneof![
         Just((String::new(), String::new())),
         coupling.prop_map(|(c, swing, rise, fall)| (
@@ -48,7 +53,8 @@ fn ladder() -> impl Strategy<Value = String> {
             .prop_map(|(l, c)| format!("inductance = {l}, capacitance = {c}")),
     ];
     let arm = prop_oneof![Just("series"), Just("shunt")];
-    let rung = (arm, part).prop_map(|(arm, part)| format!("[[load.ladder]]\n{arm} = {{ {part} }}\n"));
+    let rung =
+        (arm, part).prop_map(|(arm, part)| format!("[[load.ladder]]\n{arm} = {{ {part} }}\n"));
     prop::collection::vec(rung, 0..6).prop_map(|rungs| rungs.concat())
 }
 

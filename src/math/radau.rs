@@ -47,15 +47,22 @@ impl Radau {
         let power = |k: i32| move |i: usize, j: usize| nodes[i].powi(j as i32 + k);
         // sum_k coefficient[k] c^k through values at the nodes: V coefficient = values.
         let vandermonde = DMatrix::from_fn(STAGES, STAGES, power(0));
-        let integrals =
-            DMatrix::from_fn(STAGES, STAGES, |i, j| nodes[i].powi(j as i32 + 1) / (j + 1) as f64);
-        let inverse = vandermonde.clone().try_inverse().unwrap_or_else(|| DMatrix::identity(STAGES, STAGES));
+        let integrals = DMatrix::from_fn(STAGES, STAGES, |i, j| {
+            nodes[i].powi(j as i32 + 1) / (j + 1) as f64
+        });
+        let inverse = vandermonde
+            .clone()
+            .try_inverse()
+            .unwrap_or_else(|| DMatrix::identity(STAGES, STAGES));
         let a = integrals * &inverse;
         let mut right = DVector::zeros(STAGES);
         right[0] = -START_WEIGHT;
         // sum_j e'_j c_j^(k-1) = -g for k = 1 and 0 above; then e = A^-T e'.
         let weights = inverse.transpose() * right;
-        let from_differences = a.clone().try_inverse().unwrap_or_else(|| DMatrix::identity(STAGES, STAGES));
+        let from_differences = a
+            .clone()
+            .try_inverse()
+            .unwrap_or_else(|| DMatrix::identity(STAGES, STAGES));
         let error = from_differences.transpose() * weights;
         let poly = DMatrix::from_fn(STAGES, STAGES, power(1))
             .try_inverse()
@@ -136,7 +143,10 @@ mod tests {
             let sum: f64 = (0..STAGES)
                 .map(|j| radau.a[STAGES - 1][j] * radau.nodes[j].powi(power as i32))
                 .sum();
-            assert!((sum - 1.0 / (power + 1) as f64).abs() < 2e-14, "power {power}: {sum}");
+            assert!(
+                (sum - 1.0 / (power + 1) as f64).abs() < 2e-14,
+                "power {power}: {sum}"
+            );
         }
         // Not one more: the test would pass for any rule otherwise.
         let past = 2 * STAGES as i32;

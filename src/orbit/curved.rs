@@ -118,20 +118,17 @@ impl Curved {
             };
             let known = all.iter().any(|solved| {
                 let (a, b) = (&solved.found.state, &found.state);
-                let apart = a
-                    .x
-                    .iter()
-                    .zip(&b.x)
-                    .map(|(a, b)| (a - b).abs() / scales.x)
-                    .fold((a.q - b.q).abs() / scales.q, f64::max);
+                let apart =
+                    a.x.iter()
+                        .zip(&b.x)
+                        .map(|(a, b)| (a - b).abs() / scales.x)
+                        .fold((a.q - b.q).abs() / scales.q, f64::max);
                 apart < 1e-5
             });
             if known {
                 continue;
             }
-            if let Ok(solved) =
-                self.figures(stage, engine, supply_v, drive, found, gatherer.sums)
-            {
+            if let Ok(solved) = self.figures(stage, engine, supply_v, drive, found, gatherer.sums) {
                 all.push(solved);
             }
         }
@@ -184,7 +181,10 @@ impl Curved {
         let found = shooting::find(&mut engine, supply, least, None, &mut Nobody)?;
         let port = Arc::clone(&self.port);
         let device = engine.device().clone();
-        let spans = [(0.0, drive.width_rad), (drive.width_rad, TAU - drive.width_rad)];
+        let spans = [
+            (0.0, drive.width_rad),
+            (drive.width_rad, TAU - drive.width_rad),
+        ];
         let instant = |index: usize| {
             let (from, length) = spans[index / points];
             from + length * (index % points) as f64 / (points - 1) as f64
@@ -199,14 +199,20 @@ impl Curved {
                 Sensitivity::Left,
                 &mut |passed: &Passed<'_>| {
                     let throw_of = |index: usize| {
-                        if index < points { Throw::Closed } else { Throw::Open }
+                        if index < points {
+                            Throw::Closed
+                        } else {
+                            Throw::Open
+                        }
                     };
                     let h = passed.step.length;
                     let start = &passed.start;
                     let mut loads = [0.0; STAGES];
                     let mut x = vec![0.0; port.rest];
                     for (i, load) in loads.iter_mut().enumerate() {
-                        passed.step.rest_at(i, start.x, &passed.solved.v, start.u, &mut x);
+                        passed
+                            .step
+                            .rest_at(i, start.x, &passed.solved.v, start.u, &mut x);
                         *load = port.load.at(passed.solved.v[i], &x, start.u);
                     }
                     let load_start = port.load.at(start.v, start.x, start.u);
@@ -378,7 +384,13 @@ fn orbit(
         }
         sum.max(0.0)
     };
-    let mean = |row: &Row| row.at(sums.first[0], &sums.first[1..size - 1], sums.first[size - 1]) / TAU;
+    let mean = |row: &Row| {
+        row.at(
+            sums.first[0],
+            &sums.first[1..size - 1],
+            sums.first[size - 1],
+        ) / TAU
+    };
     let output_v = sums.harmonics[0] / PI;
     let output_w = output_v.norm_sqr() / (2.0 * load_ohm);
     let supply_a = mean(&port.supply) / load_ohm;
@@ -477,8 +489,7 @@ fn orbit(
 
 /// What the gate itself costs: its charge at the swing, each period.
 pub fn gate_charge_w(stage: &Stage) -> f64 {
-    stage
-        .driver
-        .gate
-        .map_or(0.0, |gate| gate.charge_c * gate.swing_v * stage.frequency_hz)
+    stage.driver.gate.map_or(0.0, |gate| {
+        gate.charge_c * gate.swing_v * stage.frequency_hz
+    })
 }

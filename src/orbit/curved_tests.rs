@@ -73,14 +73,42 @@ fn a_straight_table_gives_the_linear_orbit() {
         let size = expected.output_v.norm();
         close((orbit.output_v - expected.output_v).norm(), 0.0, size);
         close(orbit.supply_w, expected.supply_w, expected.supply_w);
-        close(orbit.losses.closed_switch, expected.losses.closed_switch, expected.supply_w);
-        close(orbit.losses.open_switch, expected.losses.open_switch, expected.supply_w);
-        close(orbit.losses.ladder, expected.losses.ladder, expected.supply_w);
+        close(
+            orbit.losses.closed_switch,
+            expected.losses.closed_switch,
+            expected.supply_w,
+        );
+        close(
+            orbit.losses.open_switch,
+            expected.losses.open_switch,
+            expected.supply_w,
+        );
+        close(
+            orbit.losses.ladder,
+            expected.losses.ladder,
+            expected.supply_w,
+        );
         close(orbit.losses.feed, expected.losses.feed, expected.supply_w);
-        close(orbit.losses.harmonics, expected.losses.harmonics, expected.supply_w);
-        close(orbit.switch_peak_v, expected.switch_peak_v, expected.switch_peak_v);
-        close(orbit.switch_min_v, expected.switch_min_v, expected.switch_peak_v);
-        close(orbit.switch_peak_a, expected.switch_peak_a, expected.switch_peak_a);
+        close(
+            orbit.losses.harmonics,
+            expected.losses.harmonics,
+            expected.supply_w,
+        );
+        close(
+            orbit.switch_peak_v,
+            expected.switch_peak_v,
+            expected.switch_peak_v,
+        );
+        close(
+            orbit.switch_min_v,
+            expected.switch_min_v,
+            expected.switch_peak_v,
+        );
+        close(
+            orbit.switch_peak_a,
+            expected.switch_peak_a,
+            expected.switch_peak_a,
+        );
         close(orbit.closing_v, expected.closing_v, expected.switch_peak_v);
         close(
             orbit.closing_slope_v_per_s,
@@ -144,8 +172,16 @@ fn a_tracked_orbit_is_the_cold_one() {
             let cold = network.orbit(supply_v, &drive).unwrap();
             let apart = (tracked.output_v - cold.output_v).norm() / cold.output_v.norm();
             assert!(apart < 1e-7, "{supply_v}: {apart:e}");
-            assert!(tracked.charge_residual < 1e-12, "{:e}", tracked.charge_residual);
-            assert!(tracked.energy_residual.abs() < 1e-6, "{:e}", tracked.energy_residual);
+            assert!(
+                tracked.charge_residual < 1e-12,
+                "{:e}",
+                tracked.charge_residual
+            );
+            assert!(
+                tracked.energy_residual.abs() < 1e-6,
+                "{:e}",
+                tracked.energy_residual
+            );
         }
     }
 }
@@ -187,7 +223,9 @@ fn edges_that_do_not_fit_are_named() {
         gate.rise_s = 9e-9;
     }
     let network = Network::new(&stage).unwrap();
-    let error = network.orbit(6.0, &Drive::new(&stage.driver, 0.45)).unwrap_err();
+    let error = network
+        .orbit(6.0, &Drive::new(&stage.driver, 0.45))
+        .unwrap_err();
     assert!(error.to_string().contains("rise and fall"), "{error}");
 }
 
@@ -199,5 +237,8 @@ fn settling_follows_the_period_map() {
     let drive = Drive::new(&stage.driver, 0.45);
     let settling_s = network.settling_s(&drive);
     // Loaded Q near 5: some periods, not many.
-    assert!(settling_s > 0.3 / 169.4e6 && settling_s < 30.0 / 169.4e6, "{settling_s:e}");
+    assert!(
+        settling_s > 0.3 / 169.4e6 && settling_s < 30.0 / 169.4e6,
+        "{settling_s:e}"
+    );
 }

@@ -90,9 +90,10 @@ impl Device {
     /// Current and conductance of the diode on a side of its corner.
     pub fn diode(&self, side: Side, volt: f64) -> (f64, f64) {
         match (side, self.diode) {
-            (Side::Below, Some(corner)) => {
-                (corner.conductance * (volt - corner.volt), corner.conductance)
-            }
+            (Side::Below, Some(corner)) => (
+                corner.conductance * (volt - corner.volt),
+                corner.conductance,
+            ),
             _ => (0.0, 0.0),
         }
     }
@@ -130,7 +131,8 @@ mod tests {
         assert!((device.channel(Throw::Closed, 1e9).0 - 2.0).abs() < 1e-12);
         for v in [-3.0, -0.25, -0.01, 0.0, 0.05, 0.199, 0.201, 1.0, 40.0] {
             let h = 1e-6;
-            let rise = device.channel(Throw::Closed, v + h).0 - device.channel(Throw::Closed, v - h).0;
+            let rise =
+                device.channel(Throw::Closed, v + h).0 - device.channel(Throw::Closed, v - h).0;
             let slope = device.channel(Throw::Closed, v).1;
             assert!((rise / (2.0 * h) - slope).abs() < 1e-6, "{v}");
         }

@@ -107,7 +107,9 @@ impl Gathered {
             let v = passed.solved.v[i];
             let w = &mut self.scratch;
             w[0] = v;
-            passed.step.rest_at(i, start.x, &passed.solved.v, start.u, &mut w[1..=rest]);
+            passed
+                .step
+                .rest_at(i, start.x, &passed.solved.v, start.u, &mut w[1..=rest]);
             w[rest + 1] = start.u;
             for p in 0..size {
                 self.first[p] += weight * w[p];
@@ -125,10 +127,10 @@ impl Gathered {
             self.diode += weight * diode * v;
             self.edges += weight * start.source * v;
             let x = &w[1..=rest];
-            let flow = port.alpha * v + super::port::dot(&port.a, x) + port.beta * start.u
-                + start.source
-                - channel
-                - diode;
+            let flow =
+                port.alpha * v + super::port::dot(&port.a, x) + port.beta * start.u + start.source
+                    - channel
+                    - diode;
             self.charge[0] += weight * flow;
             self.charge[1] += weight * flow.abs();
             let load = port.load.at(v, x, start.u);

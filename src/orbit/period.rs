@@ -194,10 +194,7 @@ impl Engine {
         let (i, g) = self.device.current(throw, side, v);
         let (si, sg) = self.straight.current(throw, Side::Above, v);
         let rest = 1.0 - self.blend;
-        (
-            rest * si + self.blend * i,
-            rest * sg + self.blend * g,
-        )
+        (rest * si + self.blend * i, rest * sg + self.blend * g)
     }
 
     /// The switch and its diode.
@@ -319,7 +316,10 @@ impl Engine {
             };
             let target = match given {
                 Some(mesh) => {
-                    while mesh.get(mesh_at).is_some_and(|&end| end as f64 * unit <= here) {
+                    while mesh
+                        .get(mesh_at)
+                        .is_some_and(|&end| end as f64 * unit <= here)
+                    {
                         mesh_at += 1;
                     }
                     mesh.get(mesh_at).copied().unwrap_or(END)
@@ -364,7 +364,7 @@ impl Engine {
             };
             let error = self.error(&step, &begin, &solved, throw, side, scales);
             let factor = (0.9 * error.powf(-1.0 / (ESTIMATE_ORDER + 1) as f64)).clamp(0.1, 8.0);
-            if given.is_none() && !(error <= 1.0) {
+            if given.is_none() && error > 1.0 {
                 level = level_of(h * factor).max(level_of(h) + 1);
                 if level > LEVELS {
                     return Err(Stop::NoStep);
@@ -511,9 +511,9 @@ impl Engine {
         let radau = &*RADAU;
         let port = &self.port;
         let weight = step.length * radau.start_weight;
-        let flow = port.alpha * begin.v + dot(&port.a, begin.x) + port.beta * begin.u
-            + begin.source
-            - self.current(throw, side, begin.v).0;
+        let flow =
+            port.alpha * begin.v + dot(&port.a, begin.x) + port.beta * begin.u + begin.source
+                - self.current(throw, side, begin.v).0;
         let mut charge = weight * flow;
         for i in 0..STAGES {
             charge += radau.error[i] * (solved.q[i] - begin.q);
@@ -522,7 +522,11 @@ impl Engine {
         let volt = charge / (solved.c[last] + weight * (solved.g[last] - port.alpha));
         let rest = step.rest_error(begin, &solved.v);
         let error = (volt.abs() / scales.v).max(rest / scales.x) / self.tolerance;
-        if error.is_finite() { error.max(1e-12) } else { 1e6 }
+        if error.is_finite() {
+            error.max(1e-12)
+        } else {
+            1e6
+        }
     }
 
     /// Where in a step (0..1) the drain first leaves its side of the diode's corner.

@@ -10,9 +10,7 @@ use std::f64::consts::TAU;
 use nalgebra::{DMatrix, DVector};
 
 use super::network::OrbitError;
-use super::period::{
-    Engine, Mesh, Observe, Period, Scales, Sensitivity, State, Stop,
-};
+use super::period::{Engine, Mesh, Observe, Period, Scales, Sensitivity, State, Stop};
 use super::port::Source;
 
 /// Newton steps before giving up.
@@ -342,8 +340,7 @@ fn residual_parts(
             _ => (2, scales.v),
         };
         let size = r.abs() / scale;
-        // The comparison keeps what is not a number.
-        if !(size <= parts[part]) {
+        if size > parts[part] || size.is_nan() {
             parts[part] = size;
         }
     }
@@ -359,7 +356,10 @@ fn residual_size(
 ) -> f64 {
     residual_parts(engine, state, period, supply_v, scales)
         .iter()
-        .fold(0.0, |worst: f64, &r| if r > worst || r.is_nan() { r } else { worst })
+        .fold(
+            0.0,
+            |worst: f64, &r| if r > worst || r.is_nan() { r } else { worst },
+        )
 }
 
 /// The Newton step, and the map of one period without the choke's condition.

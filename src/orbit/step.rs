@@ -117,8 +117,7 @@ impl Step {
         let m = std::array::from_fn(|i| {
             std::array::from_fn(|j| h * port.alpha * radau.a[i][j] + gathered(i, n + j))
         });
-        let kappa =
-            std::array::from_fn(|i| h * port.beta * radau.nodes[i] + gathered(i, n + s));
+        let kappa = std::array::from_fn(|i| h * port.beta * radau.nodes[i] + gathered(i, n + s));
         let mut step = Self {
             length,
             phi,
@@ -208,14 +207,14 @@ impl Step {
             }
             let mut matrix = [[0.0; STAGES]; STAGES];
             let mut miss = [0.0; STAGES];
-            for i in 0..STAGES {
+            for (i, row) in matrix.iter_mut().enumerate() {
                 let mut sum = known[i] - solved.q[i];
-                for j in 0..STAGES {
+                for (j, entry) in row.iter_mut().enumerate() {
                     let a = h * radau.a[i][j];
                     sum += self.m[i][j] * solved.v[j] - a * solved.i[j];
-                    matrix[i][j] = a * solved.g[j] - self.m[i][j];
+                    *entry = a * solved.g[j] - self.m[i][j];
                 }
-                matrix[i][i] += solved.c[i];
+                row[i] += solved.c[i];
                 miss[i] = sum;
             }
             solved.factors = Factors::new(matrix)?;
@@ -229,10 +228,10 @@ impl Step {
                 return None;
             }
             if change <= ACCEPTED * scale_v {
-                for j in 0..STAGES {
+                for (j, change) in miss.iter().enumerate() {
                     // To first order, which is to rounding here.
-                    solved.q[j] += solved.c[j] * miss[j];
-                    solved.i[j] += solved.g[j] * miss[j];
+                    solved.q[j] += solved.c[j] * change;
+                    solved.i[j] += solved.g[j] * change;
                 }
                 return Some(solved);
             }
@@ -270,9 +269,8 @@ impl Step {
     /// Changes of the stages' voltages for changes of the start's charge, rest and input.
     pub fn vary(&self, solved: &Solved, dq: f64, dx: &[f64], du: f64) -> [f64; STAGES] {
         let n = self.rest;
-        let mut change = std::array::from_fn(|i| {
-            dq + dot(&self.k[i * n..(i + 1) * n], dx) + self.kappa[i] * du
-        });
+        let mut change =
+            std::array::from_fn(|i| dq + dot(&self.k[i * n..(i + 1) * n], dx) + self.kappa[i] * du);
         solved.factors.solve(&mut change);
         change
     }

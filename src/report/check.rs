@@ -66,12 +66,22 @@ fn model_limits(result: &CheckResult) -> Vec<String> {
     };
     if stage.is_curved() {
         let parts = [
-            (stage.drain_curve.is_some(), "capacitance that depends on the drain voltage"),
+            (
+                stage.drain_curve.is_some(),
+                "capacitance that depends on the drain voltage",
+            ),
             (stage.switch.diode.is_some(), "a diode"),
             (stage.gate_coupling_f > 0.0, "gate-drain coupling"),
-            (stage.switch.knee.is_some(), "a limit of the closed switch's current"),
+            (
+                stage.switch.knee.is_some(),
+                "a limit of the closed switch's current",
+            ),
         ];
-        let present: Vec<&str> = parts.iter().filter(|part| part.0).map(|part| part.1).collect();
+        let present: Vec<&str> = parts
+            .iter()
+            .filter(|part| part.0)
+            .map(|part| part.1)
+            .collect();
         limits.insert(
             1,
             format!(

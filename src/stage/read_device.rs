@@ -167,7 +167,10 @@ fn parse_table(file: &str, text: &str) -> Result<Vec<(f64, f64)>, Problem> {
         let line = record.position().map_or(0, csv::Position::line);
         let number = |index: usize| record.get(index).and_then(|text| text.parse::<f64>().ok());
         let (Some(volt), Some(farad)) = (number(0), number(1)) else {
-            let given = format!("line {line}: {}", record.iter().collect::<Vec<_>>().join(","));
+            let given = format!(
+                "line {line}: {}",
+                record.iter().collect::<Vec<_>>().join(",")
+            );
             return about(given, "two numbers on each line");
         };
         if !(farad > 0.0 && farad.is_finite() && volt.is_finite()) {

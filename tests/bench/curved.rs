@@ -36,7 +36,11 @@ fn main() {
         let supply_v = stage.supply_v;
         let first = network.orbit(supply_v, &drive).expect("an orbit");
         let orbit = seconds_each(200, || {
-            black_box(network.orbit(black_box(supply_v), &drive).expect("an orbit"));
+            black_box(
+                network
+                    .orbit(black_box(supply_v), &drive)
+                    .expect("an orbit"),
+            );
         });
         let sweep = Sweep::full(&network, Control::Supply, 201).expect("a sweep");
         let map = seconds_each(3, || {
