@@ -15,6 +15,7 @@
 //! | 6 | [`metrics`] | numbers about the output |
 //! | | [`limits`] | published limit sets and the user's own |
 //! | 7 | [`verdict`] | numbers against limits |
+//! | | [`predistort`] | tables and polynomials that undo what the stage does |
 //! | | [`study`] | one study from file to verdict |
 //! | | [`report`] | results to bytes: text, JSON, CSV, HTML, pictures |
 //! | | [`cli`] | the only module that opens files, reads the environment or prints |
@@ -32,6 +33,7 @@
 //! * Random numbers come from a stated seed; the same study and seed give the same bytes.
 
 pub mod cli;
+pub mod design;
 pub mod drive;
 pub mod input;
 pub mod limits;
@@ -39,6 +41,7 @@ pub mod map;
 pub mod math;
 pub mod metrics;
 pub mod orbit;
+pub mod predistort;
 pub mod report;
 pub mod signal;
 pub mod stage;

@@ -59,6 +59,43 @@ impl Dimension {
         }
     }
 
+    /// The smallest and the largest magnitude that any part, signal or instrument of this field has, zero
+    /// aside, in SI. What lies outside is a slip of the keyboard, and would only end in overflow.
+    pub fn plausible(self) -> (f64, f64) {
+        match self {
+            Self::Frequency => (1e-6, 1e15),
+            Self::Time => (1e-18, 1e9),
+            Self::Voltage | Self::Current => (1e-12, 1e9),
+            Self::Power => (1e-24, 1e12),
+            Self::Resistance => (1e-9, 1e15),
+            Self::Capacitance => (1e-21, 1e3),
+            Self::Charge => (1e-21, 1e3),
+            Self::Inductance => (1e-18, 1e6),
+            Self::SlewRate => (1e-9, 1e18),
+            Self::Ratio => (1e-15, 1e15),
+            Self::Decibel | Self::Level => (0.0, 1e4),
+            Self::Angle => (0.0, 1e6),
+        }
+    }
+
+    /// True where `value` is zero or of a [plausible](Self::plausible) magnitude.
+    pub fn is_plausible(self, value: f64) -> bool {
+        let (least, most) = self.plausible();
+        value == 0.0 || (least..=most).contains(&value.abs())
+    }
+
+    /// The plausible magnitudes in words: `a voltage of 1 pV to 1 GV in magnitude`.
+    pub fn plausible_text(self) -> String {
+        let (least, most) = self.plausible();
+        let show = |value: f64| show(value, self.unit(), 3);
+        format!(
+            "{} of {} to {} in magnitude",
+            self.name(),
+            show(least),
+            show(most)
+        )
+    }
+
     /// What the dimension is called in messages.
     pub fn name(self) -> &'static str {
         match self {

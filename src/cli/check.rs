@@ -10,11 +10,13 @@ use crate::signal;
 use crate::study::{BuiltIn, CheckResult, DEFAULT_STUDY, Study, StudyError, check};
 use crate::verdict::Outcome;
 
-/// Carry out a study: does the output meet its limits? Exit code 0 within, 1 outside, 2 undecided
+/// Hold the output of a study against its limits: exit code 0 within, 1 outside, 2 undecided
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Examples:
-  quietedge check                                 the built-in study; the report goes to quietedge-report/
-  quietedge check my.study.toml --out report      report.html, result.json, spectrum.png, map.csv
+  quietedge check
+      the built-in study; its report goes to quietedge-report/, made anew each time
+  quietedge check my.study.toml --out report
+      writes report.html, result.json, spectrum.png and map.csv into report/
   quietedge check my.study.toml --json | jq .verdict.outcome")]
 pub struct Arguments {
     /// Study file (TOML); the built-in one where absent
@@ -57,7 +59,18 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
         }
     };
     let study = Study::read(&name, &*files)?;
-    let result = carry_out(&study, &*files, console)?;
+    let result = carry_out(&study, &*files, console).map_err(|error| {
+        let culprit = match &error {
+            StudyError::Network(_) | StudyError::Orbit(_) | StudyError::Sweep(_) => {
+                &study.hardware_file
+            }
+            StudyError::SignalTooShort { .. } | StudyError::SilentSignal => &study.signal.file,
+            StudyError::Spectrum(_) | StudyError::Pair(_) => &name,
+            // These name their file themselves.
+            _ => return Failure::from(error),
+        };
+        Failure::new(format!("{}: {error}", files.display(culprit)))
+    })?;
     console.print(&text(&result))?;
     console.print_json(&check_document(&result))?;
     if let Some(folder) = folder {

@@ -6,7 +6,7 @@ use serde::Serialize;
 
 use super::disk::Disk;
 use super::{Console, Ending, Failure, OutputFolder, OutputOptions};
-use crate::input::Files;
+use crate::input::{Files, Problem};
 use crate::limits::{
     Conditions, Corner, Evaluated, Kind, Library, LimitSet, Limits, Mask, Obtained, Segment, Term,
     evaluate, table_rows,
@@ -18,11 +18,12 @@ use crate::units::{self, Dimension, show};
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Examples:
   quietedge limits
-  quietedge limits fcc_90_210_mask_d --power 5W --out mask      (limits.svg, limits.png, limits.json)
+  quietedge limits fcc_90_210_mask_d --power 5W --out mask
+      writes limits.svg, limits.png and limits.json into mask/
   quietedge limits --file my.limits.toml
   quietedge limits my_mask --file my.limits.toml")]
 pub struct Arguments {
-    /// The set to show; all are listed without
+    /// The set to show; without it, all are listed
     name: Option<String>,
 
     /// A limits file of your own, whose sets join the published ones; may be repeated
@@ -144,7 +145,7 @@ fn add(library: &mut Library, path: &Path) -> Result<(), Failure> {
     let shown = path.display().to_string();
     let text = Disk::here()
         .text(&shown)
-        .map_err(|error| Failure::new(format!("cannot read {shown}: {error}")))?;
+        .map_err(|error| Problem::unreadable(&shown, &error, "a limits file, TOML in UTF-8"))?;
     library.add(&shown, &text)?;
     Ok(())
 }

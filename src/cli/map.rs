@@ -17,12 +17,13 @@ use crate::units::Dimension;
   quietedge map signals/tide-gauge.stage.toml --control supply
   quietedge map my.stage.toml --control width --from 0.1 --to 0.5 --points 81
   quietedge map my.stage.toml --control supply --out map
-      map.csv and map.json can be named in a study in place of a stage: map = \"map/map.csv\"")]
+      writes map.csv, map.json, map.svg and map.png into map/; a study can name the
+      first two in place of a stage: map = \"map/map.csv\"")]
 pub struct Arguments {
     /// Stage file (TOML)
     stage: PathBuf,
 
-    /// What is moved
+    /// What is moved over the map
     #[arg(long, value_enum, default_value_t = ControlWord::Supply)]
     control: ControlWord,
 
@@ -35,7 +36,7 @@ pub struct Arguments {
     to: Option<String>,
 
     /// Number of evenly spaced values
-    #[arg(long, default_value_t = 201, value_parser = clap::value_parser!(u32).range(2..=100_001))]
+    #[arg(long, value_name = "N", default_value_t = 201, value_parser = clap::value_parser!(u32).range(2..=100_001))]
     points: u32,
 
     #[command(flatten)]
@@ -61,7 +62,10 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     let names = ["map.csv", "map.json", "map.svg", "map.png"];
     let folder = OutputFolder::claim_option(&arguments.output, &names)?;
     let stage = arguments.changes.stage(&arguments.stage)?;
-    let network = Network::new(&stage)?;
+    let about = |error: &dyn std::fmt::Display| {
+        Failure::new(format!("{}: {error}", arguments.stage.display()))
+    };
+    let network = Network::new(&stage).map_err(|error| about(&error))?;
     let (control, dimension) = match arguments.control {
         ControlWord::Supply => (Control::Supply, Dimension::Voltage),
         ControlWord::Width => (Control::Width, Dimension::Ratio),
@@ -74,8 +78,9 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     };
     let from = end(&arguments.from, "--from", full.values[0])?;
     let to = end(&arguments.to, "--to", full.values[full.values.len() - 1])?;
-    let map =
-        Sweep::even(&network, control, from, to, arguments.points as usize)?.solve(&network)?;
+    let map = Sweep::even(&network, control, from, to, arguments.points as usize)?
+        .solve(&network)
+        .map_err(|error| about(&error))?;
     let document = map_document(&stage.title, &map);
     console.print(&map_text(&stage.title, &map))?;
     console.print_json(&document)?;

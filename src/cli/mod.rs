@@ -2,11 +2,13 @@
 
 mod arguments;
 mod check;
+mod completions;
 mod console;
 mod disk;
 mod limits;
 mod map;
 mod output;
+mod predistort;
 mod signal;
 mod solve;
 
@@ -22,6 +24,10 @@ pub use output::{OutputFolder, OutputOptions};
 /// The bench of an engineer who puts an amplitude-varying signal through a switching power stage.
 #[derive(Debug, Parser)]
 #[command(name = "quietedge", version, about, long_about = None, max_term_width = 100)]
+#[command(
+    after_help = "Start with `quietedge check`: it carries out a built-in study and writes its report.
+quietedge COMMAND --help shows the options of a command, with examples."
+)]
 struct Arguments {
     #[command(subcommand)]
     command: Command,
@@ -32,12 +38,13 @@ struct Arguments {
 
 /// Options that every command takes.
 #[derive(Debug, Clone, clap::Args)]
+#[command(next_help_heading = "For every command")]
 pub struct Common {
     /// Print one JSON document on stdout and nothing else there
     #[arg(long, global = true)]
     json: bool,
 
-    /// No progress bars and no remarks on stderr
+    /// Keep progress bars and remarks off stderr; errors still go there
     #[arg(short, long, global = true)]
     quiet: bool,
 }
@@ -47,8 +54,10 @@ enum Command {
     Check(check::Arguments),
     Solve(solve::Arguments),
     Map(map::Arguments),
+    Predistort(predistort::Arguments),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
+    Completions(completions::Arguments),
 }
 
 /// Runs the program with the process's own arguments.
@@ -71,8 +80,10 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Check(arguments) => check::run(&arguments, &console),
         Command::Solve(arguments) => solve::run(&arguments, &console),
         Command::Map(arguments) => map::run(&arguments, &console),
+        Command::Predistort(arguments) => predistort::run(&arguments, &console),
         Command::Signal(arguments) => signal::run(&arguments, &console),
         Command::Limits(arguments) => limits::run(&arguments, &console),
+        Command::Completions(arguments) => completions::run(&arguments, &console),
     };
     console.exit(result)
 }

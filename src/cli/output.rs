@@ -10,6 +10,7 @@ use super::Failure;
 
 /// Where a command writes its files.
 #[derive(Debug, Clone, clap::Args)]
+#[command(next_help_heading = "Files")]
 pub struct OutputOptions {
     /// Folder for the files the command writes; made where it is missing
     #[arg(long, value_name = "DIR")]

@@ -4,19 +4,20 @@ use std::path::{Path, PathBuf};
 
 use super::arguments::quantity;
 use super::{Console, Disk, Ending, Failure, OutputFolder, OutputOptions};
-use crate::input::Files;
+use crate::input::{Files, Problem};
 use crate::orbit::{Drive, Network};
 use crate::report::documents::solve_document;
 use crate::report::stage::{orbit_text, waveform_figure};
 use crate::stage::Stage;
 use crate::units::Dimension;
 
-/// Solve one periodic steady state of a stage and print it
+/// Solve the periodic steady state of a stage at one supply and width
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Examples:
   quietedge solve signals/tide-gauge.stage.toml
   quietedge solve my.stage.toml --supply 3V --duty 0.4 --json
-  quietedge solve my.stage.toml --out orbit      (waveform.svg, waveform.png, orbit.json)")]
+  quietedge solve my.stage.toml --out orbit
+      writes waveform.svg, waveform.png and orbit.json into orbit/")]
 pub struct Arguments {
     /// Stage file (TOML)
     stage: PathBuf,
@@ -30,21 +31,22 @@ pub struct Arguments {
 
 /// What is changed of a stage file for one run.
 #[derive(Debug, Clone, clap::Args)]
+#[command(next_help_heading = "In place of the stage file's values")]
 pub struct Changes {
-    /// Supply voltage in place of the file's, such as 3V
-    #[arg(long, value_parser = quantity(Dimension::Voltage))]
+    /// Supply voltage, such as 3V
+    #[arg(long, value_name = "V", value_parser = quantity(Dimension::Voltage))]
     supply: Option<f64>,
 
-    /// Closed fraction of the period in place of the file's
-    #[arg(long, value_parser = quantity(Dimension::Ratio))]
+    /// Closed fraction of the period, such as 0.4 or 40%
+    #[arg(long, value_name = "PART", value_parser = quantity(Dimension::Ratio))]
     duty: Option<f64>,
 
-    /// Carrier in place of the file's; parts keep their values
-    #[arg(long, value_parser = quantity(Dimension::Frequency))]
+    /// Carrier, such as 170MHz; parts keep their inductance, capacitance and loss
+    #[arg(long, value_name = "HZ", value_parser = quantity(Dimension::Frequency))]
     frequency: Option<f64>,
 
-    /// Load resistance in place of the file's
-    #[arg(long, value_parser = quantity(Dimension::Resistance))]
+    /// Load resistance, such as 40ohm
+    #[arg(long, value_name = "OHM", value_parser = quantity(Dimension::Resistance))]
     load_resistance: Option<f64>,
 }
 
@@ -57,7 +59,7 @@ impl Changes {
         let name = path.display().to_string();
         let text = Disk::here()
             .text(&name)
-            .map_err(|error| Failure::new(format!("{name}: cannot be read: {error}")))?;
+            .map_err(|error| Problem::unreadable(&name, &error, "a stage file, TOML in UTF-8"))?;
         let mut stage = Stage::read(&name, &text, &Disk::here())?;
         let positive = |option: &str, value: f64| {
             if value > 0.0 {
@@ -96,11 +98,16 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
     let names = ["waveform.svg", "waveform.png", "orbit.json"];
     let folder = OutputFolder::claim_option(&arguments.output, &names)?;
     let stage = arguments.changes.stage(&arguments.stage)?;
-    let network = Network::new(&stage)?;
+    let about = |error: &dyn std::fmt::Display| {
+        Failure::new(format!("{}: {error}", arguments.stage.display()))
+    };
+    let network = Network::new(&stage).map_err(|error| about(&error))?;
     let drive = Drive::new(&stage.driver, stage.driver.duty);
-    let orbits = network.orbits(stage.supply_v, &drive)?;
+    let orbits = network
+        .orbits(stage.supply_v, &drive)
+        .map_err(|error| about(&error))?;
     let Some((orbit, others)) = orbits.split_first() else {
-        return Err(Failure::new("the stage has no orbit".to_owned()));
+        return Err(about(&"the stage has no orbit"));
     };
     let document = solve_document(&stage, orbit, others);
     console.print(&orbit_text(&stage, orbit))?;

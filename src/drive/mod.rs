@@ -1,12 +1,18 @@
 //! STEP 4: how a signal moves the stage's controls: schemes, imperfections included.
 
+mod correct;
+mod lookup;
 mod modulator;
+mod polynomial;
 mod rate;
 mod read;
 mod shaping;
 mod supply;
 
+pub use correct::Correction;
+pub use lookup::{Between, Lookup, LookupError, LookupSize, MAX_TABLE_RATE, Spacing, Word};
 pub use modulator::{Converter, Modulator, Ripple, SupplyModulator};
+pub use polynomial::{Polynomial, Term};
 pub use rate::{MAX_FACTOR, RateReason, oversampling};
 pub use shaping::{Shape, Shaping};
 pub use supply::{PhasePath, SupplyDrive, SupplyScheme};

@@ -21,6 +21,8 @@ pub enum RateReason {
     Converter,
     /// The ripple's frequency.
     Ripple,
+    /// The rate of a table or polynomial in front.
+    Predistortion,
 }
 
 impl RateReason {
@@ -33,6 +35,7 @@ impl RateReason {
             Self::PhaseBandwidth => "the phase path's bandwidth",
             Self::Converter => "the converter's rate",
             Self::Ripple => "the ripple's frequency",
+            Self::Predistortion => "the rate of the predistortion",
         }
     }
 }

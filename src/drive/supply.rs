@@ -8,6 +8,7 @@
 use num_complex::Complex64;
 
 use super::Track;
+use super::correct::{Corrected, Correction, Corrector};
 use super::modulator::{Modulator, SupplyModulator};
 use super::shaping::Shaping;
 use crate::math::delay::{Delay, LATENCY};
@@ -61,6 +62,14 @@ pub struct SupplyDrive {
     phase_filter: Option<Lowpass<Complex64>>,
     last_phase: Complex64,
     settled: bool,
+    correctors: Option<Correctors>,
+}
+
+/// The correction on both paths.
+#[derive(Debug, Clone)]
+struct Correctors {
+    magnitude: Corrector,
+    angle: Corrector,
 }
 
 impl SupplyDrive {
@@ -80,7 +89,39 @@ impl SupplyDrive {
                 .map(|bandwidth_hz| Lowpass::new(scheme.phase_path.order, bandwidth_hz, rate_hz)),
             last_phase: Complex64::ONE,
             settled: false,
+            correctors: None,
         }
+    }
+
+    /// The same with `correction` in front, at `factor` times the signal's rate: at least the correction's own
+    /// rate, and a multiple of it.
+    ///
+    /// The correction works on its own clock and holds its output; both paths are held alike.
+    #[must_use]
+    pub fn corrected(mut self, correction: &Correction, factor: usize) -> Self {
+        let corrector = Corrector::new(correction, factor);
+        self.correctors = Some(Correctors {
+            magnitude: corrector.clone(),
+            angle: corrector,
+        });
+        self
+    }
+
+    /// The control that the scheme asks for, V, and the signal whose phase goes to the drive.
+    fn ask(&mut self, for_magnitude: Complex64, for_angle: Complex64) -> (f64, Complex64) {
+        let (level, full_v, shaping) = (self.level, self.full_v, self.shaping);
+        let shaped = |sample| full_v * shaping.apply(level * magnitude(sample));
+        let Some(correctors) = &mut self.correctors else {
+            return (shaped(for_magnitude), for_angle);
+        };
+        let asked_v = match correctors.magnitude.push(for_magnitude, level) {
+            Corrected::Direct { control, .. } => full_v * control,
+            Corrected::Signal(sample) => shaped(sample),
+        };
+        let signal = match correctors.angle.push(for_angle, level) {
+            Corrected::Direct { signal, .. } | Corrected::Signal(signal) => signal,
+        };
+        (asked_v, signal)
     }
 
     /// How many samples after the start the track still shows the start: interpolators filling, filters settling.
@@ -99,19 +140,21 @@ impl SupplyDrive {
         2 * LATENCY + dead.ceil() as usize + (12.0 * slowest * rate_hz).ceil() as usize
     }
 
-    /// Appends the controls for `samples` to `track`, all rows at the same instants ([`LATENCY`] late).
+    /// Appends the controls for `samples` to `track`, all rows at the same instants ([`LATENCY`] late). A
+    /// correction's own delay, its hold included, stays in the controls.
     pub fn push(&mut self, samples: &[Complex64], track: &mut Track) {
         for &sample in samples {
             let wanted = self.wanted.push(sample);
-            let delayed = magnitude(self.magnitude.push(sample));
-            let asked_v = self.full_v * self.shaping.apply(self.level * delayed);
-            track.wanted.push(wanted);
-            track
-                .asked
-                .push(self.full_v * self.shaping.apply(self.level * magnitude(wanted)));
-            track.control.push(self.modulator.push(asked_v));
+            let delayed = self.magnitude.push(sample);
             let angle = self.angle.push(sample);
-            track.phase.push(self.phase(angle));
+            let (asked_v, signal) = self.ask(delayed, angle);
+            track.wanted.push(wanted);
+            track.asked.push(match self.correctors {
+                None => self.full_v * self.shaping.apply(self.level * magnitude(wanted)),
+                Some(_) => asked_v,
+            });
+            track.control.push(self.modulator.push(asked_v));
+            track.phase.push(self.phase(signal));
         }
     }
 
@@ -168,6 +211,56 @@ mod tests {
             assert!((output - samples[n - LATENCY]).norm() < 1e-12);
             assert_eq!(track.wanted[n], samples[n - LATENCY]);
             assert_eq!(track.asked[n], track.control[n]);
+        }
+    }
+
+    #[test]
+    fn a_correction_works_on_its_own_clock_and_is_held() {
+        use crate::drive::{
+            Between, Correction, Lookup, LookupSize, Polynomial, Spacing, Term, Word,
+        };
+        let size = LookupSize {
+            depth: 2,
+            address_bits: 20,
+            amplitude_bits: 20,
+            phase_bits: 8,
+        };
+        let words = [0, (1 << 20) - 1].map(|control| Word { control, phase: 64 });
+        // A straight line that turns the phase by a quarter, and the same as a polynomial.
+        let lookup = Lookup::new(size, Spacing::Magnitude, Between::Linear, 2, words.to_vec());
+        let polynomial = Polynomial {
+            terms: vec![Term {
+                signal_lag: 0,
+                envelope_lag: 0,
+                power: 0,
+            }],
+            coefficients: vec![Complex64::I],
+            lead: 0,
+            rate: 2,
+        };
+        let corrections = [
+            Correction::Table(lookup.unwrap()),
+            Correction::Polynomial(polynomial),
+        ];
+        let samples: Vec<_> = (0..400)
+            .map(|n| {
+                Complex64::from_polar(0.6 + 0.3 * (0.05 * f64::from(n)).sin(), 0.02 * f64::from(n))
+            })
+            .collect();
+        for correction in corrections {
+            let mut drive = SupplyDrive::new(&ideal(), 0.8, 6.0, 1e6).corrected(&correction, 8);
+            let mut track = Track::default();
+            drive.push(&samples, &mut track);
+            for n in LATENCY..400 {
+                // Four instants to a sample of the correction.
+                let held = samples[n / 4 * 4 - LATENCY];
+                let output = track.control[n] / (0.8 * 6.0) * track.phase[n];
+                assert!(
+                    (output - held * Complex64::I).norm() < 1e-6,
+                    "{n}: {output} {held}"
+                );
+                assert_eq!(track.wanted[n], samples[n - LATENCY]);
+            }
         }
     }
 

@@ -28,18 +28,39 @@ pub trait Files: Sync {
     /// # Errors
     /// As [`Files::open`]; text that is not UTF-8 or too long.
     fn text(&self, name: &str) -> io::Result<String> {
-        let mut text = String::new();
-        self.open(name)?
-            .take(MAX_TEXT_BYTES + 1)
-            .read_to_string(&mut text)?;
-        if text.len() as u64 > MAX_TEXT_BYTES {
-            return Err(io::Error::new(
-                io::ErrorKind::InvalidData,
-                format!("longer than {MAX_TEXT_BYTES} bytes, which no settings file needs"),
-            ));
-        }
-        Ok(text)
+        read_text(self.open(name)?)
     }
+}
+
+/// Reads `reader` to its end, as text of at most `MAX_TEXT_BYTES`; a byte order mark is left out.
+///
+/// # Errors
+/// As the reader; text that is not UTF-8 or too long.
+pub fn read_text(reader: impl Read) -> io::Result<String> {
+    let invalid = |text: String| io::Error::new(io::ErrorKind::InvalidData, text);
+    let mut bytes = Vec::new();
+    reader.take(MAX_TEXT_BYTES + 1).read_to_end(&mut bytes)?;
+    if bytes.len() as u64 > MAX_TEXT_BYTES {
+        return Err(invalid(format!(
+            "longer than {MAX_TEXT_BYTES} bytes, which no settings file or map needs"
+        )));
+    }
+    if bytes.starts_with(&[0xff, 0xfe]) || bytes.starts_with(&[0xfe, 0xff]) {
+        return Err(invalid("UTF-16 text: save it as UTF-8".to_owned()));
+    }
+    let text = String::from_utf8(bytes).map_err(|error| {
+        let at = error.utf8_error().valid_up_to();
+        let line = error.as_bytes()[..at]
+            .iter()
+            .filter(|byte| **byte == b'\n')
+            .count()
+            + 1;
+        invalid(format!("line {line} is not UTF-8 text"))
+    })?;
+    Ok(text
+        .strip_prefix('\u{feff}')
+        .map(str::to_owned)
+        .unwrap_or(text))
 }
 
 /// The longest settings file that is read, bytes.

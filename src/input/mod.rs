@@ -4,6 +4,6 @@ mod files;
 mod problem;
 mod section;
 
-pub use files::{Files, MAX_TEXT_BYTES, ReadSeek};
+pub use files::{Files, MAX_TEXT_BYTES, ReadSeek, read_text};
 pub use problem::{Complaint, Place, Problem};
 pub use section::{Document, Range, Section, nearest};

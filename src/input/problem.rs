@@ -63,6 +63,32 @@ impl Place {
     }
 }
 
+/// Characters of a line that are shown at most.
+const MOST_SHOWN: usize = 120;
+
+impl Place {
+    /// The line as it can be shown under a message, where its mark starts and how wide it is: of a long
+    /// line the stretch around the place, and blanks for what moves a terminal's cursor.
+    fn excerpt(&self) -> (String, usize, usize) {
+        let at = self.column.saturating_sub(1);
+        let skipped = if at > MOST_SHOWN / 2 && self.text.chars().nth(MOST_SHOWN).is_some() {
+            at - MOST_SHOWN / 2
+        } else {
+            0
+        };
+        let shown: String = self
+            .text
+            .chars()
+            .skip(skipped)
+            .take(MOST_SHOWN)
+            .map(|c| if c.is_control() { ' ' } else { c })
+            .collect();
+        let lead = at - skipped;
+        let room = shown.chars().count().saturating_sub(lead).max(1);
+        (shown, lead, self.width.clamp(1, room))
+    }
+}
+
 impl Problem {
     /// A complaint about a file as a whole.
     pub fn about_file(
@@ -78,6 +104,12 @@ impl Problem {
             allowed: allowed.into(),
             hint: None,
         })
+    }
+
+    /// A file that could not be opened or read; `wanted` is what it should be: "a stage file".
+    pub fn unreadable(file: &str, error: &std::io::Error, wanted: &str) -> Self {
+        let given = format!("a file that cannot be read ({error})");
+        Self::about_file(file, given, wanted)
     }
 
     /// Its parts.
@@ -113,16 +145,12 @@ impl fmt::Display for Problem {
         }
         write!(f, ": given {given}; allowed: {allowed}")?;
         if let Some(place) = place {
-            let shown: String = place
-                .text
-                .chars()
-                .map(|c| if c == '\t' { ' ' } else { c })
-                .collect();
+            let (shown, lead, width) = place.excerpt();
             let number = place.line.to_string();
             write!(f, "\n  {number} | {shown}")?;
             let margin = " ".repeat(number.len());
-            let lead = " ".repeat(place.column - 1);
-            write!(f, "\n  {margin} | {lead}{}", "^".repeat(place.width))?;
+            let (lead, marks) = (" ".repeat(lead), "^".repeat(width));
+            write!(f, "\n  {margin} | {lead}{marks}")?;
         }
         if let Some(hint) = hint {
             write!(f, "\n  {hint}")?;

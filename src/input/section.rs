@@ -229,7 +229,7 @@ impl<'a> Section<'a> {
         Problem::from(Complaint {
             file: self.document.file.clone(),
             place: span.map(|span| Place::of(&self.document.text, span)),
-            key,
+            key: shortened(key),
             given,
             allowed,
             hint: None,
@@ -257,13 +257,27 @@ impl<'a> Section<'a> {
     }
 
     fn missing(&self, key: &'static str, allowed: impl Into<String>) -> Problem {
-        let span = (self.span != (0..0)).then(|| self.span.clone());
-        self.complain(
+        // A key that was probably meant to be this one is where the mending has to happen.
+        let misspelt = self
+            .entries
+            .iter()
+            .filter(|entry| !self.known.borrow().contains(&entry.key.as_str()))
+            .find(|entry| nearest(&entry.key, &[key]).is_some());
+        let table = (self.span != (0..0)).then(|| self.span.clone());
+        let span = misspelt.map(|entry| entry.key_span.clone()).or(table);
+        let problem = self.complain(
             span,
             self.key_path(key),
             "nothing".to_owned(),
             allowed.into(),
-        )
+        );
+        match misspelt {
+            Some(entry) => problem.with_hint(format!(
+                "there is an unknown key \"{}\": did you mean \"{key}\"?",
+                shortened(entry.key.clone())
+            )),
+            None => problem,
+        }
     }
 
     /// The text of the file at `node`, cut to one line of a bearable length.
@@ -306,11 +320,22 @@ impl<'a> Section<'a> {
                 .map_err(|error| complain().with_hint(error.to_string()))?,
             _ => return Err(complain()),
         };
-        if range.holds(value) {
-            Ok(value)
-        } else {
-            Err(complain())
+        if !range.holds(value) {
+            return Err(complain());
         }
+        if !dimension.is_plausible(value) {
+            return Err(self.complain(
+                Some(node.span.clone()),
+                key,
+                self.source_of(node),
+                format!(
+                    "{}, such as {}",
+                    dimension.plausible_text(),
+                    dimension.example()
+                ),
+            ));
+        }
+        Ok(value)
     }
 
     /// The quantity at `key` in SI, where it is given.
@@ -632,6 +657,15 @@ impl<'a> Section<'a> {
             Some(name) => problem.with_hint(format!("did you mean \"{name}\"?")),
             None => problem,
         })
+    }
+}
+
+/// `key`, cut where nobody could read on.
+fn shortened(key: String) -> String {
+    const MOST: usize = 160;
+    match key.char_indices().nth(MOST) {
+        Some((end, _)) => format!("{} ...", &key[..end]),
+        None => key,
     }
 }
 

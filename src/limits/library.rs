@@ -14,7 +14,7 @@ pub struct Library {
 
 /// No set has that name.
 #[derive(Debug, Clone, PartialEq, Eq, thiserror::Error)]
-#[error("no limit set is called \"{name}\"{}", .nearest.as_ref().map(|near| format!("; did you mean \"{near}\"?")).unwrap_or_default())]
+#[error("no limit set is called \"{name}\"; allowed: the names that `quietedge limits` lists{}", .nearest.as_ref().map(|near| format!("; did you mean \"{near}\"?")).unwrap_or_default())]
 pub struct UnknownSet {
     /// As given.
     pub name: String,

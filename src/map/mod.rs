@@ -1,6 +1,8 @@
 //! STEP 3: from a control to the output, forward and inverse: AM-AM and AM-PM.
 
 mod read;
+mod read_csv;
+mod read_json;
 mod sweep;
 
 use num_complex::Complex64;

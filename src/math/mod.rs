@@ -4,9 +4,12 @@ pub mod delay;
 pub mod fft;
 pub mod fir;
 pub mod flow;
+pub mod least_squares;
 pub mod lowpass;
 pub mod monotone;
+pub mod newton;
 pub mod radau;
+pub mod simplex;
 pub mod small;
 pub mod window;
 

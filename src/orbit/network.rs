@@ -259,7 +259,9 @@ fn linear_model(stage: &Stage) -> Result<Box<dyn LinearSolver>, NetworkError> {
     };
     let closed = equations(per_load(stage.switch.closed_ohm))?;
     let open = equations(per_load(stage.switch.open_ohm))?;
-    let [closed, open] = without_idle(closed, open).ok_or(NetworkError::Undetermined)?;
+    let [closed, open] = without_idle(closed, open)
+        .filter(|[closed, _]| closed.a.nrows() > 0)
+        .ok_or(NetworkError::Undetermined)?;
     let positions = [position(&closed, "closed")?, position(&open, "open")?];
     let choke_ohm = match circuit.input {
         Input::Voltage(_) => None,

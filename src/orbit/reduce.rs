@@ -143,17 +143,7 @@ impl Tableau {
 
     /// Rows `K` with `K x = 0` for every state the network can be in.
     fn constraints(&self) -> Option<DMatrix<f64>> {
-        let svd = self.t.clone().svd(true, false);
-        let u = svd.u?;
-        let limit = RANK_TOLERANCE * svd.singular_values.max();
-        let null: Vec<_> = (0..u.ncols())
-            .filter(|&i| svd.singular_values[i] <= limit)
-            .collect();
-        let mut rows = DMatrix::zeros(null.len(), self.h.ncols());
-        for (row, &column) in null.iter().enumerate() {
-            rows.set_row(row, &(u.column(column).transpose() * &self.h));
-        }
-        Some(rows)
+        Some(left_null(&self.t, RANK_TOLERANCE)?.transpose() * &self.h)
     }
 }
 
@@ -168,20 +158,7 @@ impl Subspace {
                 basis: DMatrix::identity(states, states),
             });
         }
-        // The null space of K is the span of the eigenvectors of I - K+ K with eigenvalue one: take the
-        // right singular vectors past the rank, from a square matrix so that all are there.
-        let square = constraints.transpose() * &constraints;
-        let svd = square.svd(false, true);
-        let v_t = svd.v_t?;
-        // Squared singular values: the tolerance is squared, but never below rounding.
-        let limit = 1e-14 * svd.singular_values.max();
-        let free: Vec<_> = (0..states)
-            .filter(|&i| svd.singular_values[i] <= limit)
-            .collect();
-        let mut basis = DMatrix::zeros(states, free.len());
-        for (column, &row) in free.iter().enumerate() {
-            basis.set_column(column, &v_t.row(row).transpose());
-        }
+        let basis = left_null(&constraints.transpose(), RANK_TOLERANCE)?;
         Some(Self { constraints, basis })
     }
 
@@ -289,20 +266,23 @@ fn joined(reduced: &Reduced) -> DMatrix<f64> {
     all
 }
 
-/// Orthonormal columns `l` with `l^T matrix = 0`, up to `tolerance` of the largest singular value (or of one,
-/// where the matrix is smaller than that).
+/// Orthonormal columns `l` with `l^T matrix = 0`, up to `tolerance` of the largest pivot (or of one, where the
+/// matrix is smaller than that).
+///
+/// By Householder reflections with column pivoting: past the rank, what is left of the columns is rounding and the
+/// reflections' own columns span the rest. A singular value decomposition was seen to leave 1e-8 in its vectors.
 fn left_null(matrix: &DMatrix<f64>, tolerance: f64) -> Option<DMatrix<f64>> {
     let rows = matrix.nrows();
     // Square, so that every left vector is there.
     let mut square = DMatrix::zeros(rows, rows.max(matrix.ncols()));
     square.columns_mut(0, matrix.ncols()).copy_from(matrix);
-    let svd = square.svd(true, false);
-    let u = svd.u?;
-    let limit = tolerance * svd.singular_values.max().max(1.0);
-    let null: Vec<_> = (0..u.ncols())
-        .filter(|&i| svd.singular_values[i] <= limit)
-        .collect();
-    Some(DMatrix::from_fn(rows, null.len(), |row, column| {
-        u[(row, null[column])]
-    }))
+    if rows == 0 || !square.iter().all(|entry| entry.is_finite()) {
+        return (rows == 0).then_some(square);
+    }
+    let decomposed = square.col_piv_qr();
+    let r = decomposed.r();
+    let pivots: Vec<f64> = (0..rows).map(|i| r[(i, i)].abs()).collect();
+    let limit = tolerance * pivots.iter().copied().fold(1.0, f64::max);
+    let null: Vec<_> = (0..rows).filter(|&i| pivots[i] <= limit).collect();
+    Some(decomposed.q().select_columns(&null))
 }

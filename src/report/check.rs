@@ -157,7 +157,7 @@ fn subtitle(result: &CheckResult) -> String {
     )
 }
 
-fn headline(result: &CheckResult) -> Headline {
+pub(super) fn headline(result: &CheckResult) -> Headline {
     let decided = deciding(result);
     Headline {
         outcome: outcome(result.judgement.verdict.outcome),
@@ -284,6 +284,15 @@ fn worst(result: &CheckResult) -> Option<&MaskMargin> {
 
 /// The spectrum in the measuring bandwidth and with the detector of the tightest mask.
 pub fn spectrum_figure(result: &CheckResult) -> CaptionedFigure {
+    let (view, caption) = spectrum_view(result);
+    CaptionedFigure {
+        figure: view.figure(),
+        caption,
+    }
+}
+
+/// What the spectrum's picture shows, and its caption.
+pub(super) fn spectrum_view(result: &CheckResult) -> (SpectrumFigure, String) {
     let lines = &result.judgement.lines;
     let worst = worst(result);
     let shown = worst
@@ -361,7 +370,7 @@ pub fn spectrum_figure(result: &CheckResult) -> CaptionedFigure {
             + moved(worst.bandwidth_hz),
         margin_db: worst.margin_db,
     });
-    let figure = SpectrumFigure {
+    let view = SpectrumFigure {
         title: "Output spectrum".to_owned(),
         level_unit: "dBm".to_owned(),
         resolution_hz,
@@ -369,8 +378,7 @@ pub fn spectrum_figure(result: &CheckResult) -> CaptionedFigure {
         masks,
         worst: marks.into_iter().collect(),
         span_hz: span_hz(result),
-    }
-    .figure();
+    };
     let caption = match worst {
         Some(worst) => format!(
             "Levels in {}, as the tightest mask asks. The tightest point lies {} from the carrier; lines of masks with other bandwidths are moved as noise would be.",
@@ -382,7 +390,7 @@ pub fn spectrum_figure(result: &CheckResult) -> CaptionedFigure {
             quantity(resolution_hz, "Hz", 4)
         ),
     };
-    CaptionedFigure { figure, caption }
+    (view, caption)
 }
 
 /// How far the picture reaches: past the last corner of every mask and four occupied bandwidths.
@@ -580,6 +588,12 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
         title: "Scheme".to_owned(),
         rows: scheme_rows(result.scheme()),
     });
+    if let Some(table) = &result.table {
+        groups.push(FactGroup {
+            title: "Predistortion table".to_owned(),
+            rows: super::predistort::table_rows(table),
+        });
+    }
     groups.push(FactGroup {
         title: "Sampling".to_owned(),
         rows: vec![

@@ -151,6 +151,11 @@ pub fn check_document(result: &CheckResult) -> Value {
         "sampling": result.rate,
         "metrics": result.metrics,
         "verdict": result.judgement.verdict,
+        "predistort": result.table.as_ref().map(|table| json!({
+            "size": table.lookup.size(),
+            "rate": table.lookup.rate(),
+            "entries": table.counts(),
+        })),
         "warnings": result.warnings,
     })
 }

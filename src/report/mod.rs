@@ -18,6 +18,7 @@ pub mod limits;
 pub mod page;
 pub mod palette;
 pub mod picture;
+pub mod predistort;
 pub mod stage;
 pub mod table;
 mod text;

@@ -1,5 +1,7 @@
 //! What a real switch has beside its resistance.
 
+use super::Switch;
+
 /// A diode from ground to the drain: `i = (-v - drop) / resistance` where the drain is below `-drop`.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct Diode {
@@ -51,4 +53,37 @@ pub struct Gate {
     pub fall_s: f64,
     /// Charge that the gate itself takes at the swing, that of the coupling to the drain not included, C.
     pub charge_c: f64,
+}
+
+/// Everything that the active device brings to a stage.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Device {
+    /// Its switch.
+    pub switch: Switch,
+    /// Fixed capacitance from its drain to ground, F.
+    pub drain_f: f64,
+    /// Capacitance in addition that depends on the drain voltage.
+    pub drain_curve: Option<DrainCurve>,
+    /// Capacitance between gate and drain, F.
+    pub gate_coupling_f: f64,
+    /// What the driver does to its gate, where it is told.
+    pub gate: Option<Gate>,
+}
+
+impl DrainCurve {
+    /// Capacitance at `volt`, 0 or more, F; a table holds its last value beyond its end.
+    pub fn capacitance_f(&self, volt: f64) -> f64 {
+        match self {
+            Self::Junction(Junction {
+                zero_bias_f,
+                potential_v,
+                grading,
+            }) => zero_bias_f * (1.0 + volt / potential_v).powf(-grading),
+            Self::Table(points) => {
+                let (volts, farads) = points.iter().copied().unzip();
+                crate::math::monotone::Curve::new(volts, farads)
+                    .map_or(0.0, |curve| curve.at_held(volt).0)
+            }
+        }
+    }
 }

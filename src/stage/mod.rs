@@ -4,9 +4,11 @@ mod device;
 mod ladder;
 mod read;
 mod read_device;
+mod write;
 
-pub use device::{Diode, DrainCurve, Gate, Junction, Knee};
+pub use device::{Device, Diode, DrainCurve, Gate, Junction, Knee};
 pub use ladder::{Arm, Element, Part, Rung};
+pub use write::TABLE_NAME;
 
 /// Which edge of the closed interval stays when its width changes.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]

@@ -2,8 +2,8 @@
 
 use std::f64::consts::TAU;
 
-use super::read_device::{diode, drain, gate, knee};
-use super::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use super::read_device::{Drain, diode, drain, gate, knee};
+use super::{Anchor, Arm, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::units::Dimension;
 
@@ -92,6 +92,56 @@ impl Stage {
         }
         root.finish()?;
         Ok(stage)
+    }
+}
+
+impl Device {
+    /// Reads a device in `text`, shown as `shown` and known to `files` as `name`: the tables `[switch]`, `[drain]`
+    /// and `[driver]` of a stage file, without duty and anchor.
+    ///
+    /// # Errors
+    /// The first thing wrong, with its place.
+    pub fn read_as(
+        shown: &str,
+        name: &str,
+        text: &str,
+        files: &dyn Files,
+    ) -> Result<Self, Problem> {
+        let document = Document::parse(shown, text)?;
+        let root = document.root();
+        root.maybe_text("title")?;
+        let folder = name.rsplit_once('/').map(|(folder, _)| folder);
+        let drain = match root.maybe_section("drain")? {
+            Some(section) => drain(&section, Some(files), folder)?,
+            None => Drain {
+                farad: 0.0,
+                curve: None,
+                gate_coupling_f: 0.0,
+            },
+        };
+        let gate = match root.maybe_section("driver")? {
+            Some(section) => {
+                let gate = gate(&section)?;
+                section.finish()?;
+                gate
+            }
+            None => None,
+        };
+        if drain.gate_coupling_f > 0.0 && gate.is_none() {
+            return Err(root.section("drain")?.problem(
+                "gate_coupling",
+                "gate_coupling only where [driver] has a swing with rise and fall",
+            ));
+        }
+        let device = Self {
+            switch: switch(&root.section("switch")?)?,
+            drain_f: drain.farad,
+            drain_curve: drain.curve,
+            gate_coupling_f: drain.gate_coupling_f,
+            gate,
+        };
+        root.finish()?;
+        Ok(device)
     }
 }
 
@@ -186,7 +236,13 @@ fn rung(section: &Section<'_>, angular_hz: f64) -> Result<Rung, Problem> {
     section.finish()?;
     let one_of = "exactly one of series, shunt, tank in each [[load.ladder]]";
     if found.len() != 1 {
-        return Err(section.problem_here(format!("{} of them", found.len()), one_of));
+        let given: Vec<&str> = section.keys().collect();
+        let given = if given.is_empty() {
+            "none of them".to_owned()
+        } else {
+            given.join(" and ")
+        };
+        return Err(section.problem_here(given, one_of));
     }
     let (arm, section) = found.remove(0);
     Ok(Rung {

@@ -3,14 +3,15 @@
 use num_complex::Complex64;
 
 use super::error::StudyError;
-use super::load::{Hardware, Study};
+use super::load::{Hardware, Predistortion, Study};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
 use super::warning::Warning;
-use crate::drive::{MAX_FACTOR, oversampling};
+use crate::drive::{Correction, MAX_FACTOR, Polynomial, RateReason, Scheme, oversampling};
 use crate::map::{Control, Map, Origin, Sweep};
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
 use crate::orbit::{Drive, Network};
+use crate::predistort::{Table, TableRequest};
 use crate::signal::Source;
 use crate::units::dbm_from_watt;
 use crate::verdict::{Judgement, Measured, Wanted, judge};
@@ -29,6 +30,9 @@ const MORE_DOUBLINGS: usize = 2;
 
 /// Oversampled instants past which no further doubling is tried: some tens of seconds of work.
 const MOST_INSTANTS: u64 = 200_000_000;
+
+/// Instants to one hold of a table or polynomial.
+const INSTANTS_PER_HOLD: usize = 4;
 
 /// Resolution of the spectrum where neither limits nor the study ask for one, as a part of the signal's rate.
 const DEFAULT_RESOLUTION: f64 = 1.0 / 512.0;
@@ -51,86 +55,196 @@ pub fn check(
     source: &mut dyn Source,
     progress: &mut dyn FnMut(f64),
 ) -> Result<CheckResult, StudyError> {
-    let (map, stage) = hardware(&study.hardware)?;
-    let signal = signal_facts(study, source)?;
-    let wanted = Wanted::of(&study.limits);
-    let (factor, reason) = oversampling(&study.scheme, signal.rate_hz, wanted.span_hz);
-    let resolution_hz = [wanted.fine_resolution_hz, study.resolution_hz]
-        .into_iter()
-        .flatten()
-        .reduce(f64::min)
-        .unwrap_or(DEFAULT_RESOLUTION * signal.rate_hz);
-    let mut chain = Chain {
-        study,
-        map: &map,
-        factor,
-        wanted: &wanted,
-        resolution_hz,
-        evm_band_hz: study
-            .limits
-            .channel_hz
-            .or(study.limits.authorized_bandwidth_hz)
-            .unwrap_or(signal.rate_hz),
-        signal_samples: signal.samples,
+    let bench = Bench::new(study, source)?;
+    let front = match &study.predistort {
+        None => Front::None,
+        Some(Predistortion::Table(table)) => Front::Table(table.clone()),
+        Some(Predistortion::Request(request)) => Front::Table(bench.table(request)?),
     };
+    bench.check(front, source, progress)
+}
 
-    // The chosen factor is held against half of it, and doubled while that moves the margins.
-    let instants = signal.samples as f64 * factor as f64;
-    let mut done = 0.0;
-    let mut tick = |count: u64| {
-        done += count as f64 / instants / 3.0;
-        progress(done.min(1.0));
-    };
-    let mut convergence = Convergence {
-        against_factor: factor,
-        moved_db: f64::NAN,
-    };
-    chain.factor = (factor / 2).max(1);
-    let mut run = chain.run(source, &mut tick)?;
-    let mut judgement = verdict_of(study, stage.as_ref(), &run);
-    for _ in 0..=MORE_DOUBLINGS {
-        let instants = 2 * chain.factor as u64 * signal.samples;
-        if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS) {
-            break;
-        }
-        chain.factor *= 2;
-        let finer = chain.run(source, &mut tick)?;
-        let finer_judgement = verdict_of(study, stage.as_ref(), &finer);
-        convergence = Convergence {
-            against_factor: run.factor,
-            moved_db: largest_move(&judgement, &finer_judgement),
-        };
-        (run, judgement) = (finer, finer_judgement);
-        if convergence.moved_db <= CONVERGED_DB {
-            break;
+/// What stands in front of the scheme in one check.
+#[derive(Debug, Clone)]
+pub(super) enum Front {
+    None,
+    Table(Table),
+    Polynomial(Polynomial),
+}
+
+impl Front {
+    fn correction(&self) -> Option<Correction> {
+        match self {
+            Self::None => None,
+            Self::Table(table) => Some(Correction::Table(table.lookup.clone())),
+            Self::Polynomial(polynomial) => Some(Correction::Polynomial(polynomial.clone())),
         }
     }
-    let metrics = metrics(study, &run, &judgement)?;
-    let mut result = CheckResult {
-        study: study.clone(),
-        rate: RateFacts {
-            factor: run.factor,
-            rate_hz: run.rate_hz,
-            reason,
-            samples: run.output_envelope.samples,
-            convergence,
-        },
-        signal,
-        map,
-        stage,
-        metrics,
-        output_spectrum: run.output_spectrum,
-        wanted_spectrum: run.wanted_spectrum,
-        peak_spectra: run.peak_spectra,
-        output_envelope: run.output_envelope,
-        wanted_envelope: run.wanted_envelope,
-        control_density: run.control_density,
-        notch: run.notch,
-        warnings: Vec::new(),
-        judgement,
-    };
-    result.warnings = warnings(&result, run.held);
-    Ok(result)
+}
+
+/// Hardware and signal of a study, ready for any number of checks.
+#[derive(Debug, Clone)]
+pub(super) struct Bench<'a> {
+    pub(super) study: &'a Study,
+    pub(super) map: Map,
+    stage: Option<StageFacts>,
+    pub(super) signal: SignalFacts,
+    wanted: Wanted,
+}
+
+impl<'a> Bench<'a> {
+    pub(super) fn new(study: &'a Study, source: &mut dyn Source) -> Result<Self, StudyError> {
+        let (map, stage) = hardware(&study.hardware)?;
+        Ok(Self {
+            study,
+            map,
+            stage,
+            signal: signal_facts(study, source)?,
+            wanted: Wanted::of(&study.limits),
+        })
+    }
+
+    /// The table of `request` for this study.
+    pub(super) fn table(&self, request: &TableRequest) -> Result<Table, StudyError> {
+        let Scheme::Supply(scheme) = &self.study.scheme;
+        let full_v = self.study.hardware.full_supply_v();
+        let title = &self.study.title;
+        Ok(Table::from_map(
+            title,
+            &self.map,
+            full_v,
+            &scheme.shaping,
+            request,
+        )?)
+    }
+
+    /// The factor of the oversampling that `correction` needs, and what asked for it.
+    fn oversampling(&self, correction: Option<&Correction>) -> (usize, RateReason) {
+        let own = oversampling(&self.study.scheme, self.signal.rate_hz, self.wanted.span_hz);
+        match correction.map(|correction| INSTANTS_PER_HOLD * correction.rate()) {
+            Some(factor) if factor > own.0 => (factor, RateReason::Predistortion),
+            _ => own,
+        }
+    }
+
+    pub(super) fn chain<'b>(&'b self, correction: Option<&'b Correction>) -> Chain<'b> {
+        let study = self.study;
+        let resolution_hz = [self.wanted.fine_resolution_hz, study.resolution_hz]
+            .into_iter()
+            .flatten()
+            .reduce(f64::min)
+            .unwrap_or(DEFAULT_RESOLUTION * self.signal.rate_hz);
+        Chain {
+            study,
+            map: &self.map,
+            correction,
+            factor: self.oversampling(correction).0,
+            wanted: &self.wanted,
+            resolution_hz,
+            evm_band_hz: study
+                .limits
+                .channel_hz
+                .or(study.limits.authorized_bandwidth_hz)
+                .unwrap_or(self.signal.rate_hz),
+            signal_samples: self.signal.samples,
+        }
+    }
+
+    /// The verdict at one factor of oversampling, without a second one to hold it against.
+    pub(super) fn judge_once(
+        &self,
+        front: &Front,
+        source: &mut dyn Source,
+    ) -> Result<Judgement, StudyError> {
+        let correction = front.correction();
+        let run = self.chain(correction.as_ref()).run(source, &mut |_| {})?;
+        Ok(verdict_of(self.study, self.stage.as_ref(), &run))
+    }
+
+    pub(super) fn check(
+        &self,
+        front: Front,
+        source: &mut dyn Source,
+        progress: &mut dyn FnMut(f64),
+    ) -> Result<CheckResult, StudyError> {
+        let study = self.study;
+        let full_v = study.hardware.full_supply_v();
+        if let Front::Table(table) = &front
+            && (table.full_control / full_v - 1.0).abs() > 1e-9
+        {
+            return Err(StudyError::OtherRange {
+                table_v: table.full_control,
+                given_v: full_v,
+            });
+        }
+        let correction = front.correction();
+        let (factor, reason) = self.oversampling(correction.as_ref());
+        let mut chain = self.chain(correction.as_ref());
+        let signal = &self.signal;
+
+        // The chosen factor is held against half of it, and doubled while that moves the margins.
+        let instants = signal.samples as f64 * factor as f64;
+        let mut done = 0.0;
+        let mut tick = |count: u64| {
+            done += count as f64 / instants / 3.0;
+            progress(done.min(1.0));
+        };
+        let mut convergence = Convergence {
+            against_factor: factor,
+            moved_db: f64::NAN,
+        };
+        chain.factor = (factor / 2).max(1);
+        let mut run = chain.run(source, &mut tick)?;
+        let mut judgement = verdict_of(study, self.stage.as_ref(), &run);
+        for _ in 0..=MORE_DOUBLINGS {
+            let instants = 2 * chain.factor as u64 * signal.samples;
+            if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS)
+            {
+                break;
+            }
+            chain.factor *= 2;
+            let finer = chain.run(source, &mut tick)?;
+            let finer_judgement = verdict_of(study, self.stage.as_ref(), &finer);
+            convergence = Convergence {
+                against_factor: run.factor,
+                moved_db: largest_move(&judgement, &finer_judgement),
+            };
+            (run, judgement) = (finer, finer_judgement);
+            if convergence.moved_db <= CONVERGED_DB {
+                break;
+            }
+        }
+        let metrics = metrics(study, &run, &judgement)?;
+        let mut result = CheckResult {
+            study: study.clone(),
+            rate: RateFacts {
+                factor: run.factor,
+                rate_hz: run.rate_hz,
+                reason,
+                samples: run.output_envelope.samples,
+                convergence,
+            },
+            signal: signal.clone(),
+            map: self.map.clone(),
+            stage: self.stage.clone(),
+            table: match front {
+                Front::Table(table) => Some(table),
+                Front::None | Front::Polynomial(_) => None,
+            },
+            metrics,
+            output_spectrum: run.output_spectrum,
+            wanted_spectrum: run.wanted_spectrum,
+            peak_spectra: run.peak_spectra,
+            output_envelope: run.output_envelope,
+            wanted_envelope: run.wanted_envelope,
+            control_density: run.control_density,
+            notch: run.notch,
+            warnings: Vec::new(),
+            judgement,
+        };
+        result.warnings = warnings(&result, run.held);
+        Ok(result)
+    }
 }
 
 /// The map, and the stage at full supply where there is one.

@@ -4,6 +4,7 @@ use crate::input::Problem;
 use crate::map::SweepError;
 use crate::metrics::{PairError, SpectrumError};
 use crate::orbit::{NetworkError, OrbitError};
+use crate::predistort::{FitError, TableError};
 use crate::signal::SignalError;
 
 /// The step that failed, with its own words.
@@ -30,6 +31,22 @@ pub enum StudyError {
     /// Output and wanted signal cannot be compared.
     #[error("the comparison of output and wanted signal: {0}")]
     Pair(#[from] PairError),
+    /// No table can be made.
+    #[error("the table: {0}")]
+    Table(#[from] TableError),
+    /// No polynomial can be fitted.
+    #[error(transparent)]
+    Polynomial(#[from] FitError),
+    /// A table for another range of the control.
+    #[error(
+        "the table is for a full control of {table_v} V, the study's hardware has {given_v} V: make the table again for this study"
+    )]
+    OtherRange {
+        /// The table's.
+        table_v: f64,
+        /// The study's.
+        given_v: f64,
+    },
     /// Too few samples are left once the start and the end are taken off.
     #[error(
         "the signal has {given} samples: too few, at least {needed} are needed for a spectrum in {resolution_hz} Hz beside start and end. Use a longer signal, or limits with a wider bandwidth"

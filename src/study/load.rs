@@ -5,6 +5,7 @@ use crate::input::{Document, Files, Problem, Range, Section};
 use crate::limits::{Limits, LimitsRequest};
 use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
 use crate::math::Window;
+use crate::predistort::{Table, TableRequest, read_table};
 use crate::signal::FormatOptions;
 use crate::stage::Stage;
 use crate::units::Dimension;
@@ -24,6 +25,8 @@ pub struct Study {
     pub signal: SignalChoice,
     /// How it moves the controls.
     pub scheme: Scheme,
+    /// What stands in front of the scheme.
+    pub predistort: Option<Predistortion>,
     /// What it is held against.
     pub limits: Limits,
     /// Window of the spectra.
@@ -69,6 +72,15 @@ impl Hardware {
     }
 }
 
+/// What stands in front of the scheme.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Predistortion {
+    /// A table from a file.
+    Table(Table),
+    /// A table to be made from the map.
+    Request(TableRequest),
+}
+
 /// What is transmitted.
 #[derive(Debug, Clone, PartialEq)]
 pub struct SignalChoice {
@@ -94,13 +106,9 @@ impl Study {
     /// The first thing wrong in any of the files, with its place.
     pub fn read(name: &str, files: &dyn Files) -> Result<Self, Problem> {
         let shown = files.display(name);
-        let text = files.text(name).map_err(|error| {
-            Problem::about_file(
-                &shown,
-                format!("a file that cannot be read ({error})"),
-                "a study file",
-            )
-        })?;
+        let text = files
+            .text(name)
+            .map_err(|error| Problem::unreadable(&shown, &error, "a study file, TOML in UTF-8"))?;
         let document = Document::parse(&shown, &text)?;
         let root = document.root();
         let signal = root.section("signal")?;
@@ -122,6 +130,10 @@ impl Study {
             hardware,
             signal: signal_choice(&signal)?,
             scheme: Scheme::read(&scheme)?,
+            predistort: root
+                .maybe_section("predistort")?
+                .map(|section| predistortion(&section, files))
+                .transpose()?,
             limits: match root.maybe_section("limits")? {
                 Some(section) => LimitsRequest::read(&section, files)?,
                 None => Limits::default(),
@@ -151,6 +163,24 @@ fn signal_choice(section: &Section<'_>) -> Result<SignalChoice, Problem> {
         file: section.text("file")?.to_owned(),
         options: FormatOptions::from_section(section)?,
         level: section.quantity("level", Dimension::Ratio, Range::UpTo(0.0, 1.0))?,
+    };
+    section.finish()?;
+    Ok(choice)
+}
+
+fn predistortion(section: &Section<'_>, files: &dyn Files) -> Result<Predistortion, Problem> {
+    let choice = match section.maybe_text("table")? {
+        None => Predistortion::Request(TableRequest::read(section)?),
+        Some(name) => {
+            let shown = files.display(name);
+            let reader = files.open(name).map_err(|error| {
+                section.problem(
+                    "table",
+                    format!("a file that can be read ({shown}: {error})"),
+                )
+            })?;
+            Predistortion::Table(read_table(&shown, reader)?)
+        }
     };
     section.finish()?;
     Ok(choice)

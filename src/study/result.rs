@@ -4,6 +4,7 @@ use crate::drive::{RateReason, Scheme};
 use crate::map::Map;
 use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum};
 use crate::orbit::{Orbit, Waveform};
+use crate::predistort::Table;
 use crate::verdict::{Judgement, MaskMargin};
 
 use super::load::Study;
@@ -20,6 +21,8 @@ pub struct CheckResult {
     pub map: Map,
     /// How a stage behaves at full supply; absent for a map from a file.
     pub stage: Option<StageFacts>,
+    /// The table that stood in front of the scheme.
+    pub table: Option<Table>,
     /// How finely it was sampled.
     pub rate: RateFacts,
     /// The numbers.

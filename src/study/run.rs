@@ -9,7 +9,7 @@ use num_complex::Complex64;
 use super::error::StudyError;
 use super::load::Study;
 use super::result::Notch;
-use crate::drive::{Modulator, Scheme, SupplyDrive, Track};
+use crate::drive::{Correction, Modulator, Scheme, SupplyDrive, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
@@ -37,6 +37,8 @@ const NOTCH_SAMPLES: usize = 12;
 pub struct Chain<'a> {
     pub study: &'a Study,
     pub map: &'a Map,
+    /// What stands in front of the scheme.
+    pub correction: Option<&'a Correction>,
     pub factor: usize,
     pub wanted: &'a Wanted,
     /// Resolution of the mean spectra, Hz.
@@ -95,11 +97,19 @@ impl Chain<'_> {
         &scheme.modulator
     }
 
+    /// Instants until nothing shows the start any more.
+    fn settling(&self, rate_hz: f64) -> usize {
+        let Scheme::Supply(scheme) = &self.study.scheme;
+        let own = SupplyDrive::settling(scheme, rate_hz);
+        own + self.correction.map_or(0, |correction| {
+            correction.span() * self.factor.div_ceil(correction.rate())
+        })
+    }
+
     /// First and last instant (exclusive) that count.
     fn span(&self, rate_hz: f64) -> (u64, u64) {
-        let Scheme::Supply(scheme) = &self.study.scheme;
         let edge = EDGE.min(self.signal_samples / 20) * self.factor as u64;
-        let settling = SupplyDrive::settling(scheme, rate_hz) as u64;
+        let settling = self.settling(rate_hz) as u64;
         (
             edge + settling,
             (self.signal_samples * self.factor as u64).saturating_sub(edge),
@@ -118,6 +128,9 @@ impl Chain<'_> {
         let Scheme::Supply(scheme) = &self.study.scheme;
         let full_v = self.study.hardware.full_supply_v();
         let mut drive = SupplyDrive::new(scheme, self.study.signal.level, full_v, rate_hz);
+        if let Some(correction) = self.correction {
+            drive = drive.corrected(correction, self.factor);
+        }
         let mut transmitter = MapTransmitter::new(self.map, self.modulator());
         let mut oversampled = Oversampled::new(source, self.factor)?;
         let mut samples = vec![Complex64::ZERO; BLOCK];
@@ -189,13 +202,12 @@ impl Chain<'_> {
         tick: &mut dyn FnMut(u64),
     ) -> Result<Run, StudyError> {
         let rate_hz = self.rate_hz(source);
-        let Scheme::Supply(scheme) = &self.study.scheme;
         let load_ohm = self.map.load_ohm();
         let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
         let (mut wanted_meter, _) = self.meters(rate_hz)?;
         let mut output_envelope = EnvelopeMeter::new(load_ohm);
         let mut wanted_envelope = EnvelopeMeter::new(load_ohm);
-        let search_s = SupplyDrive::settling(scheme, rate_hz) as f64 / rate_hz;
+        let search_s = self.settling(rate_hz) as f64 / rate_hz;
         let mut alignment = AlignmentMeter::new(rate_hz, search_s)?;
         let mut density = vec![0u64; DENSITY_BINS];
         let full_v = self.study.hardware.full_supply_v();

@@ -5,7 +5,7 @@ use std::path::PathBuf;
 use clap::{Args, Subcommand, ValueEnum};
 
 use crate::signal::{Centre, Ends, Format, Kind, Modulation, Ofdm, Phases, SingleCarrier, Tones};
-use crate::units::{self, Dimension};
+use crate::units::Dimension;
 
 /// Make a test signal, or show what a signal file holds
 #[derive(Debug, Args)]
@@ -247,12 +247,7 @@ pub(super) enum Numbers {
 }
 
 pub(super) fn quantity(text: &str, dimension: Dimension) -> Result<f64, String> {
-    units::parse(text, dimension).map_err(|error| {
-        format!(
-            "{error}; allowed: {dimension}, such as {}",
-            dimension.example()
-        )
-    })
+    crate::cli::arguments::quantity(dimension)(text)
 }
 
 pub(super) fn frequency(text: &str) -> Result<f64, String> {

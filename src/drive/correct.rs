@@ -1,0 +1,94 @@
+//! Predistortion in front of a scheme: a table or a polynomial on its own clock, held in between.
+
+use num_complex::Complex64;
+
+use super::lookup::Lookup;
+use super::polynomial::{Polynomial, PolynomialStream};
+
+/// What stands in front of the scheme.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Correction {
+    /// Magnitude to control and phase; the scheme's own shaping is in the table.
+    Table(Lookup),
+    /// Signal to signal; the scheme follows as it is.
+    Polynomial(Polynomial),
+}
+
+impl Correction {
+    /// How often it is applied, in times the signal's rate.
+    pub fn rate(&self) -> usize {
+        match self {
+            Self::Table(lookup) => lookup.rate(),
+            Self::Polynomial(polynomial) => polynomial.rate,
+        }
+    }
+
+    /// Samples of its own clock over which one output reaches, the hold included.
+    pub fn span(&self) -> usize {
+        match self {
+            Self::Table(_) => 1,
+            Self::Polynomial(polynomial) => polynomial.memory() + 1,
+        }
+    }
+}
+
+/// A correction on one of the scheme's two paths. Each path samples the signal it carries, its dead time already
+/// behind it: the front end delays before it corrects.
+#[derive(Debug, Clone)]
+pub(super) struct Corrector {
+    /// Instants from one sample of the correction to the next.
+    every: usize,
+    clock: usize,
+    work: Work,
+    held: Corrected,
+}
+
+#[derive(Debug, Clone)]
+enum Work {
+    Table(Lookup),
+    Polynomial(PolynomialStream),
+}
+
+/// What a correction makes of a sample.
+#[derive(Debug, Clone, Copy)]
+pub(super) enum Corrected {
+    /// The control as a fraction of its range, and the signal with its phase corrected.
+    Direct { control: f64, signal: Complex64 },
+    /// Another signal for the scheme.
+    Signal(Complex64),
+}
+
+impl Corrector {
+    /// `correction` for a stream of `factor` times the signal's rate.
+    pub(super) fn new(correction: &Correction, factor: usize) -> Self {
+        Self {
+            every: (factor / correction.rate()).max(1),
+            clock: 0,
+            work: match correction {
+                Correction::Table(lookup) => Work::Table(lookup.clone()),
+                Correction::Polynomial(polynomial) => {
+                    Work::Polynomial(PolynomialStream::new(polynomial))
+                }
+            },
+            held: Corrected::Signal(Complex64::ZERO),
+        }
+    }
+
+    /// The next instant; `level` is the signal's full scale as a fraction of the control's range.
+    pub(super) fn push(&mut self, sample: Complex64, level: f64) -> Corrected {
+        if self.clock == 0 {
+            self.held = match &mut self.work {
+                Work::Table(lookup) => {
+                    let word = lookup.word(level * sample.norm_sqr().sqrt());
+                    Corrected::Direct {
+                        control: lookup.control(word),
+                        signal: sample * lookup.phasor(word),
+                    }
+                }
+                Work::Polynomial(stream) => Corrected::Signal(stream.push(sample)),
+            };
+        }
+        self.clock = (self.clock + 1) % self.every;
+        self.held
+    }
+}

@@ -1,0 +1,136 @@
+//! Reads a table that was written as JSON.
+
+use std::io::Read;
+
+use super::Table;
+use crate::drive::{Between, Lookup, LookupSize, Spacing, Word};
+use crate::input::{Complaint, MAX_TEXT_BYTES, Place, Problem};
+
+#[derive(serde::Deserialize)]
+struct Document {
+    kind: String,
+    version: u32,
+    #[serde(default)]
+    title: String,
+    full_control: f64,
+    full_output_v: Option<f64>,
+    depth: usize,
+    address_bits: u32,
+    amplitude_bits: u32,
+    phase_bits: u32,
+    spacing: SpacingWords,
+    between: BetweenWord,
+    rate: usize,
+    control_words: Vec<u32>,
+    phase_words: Vec<i32>,
+}
+
+#[derive(serde::Deserialize)]
+#[serde(tag = "law", rename_all = "snake_case")]
+enum SpacingWords {
+    Magnitude,
+    Power,
+    Companded { mu: f64 },
+}
+
+#[derive(serde::Deserialize)]
+#[serde(rename_all = "snake_case")]
+enum BetweenWord {
+    Nearest,
+    Linear,
+}
+
+/// Reads the table in `reader`, which came from `file`.
+///
+/// # Errors
+/// The first thing wrong, with its line where the text is no such document.
+pub fn read_table(file: &str, reader: impl Read) -> Result<Table, Problem> {
+    let about = |given: String, allowed: &str| Problem::about_file(file, given, allowed);
+    let mut text = String::new();
+    match reader.take(MAX_TEXT_BYTES + 1).read_to_string(&mut text) {
+        Err(error) => {
+            return Err(about(
+                format!("a file that cannot be read ({error})"),
+                "text",
+            ));
+        }
+        Ok(size) if size as u64 > MAX_TEXT_BYTES => {
+            return Err(about(
+                format!("more than {MAX_TEXT_BYTES} bytes"),
+                "a table of 65536 entries at most",
+            ));
+        }
+        Ok(_) => {}
+    }
+    let document: Document = serde_json::from_str(&text).map_err(|error| {
+        let line = text
+            .lines()
+            .nth(error.line().saturating_sub(1))
+            .unwrap_or_default();
+        Problem::from(Complaint {
+            file: file.to_owned(),
+            place: Some(Place {
+                line: error.line(),
+                column: error.column().max(1),
+                text: line.chars().take(200).collect(),
+                width: 1,
+            }),
+            key: String::new(),
+            given: error.to_string(),
+            allowed: "a table as `quietedge predistort` writes it into table.json".to_owned(),
+            hint: None,
+        })
+    })?;
+    if document.kind != "static table" || document.version != 1 {
+        return Err(about(
+            format!("kind \"{}\", version {}", document.kind, document.version),
+            "kind \"static table\", version 1",
+        ));
+    }
+    if !(document.full_control > 0.0 && document.full_control.is_finite()) {
+        return Err(about(
+            format!("full_control = {}", document.full_control),
+            "a positive finite number",
+        ));
+    }
+    if document.control_words.len() != document.phase_words.len() {
+        return Err(about(
+            format!(
+                "{} control words and {} phase words",
+                document.control_words.len(),
+                document.phase_words.len()
+            ),
+            "equally many",
+        ));
+    }
+    let words = document.control_words.iter().zip(&document.phase_words);
+    let lookup = Lookup::new(
+        LookupSize {
+            depth: document.depth,
+            address_bits: document.address_bits,
+            amplitude_bits: document.amplitude_bits,
+            phase_bits: document.phase_bits,
+        },
+        match document.spacing {
+            SpacingWords::Magnitude => Spacing::Magnitude,
+            SpacingWords::Power => Spacing::Power,
+            SpacingWords::Companded { mu } => Spacing::Companded { mu },
+        },
+        match document.between {
+            BetweenWord::Nearest => Between::Nearest,
+            BetweenWord::Linear => Between::Linear,
+        },
+        document.rate,
+        words
+            .map(|(&control, &phase)| Word { control, phase })
+            .collect(),
+    )
+    .map_err(|error| about(error.to_string(), "a table whose words fit its sizes"))?;
+    Ok(Table {
+        lookup,
+        entries: Vec::new(),
+        full_control: document.full_control,
+        full_output_v: document.full_output_v,
+        title: document.title,
+    })
+}
