@@ -81,6 +81,37 @@ fn stage() -> impl Strategy<Value = String> {
         })
 }
 
+/// Found by the search: a step after the diode's corner was shorter than the finest fraction of its segment.
+const SHORTEST_STEP: &str = r#"
+frequency = "169.4 MHz"
+supply = { voltage = 26.320613886791627 }
+switch = { closed_resistance = 0.005595631578712327, diode = { drop = 4.093879833365655, resistance = 0.3 } }
+driver = { duty = 0.29659521403892947, swing = 3, rise = 0.0000000009300159548361479, fall = 0.0000000002 }
+feed = { inductance = 0.00000001, resistance = 0.05 }
+[drain]
+capacitance = 0.00000000002
+junction = { zero_bias = 0.0000003784997262944971, potential = 0.2766678912017115, grading = 2.129449934311377 }
+gate_coupling = 0.000000000002
+[load]
+resistance = 6.925869994737929
+[[load.ladder]]
+series = { inductance = 0.00000003, q = 143.88517413495987 }
+[[load.ladder]]
+series = { inductance = 0.0000015994435491668928 }
+"#;
+
+#[test]
+fn what_the_search_found_ends() {
+    let stage = Stage::parse("found", SHORTEST_STEP).unwrap();
+    let network = Network::new(&stage).unwrap();
+    let drive = Drive::new(&stage.driver, stage.driver.duty);
+    let outcome = network.orbit(stage.supply_v, &drive);
+    println!("{:?}", outcome.as_ref().map(|orbit| orbit.energy_residual));
+    if let Ok(orbit) = outcome {
+        assert!(orbit.energy_residual.abs() <= 1e-6);
+    }
+}
+
 proptest! {
     #![proptest_config(ProptestConfig { failure_persistence: None, ..ProptestConfig::with_cases(
         std::env::var("PROPTEST_CASES").ok().and_then(|text| text.parse().ok()).unwrap_or(24)

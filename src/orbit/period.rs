@@ -312,6 +312,8 @@ impl Engine {
             let here = match at {
                 At::Grid(p) if p >= END => break,
                 At::Grid(p) => p as f64 * unit,
+                // The corner was crossed at the very end.
+                At::Free(t) if t >= length * (1.0 - 1e-15) => break,
                 At::Free(t) => t,
             };
             let target = match given {
@@ -422,7 +424,7 @@ impl Engine {
             at = At::Grid(target);
             flips = 0;
             if first {
-                self.segments[index].first_level = level_of(h);
+                self.segments[index].first_level = level_of(h).min(LEVELS);
                 first = false;
             }
             level = level_of(h * factor).max(coarsest);
@@ -432,6 +434,7 @@ impl Engine {
 
     /// The end of the next step: on the grid of the coarsest level that is fine enough and lined up.
     fn next_end(&self, at: At, here: f64, unit: f64, level: &mut u32) -> u64 {
+        *level = (*level).min(LEVELS);
         match at {
             At::Grid(p) => {
                 if p > 0 {
