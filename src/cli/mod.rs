@@ -7,6 +7,7 @@ mod console;
 mod disk;
 mod limits;
 mod map;
+mod measure;
 mod output;
 mod predistort;
 mod signal;
@@ -55,6 +56,7 @@ enum Command {
     Solve(solve::Arguments),
     Map(map::Arguments),
     Predistort(predistort::Arguments),
+    Measure(measure::Arguments),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
     Completions(completions::Arguments),
@@ -81,6 +83,7 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
         Command::Solve(arguments) => solve::run(&arguments, &console),
         Command::Map(arguments) => map::run(&arguments, &console),
         Command::Predistort(arguments) => predistort::run(&arguments, &console),
+        Command::Measure(arguments) => measure::run(&arguments, &console),
         Command::Signal(arguments) => signal::run(&arguments, &console),
         Command::Limits(arguments) => limits::run(&arguments, &console),
         Command::Completions(arguments) => completions::run(&arguments, &console),

@@ -98,8 +98,15 @@ fn save(recipe: &Recipe, output: &Output, console: &Console) -> Result<Ending, F
     let shown = output.out.display().to_string();
     let writing = writing(&shown, output.numbers)?;
     let sidecar = writing.sidecar(recipe.rate_hz());
-    let name = file_name(&output.out)?;
-    let sidecar_name = format!("{name}.toml");
+    let mut name = file_name(&output.out)?;
+    let mut sidecar_name = format!("{name}.toml");
+    if writing.format() == Format::Sigmf
+        && let Some((stem, _)) = name.rsplit_once('.')
+    {
+        // Either file of the recording names both.
+        sidecar_name = format!("{stem}.sigmf-meta");
+        name = format!("{stem}.sigmf-data");
+    }
     let folder = match output.out.parent() {
         Some(folder) if folder != Path::new("") => folder,
         _ => Path::new("."),
@@ -164,9 +171,11 @@ fn writing(shown: &str, numbers: Option<Numbers>) -> Result<Writing, Failure> {
         (Format::Ci16, None | Some(Numbers::Int16)) => Writing::Ci16,
         (Format::Npy, None | Some(Numbers::Float32)) => Writing::NpyComplex64,
         (Format::Npy, Some(Numbers::Float64)) => Writing::NpyComplex128,
+        (Format::Sigmf, None | Some(Numbers::Float32)) => Writing::SigmfCf32,
+        (Format::Sigmf, Some(Numbers::Int16)) => Writing::SigmfCi16,
         (format, Some(_)) => {
             return Err(Failure::new(format!(
-                "--numbers: .{} cannot hold these; allowed: int16, int24 or float32 in .wav, float32 or float64 in .npy, nothing else elsewhere",
+                "--numbers: .{} cannot hold these; allowed: int16, int24 or float32 in .wav, float32 or float64 in .npy, int16 or float32 in .sigmf-meta, nothing else elsewhere",
                 format.name()
             )));
         }

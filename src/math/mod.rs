@@ -4,6 +4,7 @@ pub mod delay;
 pub mod fft;
 pub mod fir;
 pub mod flow;
+pub mod kernel;
 pub mod least_squares;
 pub mod lowpass;
 pub mod monotone;

@@ -226,7 +226,13 @@ fn key_rows(result: &CheckResult) -> Vec<[String; 3]> {
         row(
             "EVM",
             format!("{:.2} %", metrics.evm_percent),
-            format!("RMS in {band}; peak {:.2} %", metrics.evm_peak_percent),
+            match metrics.evm_p95_percent {
+                Some(p95) => format!(
+                    "RMS of symbols; 95 % below {p95:.2} %, peak {:.2} %; of the waveform in {band} {:.2} %",
+                    metrics.evm_peak_percent, metrics.waveform_evm_percent
+                ),
+                None => format!("RMS in {band}; peak {:.2} %", metrics.evm_peak_percent),
+            },
         ),
         row(
             "NMSE",

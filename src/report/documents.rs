@@ -150,6 +150,7 @@ pub fn check_document(result: &CheckResult) -> Value {
         "level": result.study.signal.level,
         "sampling": result.rate,
         "metrics": result.metrics,
+        "symbols": result.symbols,
         "verdict": result.judgement.verdict,
         "predistort": result.table.as_ref().map(|table| json!({
             "size": table.lookup.size(),

@@ -15,6 +15,7 @@ pub mod documents;
 mod error;
 pub mod figures;
 pub mod limits;
+pub mod measure;
 pub mod page;
 pub mod palette;
 pub mod picture;

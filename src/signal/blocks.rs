@@ -20,15 +20,19 @@ pub(super) enum Encoding {
     F64,
     F32Big,
     F64Big,
+    I8,
+    I16Big,
+    I32Big,
 }
 
 impl Encoding {
     /// Bytes of one number.
     pub(super) fn bytes(self) -> usize {
         match self {
-            Self::I16 => 2,
+            Self::I8 => 1,
+            Self::I16 | Self::I16Big => 2,
             Self::I24 => 3,
-            Self::I32 | Self::F32 | Self::F32Big => 4,
+            Self::I32 | Self::I32Big | Self::F32 | Self::F32Big => 4,
             Self::F64 | Self::F64Big => 8,
         }
     }
@@ -36,9 +40,10 @@ impl Encoding {
     /// The code that is full scale: integers are scaled so that the most negative code is -1.0.
     pub(super) fn full_scale(self) -> f64 {
         match self {
-            Self::I16 => 32_768.0,
+            Self::I8 => 128.0,
+            Self::I16 | Self::I16Big => 32_768.0,
             Self::I24 => 8_388_608.0,
-            Self::I32 => 2_147_483_648.0,
+            Self::I32 | Self::I32Big => 2_147_483_648.0,
             Self::F32 | Self::F64 | Self::F32Big | Self::F64Big => 1.0,
         }
     }
@@ -144,6 +149,9 @@ impl Blocks {
             Encoding::F64 => pairs(&self.bytes, out, gain, f64::from_le_bytes),
             Encoding::F32Big => pairs(&self.bytes, out, gain, f32_be),
             Encoding::F64Big => pairs(&self.bytes, out, gain, f64::from_be_bytes),
+            Encoding::I8 => pairs(&self.bytes, out, gain, i8_only),
+            Encoding::I16Big => pairs(&self.bytes, out, gain, i16_be),
+            Encoding::I32Big => pairs(&self.bytes, out, gain, i32_be),
         }
         let finite = |x: &Complex64| x.re.is_finite() & x.im.is_finite();
         if !out.iter().fold(true, |all, x| all & finite(x)) {
@@ -167,6 +175,9 @@ impl Blocks {
             Encoding::F64 => levels(&self.bytes, out, gain, f64::from_le_bytes),
             Encoding::F32Big => levels(&self.bytes, out, gain, f32_be),
             Encoding::F64Big => levels(&self.bytes, out, gain, f64::from_be_bytes),
+            Encoding::I8 => levels(&self.bytes, out, gain, i8_only),
+            Encoding::I16Big => levels(&self.bytes, out, gain, i16_be),
+            Encoding::I32Big => levels(&self.bytes, out, gain, i32_be),
         }
         if let Some(at) = out.iter().position(|x| !x.is_finite()) {
             return Err(self.not_finite(at, out[at].to_string()));
@@ -200,6 +211,18 @@ impl Source for Blocks {
     fn rewind(&mut self) -> Result<(), SignalError> {
         Blocks::rewind(self)
     }
+}
+
+fn i8_only([byte]: [u8; 1]) -> f64 {
+    f64::from(byte as i8)
+}
+
+fn i16_be(bytes: [u8; 2]) -> f64 {
+    f64::from(i16::from_be_bytes(bytes))
+}
+
+fn i32_be(bytes: [u8; 4]) -> f64 {
+    f64::from(i32::from_be_bytes(bytes))
 }
 
 fn i16_le(bytes: [u8; 2]) -> f64 {

@@ -28,7 +28,7 @@ pub enum SignalError {
     },
     /// Neither the file's name nor the settings say how it is written.
     #[error(
-        "{file}: the name does not say the format; allowed extensions: .wav, .csv, .cf32, .ci16, .npy; or state `format`{hint}"
+        "{file}: the name does not say the format; allowed extensions: .wav, .csv, .cf32, .ci16, .npy, .sigmf-meta; or state `format`{hint}"
     )]
     UnknownFormat {
         /// The file, as the user named it.

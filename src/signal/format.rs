@@ -2,7 +2,7 @@
 
 use serde::Serialize;
 
-use super::SignalError;
+use super::{SignalError, sigmf};
 use crate::input::{Problem, Range, Section, nearest};
 use crate::units::Dimension;
 
@@ -20,19 +20,22 @@ pub enum Format {
     Ci16,
     /// NumPy array file, one-dimensional, complex64 or complex128.
     Npy,
+    /// A SigMF recording, `NAME.sigmf-meta` beside `NAME.sigmf-data`.
+    Sigmf,
 }
 
 impl Format {
-    /// Every format with its name in settings, which is its extension too.
-    pub const ALL: [(&'static str, Self); 5] = [
+    /// Every format with its name in settings, which is its extension too but for SigMF's two files.
+    pub const ALL: [(&'static str, Self); 6] = [
         ("wav", Self::Wav),
         ("csv", Self::Csv),
         ("cf32", Self::Cf32),
         ("ci16", Self::Ci16),
         ("npy", Self::Npy),
+        ("sigmf", Self::Sigmf),
     ];
 
-    /// The name in settings, and the extension.
+    /// The name in settings.
     pub fn name(self) -> &'static str {
         Self::ALL
             .iter()
@@ -49,6 +52,17 @@ impl Format {
         let extension = base
             .rsplit_once('.')
             .map_or(String::new(), |(_, extension)| extension.to_lowercase());
+        if sigmf::stem(name).is_some() {
+            return Ok(Self::Sigmf);
+        }
+        if extension == "sigmf" {
+            return Err(SignalError::UnknownFormat {
+                file: name.to_owned(),
+                hint:
+                    "; a .sigmf archive must be unpacked (it is a tar file): name its .sigmf-meta"
+                        .to_owned(),
+            });
+        }
         if let Some((_, format)) = Self::ALL.iter().find(|(word, _)| *word == extension) {
             return Ok(*format);
         }
@@ -88,6 +102,22 @@ impl FormatOptions {
     pub fn from_section(section: &Section<'_>) -> Result<Self, Problem> {
         Ok(Self {
             format: section.maybe_choice("format", &Format::ALL)?,
+            rate_hz: section.maybe_quantity("rate", Dimension::Frequency, Range::Positive)?,
+            full_scale: section.maybe_quantity("full_scale", Dimension::Ratio, Range::Positive)?,
+        })
+    }
+
+    /// As [`FormatOptions::from_section`] for the table `[signal]` of a study, where `format` may also be a table
+    /// that describes the signal itself.
+    ///
+    /// # Errors
+    /// As [`FormatOptions::from_section`].
+    pub fn from_study(section: &Section<'_>) -> Result<Self, Problem> {
+        if !matches!(section.maybe_section("format"), Ok(Some(_))) {
+            return Self::from_section(section);
+        }
+        Ok(Self {
+            format: None,
             rate_hz: section.maybe_quantity("rate", Dimension::Frequency, Range::Positive)?,
             full_scale: section.maybe_quantity("full_scale", Dimension::Ratio, Range::Positive)?,
         })

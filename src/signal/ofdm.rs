@@ -84,6 +84,16 @@ impl Ofdm {
             .collect()
     }
 
+    /// What is wrong with the parameters that describe the format, in words; nothing where they can be.
+    pub fn format_problem(&self) -> Option<String> {
+        let one = Self {
+            oversampling: 1,
+            symbols: 1,
+            ..*self
+        };
+        one.check().err().map(|error| error.to_string())
+    }
+
     /// Checks the parameters; returns the number of samples.
     pub(super) fn check(&self) -> Result<usize, SignalError> {
         recipe::positive("carrier spacing", self.spacing_hz)?;

@@ -7,7 +7,7 @@ use super::format::{Format, FormatOptions};
 use super::pulse::{PcmEdges, PulseSource, TextEdges};
 use super::text::{Columns, TextSamples};
 use super::wav::Channels;
-use super::{SignalError, Source, npy, wav};
+use super::{SignalError, Source, npy, sigmf, wav};
 use crate::input::{Document, Files, ReadSeek};
 
 /// Opens the I/Q signal `name`. Its header is read and checked now, its samples as they are asked for.
@@ -29,6 +29,10 @@ pub fn open(
         Format::Npy => npy::layout(&mut reader, &file, &options)?,
         Format::Cf32 => raw_layout(&mut reader, &file, &options, Encoding::F32)?,
         Format::Ci16 => raw_layout(&mut reader, &file, &options, Encoding::I16)?,
+        Format::Sigmf => {
+            let (reader, layout) = sigmf::open(files, name, &options)?;
+            return Ok(Box::new(Blocks::new(reader, layout)?));
+        }
         Format::Csv => {
             let hint = "; a file with time,level is a pulse sequence, which only a scheme that takes pulses can use";
             let columns = Columns::new(reader, &file, ["i", "q"], hint)?;
@@ -76,7 +80,7 @@ pub fn open_pulses(
 }
 
 /// Rates beyond these are slips of a prefix.
-const RATES_HZ: (f64, f64) = (1e-6, 1e15);
+pub(super) const RATES_HZ: (f64, f64) = (1e-6, 1e15);
 
 /// Full scales beyond these would overflow or vanish.
 const FULL_SCALES: (f64, f64) = (1e-15, 1e15);

@@ -28,6 +28,10 @@ pub enum Writing {
     NpyComplex64,
     /// NumPy complex128.
     NpyComplex128,
+    /// The samples of a SigMF recording, 32-bit floats.
+    SigmfCf32,
+    /// The samples of a SigMF recording, 16-bit integers, 32768 for 1.0.
+    SigmfCi16,
 }
 
 impl Writing {
@@ -39,12 +43,19 @@ impl Writing {
             Self::Cf32 => Format::Cf32,
             Self::Ci16 => Format::Ci16,
             Self::NpyComplex64 | Self::NpyComplex128 => Format::Npy,
+            Self::SigmfCf32 | Self::SigmfCi16 => Format::Sigmf,
         }
     }
 
     /// The text of the file `name.toml` that must stand beside the file for it to be read without
     /// options; `None` where the file itself holds its rate.
+    /// A SigMF recording has its metadata, [`super::sigmf_meta`], in place of it.
     pub fn sidecar(self, rate_hz: f64) -> Option<String> {
+        match self {
+            Self::SigmfCf32 => return Some(super::sigmf_meta("cf32_le", rate_hz, "test signal")),
+            Self::SigmfCi16 => return Some(super::sigmf_meta("ci16_le", rate_hz, "test signal")),
+            _ => {}
+        }
         (self.format() != Format::Wav).then(|| format!("rate = {rate_hz:?}  # Hz\n"))
     }
 }
@@ -74,8 +85,8 @@ pub fn write<W: Write + Seek>(
                 writeln!(sink, "{:?},{:?}", x.re, x.im)
             })
         }
-        Writing::Cf32 => stream(source, file, Ok(()), &mut sink, put_f32),
-        Writing::Ci16 => stream(source, file, Ok(()), &mut sink, |sink, x| {
+        Writing::Cf32 | Writing::SigmfCf32 => stream(source, file, Ok(()), &mut sink, put_f32),
+        Writing::Ci16 | Writing::SigmfCi16 => stream(source, file, Ok(()), &mut sink, |sink, x| {
             sink.write_all(&(code(x.re, 16)? as i16).to_le_bytes())?;
             sink.write_all(&(code(x.im, 16)? as i16).to_le_bytes())
         }),

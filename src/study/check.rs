@@ -238,6 +238,7 @@ impl<'a> Bench<'a> {
             output_envelope: run.output_envelope,
             wanted_envelope: run.wanted_envelope,
             control_density: run.control_density,
+            symbols: run.symbols,
             notch: run.notch,
             warnings: Vec::new(),
             judgement,
@@ -297,15 +298,16 @@ fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, S
 }
 
 fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement {
+    let symbols = run.symbols.as_ref();
     let measured = Measured {
         fine: &run.output_spectrum,
         peak_hold: &run.peak_spectra,
         mean_w: run.output_envelope.mean_w,
         peak_w: run.output_envelope.peak_w,
-        evm_percent: Some(run.errors.evm_percent),
-        evm_peak_percent: Some(run.errors.evm_peak_percent),
-        evm_p95_percent: None,
-        evm_p99_percent: None,
+        evm_percent: Some(symbols.map_or(run.errors.evm_percent, |s| s.evm_percent)),
+        evm_peak_percent: Some(symbols.map_or(run.errors.evm_peak_percent, |s| s.evm_peak_percent)),
+        evm_p95_percent: symbols.map(|s| s.evm_p95_percent),
+        evm_p99_percent: symbols.map(|s| s.evm_p99_percent),
         modulation: None,
         // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
         harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
@@ -338,14 +340,22 @@ fn metrics(study: &Study, run: &Run, judgement: &Judgement) -> Result<Metrics, S
     } else {
         judgement.acpr.clone()
     };
+    let symbols = run.symbols.as_ref();
     let known = |efficiency: f64| efficiency.is_finite().then_some(efficiency);
     Ok(Metrics {
         power_dbm: dbm_from_watt(run.output_envelope.mean_w),
         peak_power_dbm: dbm_from_watt(run.output_envelope.peak_w),
         papr_db: run.output_envelope.papr_db,
         occupied_hz: occupied_bandwidth(&run.output_spectrum, 0.99)?.width_hz(),
-        evm_percent: run.errors.evm_percent,
-        evm_peak_percent: run.errors.evm_peak_percent,
+        evm_percent: symbols.map_or(run.errors.evm_percent, |s| s.evm_percent),
+        evm_peak_percent: symbols.map_or(run.errors.evm_peak_percent, |s| s.evm_peak_percent),
+        evm_p95_percent: symbols.map(|s| s.evm_p95_percent),
+        evm_of: if symbols.is_some() {
+            "symbols"
+        } else {
+            "waveform"
+        },
+        waveform_evm_percent: run.errors.evm_percent,
         evm_band_hz: run.errors.band_hz,
         nmse_db: run.errors.nmse_db,
         delay_s: run.alignment.delay_s,

@@ -2,7 +2,7 @@
 
 use crate::input::Problem;
 use crate::map::SweepError;
-use crate::metrics::{PairError, SpectrumError};
+use crate::metrics::{PairError, SpectrumError, SymbolError, SyncError};
 use crate::orbit::{NetworkError, OrbitError};
 use crate::predistort::{FitError, TableError};
 use crate::signal::SignalError;
@@ -46,6 +46,24 @@ pub enum StudyError {
         table_v: f64,
         /// The study's.
         given_v: f64,
+    },
+    /// A capture cannot be laid against its reference.
+    #[error("the comparison with the reference: {0}")]
+    Sync(#[from] SyncError),
+    /// The symbols of a known format cannot be read.
+    #[error("the symbols: {0}")]
+    Symbols(#[from] SymbolError),
+    /// A capture is shorter than one spectrum.
+    #[error(
+        "{given} samples were captured, or follow the reference: at least {needed} are needed for a spectrum in {resolution_hz} Hz. Use a longer capture, or limits with a wider bandwidth"
+    )]
+    CaptureTooShort {
+        /// Samples that count.
+        given: u64,
+        /// Samples needed.
+        needed: u64,
+        /// The finest resolution that is wanted.
+        resolution_hz: f64,
     },
     /// Too few samples are left once the start and the end are taken off.
     #[error(

@@ -5,6 +5,7 @@ use crate::input::{Document, Files, Problem, Range, Section};
 use crate::limits::{Limits, LimitsRequest};
 use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
 use crate::math::Window;
+use crate::metrics::SymbolFormat;
 use crate::predistort::{Table, TableRequest, read_table};
 use crate::signal::FormatOptions;
 use crate::stage::Stage;
@@ -90,6 +91,8 @@ pub struct SignalChoice {
     pub options: FormatOptions,
     /// Signal full scale as a fraction of the control's full range.
     pub level: f64,
+    /// The signal's format, where the study states it: `[signal.format]`.
+    pub format: Option<SymbolFormat>,
 }
 
 const WINDOWS: [(&str, Window); 4] = [
@@ -161,8 +164,13 @@ impl Study {
 fn signal_choice(section: &Section<'_>) -> Result<SignalChoice, Problem> {
     let choice = SignalChoice {
         file: section.text("file")?.to_owned(),
-        options: FormatOptions::from_section(section)?,
+        options: FormatOptions::from_study(section)?,
         level: section.quantity("level", Dimension::Ratio, Range::UpTo(0.0, 1.0))?,
+        format: match section.maybe_section("format") {
+            // A word there is the file's format, a table the signal's.
+            Ok(Some(table)) => Some(SymbolFormat::read(&table)?),
+            Ok(None) | Err(_) => None,
+        },
     };
     section.finish()?;
     Ok(choice)

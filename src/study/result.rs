@@ -2,7 +2,7 @@
 
 use crate::drive::{RateReason, Scheme};
 use crate::map::Map;
-use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum};
+use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum, SymbolFigures};
 use crate::orbit::{Orbit, Waveform};
 use crate::predistort::Table;
 use crate::verdict::{Judgement, MaskMargin};
@@ -41,6 +41,8 @@ pub struct CheckResult {
     pub wanted_envelope: EnvelopeFigures,
     /// How often each hundredth of the control's range was used, parts of one.
     pub control_density: Vec<f64>,
+    /// Errors of symbols, where the study states the signal's format.
+    pub symbols: Option<SymbolFigures>,
     /// A stretch of time around the deepest notch.
     pub notch: Notch,
     /// What limits how far this can be trusted.
@@ -110,11 +112,17 @@ pub struct Metrics {
     pub papr_db: f64,
     /// Width that holds 99 % of the power.
     pub occupied_hz: f64,
-    /// RMS error in the band.
+    /// RMS error: of symbols where the study states the signal's format, else of the waveform in the band.
     pub evm_percent: f64,
-    /// Largest error in the band.
+    /// Largest error of the same.
     pub evm_peak_percent: f64,
-    /// The band of both, full width.
+    /// Error that 95 % of the symbols do not exceed.
+    pub evm_p95_percent: Option<f64>,
+    /// What the three are of: `symbols` or `waveform`.
+    pub evm_of: &'static str,
+    /// RMS error of the waveform in the band.
+    pub waveform_evm_percent: f64,
+    /// The band of the waveform's, full width.
     pub evm_band_hz: Option<f64>,
     /// Mean square error in all of the sampled band.
     pub nmse_db: f64,

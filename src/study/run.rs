@@ -6,6 +6,7 @@
 
 use num_complex::Complex64;
 
+use super::collect::Collected;
 use super::error::StudyError;
 use super::load::Study;
 use super::result::Notch;
@@ -13,7 +14,7 @@ use crate::drive::{Correction, Modulator, Scheme, SupplyDrive, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
-    Spectrum, SpectrumMeter, SpectrumPlan,
+    Spectrum, SpectrumMeter, SpectrumPlan, SymbolFigures,
 };
 use crate::signal::{Oversampled, Source};
 use crate::transmit::{Energy, MapTransmitter};
@@ -66,6 +67,8 @@ pub struct Run {
     pub held: f64,
     pub control_density: Vec<f64>,
     pub notch: Notch,
+    /// Errors of symbols, where the study states the signal's format.
+    pub symbols: Option<SymbolFigures>,
 }
 
 /// The instants of a block that count: start and end of the signal are left out.
@@ -237,11 +240,19 @@ impl Chain<'_> {
         let alignment = alignment.finish()?;
 
         let mut errors = ErrorMeter::new(alignment, rate_hz, Some(self.evm_band_hz))?;
+        let mut collected = self
+            .study
+            .signal
+            .format
+            .map(|format| Collected::new(format, self.factor, alignment.delay_s * rate_hz));
         let mut notch = Notch::default();
         let reach = (NOTCH_SAMPLES * self.factor) as u64;
         let level = self.study.signal.level;
         self.pass(source, tick, |piece| {
             errors.push(piece.wanted(), piece.output_v())?;
+            if let Some(collected) = &mut collected {
+                collected.push(piece.wanted(), piece.output_v());
+            }
             for at in piece.range.clone() {
                 let instant = piece.first + at as u64;
                 if instant.abs_diff(deepest.1) <= reach {
@@ -281,6 +292,9 @@ impl Chain<'_> {
                 .map(|&n| n as f64 / total.max(1) as f64)
                 .collect(),
             notch,
+            symbols: collected
+                .map(|collected| collected.finish(rate_hz / self.factor as f64))
+                .transpose()?,
         })
     }
 }

@@ -89,9 +89,11 @@ fn read_edges(source: &mut dyn PulseSource) -> Result<Vec<Edge>, SignalError> {
 fn held(x: f64, writing: Writing) -> f64 {
     let code = |full: f64| (x * full).round().min(full - 1.0) / full;
     match writing {
-        Writing::WavInt16 | Writing::Ci16 => code(32_768.0),
+        Writing::WavInt16 | Writing::Ci16 | Writing::SigmfCi16 => code(32_768.0),
         Writing::WavInt24 => code(8_388_608.0),
-        Writing::WavFloat | Writing::Cf32 | Writing::NpyComplex64 => f64::from(x as f32),
+        Writing::WavFloat | Writing::Cf32 | Writing::NpyComplex64 | Writing::SigmfCf32 => {
+            f64::from(x as f32)
+        }
         Writing::Csv | Writing::NpyComplex128 => x,
     }
 }

@@ -174,7 +174,7 @@ pub(super) struct Grid {
 
 #[derive(Debug, Args)]
 pub(super) struct Output {
-    /// The file to write: .wav, .csv, .cf32, .ci16 or .npy; a sidecar FILE.toml holds the rate of all but .wav
+    /// The file to write: .wav, .csv, .cf32, .ci16, .npy or .sigmf-meta (with .sigmf-data); a sidecar FILE.toml holds the rate of all but .wav and SigMF
     #[arg(long, value_name = "FILE")]
     pub(super) out: PathBuf,
     /// Overwrite files that are there already
@@ -263,7 +263,7 @@ pub(super) fn format(text: &str) -> Result<Format, String> {
         .iter()
         .find(|(name, _)| *name == text)
         .map(|(_, format)| *format)
-        .ok_or_else(|| "allowed: wav, csv, cf32, ci16, npy".to_owned())
+        .ok_or_else(|| "allowed: wav, csv, cf32, ci16, npy, sigmf".to_owned())
 }
 
 pub(super) fn carrier(shape: &CarrierArguments, output: &Output) -> Kind {

@@ -61,7 +61,7 @@ impl CloudFigure {
     }
 
     /// The raster, neighbours of the same shade in a row joined.
-    fn cells(&self) -> Vec<Cell> {
+    pub(super) fn cells(&self) -> Vec<Cell> {
         let usable = |value: f64| value.is_finite() && value.abs() < 1e15;
         let samples = || {
             self.samples

@@ -5,6 +5,7 @@
 mod bend;
 mod ccdf;
 mod cloud;
+mod constellation;
 mod envelope;
 mod lookup;
 mod map;
@@ -16,6 +17,7 @@ mod waveform;
 pub use bend::{BendCurve, BendFigure};
 pub use ccdf::{CcdfCurve, CcdfFigure};
 pub use cloud::CloudFigure;
+pub use constellation::ConstellationFigure;
 pub use envelope::{EnvelopeCurve, EnvelopeFigure};
 pub use lookup::{LookupCurve, LookupFigure};
 pub use map::MapFigure;
