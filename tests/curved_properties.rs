@@ -114,7 +114,7 @@ fn what_the_search_found_ends() {
 
 proptest! {
     #![proptest_config(ProptestConfig { failure_persistence: None, ..ProptestConfig::with_cases(
-        std::env::var("PROPTEST_CASES").ok().and_then(|text| text.parse().ok()).unwrap_or(24)
+        std::env::var("PROPTEST_CASES").ok().and_then(|text| text.parse().ok()).unwrap_or(12)
     ) })]
 
     #[test]
