@@ -8,8 +8,9 @@ use std::sync::Arc;
 use num_complex::Complex64;
 
 use super::device::{Device, Side, Throw};
+use super::engine::Engine;
 use super::network::HARMONICS;
-use super::period::{Engine, Observe, Passed, Scales};
+use super::period::{Observe, Passed, Scales};
 use super::port::Port;
 use super::step::Start;
 use crate::math::radau::{RADAU, STAGES, evaluate};

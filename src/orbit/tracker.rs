@@ -1,8 +1,9 @@
 //! Orbits one after another, each found from the last.
 
 use super::balance::Orbit;
+use super::engine::Engine;
 use super::network::{Drive, Model, Network, OrbitError, check};
-use super::period::{Engine, Scales, State};
+use super::period::{Scales, State};
 use super::shooting::Found;
 
 /// Solves orbits of one network, starting from the one before: continuation along a map. For a linear stage it is
