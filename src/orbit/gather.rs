@@ -48,6 +48,8 @@ pub struct Gathered {
 pub struct Extreme {
     sign: f64,
     pub v: f64,
+    /// The largest at the ends of steps, which lie on the orbit itself.
+    seen: f64,
     within: Option<Within>,
 }
 
@@ -71,6 +73,7 @@ impl Gathered {
             [1.0, -1.0].map(|sign: f64| Extreme {
                 sign,
                 v: -sign * f64::INFINITY,
+                seen: -sign * f64::INFINITY,
                 within: None,
             })
         };
@@ -171,7 +174,12 @@ impl Gathered {
                     &within.guess,
                     scales,
                 ) {
-                    extreme.v = v;
+                    // Rounding must not take a flat extreme past what was met.
+                    extreme.v = if extreme.sign * (v - extreme.seen) > 0.0 {
+                        v
+                    } else {
+                        extreme.seen
+                    };
                 }
             }
         }
@@ -212,6 +220,9 @@ impl Extreme {
         let better = |best: f64, v: f64| self.sign * (v - best) > 0.0;
         let mut best = self.v;
         for v in [start, passed.solved.v[STAGES - 1]] {
+            if self.sign * (v - self.seen) > 0.0 {
+                self.seen = v;
+            }
             if better(best, v) {
                 best = v;
                 self.within = None;
