@@ -335,3 +335,51 @@ fn unwrapped(points: &[MapPoint], amplitude: &[f64]) -> Result<Vec<f64>, MapErro
     }
     Ok(phase)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    fn point(control: f64) -> MapPoint {
+        MapPoint {
+            control,
+            output_v: Complex64::new(2.0 * control, 0.0),
+            supply_v: control,
+            supply_a: Some(control),
+            efficiency: None,
+            switch_peak_v: None,
+            switch_peak_a: None,
+            switch_min_v: None,
+            closing_v: None,
+            driver_w: Some(0.5),
+        }
+    }
+
+    #[test]
+    fn nothing_is_interpolated_over_failed_points() {
+        let failure = |control| Failure {
+            control,
+            reason: "no orbit".to_owned(),
+        };
+        // 3 and 4 failed inside, 9 beyond the last point.
+        let points = [0.0, 1.0, 2.0, 5.0, 6.0].map(point).to_vec();
+        let map = Map::new(Control::Supply, Origin::Stage, 1e6, 50.0, points)
+            .unwrap()
+            .with_failures(vec![failure(4.0), failure(9.0), failure(3.0)]);
+        for control in [2.001, 3.0, 3.7, 4.999] {
+            assert_eq!(map.output_v(control), None);
+            assert_eq!(map.inverse(2.0 * control), None);
+            let (held_v, held) = map.output_held_v(control);
+            let edge: f64 = if control < 3.5 { 2.0 } else { 5.0 };
+            assert!(held && (held_v.re - 2.0 * edge).abs() < 1e-12);
+        }
+        for control in [0.5, 2.0, 5.0, 5.5] {
+            assert!((map.output_v(control).unwrap().re - 2.0 * control).abs() < 1e-12);
+            assert!((map.inverse(2.0 * control).unwrap() - control).abs() < 1e-12);
+            assert!(!map.output_held_v(control).1);
+        }
+        assert_eq!(map.output_v(9.0), None);
+        let order: Vec<f64> = map.failures().iter().map(|f| f.control).collect();
+        assert_eq!(order, [3.0, 4.0, 9.0]);
+    }
+}

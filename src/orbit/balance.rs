@@ -2,7 +2,7 @@
 
 use num_complex::Complex64;
 
-use super::curved::gate_charge_w;
+use super::figures::gate_charge_w;
 use super::linear::UnitOrbit;
 use super::network::{Drive, HARMONICS, OrbitError};
 use crate::stage::Stage;

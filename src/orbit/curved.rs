@@ -1,17 +1,20 @@
 //! Orbits of curved stages: from a periodic state to the figures of an [`Orbit`].
 
-use std::f64::consts::{PI, TAU};
+use std::f64::consts::TAU;
 use std::sync::Arc;
 
-use super::balance::{Losses, Orbit};
-use super::circuit::Owner;
-use super::device::{Side, Throw};
-use super::gather::Gathered;
-use super::network::{Drive, HARMONICS, OrbitError};
+use super::balance::Orbit;
+use super::device::Throw;
+use super::engine::Engine;
+use super::figures::{at_rest, orbit};
+use super::gather::{Gathered, Gatherer};
+use super::network::{Drive, OrbitError};
 #[cfg(test)]
-use super::period::Scales;
-use super::period::{Engine, Passed, Sensitivity, State};
-use super::port::{Port, Row, Source};
+use super::period::Observe;
+use super::period::{Nobody, Passed, Scales, Sensitivity, State, WORK_LIMIT};
+use super::port::Port;
+#[cfg(test)]
+use super::port::Source;
 use super::shooting::{self, Found};
 use super::waveform::Waveform;
 use crate::math::radau::{RADAU, STAGES, evaluate};
@@ -62,15 +65,17 @@ impl Curved {
         engine: &mut Engine,
         supply_v: f64,
         drive: &Drive,
-        near: Option<&Found>,
+        near: Option<(State, Scales)>,
     ) -> Result<Solved, OrbitError> {
+        let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
         let found = shooting::find(
             engine,
             effective_supply_v(stage, supply_v),
             least_scale_v(stage, engine),
             near,
+            &mut gatherer,
         )?;
-        self.figures(stage, engine, supply_v, drive, found)
+        self.figures(stage, engine, supply_v, drive, found, gatherer.sums)
     }
 
     /// Every periodic state that a few different starts lead to; the first is that of [`Curved::solve`].
@@ -87,7 +92,11 @@ impl Curved {
         let first = self.solve(stage, engine, supply_v, drive, None)?;
         let scales = first.found.scales;
         let nominal = first.found.state.clone();
+        let costly = engine.work > WORK_LIMIT / 10;
         let mut all = vec![first];
+        if costly {
+            return Ok(all);
+        }
         let scaled = |factor: f64| State {
             v: nominal.v * factor,
             q: nominal.q * factor,
@@ -95,20 +104,19 @@ impl Curved {
             u: nominal.u * factor,
         };
         let mut starts: Vec<State> = [0.0, 0.3, 3.0, -1.0].map(scaled).to_vec();
-        // What the straight stage with the capacitance of a quarter and of four times the supply would do.
+        // The orbits of a quarter and of four times the supply.
         for factor in [0.25, 4.0] {
-            if let Ok(found) = shooting::find(
-                engine,
-                effective_supply_v(stage, supply_v * factor),
-                least_scale_v(stage, engine),
-                None,
-            ) {
+            let supply = effective_supply_v(stage, supply_v * factor);
+            let least = least_scale_v(stage, engine);
+            if let Ok(found) = shooting::find(engine, supply, least, None, &mut Nobody) {
                 starts.push(found.state);
             }
         }
+        let supply = effective_supply_v(stage, supply_v);
         for state in starts {
-            let supply = effective_supply_v(stage, supply_v);
-            let Ok(found) = shooting::find_from(engine, supply, state, scales) else {
+            let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
+            let found = shooting::find_from(engine, supply, state, scales, &mut gatherer);
+            let Ok(found) = found else {
                 continue;
             };
             let known = all.iter().any(|solved| {
@@ -120,7 +128,10 @@ impl Curved {
                         .fold((a.q - b.q).abs() / scales.q, f64::max);
                 apart < 1e-5
             });
-            if !known && let Ok(solved) = self.figures(stage, engine, supply_v, drive, found) {
+            if known {
+                continue;
+            }
+            if let Ok(solved) = self.figures(stage, engine, supply_v, drive, found, gatherer.sums) {
                 all.push(solved);
             }
         }
@@ -134,27 +145,16 @@ impl Curved {
         supply_v: f64,
         drive: &Drive,
         found: Found,
+        mut sums: Gathered,
     ) -> Result<Solved, OrbitError> {
-        let port = Arc::clone(&self.port);
-        let mut sums = Gathered::new(&port, drive.closing_rad);
-        let device = engine.device().clone();
-        let period = engine
-            .run(
-                &found.state,
-                &found.scales,
-                Some(&found.mesh),
-                Sensitivity::Left,
-                &mut |passed: &Passed<'_>| sums.watch(&device, &port, passed),
-            )
-            .map_err(|_| OrbitError::Diverged)?;
         sums.sharpen(engine, &found.scales);
-        let slope = engine.slope_before_closing(&period.end);
+        let slope = engine.slope_before_closing(&found.end);
         let orbit = orbit(
             stage,
-            &port,
+            &self.port,
             engine,
             &sums,
-            &period.end,
+            &found.end,
             slope,
             effective_supply_v(stage, supply_v),
             drive,
@@ -181,7 +181,7 @@ impl Curved {
         let mut engine = self.engine(stage, drive)?;
         let supply = effective_supply_v(stage, supply_v);
         let least = least_scale_v(stage, &engine);
-        let found = shooting::find(&mut engine, supply, least, None)?;
+        let found = shooting::find(&mut engine, supply, least, None, &mut Nobody)?;
         let port = Arc::clone(&self.port);
         let device = engine.device().clone();
         let spans = [
@@ -276,7 +276,7 @@ impl Curved {
         let u = match self.port.source {
             Source::Voltage => supply_v,
             Source::Choke(_) => {
-                let found = shooting::find(&mut engine, supply_v, least, None)?;
+                let found = shooting::find(&mut engine, supply_v, least, None, &mut Nobody)?;
                 found.state.u
             }
         };
@@ -294,17 +294,21 @@ impl Curved {
             x: size,
         };
         let state = shooting::settle(&mut engine, rest, scales, periods)?;
+        let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
         let period = engine
-            .run(&state, &scales, None, Sensitivity::Carried, &mut |_| {})
+            .run(&state, &scales, None, Sensitivity::Left, &mut |passed| {
+                gatherer.step(passed);
+            })
             .map_err(|_| OrbitError::Diverged)?;
         let found = Found {
             state,
             scales: period.peaks,
             mesh: period.mesh,
             period_map: nalgebra::DMatrix::zeros(0, 0),
+            end: period.end,
         };
         Ok(self
-            .figures(stage, &mut engine, supply_v, drive, found)?
+            .figures(stage, &mut engine, supply_v, drive, found, gatherer.sums)?
             .orbit)
     }
 }
@@ -325,170 +329,4 @@ fn least_scale_v(stage: &Stage, engine: &Engine) -> f64 {
     };
     let coupling = TAU * stage.frequency_hz * stage.gate_coupling_f * stage.load.ohm;
     0.3 * gate.swing_v * coupling / engine.charge(0.0).1
-}
-
-fn at_rest(orbit: Orbit) -> Orbit {
-    let none = |watt: f64| watt * 0.0;
-    Orbit {
-        supply_v: 0.0,
-        output_v: orbit.output_v * 0.0,
-        output_w: 0.0,
-        supply_a: 0.0,
-        supply_w: 0.0,
-        losses: Losses {
-            closed_switch: 0.0,
-            open_switch: 0.0,
-            diode: 0.0,
-            feed: 0.0,
-            ladder: 0.0,
-            rungs: orbit.losses.rungs.iter().map(|&w| none(w)).collect(),
-            harmonics: 0.0,
-            driver: orbit.losses.driver,
-        },
-        switch_peak_v: 0.0,
-        switch_min_v: 0.0,
-        switch_peak_a: 0.0,
-        switch_min_a: 0.0,
-        closing_v: 0.0,
-        closing_slope_v_per_s: 0.0,
-        ..orbit
-    }
-}
-
-#[expect(clippy::too_many_arguments, reason = "one call, all of it needed")]
-fn orbit(
-    stage: &Stage,
-    port: &Port,
-    engine: &Engine,
-    sums: &Gathered,
-    end: &State,
-    slope: f64,
-    supply_v: f64,
-    drive: &Drive,
-) -> Result<Orbit, OrbitError> {
-    let load_ohm = stage.load.ohm;
-    // Normalised powers are volts squared.
-    let watt = |integral: f64| integral / TAU / load_ohm;
-    let size = port.rest + 2;
-    let square = |row: &Row| {
-        let full: Vec<f64> = std::iter::once(row.v)
-            .chain(row.x.iter().copied())
-            .chain([row.u])
-            .collect();
-        let mut sum = 0.0;
-        for p in 0..size {
-            for q in 0..size {
-                sum += full[p] * full[q] * sums.moment[p * size + q];
-            }
-        }
-        sum.max(0.0)
-    };
-    let mean = |row: &Row| {
-        row.at(
-            sums.first[0],
-            &sums.first[1..size - 1],
-            sums.first[size - 1],
-        ) / TAU
-    };
-    let output_v = sums.harmonics[0] / PI;
-    let output_w = output_v.norm_sqr() / (2.0 * load_ohm);
-    let supply_a = mean(&port.supply) / load_ohm;
-    let supply_w = supply_a * supply_v;
-    let rung_count = stage.ladder.len();
-    let mut losses = Losses {
-        closed_switch: watt(sums.closed_switch),
-        open_switch: watt(sums.open_switch),
-        diode: watt(sums.diode),
-        feed: match port.source {
-            Source::Choke(ohm) => watt(ohm * end.u * end.u * TAU),
-            Source::Voltage => 0.0,
-        },
-        ladder: 0.0,
-        rungs: vec![0.0; rung_count],
-        harmonics: -output_w,
-        driver: 0.0,
-    };
-    for (owner, ohm, current) in &port.resistors {
-        let loss = watt(ohm * square(current));
-        match owner {
-            Owner::Switch => {}
-            Owner::Feed => losses.feed += loss,
-            Owner::Rung(index) => losses.rungs[*index] += loss,
-            Owner::Load => losses.harmonics += loss,
-        }
-    }
-    losses.ladder = losses.rungs.iter().fold(0.0, |sum, loss| sum + loss);
-    // What the edges deliver into the drain, and what the driver draws for it from a rail at the swing: charge
-    // that flows while the gate is at or on its way to the rail. The difference heats the driver.
-    let delivered_w = watt(sums.edges);
-    let rail_w = stage.driver.gate.map_or(0.0, |gate| {
-        if stage.gate_coupling_f == 0.0 {
-            return 0.0;
-        }
-        let angle = |second: f64| TAU * stage.frequency_hz * second;
-        let at = |angle: f64| {
-            let angle = angle.rem_euclid(TAU);
-            sums.starts
-                .iter()
-                .min_by(|a, b| (a.0 - angle).abs().total_cmp(&(b.0 - angle).abs()))
-                .map_or(0.0, |start| start.1)
-        };
-        let rising = at(TAU - 0.5 * angle(gate.rise_s));
-        let falling = at(drive.width_rad - 0.5 * angle(gate.fall_s));
-        let charge_c = stage.gate_coupling_f * (gate.swing_v - falling + rising);
-        gate.swing_v * charge_c * stage.frequency_hz
-    });
-    let gate_w = gate_charge_w(stage);
-    losses.driver = gate_w + rail_w - delivered_w;
-    let driver_w = gate_w + rail_w;
-    let residual_w = supply_w + driver_w - output_w - losses.total_w();
-    // Where supply and driver work against each other, relative to what flows.
-    let through_w = (supply_w + delivered_w)
-        .max(output_w + losses.total_w() - losses.driver)
-        .max(supply_w.abs());
-    let energy_residual = residual_w / through_w;
-    let harmonics = sums.harmonics.map(|integral| integral.norm());
-    let mut harmonics_dbc = [0.0; HARMONICS - 1];
-    for (level, harmonic) in harmonics_dbc.iter_mut().zip(&harmonics[1..]) {
-        *level = 20.0 * (harmonic / harmonics[0]).log10();
-    }
-    let device = engine.device();
-    let amps = |throw: Throw, v: f64| {
-        let side = match device.corner() {
-            Some(corner) if v < corner => Side::Below,
-            _ => Side::Above,
-        };
-        device.current(throw, side, v).0 / load_ohm
-    };
-    let [closed_max, closed_min] = [sums.closed[0].v, sums.closed[1].v];
-    let [open_max, open_min] = [sums.open[0].v, sums.open[1].v];
-    Orbit {
-        supply_v,
-        drive: *drive,
-        output_v,
-        output_w,
-        supply_a,
-        supply_w,
-        driver_w,
-        efficiency: output_w / (supply_w + driver_w),
-        losses,
-        harmonics_dbc,
-        switch_peak_v: closed_max.max(open_max),
-        switch_min_v: closed_min.min(open_min),
-        switch_peak_a: amps(Throw::Closed, closed_max),
-        switch_min_a: amps(Throw::Closed, closed_min).min(amps(Throw::Open, open_min)),
-        closing_v: end.v,
-        closing_slope_v_per_s: slope * TAU * stage.frequency_hz,
-        diode_conductions: sums.conductions,
-        charge_residual: sums.charge[0].abs() / sums.charge[1],
-        energy_residual,
-    }
-    .balanced()
-}
-
-/// What the gate itself costs: its charge at the swing, each period.
-pub fn gate_charge_w(stage: &Stage) -> f64 {
-    stage.driver.gate.map_or(0.0, |gate| {
-        gate.charge_c * gate.swing_v * stage.frequency_hz
-    })
 }

@@ -3,11 +3,14 @@
 //! Integrals use the quadrature of the collocation itself (order 9), so that energy balances to the error of the
 //! steps; extremes come from the dense output and are solved for again with a step of exactly their length.
 
+use std::sync::Arc;
+
 use num_complex::Complex64;
 
-use super::device::{Side, Throw};
+use super::device::{Device, Side, Throw};
+use super::engine::Engine;
 use super::network::HARMONICS;
-use super::period::{Engine, Passed, Scales};
+use super::period::{Observe, Passed, Scales};
 use super::port::Port;
 use super::step::Start;
 use crate::math::radau::{RADAU, STAGES, evaluate};
@@ -45,6 +48,8 @@ pub struct Gathered {
 pub struct Extreme {
     sign: f64,
     pub v: f64,
+    /// The largest at the ends of steps, which lie on the orbit itself.
+    seen: f64,
     within: Option<Within>,
 }
 
@@ -68,6 +73,7 @@ impl Gathered {
             [1.0, -1.0].map(|sign: f64| Extreme {
                 sign,
                 v: -sign * f64::INFINITY,
+                seen: -sign * f64::INFINITY,
                 within: None,
             })
         };
@@ -90,12 +96,7 @@ impl Gathered {
         }
     }
 
-    pub fn watch(
-        &mut self,
-        engine_device: &super::device::Device,
-        port: &Port,
-        passed: &Passed<'_>,
-    ) {
+    fn watch(&mut self, engine_device: &Device, port: &Port, passed: &Passed<'_>) {
         let radau = &*RADAU;
         let (rest, h) = (port.rest, passed.step.length);
         let size = rest + 2;
@@ -173,10 +174,43 @@ impl Gathered {
                     &within.guess,
                     scales,
                 ) {
-                    extreme.v = v;
+                    // Rounding must not take a flat extreme past what was met.
+                    extreme.v = if extreme.sign * (v - extreme.seen) > 0.0 {
+                        v
+                    } else {
+                        extreme.seen
+                    };
                 }
             }
         }
+    }
+}
+
+/// Sums that follow the last period of a solution.
+#[derive(Debug)]
+pub struct Gatherer {
+    pub sums: Gathered,
+    port: Arc<Port>,
+    device: Device,
+}
+
+impl Gatherer {
+    pub fn new(port: &Arc<Port>, device: &Device, closing_rad: f64) -> Self {
+        Self {
+            sums: Gathered::new(port, closing_rad),
+            port: Arc::clone(port),
+            device: device.clone(),
+        }
+    }
+}
+
+impl Observe for Gatherer {
+    fn begin(&mut self) {
+        self.sums = Gathered::new(&self.port, self.sums.closing_rad);
+    }
+
+    fn step(&mut self, passed: &Passed<'_>) {
+        self.sums.watch(&self.device, &self.port, passed);
     }
 }
 
@@ -186,6 +220,9 @@ impl Extreme {
         let better = |best: f64, v: f64| self.sign * (v - best) > 0.0;
         let mut best = self.v;
         for v in [start, passed.solved.v[STAGES - 1]] {
+            if self.sign * (v - self.seen) > 0.0 {
+                self.seen = v;
+            }
             if better(best, v) {
                 best = v;
                 self.within = None;

@@ -3,14 +3,20 @@
 mod balance;
 mod charge;
 mod circuit;
+mod corner;
+mod correction;
 mod curved;
 #[cfg(test)]
 mod curved_tests;
 mod device;
+mod engine;
+mod factors;
+mod figures;
 mod gather;
 mod linear;
 mod network;
 mod period;
+mod plan;
 mod port;
 mod reduce;
 mod shooting;

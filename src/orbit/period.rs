@@ -8,26 +8,18 @@
 use std::f64::consts::TAU;
 use std::sync::Arc;
 
-use super::charge::Charge;
-use super::device::{Device, Side, Throw};
-use super::network::{Drive, OrbitError};
-use super::port::{Port, dot};
+use super::device::{Side, Throw};
+use super::engine::Engine;
+use super::plan::LEVELS;
 use super::step::{Solved, Start, Step};
 use crate::math::radau::{ESTIMATE_ORDER, RADAU, STAGES, evaluate};
-use crate::stage::Stage;
 
-/// The finest binary fraction of a segment.
-const LEVELS: u32 = 40;
+/// Units of work an orbit may take: one for each step of a small stage, more for large stages and for new matrices.
+/// An ordinary orbit takes some thousands; the limit is reached after about a second.
+pub const WORK_LIMIT: u64 = 250_000;
 
 /// The longest step, rad: the quadrature of the fifth harmonic stays below 1e-9 with it.
 const LONGEST_RAD: f64 = TAU / 32.0;
-
-/// The estimated error of a step relative to the largest voltage of the period. The estimate has order 5, the
-/// method 9: the error itself is about the estimate to the power 5/3.
-const TOLERANCE: f64 = 2e-6;
-
-/// Units of work an orbit may take: one for each step, more for new matrices. About two seconds.
-pub const WORK_LIMIT: u64 = 1_000_000;
 
 /// What stops a period.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -36,19 +28,6 @@ pub enum Stop {
     RanOut,
     /// A step that does not solve at any length.
     NoStep,
-}
-
-#[derive(Debug)]
-struct Segment {
-    /// From the closing instant, rad.
-    from: f64,
-    length: f64,
-    throw: Throw,
-    /// Current of the gate's edge into the drain.
-    source: f64,
-    tables: Vec<Option<Arc<Step>>>,
-    /// The level that the first step had last time.
-    first_level: u32,
 }
 
 /// State at the closing instant; `u` is the input.
@@ -70,6 +49,23 @@ pub struct Scales {
 
 /// Ends of steps in each segment, in finest fractions.
 pub type Mesh = Vec<Vec<u64>>;
+
+/// Someone who follows the last period of a solution.
+pub trait Observe {
+    /// A period begins; what was seen before does not count.
+    fn begin(&mut self);
+    /// A step was taken.
+    fn step(&mut self, passed: &Passed<'_>);
+}
+
+/// Looks away.
+#[derive(Debug)]
+pub struct Nobody;
+
+impl Observe for Nobody {
+    fn begin(&mut self) {}
+    fn step(&mut self, _: &Passed<'_>) {}
+}
 
 /// Whether sensitivities are wanted.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -105,20 +101,6 @@ pub struct Passed<'a> {
     pub side: Side,
 }
 
-/// The equations and everything that is kept between periods.
-#[derive(Debug)]
-pub struct Engine {
-    pub port: Arc<Port>,
-    charge: Charge,
-    device: Device,
-    straight: Device,
-    segments: Vec<Segment>,
-    /// 0: the straight stand-in, 1: the stage as it is.
-    pub blend: f64,
-    stand_in: f64,
-    pub work: u64,
-}
-
 #[derive(Debug, Clone, Copy)]
 enum At {
     Grid(u64),
@@ -126,94 +108,6 @@ enum At {
 }
 
 impl Engine {
-    /// # Errors
-    /// [`OrbitError::EdgesOverlap`].
-    pub fn new(stage: &Stage, port: Arc<Port>, drive: &Drive) -> Result<Self, OrbitError> {
-        let scale = TAU * stage.frequency_hz * stage.load.ohm;
-        let fixed = (stage.drain_f + stage.gate_coupling_f + port.ladder_farad) * scale;
-        let charge = Charge::new(fixed, stage.drain_curve.as_ref(), scale);
-        let device = Device::new(stage);
-        let stand_in = charge.at(stage.supply_v).1;
-        Ok(Self {
-            straight: device.straightened(),
-            device,
-            charge,
-            segments: segments(stage, drive)?,
-            blend: 1.0,
-            stand_in,
-            port,
-            work: 0,
-        })
-    }
-
-    /// Charge and capacitance at a drain voltage.
-    pub fn charge(&self, v: f64) -> (f64, f64) {
-        if self.blend == 1.0 {
-            return self.charge.at(v);
-        }
-        let (q, c) = self.charge.at(v);
-        let rest = 1.0 - self.blend;
-        (
-            rest * self.stand_in * v + self.blend * q,
-            rest * self.stand_in + self.blend * c,
-        )
-    }
-
-    /// Current and conductance of the device.
-    pub fn current(&self, throw: Throw, side: Side, v: f64) -> (f64, f64) {
-        if self.blend == 1.0 {
-            return self.device.current(throw, side, v);
-        }
-        let (i, g) = self.device.current(throw, side, v);
-        let (si, sg) = self.straight.current(throw, Side::Above, v);
-        let rest = 1.0 - self.blend;
-        (rest * si + self.blend * i, rest * sg + self.blend * g)
-    }
-
-    /// The switch and its diode.
-    pub fn device(&self) -> &Device {
-        &self.device
-    }
-
-    /// A state with this charge, its voltage found.
-    pub fn settle_voltage(&self, state: &mut State) {
-        if self.blend == 1.0 {
-            state.v = self.charge.voltage(state.q, state.v);
-            return;
-        }
-        for _ in 0..100 {
-            let (q, c) = self.charge(state.v);
-            let change = (q - state.q) / c;
-            state.v -= change;
-            if change.abs() <= 1e-15 * state.v.abs() {
-                break;
-            }
-        }
-    }
-
-    fn side(&self, v: f64) -> Side {
-        match self.device.corner() {
-            Some(corner) if v < corner => Side::Below,
-            _ => Side::Above,
-        }
-    }
-
-    fn table(&mut self, segment: usize, level: u32) -> Option<Arc<Step>> {
-        let slot = level as usize;
-        if let Some(step) = &self.segments[segment].tables[slot] {
-            return Some(Arc::clone(step));
-        }
-        let length = self.segments[segment].length * 0.5f64.powi(level as i32);
-        let step = Arc::new(self.fresh(length)?);
-        self.segments[segment].tables[slot] = Some(Arc::clone(&step));
-        Some(step)
-    }
-
-    fn fresh(&mut self, length: f64) -> Option<Step> {
-        self.work += 10 + (self.port.rest * self.port.rest / 4) as u64;
-        Step::new(&self.port, length)
-    }
-
     /// Integrates one period from `start`.
     ///
     /// # Errors
@@ -278,13 +172,15 @@ impl Engine {
         let mut before: Option<(f64, [f64; STAGES], f64)> = None;
         let (mut first, mut flips, mut mesh_at) = (true, 0, 0);
         loop {
-            self.work += 1;
+            self.work += 1 + (self.port.rest / 4) as u64;
             if self.work > WORK_LIMIT {
                 return Err(Stop::RanOut);
             }
             let here = match at {
                 At::Grid(p) if p >= END => break,
                 At::Grid(p) => p as f64 * unit,
+                // The corner was crossed at the very end.
+                At::Free(t) if t >= length * (1.0 - 1e-15) => break,
                 At::Free(t) => t,
             };
             let target = match given {
@@ -337,7 +233,7 @@ impl Engine {
             };
             let error = self.error(&step, &begin, &solved, throw, side, scales);
             let factor = (0.9 * error.powf(-1.0 / (ESTIMATE_ORDER + 1) as f64)).clamp(0.1, 8.0);
-            if given.is_none() && !(error <= 1.0) {
+            if given.is_none() && error > 1.0 {
                 level = level_of(h * factor).max(level_of(h) + 1);
                 if level > LEVELS {
                     return Err(Stop::NoStep);
@@ -395,7 +291,7 @@ impl Engine {
             at = At::Grid(target);
             flips = 0;
             if first {
-                self.segments[index].first_level = level_of(h);
+                self.segments[index].first_level = level_of(h).min(LEVELS);
                 first = false;
             }
             level = level_of(h * factor).max(coarsest);
@@ -405,6 +301,7 @@ impl Engine {
 
     /// The end of the next step: on the grid of the coarsest level that is fine enough and lined up.
     fn next_end(&self, at: At, here: f64, unit: f64, level: &mut u32) -> u64 {
+        *level = (*level).min(LEVELS);
         match at {
             At::Grid(p) => {
                 if p > 0 {
@@ -451,152 +348,6 @@ impl Engine {
         }
     }
 
-    /// Slope of the drain voltage.
-    fn slope(&self, at: &Start<'_>, throw: Throw, side: Side) -> f64 {
-        let port = &self.port;
-        let flow = port.alpha * at.v + dot(&port.a, at.x) + port.beta * at.u + at.source
-            - self.current(throw, side, at.v).0;
-        flow / self.charge(at.v).1
-    }
-
-    /// The slope of the drain voltage at the end of a period, with the switch still open.
-    pub fn slope_before_closing(&self, state: &State) -> f64 {
-        let start = Start {
-            v: state.v,
-            q: state.q,
-            x: &state.x,
-            u: state.u,
-            source: self.segments.last().map_or(0.0, |s| s.source),
-        };
-        self.slope(&start, Throw::Open, self.side(state.v))
-    }
-
-    /// The estimated error over its tolerance.
-    fn error(
-        &self,
-        step: &Step,
-        begin: &Start<'_>,
-        solved: &Solved,
-        throw: Throw,
-        side: Side,
-        scales: &Scales,
-    ) -> f64 {
-        let radau = &*RADAU;
-        let port = &self.port;
-        let weight = step.length * radau.start_weight;
-        let flow =
-            port.alpha * begin.v + dot(&port.a, begin.x) + port.beta * begin.u + begin.source
-                - self.current(throw, side, begin.v).0;
-        let mut charge = weight * flow;
-        for i in 0..STAGES {
-            charge += radau.error[i] * (solved.q[i] - begin.q);
-        }
-        let last = STAGES - 1;
-        let volt = charge / (solved.c[last] + weight * (solved.g[last] - port.alpha));
-        let rest = step.rest_error(begin, &solved.v);
-        let error = (volt.abs() / scales.v).max(rest / scales.x) / TOLERANCE;
-        if error.is_finite() {
-            error.max(1e-12)
-        } else {
-            1e6
-        }
-    }
-
-    /// Where in a step (0..1) the drain first leaves its side of the diode's corner.
-    fn crossing(
-        &self,
-        start: f64,
-        values: &[f64; STAGES],
-        side: Side,
-        scale_v: f64,
-    ) -> Option<f64> {
-        let corner = self.device.corner()?;
-        let sign = match side {
-            Side::Above => 1.0,
-            Side::Below => -1.0,
-        };
-        let (low, high) = values
-            .iter()
-            .fold((start, start), |(l, h), &v| (l.min(v), h.max(v)));
-        let nearest = match side {
-            Side::Above => low - corner,
-            Side::Below => corner - high,
-        };
-        if nearest > 0.3 * (high - low) {
-            return None;
-        }
-        let margin = 1e-11 * scale_v;
-        let poly = RADAU.polynomial(start, values);
-        let beyond = |theta: f64| sign * (evaluate(start, &poly, theta).0 - corner);
-        const PARTS: usize = 20;
-        let mut before = 0.0;
-        for part in 1..=PARTS {
-            let theta = part as f64 / PARTS as f64;
-            if beyond(theta) < -margin {
-                let (mut low, mut high) = (before, theta);
-                if beyond(low) <= 0.0 {
-                    return Some(low);
-                }
-                for _ in 0..60 {
-                    let middle = 0.5 * (low + high);
-                    if beyond(middle) > 0.0 {
-                        low = middle;
-                    } else {
-                        high = middle;
-                    }
-                }
-                return Some(0.5 * (low + high));
-            }
-            before = theta;
-        }
-        None
-    }
-
-    /// The step that ends on the diode's corner, near `length` and no longer than `longest`.
-    #[expect(clippy::too_many_arguments, reason = "one call, all of it needed")]
-    fn locate(
-        &mut self,
-        begin: &Start<'_>,
-        throw: Throw,
-        side: Side,
-        length: f64,
-        longest: f64,
-        whole: &Solved,
-        scales: &Scales,
-    ) -> Result<(Step, Solved), Stop> {
-        let corner = self.device.corner().unwrap_or(0.0);
-        let radau = &*RADAU;
-        let mut length = length;
-        let poly = radau.polynomial(begin.v, &whole.v);
-        let mut guess = radau
-            .nodes
-            .map(|c| evaluate(begin.v, &poly, c * length / longest).0);
-        let mut attempt = 0;
-        loop {
-            let step = self.fresh(length).ok_or(Stop::NoStep)?;
-            let solved = step
-                .solve(
-                    begin,
-                    &guess,
-                    scales.v,
-                    |v| self.charge(v),
-                    |v| self.current(throw, side, v),
-                )
-                .ok_or(Stop::NoStep)?;
-            let miss = solved.v[STAGES - 1] - corner;
-            let poly = radau.polynomial(begin.v, &solved.v);
-            let slope = evaluate(begin.v, &poly, 1.0).1 / length;
-            let next = length - miss / slope;
-            attempt += 1;
-            let usable = next > 0.0 && next < 1.5 * longest;
-            if miss.abs() <= 1e-11 * scales.v || attempt >= 5 || !usable {
-                return Ok((step, solved));
-            }
-            guess = solved.v;
-            length = next;
-        }
-    }
-
     /// Carries sensitivities, area and peaks over a step and returns its end.
     fn commit(&self, step: &Step, solved: &Solved, period: &mut Period) -> State {
         let radau = &*RADAU;
@@ -634,65 +385,4 @@ impl Engine {
             u: start.u,
         }
     }
-
-    /// The end of a part of a step that was taken, to the order of the method.
-    pub fn part(
-        &mut self,
-        begin: &Start<'_>,
-        throw: Throw,
-        side: Side,
-        length: f64,
-        guess: &[f64; STAGES],
-        scales: &Scales,
-    ) -> Option<f64> {
-        let step = self.fresh(length)?;
-        let solved = step.solve(
-            begin,
-            guess,
-            scales.v,
-            |v| self.charge(v),
-            |v| self.current(throw, side, v),
-        )?;
-        Some(solved.v[STAGES - 1])
-    }
-}
-
-/// The period from closing to closing, cut at every instant where the equations change.
-fn segments(stage: &Stage, drive: &Drive) -> Result<Vec<Segment>, OrbitError> {
-    let (width, open) = (drive.width_rad, TAU - drive.width_rad);
-    let mut cuts = vec![(0.0, Throw::Closed, 0.0), (width, Throw::Open, 0.0)];
-    if let Some(gate) = stage.driver.gate.filter(|_| stage.gate_coupling_f > 0.0) {
-        let rad = |second: f64| TAU * stage.frequency_hz * second;
-        let (rise, fall) = (rad(gate.rise_s), rad(gate.fall_s));
-        if 0.5 * (rise + fall) > width.min(open) {
-            return Err(OrbitError::EdgesOverlap {
-                edges_s: 0.5 * (gate.rise_s + gate.fall_s),
-                shortest_s: width.min(open) / rad(1.0),
-            });
-        }
-        let coupling = rad(1.0) * stage.gate_coupling_f * stage.load.ohm * gate.swing_v;
-        let (up, down) = (coupling / rise, -coupling / fall);
-        cuts = vec![
-            (0.0, Throw::Closed, up),
-            (0.5 * rise, Throw::Closed, 0.0),
-            (width - 0.5 * fall, Throw::Closed, down),
-            (width, Throw::Open, down),
-            (width + 0.5 * fall, Throw::Open, 0.0),
-            (TAU - 0.5 * rise, Throw::Open, up),
-        ];
-    }
-    let ends: Vec<f64> = cuts.iter().skip(1).map(|cut| cut.0).chain([TAU]).collect();
-    Ok(cuts
-        .into_iter()
-        .zip(ends)
-        .filter(|((from, ..), to)| to - from > 1e-12)
-        .map(|((from, throw, source), to)| Segment {
-            from,
-            length: to - from,
-            throw,
-            source,
-            tables: vec![None; LEVELS as usize + 1],
-            first_level: 8,
-        })
-        .collect())
 }

@@ -5,22 +5,25 @@
 //! those of the steps taken, so that convergence is quadratic once the steps no longer change: they are frozen when
 //! the state is close.
 
-use std::f64::consts::TAU;
-
 use nalgebra::{DMatrix, DVector};
 
+use super::correction::{apply, correction, relative_size, residual_parts, residual_size};
+use super::engine::Engine;
 use super::network::OrbitError;
-use super::period::{Engine, Mesh, Period, Scales, Sensitivity, State, Stop};
+use super::period::{Mesh, Observe, Period, Scales, Sensitivity, State, Stop};
 use super::port::Source;
 
 /// Newton steps before giving up.
 const MAX_NEWTON: usize = 24;
 
-/// The correction below which the last one is made and the state called periodic, relative to the scales.
-const CLOSE: f64 = 1e-8;
+/// The correction after which the state should be periodic, relative to the scales: convergence is quadratic.
+const CLOSE: f64 = 1e-7;
 
-/// How far the state may be from itself one period later, relative to the scales.
+/// How far the rest may be from itself one period later, relative to its scale.
 const PERIODIC: f64 = 1e-11;
+
+/// The same for the charge. It moves on and off by at least twice its scale, so that this keeps the promise of 1e-12.
+const PERIODIC_CHARGE: f64 = 1.5e-12;
 
 /// The correction below which steps are frozen.
 const FREEZE: f64 = 1e-2;
@@ -39,6 +42,8 @@ pub struct Found {
     pub mesh: Mesh,
     /// What one period does to a deviation of charge and rest.
     pub period_map: DMatrix<f64>,
+    /// The state one period later.
+    pub end: State,
 }
 
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -77,29 +82,30 @@ pub fn find(
     engine: &mut Engine,
     supply_v: f64,
     least_scale_v: f64,
-    near: Option<&Found>,
+    near: Option<(State, Scales)>,
+    observer: &mut dyn Observe,
 ) -> Result<Found, OrbitError> {
     engine.work = 0;
     engine.blend = 1.0;
-    if let Some(near) = near {
-        match newton(engine, near.state.clone(), near.scales, supply_v) {
+    if let Some((state, scales)) = near {
+        match newton(engine, state, scales, supply_v, observer) {
             Ok(found) => return Ok(found),
             Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
             Err(_) => {}
         }
     }
     let (state, scales) = straight(engine, supply_v, least_scale_v)?;
-    let failed = match newton(engine, state.clone(), scales, supply_v) {
+    let failed = match newton(engine, state.clone(), scales, supply_v, observer) {
         Ok(found) => return Ok(found),
         Err(Fail::RanOut) => return Err(Fail::RanOut.into()),
         Err(fail) => fail,
     };
-    if let Some(found) = bend(engine, state.clone(), scales, supply_v)? {
+    if let Some(found) = bend(engine, state.clone(), scales, supply_v, observer)? {
         return Ok(found);
     }
     engine.blend = 1.0;
     let settled = settle(engine, state, scales, SETTLING)?;
-    match newton(engine, settled, scales, supply_v) {
+    match newton(engine, settled, scales, supply_v, observer) {
         Ok(found) => Ok(found),
         Err(Fail::RanOut) => Err(Fail::RanOut.into()),
         // The first attempt's reason says most.
@@ -107,7 +113,7 @@ pub fn find(
     }
 }
 
-/// The orbit from rest, for a search of further solutions.
+/// The orbit near `state`, for a search of further solutions.
 ///
 /// # Errors
 /// As [`find`].
@@ -116,11 +122,12 @@ pub fn find_from(
     supply_v: f64,
     mut state: State,
     scales: Scales,
+    observer: &mut dyn Observe,
 ) -> Result<Found, OrbitError> {
     engine.work = 0;
     engine.blend = 1.0;
     engine.settle_voltage(&mut state);
-    Ok(newton(engine, state, scales, supply_v)?)
+    Ok(newton(engine, state, scales, supply_v, observer)?)
 }
 
 /// The stage with a fixed capacitance, a straight switch and no diode: linear, so one Newton step from rest.
@@ -165,6 +172,7 @@ fn bend(
     mut state: State,
     mut scales: Scales,
     supply_v: f64,
+    observer: &mut dyn Observe,
 ) -> Result<Option<Found>, OrbitError> {
     let (mut blend, mut step) = (0.0f64, 0.25f64);
     while step > 1e-3 {
@@ -172,7 +180,7 @@ fn bend(
         engine.blend = next;
         let mut start = state.clone();
         start.q = engine.charge(start.v).0;
-        match newton(engine, start, scales, supply_v) {
+        match newton(engine, start, scales, supply_v, observer) {
             Ok(found) if next == 1.0 => return Ok(Some(found)),
             Ok(found) => {
                 state = found.state;
@@ -222,6 +230,7 @@ fn newton(
     mut state: State,
     mut scales: Scales,
     supply_v: f64,
+    observer: &mut dyn Observe,
 ) -> Result<Found, Fail> {
     engine.settle_voltage(&mut state);
     if engine.port.source == Source::Voltage {
@@ -268,104 +277,34 @@ fn newton(
         }
         // Frozen steps that turn out too long for this state are chosen again.
         let fine = period.error <= COARSE;
-        if relative <= CLOSE && mesh.is_some() && size <= PERIODIC && fine {
-            return Ok(Found {
-                state,
-                scales,
-                mesh: period.mesh,
-                period_map,
-            });
-        }
         last = Some((state.clone(), change.clone(), 1.0, size));
         apply(engine, &mut state, &change, 1.0);
         mesh = (relative < FREEZE && fine).then_some(period.mesh);
+        if relative <= CLOSE && mesh.is_some() {
+            observer.begin();
+            let run = engine.run(
+                &state,
+                &scales,
+                mesh.as_ref(),
+                Sensitivity::Left,
+                &mut |passed| observer.step(passed),
+            );
+            let period = match run {
+                Ok(period) => period,
+                Err(Stop::RanOut) => return Err(Fail::RanOut),
+                Err(Stop::NoStep) => return Err(Fail::Diverged),
+            };
+            let parts = residual_parts(engine, &state, &period, supply_v, &scales);
+            if parts[0] <= PERIODIC_CHARGE && parts[1] <= PERIODIC && parts[2] <= PERIODIC {
+                return Ok(Found {
+                    state,
+                    scales,
+                    mesh: period.mesh,
+                    period_map,
+                    end: period.end,
+                });
+            }
+        }
     }
     Err(Fail::Diverged)
-}
-
-fn residual(engine: &Engine, state: &State, period: &Period, supply_v: f64) -> DVector<f64> {
-    let rest = engine.port.rest;
-    let choke = matches!(engine.port.source, Source::Choke(_));
-    let mut residual = DVector::zeros(rest + 1 + usize::from(choke));
-    residual[0] = period.end.q - state.q;
-    for i in 0..rest {
-        residual[i + 1] = period.end.x[i] - state.x[i];
-    }
-    if let Source::Choke(ohm) = engine.port.source {
-        residual[rest + 1] = period.area / TAU + ohm * state.u - supply_v;
-    }
-    residual
-}
-
-fn residual_size(
-    engine: &Engine,
-    state: &State,
-    period: &Period,
-    supply_v: f64,
-    scales: &Scales,
-) -> f64 {
-    let rest = engine.port.rest;
-    residual(engine, state, period, supply_v)
-        .iter()
-        .enumerate()
-        .map(|(i, r)| match i {
-            0 => r.abs() / scales.q,
-            _ if i <= rest => r.abs() / scales.x,
-            _ => r.abs() / scales.v,
-        })
-        .fold(
-            0.0,
-            |worst: f64, r| if r > worst || r.is_nan() { r } else { worst },
-        )
-}
-
-/// The Newton step, and the map of one period without the choke's condition.
-fn correction(
-    engine: &Engine,
-    state: &State,
-    period: &Period,
-    supply_v: f64,
-) -> Option<(DVector<f64>, DMatrix<f64>)> {
-    let rest = engine.port.rest;
-    let residual = residual(engine, state, period, supply_v);
-    let period_map = DMatrix::from_fn(rest + 1, rest + 1, |i, j| period.columns[j][i]);
-    let size = residual.len();
-    let matrix = DMatrix::from_fn(size, size, |i, j| {
-        let derivative = period.columns[j][i];
-        if i == rest + 1 {
-            let feed = match engine.port.source {
-                Source::Choke(ohm) if j == rest + 1 => ohm,
-                _ => 0.0,
-            };
-            derivative / TAU + feed
-        } else if i == j {
-            derivative - 1.0
-        } else {
-            derivative
-        }
-    });
-    let change = matrix.lu().solve(&(-residual))?;
-    change
-        .iter()
-        .all(|x| x.is_finite())
-        .then_some((change, period_map))
-}
-
-fn relative_size(engine: &Engine, change: &DVector<f64>, scales: &Scales) -> f64 {
-    let rest = engine.port.rest;
-    (0..=rest)
-        .map(|i| change[i].abs() / if i == 0 { scales.q } else { scales.x })
-        .fold(0.0, f64::max)
-}
-
-fn apply(engine: &Engine, state: &mut State, change: &DVector<f64>, damping: f64) {
-    let rest = engine.port.rest;
-    state.q += damping * change[0];
-    for i in 0..rest {
-        state.x[i] += damping * change[i + 1];
-    }
-    if change.len() > rest + 1 {
-        state.u += damping * change[rest + 1];
-    }
-    engine.settle_voltage(state);
 }

@@ -10,8 +10,7 @@
 //! with the current `s` of the gate's edge and the device's current `i`. All matrices depend on the step's length
 //! only and are kept.
 
-use nalgebra::DMatrix;
-
+use super::factors::{Eliminated, Factors};
 use super::port::{Port, dot};
 use crate::math::radau::{RADAU, STAGES};
 
@@ -60,45 +59,60 @@ pub struct Solved {
 /// The most iterations of one step: convergence is quadratic, more than this many means too long a step.
 const MAX_ITERATIONS: usize = 12;
 
+/// The change of the voltages, relative to their scale, after which they are exact to rounding: convergence is
+/// quadratic, with a factor of the capacitance's relative slope.
+const ACCEPTED: f64 = 1e-7;
+
 impl Step {
     pub fn new(port: &Port, length: f64) -> Option<Self> {
         let n = port.rest;
         let radau = &*RADAU;
         let s = STAGES;
         let h = length;
+        // Columns: x_0, the stages' v, u.
         let columns = n + s + 1;
-        let mut stages = DMatrix::zeros(s * n, columns);
-        if n > 0 {
-            let system = DMatrix::from_fn(s * n, s * n, |row, column| {
-                let (i, p, j, q) = (row / n, row % n, column / n, column % n);
+        let mut stages = Eliminated::new(s * n, columns, |row, column| {
+            let (i, p) = (row / n, row % n);
+            if column < s * n {
+                let (j, q) = (column / n, column % n);
                 let unit = if row == column { 1.0 } else { 0.0 };
-                unit - h * radau.a[i][j] * port.b[p * n + q]
-            });
-            let right = DMatrix::from_fn(s * n, columns, |row, column| {
-                let (i, p) = (row / n, row % n);
-                if column < n {
-                    f64::from(u8::from(p == column))
-                } else if column < n + s {
-                    h * radau.a[i][column - n] * port.c[p]
-                } else {
-                    h * radau.nodes[i] * port.d[p]
-                }
-            });
-            stages = system.lu().solve(&right)?;
+                return unit - h * radau.a[i][j] * port.b[p * n + q];
+            }
+            let column = column - s * n;
+            if column < n {
+                f64::from(u8::from(p == column))
+            } else if column < n + s {
+                h * radau.a[i][column - n] * port.c[p]
+            } else {
+                h * radau.nodes[i] * port.d[p]
+            }
+        });
+        stages.solve()?;
+        let mut phi = Vec::with_capacity(s * n * n);
+        let mut psi = Vec::with_capacity(s * n * s);
+        let mut chi = Vec::with_capacity(s * n);
+        for row in 0..s * n {
+            let row = stages.row(row);
+            phi.extend_from_slice(&row[..n]);
+            psi.extend_from_slice(&row[n..n + s]);
+            chi.push(row[n + s]);
         }
-        let phi = (0..s * n * n).map(|at| stages[(at / n, at % n)]).collect();
-        let psi = (0..s * n * s)
-            .map(|at| stages[(at / s, n + at % s)])
-            .collect();
-        let chi = (0..s * n).map(|at| stages[(at, n + s)]).collect();
-        // h A (a . X) for every column.
-        let seen = |j: usize, column: usize| -> f64 {
-            (0..n)
-                .map(|p| port.a[p] * stages[(j * n + p, column)])
-                .sum()
-        };
+        // a . X for every column, then h A times that.
+        let mut seen = vec![0.0; s * columns];
+        for j in 0..s {
+            for p in 0..n {
+                for (sum, x) in seen[j * columns..(j + 1) * columns]
+                    .iter_mut()
+                    .zip(stages.row(j * n + p))
+                {
+                    *sum += port.a[p] * x;
+                }
+            }
+        }
         let gathered = |i: usize, column: usize| -> f64 {
-            (0..s).map(|j| h * radau.a[i][j] * seen(j, column)).sum()
+            (0..s)
+                .map(|j| h * radau.a[i][j] * seen[j * columns + column])
+                .sum()
         };
         let k = (0..s * n).map(|at| gathered(at / n, at % n)).collect();
         let m = std::array::from_fn(|i| {
@@ -123,19 +137,20 @@ impl Step {
     }
 
     /// The filtered error of the rest as a linear function of what the step knows.
-    fn estimate(&mut self, port: &Port, stages: &DMatrix<f64>) -> Option<()> {
+    fn estimate(&mut self, port: &Port, stages: &Eliminated) -> Option<()> {
         let (n, s, h) = (self.rest, STAGES, self.length);
         let radau = &*RADAU;
         let weight = h * radau.start_weight;
-        if n == 0 {
-            return Some(());
-        }
         let sum: f64 = radau.error.iter().sum();
         // Columns: x_0, v_0, the stages' v, u.
-        let right = DMatrix::from_fn(n, n + s + 2, |p, column| {
+        let mut error = Eliminated::new(n, n + s + 2, |p, column| {
+            if column < n {
+                return f64::from(u8::from(p == column)) - weight * port.b[p * n + column];
+            }
+            let column = column - n;
             let folded = |column: usize| -> f64 {
                 (0..s)
-                    .map(|i| radau.error[i] * stages[(i * n + p, column)])
+                    .map(|i| radau.error[i] * stages.row(i * n + p)[column])
                     .sum()
             };
             if column < n {
@@ -149,15 +164,13 @@ impl Step {
                 weight * port.d[p] + folded(n + s)
             }
         });
-        let filter = DMatrix::from_fn(n, n, |p, q| {
-            f64::from(u8::from(p == q)) - weight * port.b[p * n + q]
-        });
-        let error = filter.lu().solve(&right)?;
-        self.error_x = (0..n * n).map(|at| error[(at / n, at % n)]).collect();
-        self.error_v = (0..n * (s + 1))
-            .map(|at| error[(at / (s + 1), n + at % (s + 1))])
-            .collect();
-        self.error_u = (0..n).map(|p| error[(p, n + s + 1)]).collect();
+        error.solve()?;
+        for p in 0..n {
+            let row = error.row(p);
+            self.error_x.extend_from_slice(&row[..n]);
+            self.error_v.extend_from_slice(&row[n..=n + s]);
+            self.error_u.push(row[n + s + 1]);
+        }
         Some(())
     }
 
@@ -195,14 +208,14 @@ impl Step {
             }
             let mut matrix = [[0.0; STAGES]; STAGES];
             let mut miss = [0.0; STAGES];
-            for i in 0..STAGES {
+            for (i, row) in matrix.iter_mut().enumerate() {
                 let mut sum = known[i] - solved.q[i];
-                for j in 0..STAGES {
+                for (j, entry) in row.iter_mut().enumerate() {
                     let a = h * radau.a[i][j];
                     sum += self.m[i][j] * solved.v[j] - a * solved.i[j];
-                    matrix[i][j] = a * solved.g[j] - self.m[i][j];
+                    *entry = a * solved.g[j] - self.m[i][j];
                 }
-                matrix[i][i] += solved.c[i];
+                row[i] += solved.c[i];
                 miss[i] = sum;
             }
             solved.factors = Factors::new(matrix)?;
@@ -215,11 +228,11 @@ impl Step {
             if !change.is_finite() || (iteration > 3 && change > 2.0 * last) {
                 return None;
             }
-            if change <= 1e-9 * scale_v {
-                for j in 0..STAGES {
+            if change <= ACCEPTED * scale_v {
+                for (j, change) in miss.iter().enumerate() {
                     // To first order, which is to rounding here.
-                    solved.q[j] += solved.c[j] * miss[j];
-                    solved.i[j] += solved.g[j] * miss[j];
+                    solved.q[j] += solved.c[j] * change;
+                    solved.i[j] += solved.g[j] * change;
                 }
                 return Some(solved);
             }
@@ -261,58 +274,5 @@ impl Step {
             std::array::from_fn(|i| dq + dot(&self.k[i * n..(i + 1) * n], dx) + self.kappa[i] * du);
         solved.factors.solve(&mut change);
         change
-    }
-}
-
-/// A factored matrix of the stages.
-#[derive(Debug, Clone, Default)]
-struct Factors {
-    lu: [[f64; STAGES]; STAGES],
-    pivots: [usize; STAGES],
-}
-
-impl Factors {
-    fn new(mut lu: [[f64; STAGES]; STAGES]) -> Option<Self> {
-        let mut pivots = [0; STAGES];
-        for k in 0..STAGES {
-            let mut best = k;
-            for i in k + 1..STAGES {
-                if lu[i][k].abs() > lu[best][k].abs() {
-                    best = i;
-                }
-            }
-            pivots[k] = best;
-            lu.swap(k, best);
-            let head = lu[k][k];
-            if head == 0.0 || !head.is_finite() {
-                return None;
-            }
-            let above = lu[k];
-            for row in lu.iter_mut().skip(k + 1) {
-                let factor = row[k] / head;
-                row[k] = factor;
-                for j in k + 1..STAGES {
-                    row[j] -= factor * above[j];
-                }
-            }
-        }
-        Some(Self { lu, pivots })
-    }
-
-    fn solve(&self, right: &mut [f64; STAGES]) {
-        for k in 0..STAGES {
-            right.swap(k, self.pivots[k]);
-        }
-        for i in 1..STAGES {
-            for j in 0..i {
-                right[i] -= self.lu[i][j] * right[j];
-            }
-        }
-        for i in (0..STAGES).rev() {
-            for j in i + 1..STAGES {
-                right[i] -= self.lu[i][j] * right[j];
-            }
-            right[i] /= self.lu[i][i];
-        }
     }
 }

@@ -1,8 +1,9 @@
 //! Orbits one after another, each found from the last.
 
 use super::balance::Orbit;
+use super::engine::Engine;
 use super::network::{Drive, Model, Network, OrbitError, check};
-use super::period::Engine;
+use super::period::{Scales, State};
 use super::shooting::Found;
 
 /// Solves orbits of one network, starting from the one before: continuation along a map. For a linear stage it is
@@ -11,7 +12,8 @@ use super::shooting::Found;
 pub struct Tracker<'a> {
     network: &'a Network,
     engine: Option<(Drive, Engine)>,
-    near: Option<Found>,
+    /// The last orbit and the one before it, with their supplies.
+    last: Vec<(f64, Found)>,
 }
 
 impl<'a> Tracker<'a> {
@@ -20,7 +22,7 @@ impl<'a> Tracker<'a> {
         Self {
             network,
             engine: None,
-            near: None,
+            last: Vec::new(),
         }
     }
 
@@ -38,15 +40,45 @@ impl<'a> Tracker<'a> {
             }
             Model::Curved(curved) => curved,
         };
-        let near = self.near.take();
         let mut engine = match self.engine.take() {
             Some((same, engine)) if same == *drive => engine,
-            _ => curved.engine(stage, drive)?,
+            _ => {
+                // States of another drive do not lie on one line with those of this one.
+                if self.last.len() > 1 {
+                    self.last.remove(0);
+                }
+                curved.engine(stage, drive)?
+            }
         };
-        let solved = curved.solve(stage, &mut engine, supply_v, drive, near.as_ref());
+        let near = self.predicted(supply_v);
+        let solved = curved.solve(stage, &mut engine, supply_v, drive, near);
         self.engine = Some((*drive, engine));
+        if solved.is_err() {
+            self.last.clear();
+        }
         let solved = solved?;
-        self.near = Some(solved.found);
+        if self.last.len() > 1 {
+            self.last.remove(0);
+        }
+        self.last.push((supply_v, solved.found));
         Ok(solved.orbit)
+    }
+
+    /// On the line through the last two states, or the last one.
+    fn predicted(&self, supply_v: f64) -> Option<(State, Scales)> {
+        let (here_v, here) = self.last.last()?;
+        let mut state = here.state.clone();
+        if let [(before_v, before), _] = self.last.as_slice() {
+            let share = (supply_v - here_v) / (here_v - before_v);
+            // Not far outside the two.
+            if share.abs() <= 2.0 {
+                state.q += share * (here.state.q - before.state.q);
+                state.u += share * (here.state.u - before.state.u);
+                for (x, before) in state.x.iter_mut().zip(&before.state.x) {
+                    *x += share * (*x - before);
+                }
+            }
+        }
+        Some((state, here.scales))
     }
 }

@@ -217,7 +217,7 @@ pub fn map_text(title: &str, map: &Map) -> String {
     let mut failed = String::new();
     if let Some(first) = map.failures().first() {
         failed = format!(
-            "\n{} points have no orbit and are left out; nothing is interpolated over them. First: {}: {}",
+            "\npoints without an orbit, left out and not interpolated over: {}; the first at {}: {}",
             map.failures().len(),
             quantity(first.control, map.control().unit(), 4),
             first.reason

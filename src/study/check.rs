@@ -409,6 +409,12 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     if held > 0.0 {
         warnings.push(Warning::HeldAtEdge { fraction: held });
     }
+    if let Some(first) = result.map.failures().first() {
+        warnings.push(Warning::PointsFailed {
+            count: result.map.failures().len(),
+            reason: first.reason.clone(),
+        });
+    }
     if let Some(stage) = &result.stage {
         // A silicon junction starts to conduct at about 0.7 V (common practice).
         let modelled = match &result.study.hardware {

@@ -29,6 +29,13 @@ pub enum Warning {
         /// Lowest drain voltage at full supply, V.
         lowest_v: f64,
     },
+    /// Points of the map have no orbit.
+    PointsFailed {
+        /// How many.
+        count: usize,
+        /// Why the first of them failed.
+        reason: String,
+    },
     /// The map assumes that the stage settles at once.
     SlowStage {
         /// Settling time of the stage, s.
@@ -76,6 +83,10 @@ impl fmt::Display for Warning {
                 f,
                 "at full supply the drain swings down to {}: a real device's body diode would conduct there and clamp it; the stage file has no diode",
                 show(*lowest_v, "V", 3)
+            ),
+            Self::PointsFailed { count, reason } => write!(
+                f,
+                "points of the map without an orbit: {count} (the first: {reason}). Nothing is interpolated over them; a control that falls there is held at the nearest point that was solved"
             ),
             Self::SlowStage {
                 settling_s,
