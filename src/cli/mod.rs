@@ -54,11 +54,11 @@ pub struct Common {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Arguments),
-    Design(design::Arguments),
+    Design(Box<design::Arguments>),
     Solve(solve::Arguments),
     Map(map::Arguments),
     Predistort(predistort::Arguments),
-    Measure(measure::Arguments),
+    Measure(Box<measure::Arguments>),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
     Completions(completions::Arguments),

@@ -491,7 +491,7 @@ fn default_acpr(limits: &Limits, spectrum: &Spectrum) -> Vec<AdjacentChannel> {
 fn facts(file: &str, source: &mut dyn Source) -> Result<SignalFacts, StudyError> {
     source.rewind()?;
     let levels = crate::signal::Levels::of_source(source)?;
-    if !(levels.peak > 0.0) {
+    if levels.peak.is_nan() || levels.peak <= 0.0 {
         return Err(StudyError::SilentSignal);
     }
     let rate_hz = source.rate_hz();
