@@ -281,6 +281,7 @@ pub fn measure(
         evm_p99_percent: symbols.as_ref().map(|s| s.evm_p99_percent),
         modulation: None,
         harmonics_dbc: None,
+        stress: None,
     };
     let judgement = match factor {
         Some(_) => judge(&measured, &request.limits),
