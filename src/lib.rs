@@ -8,6 +8,7 @@
 //! | | [`math`], [`units`], [`input`] | numbers without physics, text with units, files with positions |
 //! | 1 | [`stage`] | `Stage`: what the hardware is |
 //! | 2 | [`orbit`] | `Orbit`: what it does every period |
+//! | | [`design`] | targets to the parts of a stage |
 //! | 3 | [`map`] | `Map`: control to output, forward and inverse |
 //! | | [`signal`] | `Source`: the wanted baseband, from files and generators |
 //! | 4 | [`drive`] | the controls over time that a scheme makes of a signal |

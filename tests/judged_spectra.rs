@@ -46,6 +46,7 @@ fn verdict(samples: &[Complex64], rate_hz: f64, name: &str) -> Judgement {
         evm_p99_percent: None,
         modulation: None,
         harmonics_dbc: None,
+        stress: None,
     };
     judge(&measured, &limits)
 }

@@ -9,12 +9,13 @@ use std::path::{Path, PathBuf};
 /// Each module may import those before it; `main.rs` and `lib.rs` see all of them.
 ///
 /// `math` and `units` need nothing of each other: [`APART`] keeps it so.
-const ORDER: [&str; 16] = [
+const ORDER: [&str; 17] = [
     "math",
     "units",
     "input",
     "stage",
     "orbit",
+    "design",
     "map",
     "signal",
     "drive",

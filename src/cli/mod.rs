@@ -56,11 +56,11 @@ pub struct Common {
 enum Command {
     Check(check::Arguments),
     Compare(compare::Arguments),
-    Design(design::Arguments),
+    Design(Box<design::Arguments>),
     Solve(solve::Arguments),
     Map(map::Arguments),
     Predistort(predistort::Arguments),
-    Measure(measure::Arguments),
+    Measure(Box<measure::Arguments>),
     Signal(signal::Arguments),
     Limits(limits::Arguments),
     Completions(completions::Arguments),

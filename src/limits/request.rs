@@ -31,6 +31,10 @@ pub struct Limits {
     pub evm_percent: Option<f64>,
     /// Highest peak error vector magnitude, percent.
     pub evm_peak_percent: Option<f64>,
+    /// Highest drain voltage that the device is rated for, V.
+    pub peak_voltage_v: Option<f64>,
+    /// Highest switch current that the device is rated for, A.
+    pub peak_current_a: Option<f64>,
     /// Limits on neighbouring channels.
     pub acpr: Vec<AcprLimit>,
     /// Channel width, Hz.
@@ -62,6 +66,8 @@ impl Limits {
             && self.acpr.is_empty()
             && self.evm_percent.is_none()
             && self.evm_peak_percent.is_none()
+            && self.peak_voltage_v.is_none()
+            && self.peak_current_a.is_none()
     }
 
     /// The word for equipment that `set` knows, if one of them was stated.
@@ -131,6 +137,16 @@ impl LimitsRequest {
             sets,
             evm_percent: percent(section, "evm_percent")?,
             evm_peak_percent: percent(section, "evm_peak_percent")?,
+            peak_voltage_v: section.maybe_quantity(
+                "peak_voltage",
+                Dimension::Voltage,
+                Range::Positive,
+            )?,
+            peak_current_a: section.maybe_quantity(
+                "peak_current",
+                Dimension::Current,
+                Range::Positive,
+            )?,
             acpr: section
                 .sections("acpr")?
                 .iter()

@@ -100,6 +100,7 @@ pub struct Map {
     phase_rad: Curve,
     supply_a: Option<Curve>,
     switch_peak_v: Option<Curve>,
+    switch_peak_a: Option<Curve>,
     driver_w: Option<Curve>,
     failures: Vec<Failure>,
     /// Between the points beside failed ones: nothing is known inside.
@@ -150,6 +151,7 @@ impl Map {
             phase_rad: Curve::new(x.clone(), phase)?,
             supply_a: optional(|point| point.supply_a)?,
             switch_peak_v: optional(|point| point.switch_peak_v)?,
+            switch_peak_a: optional(|point| point.switch_peak_a)?,
             driver_w: optional(|point| point.driver_w)?,
             failures: Vec::new(),
             gaps: Vec::new(),
@@ -278,6 +280,19 @@ impl Map {
         self.switch_peak_v
             .as_ref()
             .map(|curve| curve.at_held(control).0)
+    }
+
+    /// Highest drain voltage, V, and switch current, A, of every control up to `control`, where the map knows both.
+    pub fn stress_up_to(&self, control: f64) -> Option<(f64, f64)> {
+        let (volts, amps) = (self.switch_peak_v.as_ref()?, self.switch_peak_a.as_ref()?);
+        let below = self.points.iter().filter(|point| point.control <= control);
+        let at = (volts.at_held(control).0, amps.at_held(control).0);
+        Some(below.fold(at, |(volt, amp), point| {
+            (
+                volt.max(point.switch_peak_v.unwrap_or(volt)),
+                amp.max(point.switch_peak_a.unwrap_or(amp)),
+            )
+        }))
     }
 
     /// The control that gives `amplitude_v`; `None` outside the range, where the map is not monotone, and where

@@ -361,6 +361,7 @@ fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement
         modulation: None,
         // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
         harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
+        stress: run.stress,
     };
     judge(&measured, &study.limits)
 }

@@ -281,6 +281,7 @@ pub fn measure(
         evm_p99_percent: symbols.as_ref().map(|s| s.evm_p99_percent),
         modulation: None,
         harmonics_dbc: None,
+        stress: None,
     };
     let judgement = match factor {
         Some(_) => judge(&measured, &request.limits),
@@ -491,7 +492,7 @@ fn default_acpr(limits: &Limits, spectrum: &Spectrum) -> Vec<AdjacentChannel> {
 fn facts(file: &str, source: &mut dyn Source) -> Result<SignalFacts, StudyError> {
     source.rewind()?;
     let levels = crate::signal::Levels::of_source(source)?;
-    if !(levels.peak > 0.0) {
+    if levels.peak.is_nan() || levels.peak <= 0.0 {
         return Err(StudyError::SilentSignal);
     }
     let rate_hz = source.rate_hz();

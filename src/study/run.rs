@@ -18,7 +18,7 @@ use crate::metrics::{
 };
 use crate::signal::{Oversampled, Source};
 use crate::transmit::{Energy, MapTransmitter};
-use crate::verdict::Wanted;
+use crate::verdict::{Stress, Wanted};
 
 /// Samples a block of the chain.
 const BLOCK: usize = 1 << 14;
@@ -65,6 +65,8 @@ pub struct Run {
     pub energy: Energy,
     /// Part of all instants whose control lay outside the map.
     pub held: f64,
+    /// What the switch had to stand, where the map knows.
+    pub stress: Option<Stress>,
     pub control_density: Vec<f64>,
     pub notch: Notch,
     /// Errors of symbols, where the study states the signal's format.
@@ -119,7 +121,7 @@ impl Chain<'_> {
         source: &mut dyn Source,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
-    ) -> Result<(Energy, u64), StudyError> {
+    ) -> Result<(Energy, u64, Option<Stress>), StudyError> {
         let rate_hz = self.rate_hz(source);
         let (start, end) = self.span(rate_hz);
         let study = self.study;
@@ -159,7 +161,11 @@ impl Chain<'_> {
             first += count as u64;
             tick(count as u64);
         }
-        Ok((transmitter.energy(), transmitter.held()))
+        let stress = self
+            .map
+            .stress_up_to(transmitter.highest_control())
+            .map(|(peak_v, peak_a)| Stress { peak_v, peak_a });
+        Ok((transmitter.energy(), transmitter.held(), stress))
     }
 
     fn meters(&self, rate_hz: f64) -> Result<(SpectrumMeter, Vec<SpectrumMeter>), StudyError> {
@@ -209,7 +215,7 @@ impl Chain<'_> {
         let mut density = vec![0u64; DENSITY_BINS];
         let full = self.study.full_control();
         let mut deepest = (f64::INFINITY, 0u64);
-        let (energy, held) = self.pass(source, tick, |piece| {
+        let (energy, held, stress) = self.pass(source, tick, |piece| {
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
                 meter.push(piece.output_v());
@@ -281,6 +287,7 @@ impl Chain<'_> {
             errors: errors.finish()?,
             energy,
             held: held as f64 / total.max(1) as f64,
+            stress,
             control_density: density
                 .iter()
                 .map(|&n| n as f64 / total.max(1) as f64)

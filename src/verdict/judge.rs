@@ -35,6 +35,17 @@ pub struct Measured<'a> {
     pub modulation: Option<&'a str>,
     /// Harmonics of the carrier against the fundamental, dB, the second first.
     pub harmonics_dbc: Option<&'a [f64]>,
+    /// What the switch had to stand; none where no stage was solved.
+    pub stress: Option<Stress>,
+}
+
+/// The most that the switch had to stand while the signal was on.
+#[derive(Debug, Clone, Copy, PartialEq, Serialize)]
+pub struct Stress {
+    /// Drain voltage, V.
+    pub peak_v: f64,
+    /// Switch current, A.
+    pub peak_a: f64,
 }
 
 /// A verdict with the numbers behind it.

@@ -15,7 +15,7 @@ mod rows;
 mod tests;
 mod wanted;
 
-pub use judge::{Judgement, Measured, judge};
+pub use judge::{Judgement, Measured, Stress, judge};
 pub use line::{MaskLine, mask_polyline};
 pub use outcome::{Check, MaskMargin, Outcome, Side, Unit, Verdict};
 pub use wanted::{Wanted, default_resolution_hz};

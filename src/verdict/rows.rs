@@ -240,6 +240,27 @@ pub(super) fn spurious(
     }
 }
 
+/// What the switch had to stand against the user's rating.
+fn rated(rating: f64, found: Option<f64>, unit: &str, name: &str, gathered: &mut Gathered) {
+    let allowed = show(rating, unit, 4);
+    let Some(found) = found.filter(|found| found.is_finite() && *found > 0.0) else {
+        let reason = format!("the {name} is not known without a stage; rated {allowed}");
+        return gathered.undecided(None, name.to_owned(), reason);
+    };
+    let margin_db = 20.0 * (rating / found).log10();
+    let ruling = Ruling {
+        margin_db,
+        found: show(found, unit, 4),
+        allowed: allowed.clone(),
+        reason: format!(
+            "the {name} reaches {} at the highest control that this signal asks for, rated {allowed}: {}",
+            show(found, unit, 4),
+            room(margin_db)
+        ),
+    };
+    gathered.decided(None, name.to_owned(), ruling);
+}
+
 /// The limits that the study states itself.
 pub(super) fn stated(measured: &Measured<'_>, limits: &Limits, gathered: &mut Gathered) {
     for row in &limits.acpr {
@@ -258,6 +279,25 @@ pub(super) fn stated(measured: &Measured<'_>, limits: &Limits, gathered: &mut Ga
             measured,
             gathered,
         );
+    }
+    let stress = measured.stress;
+    for (rating, found, unit, name) in [
+        (
+            limits.peak_voltage_v,
+            stress.map(|s| s.peak_v),
+            "V",
+            "peak drain voltage",
+        ),
+        (
+            limits.peak_current_a,
+            stress.map(|s| s.peak_a),
+            "A",
+            "peak switch current",
+        ),
+    ] {
+        if let Some(rating) = rating {
+            rated(rating, found, unit, name, gathered);
+        }
     }
     for (limit, statistic, name) in [
         (limits.evm_percent, Statistic::Rms, "evm"),

@@ -213,7 +213,7 @@ fn settle(stage: &Stage, drive: &Drive, steps: usize, state: &mut Vec<f64>) -> (
     let mut last = Sums::default();
     for _ in 0..MOST_PERIODS {
         let mut sums = Sums::default();
-        let mut drain = vec![Vec::with_capacity(steps + 1), Vec::with_capacity(steps + 1)];
+        let mut drain = [Vec::with_capacity(steps + 1), Vec::with_capacity(steps + 1)];
         let mut time_s = drive.closing_rad / TAU * period_s;
         for (which, position) in positions.iter().enumerate() {
             let weight = position.step_s / period_s;

@@ -291,7 +291,7 @@ fn recover(
             let values = reader.at((grid.start, grid.step), grid.cycles, count)?;
             points = decided(modulation, &values, grid.gain);
             grid.gain = least_squares_gain(&values, &points);
-            if !(grid.gain.norm() > 0.0) {
+            if grid.gain.norm().is_nan() || grid.gain.norm() <= 0.0 {
                 return Err(SymbolError::Lost);
             }
             let (next, moved) = improved(&values, &points, grid).ok_or(SymbolError::Lost)?;

@@ -48,6 +48,7 @@ fn measured<'a>(fine: &'a Spectrum, peak_hold: &'a [Spectrum], mean_w: f64) -> M
         evm_p99_percent: None,
         modulation: None,
         harmonics_dbc: None,
+        stress: None,
     }
 }
 

@@ -167,3 +167,34 @@ fn stated_ratios_are_held_to_the_same_filter() {
             .contains("raise the sample rate")
     );
 }
+
+#[test]
+fn stress_against_ratings() {
+    let fine = spectrum(1000, 50.0, 100.0, |_| 1e-9);
+    let limits = Limits {
+        peak_voltage_v: Some(40.0),
+        peak_current_a: Some(2.0),
+        ..Limits::default()
+    };
+    let mut measured = measured(&fine, &[], 1.0);
+    let unknown = judge(&measured, &limits);
+    assert_eq!(unknown.verdict.outcome, Outcome::Undecided);
+    assert_eq!(unknown.verdict.checks.len(), 2);
+    measured.stress = Some(Stress {
+        peak_v: 20.0,
+        peak_a: 4.0,
+    });
+    let judged = judge(&measured, &limits);
+    assert_eq!(judged.verdict.outcome, Outcome::Outside);
+    // 20 log10(40/20) and 20 log10(2/4).
+    near(
+        judged.verdict.checks[0].margin_db.unwrap(),
+        6.020_599_913,
+        1e-8,
+    );
+    near(
+        judged.verdict.checks[1].margin_db.unwrap(),
+        -6.020_599_913,
+        1e-8,
+    );
+}
