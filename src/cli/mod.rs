@@ -2,6 +2,7 @@
 
 mod arguments;
 mod check;
+mod compare;
 mod completions;
 mod console;
 mod design;
@@ -54,6 +55,7 @@ pub struct Common {
 #[derive(Debug, Subcommand)]
 enum Command {
     Check(check::Arguments),
+    Compare(compare::Arguments),
     Design(Box<design::Arguments>),
     Solve(solve::Arguments),
     Map(map::Arguments),
@@ -82,6 +84,7 @@ fn run(arguments: impl IntoIterator<Item = OsString>) -> ExitCode {
     let console = Console::new(&arguments.common);
     let result = match arguments.command {
         Command::Check(arguments) => check::run(&arguments, &console),
+        Command::Compare(arguments) => compare::run(&arguments, &console),
         Command::Design(arguments) => design::run(&arguments, &console),
         Command::Solve(arguments) => solve::run(&arguments, &console),
         Command::Map(arguments) => map::run(&arguments, &console),

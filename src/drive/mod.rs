@@ -1,37 +1,32 @@
 //! STEP 4: how a signal moves the stage's controls: schemes, imperfections included.
 
+mod class_b;
 mod correct;
+mod levels;
 mod lookup;
 mod modulator;
+mod outphase;
+mod phase;
 mod polynomial;
 mod rate;
 mod read;
+mod scheme;
 mod shaping;
 mod supply;
+mod width;
 
+pub use class_b::{CLASS_B_PEAK_EFFICIENCY, ClassBScheme};
 pub use correct::Correction;
+pub use levels::LevelsScheme;
 pub use lookup::{Between, Lookup, LookupError, LookupSize, MAX_TABLE_RATE, Spacing, Word};
 pub use modulator::{Converter, Modulator, Ripple, SupplyModulator};
+pub use outphase::OutphaseScheme;
 pub use polynomial::{Polynomial, Term};
 pub use rate::{MAX_FACTOR, RateReason, oversampling};
+pub use scheme::{Scheme, SchemeDrive};
 pub use shaping::{Shape, Shaping};
 pub use supply::{PhasePath, SupplyDrive, SupplyScheme};
-
-/// How the signal moves the stage's controls.
-#[derive(Debug, Clone, PartialEq)]
-pub enum Scheme {
-    /// Magnitude to the supply, phase to the drive.
-    Supply(SupplyScheme),
-}
-
-impl Scheme {
-    /// Its name in studies.
-    pub fn name(&self) -> &'static str {
-        match self {
-            Self::Supply(_) => "supply",
-        }
-    }
-}
+pub use width::{WidthLaw, WidthScheme};
 
 /// The controls over a block of time, sample by sample, with the wanted signal at the same instants.
 #[derive(Debug, Clone, Default, PartialEq)]
@@ -44,6 +39,8 @@ pub struct Track {
     pub control: Vec<f64>,
     /// The drive's phase as a phasor of magnitude one.
     pub phase: Vec<num_complex::Complex64>,
+    /// The supply, V, of schemes that move it beside the control; empty for all others.
+    pub supply_v: Vec<f64>,
 }
 
 impl Track {
@@ -53,6 +50,7 @@ impl Track {
         self.asked.clear();
         self.control.clear();
         self.phase.clear();
+        self.supply_v.clear();
     }
 
     /// Instants held.

@@ -1,6 +1,6 @@
 //! How finely a track must be sampled.
 
-use super::{Scheme, SupplyScheme};
+use super::Scheme;
 
 /// The highest oversampling factor.
 pub const MAX_FACTOR: usize = 512;
@@ -21,6 +21,10 @@ pub enum RateReason {
     Converter,
     /// The ripple's frequency.
     Ripple,
+    /// Pulses that are quantized or switched.
+    Edges,
+    /// Two branches of constant magnitude are far wider than the signal.
+    Branches,
     /// The rate of a table or polynomial in front.
     Predistortion,
 }
@@ -35,6 +39,8 @@ impl RateReason {
             Self::PhaseBandwidth => "the phase path's bandwidth",
             Self::Converter => "the converter's rate",
             Self::Ripple => "the ripple's frequency",
+            Self::Edges => "steps of the pulses or rails",
+            Self::Branches => "branches of constant magnitude are far wider than the signal",
             Self::Predistortion => "the rate of the predistortion",
         }
     }
@@ -43,6 +49,13 @@ impl RateReason {
 /// A bandwidth past this many times the signal's rate is transparent to it and asks for nothing more.
 const TRANSPARENT: f64 = 8.0;
 
+/// The rate that a bandwidth asks for, Hz.
+pub(super) fn band(bandwidth_hz: Option<f64>, signal_rate_hz: f64) -> f64 {
+    4.0 * bandwidth_hz
+        .unwrap_or(0.0)
+        .min(TRANSPARENT * signal_rate_hz)
+}
+
 /// The factor by which a signal of `signal_rate_hz` must be oversampled for `scheme`, a power of two, and why.
 /// `span_hz` is the whole range from the lowest to the highest offset that limits ask for, 0 for none.
 ///
@@ -50,33 +63,16 @@ const TRANSPARENT: f64 = 8.0;
 /// its magnitude and phase, four times every bandwidth that is not far wider than the signal, four times
 /// every tone and converter, and a quarter more than the span.
 pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usize, RateReason) {
-    let Scheme::Supply(SupplyScheme {
-        modulator,
-        phase_path,
-        ..
-    }) = scheme;
     let mut wanted = (8.0 * signal_rate_hz, RateReason::PolarExpansion);
     let mut ask = |rate_hz: f64, reason: RateReason| {
         if rate_hz > wanted.0 {
             wanted = (rate_hz, reason);
         }
     };
-    let band = |bandwidth_hz: Option<f64>| {
-        4.0 * bandwidth_hz
-            .unwrap_or(0.0)
-            .min(TRANSPARENT * signal_rate_hz)
-    };
     ask(1.25 * span_hz, RateReason::LimitsSpan);
-    ask(band(modulator.bandwidth_hz), RateReason::ModulatorBandwidth);
-    ask(band(phase_path.bandwidth_hz), RateReason::PhaseBandwidth);
-    ask(
-        4.0 * modulator.converter.map_or(0.0, |c| c.rate_hz),
-        RateReason::Converter,
-    );
-    ask(
-        4.0 * modulator.ripple.map_or(0.0, |r| r.frequency_hz),
-        RateReason::Ripple,
-    );
+    for (rate_hz, reason) in scheme.rates(signal_rate_hz) {
+        ask(rate_hz, reason);
+    }
     let factor = (wanted.0 / signal_rate_hz).log2().ceil().clamp(0.0, 30.0);
     ((1usize << factor as u32).min(MAX_FACTOR), wanted.1)
 }
@@ -84,7 +80,7 @@ pub fn oversampling(scheme: &Scheme, signal_rate_hz: f64, span_hz: f64) -> (usiz
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::drive::{Modulator, PhasePath, Ripple, Shape, Shaping};
+    use crate::drive::{Modulator, PhasePath, Ripple, Shape, Shaping, SupplyScheme};
 
     fn factor(modulator: Modulator, span_hz: f64) -> (usize, RateReason) {
         let scheme = Scheme::Supply(SupplyScheme {

@@ -1,8 +1,12 @@
 //! The `[scheme]` table of a study.
 
-use super::{Converter, Modulator, PhasePath, Ripple, Scheme, Shape, Shaping, SupplyScheme};
+use super::{
+    ClassBScheme, Converter, LevelsScheme, Modulator, OutphaseScheme, PhasePath, Ripple, Scheme,
+    Shape, Shaping, SupplyScheme, WidthLaw, WidthScheme,
+};
 use crate::input::{Problem, Range, Section};
 use crate::math::lowpass::MAX_ORDER;
+use crate::stage::Anchor;
 use crate::units::Dimension;
 
 impl Scheme {
@@ -11,14 +15,150 @@ impl Scheme {
     /// # Errors
     /// The first thing wrong, with its place.
     pub fn read(section: &Section<'_>) -> Result<Self, Problem> {
-        let kinds = [("supply", ())];
-        if section.maybe_choice("kind", &kinds)?.is_none() {
-            return Err(section.problem("kind", "\"supply\""));
-        }
-        let scheme = Self::Supply(supply(section)?);
+        let kinds = [
+            ("supply", Kind::Supply),
+            ("width", Kind::Width),
+            ("levels", Kind::Levels),
+            ("outphase", Kind::Outphase),
+            ("class_b", Kind::ClassB),
+        ];
+        let Some(kind) = section.maybe_choice("kind", &kinds)? else {
+            return Err(section.problem(
+                "kind",
+                "\"supply\", \"width\", \"levels\", \"outphase\" or \"class_b\"",
+            ));
+        };
+        let scheme = match kind {
+            Kind::Supply => Self::Supply(supply(section)?),
+            Kind::Width => Self::Width(width(section)?),
+            Kind::Levels => Self::Levels(levels(section)?),
+            Kind::Outphase => Self::Outphase(outphase(section)?),
+            Kind::ClassB => Self::ClassB(ClassBScheme),
+        };
         section.finish()?;
         Ok(scheme)
     }
+}
+
+#[derive(Debug, Clone, Copy)]
+enum Kind {
+    Supply,
+    Width,
+    Levels,
+    Outphase,
+    ClassB,
+}
+
+const LAWS: [(&str, WidthLaw); 3] = [
+    ("inverse", WidthLaw::Inverse),
+    ("amplitude", WidthLaw::Amplitude),
+    ("sine", WidthLaw::Sine),
+];
+
+const ANCHORS: [(&str, Anchor); 3] = [
+    ("leading", Anchor::Leading),
+    ("centre", Anchor::Centre),
+    ("trailing", Anchor::Trailing),
+];
+
+fn maybe_phase_path(section: &Section<'_>) -> Result<PhasePath, Problem> {
+    let path = section.maybe_section("phase_path")?;
+    Ok(path
+        .map(|s| phase_path(&s))
+        .transpose()?
+        .unwrap_or_default())
+}
+
+fn width(section: &Section<'_>) -> Result<WidthScheme, Problem> {
+    Ok(WidthScheme {
+        law: section
+            .maybe_choice("law", &LAWS)?
+            .unwrap_or(WidthLaw::Inverse),
+        anchor: section.maybe_choice("anchor", &ANCHORS)?,
+        grid_s: section.maybe_quantity("grid", Dimension::Time, Range::Positive)?,
+        shortest_s: section
+            .maybe_quantity("shortest", Dimension::Time, Range::NotNegative)?
+            .unwrap_or(0.0),
+        jitter_s: section
+            .maybe_quantity("jitter", Dimension::Time, Range::NotNegative)?
+            .unwrap_or(0.0),
+        seed: section
+            .maybe_whole("seed", 0, u64::from(u32::MAX))?
+            .unwrap_or(1),
+        delay_s: delay(section)?,
+        phase_path: maybe_phase_path(section)?,
+    })
+}
+
+/// Rails past this number are a converter.
+const MOST_RAILS: u64 = 64;
+
+fn levels(section: &Section<'_>) -> Result<LevelsScheme, Problem> {
+    let rails = match section.maybe_whole("count", 1, MOST_RAILS)? {
+        Some(count) if !section.has("rails") => {
+            (1..=count).map(|at| at as f64 / count as f64).collect()
+        }
+        Some(_) => return Err(section.problem("rails", "either rails or their count")),
+        None => {
+            let rails = section.quantities("rails", Dimension::Ratio, Range::UpTo(0.0, 1.0))?;
+            let rising = rails.windows(2).all(|pair| pair[0] < pair[1]);
+            if !rising || rails.last() != Some(&1.0) || rails.len() as u64 > MOST_RAILS {
+                return Err(section.problem(
+                    "rails",
+                    "parts of the full supply, rising, the last one 1 (or count = 3 for equal steps)",
+                ));
+            }
+            rails
+        }
+    };
+    Ok(LevelsScheme {
+        rails,
+        hysteresis: section
+            .maybe_quantity("hysteresis", Dimension::Ratio, Range::Within(0.0, 0.9))?
+            .unwrap_or(0.05),
+        settling_s: section
+            .maybe_quantity("settling", Dimension::Time, Range::Within(0.0, MAX_DELAY_S))?
+            .unwrap_or(0.0),
+        efficiency: section
+            .maybe_quantity("efficiency", Dimension::Ratio, Range::UpTo(0.0, 1.0))?
+            .unwrap_or(1.0),
+        idle_w: section
+            .maybe_quantity("idle", Dimension::Power, Range::NotNegative)?
+            .unwrap_or(0.0),
+        phase_path: maybe_phase_path(section)?,
+    })
+}
+
+fn outphase(section: &Section<'_>) -> Result<OutphaseScheme, Problem> {
+    if section
+        .maybe_choice("combining", &[("isolated", ())])?
+        .is_none()
+    {
+        return Err(section.problem("combining", "\"isolated\""));
+    }
+    let mismatch = section.maybe_section("mismatch")?;
+    let mut scheme = OutphaseScheme {
+        bandwidth_hz: section.maybe_quantity(
+            "branch_bandwidth",
+            Dimension::Frequency,
+            Range::Positive,
+        )?,
+        order: section
+            .maybe_whole("branch_order", 1, u64::from(MAX_ORDER))?
+            .unwrap_or(2) as u32,
+        ..OutphaseScheme::default()
+    };
+    if let Some(mismatch) = mismatch {
+        scheme.gain_mismatch_db = mismatch
+            .maybe_quantity("gain", Dimension::Decibel, Range::Within(0.0, 20.0))?
+            .unwrap_or(0.0);
+        scheme.phase_mismatch_rad = mismatch
+            .maybe_quantity("phase", Dimension::Angle, Range::Within(-1.0, 1.0))?
+            .unwrap_or(0.0);
+        scheme.delay_mismatch_s = delay(&mismatch)?;
+        mismatch.finish()?;
+    }
+    Ok(scheme)
 }
 
 const SHAPES: [(&str, Shape); 3] = [

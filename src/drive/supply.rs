@@ -10,9 +10,10 @@ use num_complex::Complex64;
 use super::Track;
 use super::correct::{Corrected, Correction, Corrector};
 use super::modulator::{Modulator, SupplyModulator};
+use super::phase::{PhaseLimiter, magnitude};
+use super::rate::{RateReason, band};
 use super::shaping::Shaping;
 use crate::math::delay::{Delay, LATENCY};
-use crate::math::lowpass::Lowpass;
 
 /// The scheme as the study describes it.
 #[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
@@ -46,9 +47,6 @@ impl Default for PhasePath {
     }
 }
 
-/// Magnitudes below this fraction of full scale have no phase of their own: the last one is kept.
-const NO_PHASE: f64 = 1e-9;
-
 /// The scheme at work at one sample rate.
 #[derive(Debug, Clone)]
 pub struct SupplyDrive {
@@ -59,9 +57,7 @@ pub struct SupplyDrive {
     magnitude: Delay,
     angle: Delay,
     modulator: SupplyModulator,
-    phase_filter: Option<Lowpass<Complex64>>,
-    last_phase: Complex64,
-    settled: bool,
+    phase: PhaseLimiter,
     correctors: Option<Correctors>,
 }
 
@@ -83,12 +79,11 @@ impl SupplyDrive {
             magnitude: Delay::new(scheme.modulator.delay_s * rate_hz),
             angle: Delay::new(scheme.phase_path.delay_s * rate_hz),
             modulator: SupplyModulator::new(&scheme.modulator, full_v, rate_hz),
-            phase_filter: scheme
-                .phase_path
-                .bandwidth_hz
-                .map(|bandwidth_hz| Lowpass::new(scheme.phase_path.order, bandwidth_hz, rate_hz)),
-            last_phase: Complex64::ONE,
-            settled: false,
+            phase: PhaseLimiter::new(
+                scheme.phase_path.order,
+                scheme.phase_path.bandwidth_hz,
+                rate_hz,
+            ),
             correctors: None,
         }
     }
@@ -126,18 +121,14 @@ impl SupplyDrive {
 
     /// How many samples after the start the track still shows the start: interpolators filling, filters settling.
     pub fn settling(scheme: &SupplyScheme, rate_hz: f64) -> usize {
-        let dead = scheme.modulator.delay_s.max(scheme.phase_path.delay_s) * rate_hz;
-        let slowest = [
-            scheme.modulator.bandwidth_hz,
-            scheme.phase_path.bandwidth_hz,
-        ]
-        .into_iter()
-        .flatten()
-        .fold(0.0, |slowest: f64, bandwidth_hz| {
-            slowest.max(1.0 / bandwidth_hz)
-        });
-        // A Butterworth low-pass of order 8 rings below 1e-6 within about 12 periods of its bandwidth.
-        2 * LATENCY + dead.ceil() as usize + (12.0 * slowest * rate_hz).ceil() as usize
+        settling(
+            scheme.modulator.delay_s.max(scheme.phase_path.delay_s),
+            &[
+                scheme.modulator.bandwidth_hz,
+                scheme.phase_path.bandwidth_hz,
+            ],
+            rate_hz,
+        )
     }
 
     /// Appends the controls for `samples` to `track`, all rows at the same instants ([`LATENCY`] late). A
@@ -154,32 +145,47 @@ impl SupplyDrive {
                 Some(_) => asked_v,
             });
             track.control.push(self.modulator.push(asked_v));
-            track.phase.push(self.phase(signal));
+            track.phase.push(self.phase.push(signal));
         }
-    }
-
-    fn phase(&mut self, sample: Complex64) -> Complex64 {
-        let mut phase = unit(sample).unwrap_or(self.last_phase);
-        if let Some(filter) = &mut self.phase_filter {
-            if !self.settled {
-                filter.settle(phase);
-                self.settled = true;
-            }
-            phase = unit(filter.push(phase)).unwrap_or(self.last_phase);
-        }
-        self.last_phase = phase;
-        phase
     }
 }
 
-/// Without the care against overflow that full-scale samples do not need.
-fn magnitude(sample: Complex64) -> f64 {
-    sample.norm_sqr().sqrt()
+/// Instants after which dead time, interpolators and low-passes show nothing of the start.
+pub(super) fn settling(dead_s: f64, bandwidths_hz: &[Option<f64>], rate_hz: f64) -> usize {
+    let dead = dead_s * rate_hz;
+    let slowest = bandwidths_hz
+        .iter()
+        .flatten()
+        .fold(0.0, |slowest: f64, bandwidth_hz| {
+            slowest.max(1.0 / bandwidth_hz)
+        });
+    // A Butterworth low-pass of order 8 rings below 1e-6 within about 12 periods of its bandwidth.
+    2 * LATENCY + dead.ceil() as usize + (12.0 * slowest * rate_hz).ceil() as usize
 }
 
-fn unit(sample: Complex64) -> Option<Complex64> {
-    let magnitude = magnitude(sample);
-    (magnitude > NO_PHASE).then(|| sample / magnitude)
+impl SupplyScheme {
+    /// The sample rates that it asks for, and why.
+    pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
+        let modulator = &self.modulator;
+        vec![
+            (
+                band(modulator.bandwidth_hz, signal_rate_hz),
+                RateReason::ModulatorBandwidth,
+            ),
+            (
+                band(self.phase_path.bandwidth_hz, signal_rate_hz),
+                RateReason::PhaseBandwidth,
+            ),
+            (
+                4.0 * modulator.converter.map_or(0.0, |c| c.rate_hz),
+                RateReason::Converter,
+            ),
+            (
+                4.0 * modulator.ripple.map_or(0.0, |r| r.frequency_hz),
+                RateReason::Ripple,
+            ),
+        ]
+    }
 }
 
 #[cfg(test)]

@@ -21,6 +21,8 @@ pub enum Control {
     Supply,
     /// Closed fraction of the period.
     Width,
+    /// Wanted amplitude over the full one: the control of stages whose output is a straight line of it.
+    Drive,
 }
 
 impl Control {
@@ -28,7 +30,7 @@ impl Control {
     pub fn unit(self) -> &'static str {
         match self {
             Self::Supply => "V",
-            Self::Width => "",
+            Self::Width | Self::Drive => "",
         }
     }
 
@@ -37,6 +39,7 @@ impl Control {
         match self {
             Self::Supply => "supply",
             Self::Width => "width",
+            Self::Drive => "drive",
         }
     }
 }

@@ -88,7 +88,7 @@ pub fn read_map(
     }
     let allowed_controls = match control {
         Control::Supply => 0.0..=MOST,
-        Control::Width => 0.0..=1.0,
+        Control::Width | Control::Drive => 0.0..=1.0,
     };
     let mut map_points = Vec::with_capacity(points.len());
     for (index, point) in points.into_iter().enumerate() {
@@ -97,6 +97,7 @@ pub fn read_map(
                 format!("control {} in point {}", point.control, index + 1),
                 match control {
                     Control::Supply => "a supply of 0 V or more",
+                    Control::Drive => "a fraction of full drive from 0 to 1",
                     Control::Width => "a width from 0 to 1, a fraction of the period",
                 },
             ));
@@ -107,7 +108,7 @@ pub fn read_map(
         }
         let supply_v = match control {
             Control::Supply => point.control,
-            Control::Width => needed("supply", point.supply_v.or(supply_v))?,
+            Control::Width | Control::Drive => needed("supply", point.supply_v.or(supply_v))?,
         };
         map_points.push(point.finish(supply_v, load_ohm));
     }

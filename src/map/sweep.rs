@@ -65,6 +65,11 @@ impl Sweep {
         let (lowest, highest, allowed) = match control {
             Control::Supply => (0.0, f64::MAX, "0 V or more"),
             Control::Width => (1e-3, 1.0 - 1e-3, "0.001 to 0.999"),
+            Control::Drive => (
+                0.0,
+                0.0,
+                "nothing: a stage is solved over its supply or width",
+            ),
         };
         if !(from < to && from >= lowest && to <= highest) || points < 2 {
             let control = control.name();
@@ -102,7 +107,9 @@ impl Sweep {
     pub fn full(network: &Network, control: Control, points: usize) -> Result<Self, SweepError> {
         let stage = network.stage();
         match control {
-            Control::Supply => Self::even(network, control, 0.0, stage.supply_v, points),
+            Control::Supply | Control::Drive => {
+                Self::even(network, control, 0.0, stage.supply_v, points)
+            }
             Control::Width => Self::even(
                 network,
                 control,
@@ -126,7 +133,7 @@ impl Sweep {
         let mut first_cause = None;
         for &value in self.values.iter().rev() {
             let (supply_v, duty) = match self.control {
-                Control::Supply => (value, self.duty),
+                Control::Supply | Control::Drive => (value, self.duty),
                 Control::Width => (self.supply_v, value),
             };
             match tracker.orbit(supply_v, &Drive::new(&stage.driver, duty)) {

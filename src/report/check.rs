@@ -11,8 +11,8 @@ use super::picture::Figure;
 use super::stage::{control_quantity, orbit_rows, phases_deg, waveform_figure};
 use super::table::{Align, Table};
 use super::text::quantity;
-use crate::drive::Scheme;
 use crate::limits::Detector;
+use crate::map::Control;
 use crate::study::{CheckResult, Hardware};
 use crate::units;
 use crate::verdict::{self, Check, MaskMargin};
@@ -130,7 +130,7 @@ pub fn page(result: &CheckResult, request: &Request) -> Page {
         conditions: Conditions {
             command: request.command.clone(),
             version: format!("quietedge {}", env!("CARGO_PKG_VERSION")),
-            seed: None,
+            seed: result.scheme().seed(),
             inputs: std::iter::once(("study".to_owned(), study.text.clone()))
                 .chain(request.inputs.iter().cloned())
                 .collect(),
@@ -429,11 +429,12 @@ fn span_hz(result: &CheckResult) -> Option<f64> {
 pub fn bend_figure(result: &CheckResult) -> CaptionedFigure {
     let map = &result.map;
     let points = map.points();
-    let full = result.study.hardware.full_supply_v();
-    let Scheme::Supply(scheme) = result.scheme();
+    let full = result.study.full_control();
+    let floor = result.scheme().floor();
+    let control = map.control().name();
     let bins = result.control_density.len() as f64;
     let figure = BendFigure {
-        title: "Output over supply".to_owned(),
+        title: format!("Output over {control}"),
         control: control_quantity(map.control()),
         curves: vec![BendCurve {
             name: "map".to_owned(),
@@ -447,36 +448,67 @@ pub fn bend_figure(result: &CheckResult) -> CaptionedFigure {
             .enumerate()
             .map(|(bin, &part)| ((bin as f64 + 0.5) / bins * full, part))
             .collect(),
-        floor: (scheme.shaping.floor > 0.0).then_some(scheme.shaping.floor * full),
+        floor: (floor > 0.0).then_some(floor * full),
     }
     .figure();
-    let caption = "How output amplitude and phase follow the supply, and how often the signal's supply is where."
-        .to_owned();
+    let caption = format!(
+        "How output amplitude and phase follow the {control}, and how often the signal's {control} is where."
+    );
     CaptionedFigure { figure, caption }
 }
 
 /// The envelope against the supply track.
 pub fn notch_figure(result: &CheckResult) -> CaptionedFigure {
     let notch = &result.notch;
-    let full = result.study.hardware.full_supply_v();
+    let supply = result.map.control() == Control::Supply;
+    // Other controls are shown as parts of their range, beside the wanted part of full output.
+    let full = if supply {
+        result.study.full_control()
+    } else {
+        1.0
+    };
     let curve = |name: &str, values: &[f64]| EnvelopeCurve {
         name: name.to_owned(),
         time_s: notch.time_s.clone(),
         value: values.iter().map(|value| value * full).collect(),
     };
     let figure = EnvelopeFigure {
-        title: "Envelope and supply around the deepest notch".to_owned(),
-        quantity: super::figures::Quantity::new("supply", "V"),
+        title: if supply {
+            "Envelope and supply around the deepest notch".to_owned()
+        } else {
+            format!(
+                "Envelope and {} around the deepest notch",
+                result.map.control().name()
+            )
+        },
+        quantity: if supply {
+            super::figures::Quantity::new("supply", "V")
+        } else {
+            super::figures::Quantity::new("part of full range", "")
+        },
         curves: vec![
             curve("wanted envelope", &notch.wanted),
-            curve("asked of the modulator", &notch.asked),
+            curve(
+                if supply {
+                    "asked of the modulator"
+                } else {
+                    "asked"
+                },
+                &notch.asked,
+            ),
             curve("at the stage", &notch.control),
         ],
     }
     .figure();
-    let caption = "The wanted envelope, what the shaping makes of it, and what the modulator delivers, around the signal's deepest notch."
-        .to_owned();
-    CaptionedFigure { figure, caption }
+    let caption = if supply {
+        "The wanted envelope, what the shaping makes of it, and what the modulator delivers, around the signal's deepest notch."
+    } else {
+        "The wanted envelope and the control, asked for and at the stage, around the signal's deepest notch."
+    };
+    CaptionedFigure {
+        figure,
+        caption: caption.to_owned(),
+    }
 }
 
 /// Complementary distributions of output and wanted power.
@@ -592,7 +624,7 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
     });
     groups.push(FactGroup {
         title: "Scheme".to_owned(),
-        rows: scheme_rows(result.scheme()),
+        rows: super::scheme::scheme_rows(result.scheme()),
     });
     if let Some(table) = &result.table {
         groups.push(FactGroup {
@@ -636,73 +668,6 @@ fn facts(result: &CheckResult) -> Vec<FactGroup> {
         ],
     });
     groups
-}
-
-/// A scheme's settings, imperfections included.
-pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
-    let Scheme::Supply(supply) = scheme;
-    let (modulator, path) = (&supply.modulator, &supply.phase_path);
-    let own = |name: &str, value: String| (name.to_owned(), value);
-    let band = |bandwidth_hz: Option<f64>, order: u32| {
-        bandwidth_hz.map_or("ideal".to_owned(), |hz| {
-            format!("{}, Butterworth of order {order}", quantity(hz, "Hz", 4))
-        })
-    };
-    vec![
-        own("kind", scheme.name().to_owned()),
-        own(
-            "floor",
-            format!(
-                "{} of the range, {:?}",
-                supply.shaping.floor, supply.shaping.shape
-            )
-            .to_lowercase(),
-        ),
-        own(
-            "modulator's bandwidth",
-            band(modulator.bandwidth_hz, modulator.order),
-        ),
-        own("modulator's dead time", quantity(modulator.delay_s, "s", 4)),
-        own(
-            "slew limit",
-            modulator
-                .slew_v_per_s
-                .map_or("none".to_owned(), |slew| quantity(slew, "V/s", 4)),
-        ),
-        own(
-            "converter",
-            modulator.converter.map_or("ideal".to_owned(), |converter| {
-                format!(
-                    "{} bits at {}",
-                    converter.bits,
-                    quantity(converter.rate_hz, "Hz", 4)
-                )
-            }),
-        ),
-        own(
-            "ripple",
-            modulator.ripple.map_or("none".to_owned(), |ripple| {
-                format!(
-                    "{} peak at {}",
-                    quantity(ripple.amplitude_v, "V", 4),
-                    quantity(ripple.frequency_hz, "Hz", 4)
-                )
-            }),
-        ),
-        own(
-            "modulator's efficiency",
-            format!(
-                "{:.1} %, {} idle",
-                100.0 * modulator.efficiency,
-                quantity(modulator.idle_w, "W", 3)
-            ),
-        ),
-        own("phase path's dead time", quantity(path.delay_s, "s", 4)),
-        own(
-            "phase path's bandwidth",
-            band(path.bandwidth_hz, path.order),
-        ),
-    ]
 }
 
 /// The result for the terminal: verdict first.

@@ -11,6 +11,7 @@
 
 pub mod cautions;
 pub mod check;
+pub mod compare;
 pub mod design;
 pub mod documents;
 mod error;
@@ -21,6 +22,7 @@ pub mod page;
 pub mod palette;
 pub mod picture;
 pub mod predistort;
+pub mod scheme;
 pub mod stage;
 pub mod table;
 mod text;

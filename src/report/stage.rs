@@ -133,6 +133,7 @@ pub fn control_quantity(control: Control) -> Quantity {
     match control {
         Control::Supply => Quantity::new("supply", "V"),
         Control::Width => Quantity::new("closed part of the period", ""),
+        Control::Drive => Quantity::new("wanted part of full output", ""),
     }
 }
 

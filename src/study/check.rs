@@ -7,7 +7,10 @@ use super::load::{Hardware, Predistortion, Study};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
 use super::warning::Warning;
-use crate::drive::{Correction, MAX_FACTOR, Polynomial, RateReason, Scheme, oversampling};
+use crate::drive::{
+    ClassBScheme, Correction, MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, WidthLaw,
+    oversampling,
+};
 use crate::map::{Control, Map, Origin, Sweep};
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
 use crate::orbit::{Drive, Network};
@@ -94,7 +97,7 @@ pub(super) struct Bench<'a> {
 
 impl<'a> Bench<'a> {
     pub(super) fn new(study: &'a Study, source: &mut dyn Source) -> Result<Self, StudyError> {
-        let (map, stage) = hardware(&study.hardware)?;
+        let (map, stage) = hardware(study)?;
         Ok(Self {
             study,
             map,
@@ -106,7 +109,11 @@ impl<'a> Bench<'a> {
 
     /// The table of `request` for this study.
     pub(super) fn table(&self, request: &TableRequest) -> Result<Table, StudyError> {
-        let Scheme::Supply(scheme) = &self.study.scheme;
+        let Scheme::Supply(scheme) = &self.study.scheme else {
+            return Err(StudyError::NoTable {
+                scheme: self.study.scheme.name(),
+            });
+        };
         let full_v = self.study.hardware.full_supply_v();
         let title = &self.study.title;
         Ok(Table::from_map(
@@ -168,7 +175,7 @@ impl<'a> Bench<'a> {
         progress: &mut dyn FnMut(f64),
     ) -> Result<CheckResult, StudyError> {
         let study = self.study;
-        let full_v = study.hardware.full_supply_v();
+        let full_v = study.full_control();
         if let Front::Table(table) = &front
             && (table.full_control / full_v - 1.0).abs() > 1e-9
         {
@@ -249,13 +256,33 @@ impl<'a> Bench<'a> {
 }
 
 /// The map, and the stage at full supply where there is one.
-fn hardware(hardware: &Hardware) -> Result<(Map, Option<StageFacts>), StudyError> {
-    let stage = match hardware {
-        Hardware::Map(map) => return Ok((Map::clone(map), None)),
-        Hardware::Stage(stage) => stage,
+fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
+    let scheme = &study.scheme;
+    let mut stage = match &study.hardware {
+        Hardware::Map(map) => {
+            return Ok((
+                straight(scheme, map)?.unwrap_or_else(|| Map::clone(map)),
+                None,
+            ));
+        }
+        Hardware::Stage(stage) => stage.clone(),
     };
+    if let Some(anchor) = scheme.anchor() {
+        stage.driver.anchor = anchor;
+    }
+    let stage = &*stage;
     let network = Network::new(stage)?;
-    let map = Sweep::full(&network, Control::Supply, MAP_POINTS)?.solve(&network)?;
+    let map = match scheme.control() {
+        Control::Supply => Sweep::full(&network, Control::Supply, MAP_POINTS)?,
+        Control::Width => Sweep::full(&network, Control::Width, MAP_POINTS)?,
+        // Only full output is needed.
+        Control::Drive => {
+            let full_v = stage.supply_v;
+            Sweep::even(&network, Control::Supply, 0.5 * full_v, full_v, 2)?
+        }
+    }
+    .solve(&network)?;
+    let map = straight(scheme, &map)?.unwrap_or(map);
     let drive = Drive::new(&stage.driver, stage.driver.duty);
     let facts = StageFacts {
         orbit: network.orbit(stage.supply_v, &drive)?,
@@ -263,6 +290,29 @@ fn hardware(hardware: &Hardware) -> Result<(Map, Option<StageFacts>), StudyError
         settling_s: network.settling_s(&drive),
     };
     Ok((map, Some(facts)))
+}
+
+/// The straight map of a scheme over the drive, from the last point of `map`.
+fn straight(scheme: &Scheme, map: &Map) -> Result<Option<Map>, StudyError> {
+    let Some(top) = map.points().last() else {
+        return Ok(None);
+    };
+    let (frequency_hz, load_ohm) = (map.frequency_hz(), map.load_ohm());
+    Ok(match scheme {
+        Scheme::ClassB(_) => Some(ClassBScheme::map(
+            frequency_hz,
+            load_ohm,
+            map.origin(),
+            top,
+        )?),
+        Scheme::Outphase(_) => Some(OutphaseScheme::map(
+            frequency_hz,
+            load_ohm,
+            map.origin(),
+            top,
+        )?),
+        _ => None,
+    })
 }
 
 /// Reads the signal once: its length may not be known before, and its level must be.
@@ -385,6 +435,27 @@ fn default_acpr(study: &Study, run: &Run) -> Vec<crate::metrics::AdjacentChannel
     adjacent_channels(&run.output_spectrum, &filter, &neighbours).unwrap_or_default()
 }
 
+/// Steps of the grid that the narrowest pulse must have: a tenth of its amplitude to a step, and two edges.
+const GRID_STEPS: f64 = 10.0;
+
+/// Whether the deepest notch is narrower than the grid or the shortest pulse can follow.
+fn coarse_grid(result: &CheckResult) -> Option<Warning> {
+    let Scheme::Width(scheme) = result.scheme() else {
+        return None;
+    };
+    let carrier_hz = result.map.frequency_hz();
+    let asked = result.notch.asked.iter().copied().reduce(f64::min)?;
+    let notch_s = asked * result.study.full_control() / carrier_hz;
+    let grid_s = scheme.grid_s.unwrap_or(0.0);
+    (notch_s < GRID_STEPS * grid_s || notch_s < scheme.shortest_s).then_some(
+        Warning::GridTooCoarse {
+            notch_s,
+            grid_s,
+            shortest_s: scheme.shortest_s,
+        },
+    )
+}
+
 fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     let mut warnings = Vec::new();
     let RateFacts {
@@ -409,6 +480,14 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     }
     if held > 0.0 {
         warnings.push(Warning::HeldAtEdge { fraction: held });
+    }
+    if let (Scheme::Width(scheme), Some(turn)) = (result.scheme(), result.map.turns_at())
+        && scheme.law != WidthLaw::Sine
+    {
+        warnings.push(Warning::WidthTurns { width: turn });
+    }
+    if let Some(coarse) = coarse_grid(result) {
+        warnings.push(coarse);
     }
     if let Some(first) = result.map.failures().first() {
         warnings.push(Warning::PointsFailed {

@@ -37,6 +37,15 @@ pub enum StudyError {
     /// No polynomial can be fitted.
     #[error(transparent)]
     Polynomial(#[from] FitError),
+    /// Tables and polynomials work on one scheme.
+    #[error("predistortion is made for the scheme supply, the study's is {scheme}")]
+    NoTable {
+        /// The study's.
+        scheme: &'static str,
+    },
+    /// No map can be made.
+    #[error(transparent)]
+    Map(#[from] crate::map::MapError),
     /// A table for another range of the control.
     #[error(
         "the table is for a full control of {table_v} V, the study's hardware has {given_v} V: make the table again for this study"

@@ -8,7 +8,7 @@ use crate::math::Window;
 use crate::metrics::SymbolFormat;
 use crate::predistort::{Table, TableRequest, read_table};
 use crate::signal::FormatOptions;
-use crate::stage::Stage;
+use crate::stage::{Anchor, Stage};
 use crate::units::Dimension;
 
 /// One study, ready to be carried out; the signal is still a file.
@@ -53,6 +53,14 @@ impl Hardware {
         match self {
             Self::Stage(stage) => stage.supply_v,
             Self::Map(map) => map.domain().1,
+        }
+    }
+
+    /// Which edge of the pulses stays; the middle for a map from a file.
+    pub fn anchor(&self) -> Anchor {
+        match self {
+            Self::Stage(stage) => stage.driver.anchor,
+            Self::Map(_) => Anchor::Centre,
         }
     }
 
@@ -103,11 +111,35 @@ const WINDOWS: [(&str, Window); 4] = [
 ];
 
 impl Study {
+    /// Full range of the scheme's control: V of the supply, part of the period, or 1 of the drive.
+    pub fn full_control(&self) -> f64 {
+        match (self.scheme.control(), &self.hardware) {
+            (Control::Supply, hardware) => hardware.full_supply_v(),
+            (Control::Width, Hardware::Stage(stage)) => stage.driver.duty,
+            (Control::Width, Hardware::Map(map)) => map.domain().1,
+            (Control::Drive, _) => 1.0,
+        }
+    }
+
     /// Reads the study `name` and the stage or map and limits that it names.
     ///
     /// # Errors
-    /// The first thing wrong in any of the files, with its place.
+    /// The first thing wrong in any of the files, with its place; more than one `[[scheme]]`.
     pub fn read(name: &str, files: &dyn Files) -> Result<Self, Problem> {
+        Self::read_with(name, files, Several::Refused)?
+            .pop()
+            .ok_or_else(|| unreachable_study(name))
+    }
+
+    /// The same with any number of `[[scheme]]`: one study for each, with the same hardware, signal and limits.
+    ///
+    /// # Errors
+    /// The first thing wrong in any of the files, with its place.
+    pub fn read_all(name: &str, files: &dyn Files) -> Result<Vec<Self>, Problem> {
+        Self::read_with(name, files, Several::Allowed)
+    }
+
+    fn read_with(name: &str, files: &dyn Files, several: Several) -> Result<Vec<Self>, Problem> {
         let shown = files.display(name);
         let text = files
             .text(name)
@@ -115,15 +147,29 @@ impl Study {
         let document = Document::parse(&shown, &text)?;
         let root = document.root();
         let signal = root.section("signal")?;
-        let scheme = root.section("scheme")?;
+        let sections = match root.sections("scheme") {
+            Ok(sections) if sections.len() > 1 => {
+                if matches!(several, Several::Refused) {
+                    return Err(root.problem(
+                        "scheme",
+                        "one table [scheme]; `quietedge compare` takes several [[scheme]]",
+                    ));
+                }
+                sections
+            }
+            Ok(sections) if sections.len() == 1 => sections,
+            _ => vec![root.section("scheme")?],
+        };
         let metrics = root.maybe_section("metrics")?;
         let (window, resolution_hz) = match &metrics {
             Some(section) => spectrum_settings(section)?,
             None => (Window::BlackmanHarris, None),
         };
         let hardware = hardware(&root, files)?;
+        let title = root.maybe_text("title")?.unwrap_or(name).to_owned();
+        let first = sections.first().ok_or_else(|| unreachable_study(name))?;
         let study = Self {
-            title: root.maybe_text("title")?.unwrap_or(name).to_owned(),
+            title,
             note: root.maybe_text("note")?.map(str::to_owned),
             hardware_file: if root.has("stage") {
                 root.text("stage")?.to_owned()
@@ -132,7 +178,7 @@ impl Study {
             },
             hardware,
             signal: signal_choice(&signal)?,
-            scheme: Scheme::read(&scheme)?,
+            scheme: Scheme::read(first)?,
             predistort: root
                 .maybe_section("predistort")?
                 .map(|section| predistortion(&section, files))
@@ -146,19 +192,58 @@ impl Study {
             text: text.clone(),
         };
         root.finish()?;
-        if let Hardware::Map(map) = &study.hardware
-            && map.control() != Control::Supply
-        {
-            return Err(scheme.problem(
-                "kind",
-                format!(
-                    "a scheme that moves the map's control, {}",
-                    map.control().name()
-                ),
-            ));
+        let mut studies = Vec::with_capacity(sections.len());
+        for section in &sections {
+            let study = Self {
+                scheme: Scheme::read(section)?,
+                ..study.clone()
+            };
+            study.fits(section)?;
+            studies.push(study);
         }
-        Ok(study)
+        Ok(studies)
     }
+
+    /// Whether hardware and predistortion go with the scheme.
+    fn fits(&self, scheme: &Section<'_>) -> Result<(), Problem> {
+        let wanted = self.scheme.control();
+        match &self.hardware {
+            Hardware::Map(map) if wanted != Control::Drive && map.control() != wanted => {
+                return Err(scheme.problem(
+                    "kind",
+                    format!(
+                        "a scheme that moves the map's control, {}",
+                        map.control().name()
+                    ),
+                ));
+            }
+            Hardware::Stage(stage)
+                if matches!(self.scheme, Scheme::Levels(_)) && stage.is_curved() =>
+            {
+                return Err(scheme.problem(
+                    "kind",
+                    "a scheme other than levels: this stage is curved, and its width map is known at one supply only",
+                ));
+            }
+            _ => {}
+        }
+        if self.predistort.is_some() && wanted != Control::Supply {
+            return Err(scheme.problem("kind", "\"supply\", the scheme that [predistort] works on"));
+        }
+        Ok(())
+    }
+}
+
+/// Whether a study may have more than one scheme.
+#[derive(Debug, Clone, Copy)]
+enum Several {
+    Allowed,
+    Refused,
+}
+
+fn unreachable_study(name: &str) -> Problem {
+    let error = std::io::Error::other("it holds no scheme");
+    Problem::unreadable(name, &error, "a study with a [scheme]")
 }
 
 fn signal_choice(section: &Section<'_>) -> Result<SignalChoice, Problem> {

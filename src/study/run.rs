@@ -10,7 +10,7 @@ use super::collect::Collected;
 use super::error::StudyError;
 use super::load::Study;
 use super::result::Notch;
-use crate::drive::{Correction, Modulator, Scheme, SupplyDrive, Track};
+use crate::drive::{Correction, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
@@ -97,15 +97,9 @@ impl Chain<'_> {
         source.rate_hz() * self.factor as f64
     }
 
-    fn modulator(&self) -> &Modulator {
-        let Scheme::Supply(scheme) = &self.study.scheme;
-        &scheme.modulator
-    }
-
     /// Instants until nothing shows the start any more.
     fn settling(&self, rate_hz: f64) -> usize {
-        let Scheme::Supply(scheme) = &self.study.scheme;
-        let own = SupplyDrive::settling(scheme, rate_hz);
+        let own = self.study.scheme.settling(rate_hz);
         own + self.correction.map_or(0, |correction| {
             correction.span() * self.factor.div_ceil(correction.rate())
         })
@@ -130,13 +124,16 @@ impl Chain<'_> {
     ) -> Result<(Energy, u64, Option<Stress>), StudyError> {
         let rate_hz = self.rate_hz(source);
         let (start, end) = self.span(rate_hz);
-        let Scheme::Supply(scheme) = &self.study.scheme;
-        let full_v = self.study.hardware.full_supply_v();
-        let mut drive = SupplyDrive::new(scheme, self.study.signal.level, full_v, rate_hz);
+        let study = self.study;
+        let full = study.full_control();
+        let anchor = study.hardware.anchor();
+        let mut drive = study
+            .scheme
+            .drive(self.map, anchor, study.signal.level, full, rate_hz);
         if let Some(correction) = self.correction {
             drive = drive.corrected(correction, self.factor);
         }
-        let mut transmitter = MapTransmitter::new(self.map, self.modulator());
+        let mut transmitter = MapTransmitter::new(self.map, &study.scheme.modulator());
         let mut oversampled = Oversampled::new(source, self.factor)?;
         let mut samples = vec![Complex64::ZERO; BLOCK];
         let mut track = Track::default();
@@ -216,7 +213,7 @@ impl Chain<'_> {
         let search_s = self.settling(rate_hz) as f64 / rate_hz;
         let mut alignment = AlignmentMeter::new(rate_hz, search_s)?;
         let mut density = vec![0u64; DENSITY_BINS];
-        let full_v = self.study.hardware.full_supply_v();
+        let full = self.study.full_control();
         let mut deepest = (f64::INFINITY, 0u64);
         let (energy, held, stress) = self.pass(source, tick, |piece| {
             output_meter.push(piece.output_v());
@@ -228,7 +225,7 @@ impl Chain<'_> {
             wanted_envelope.push(piece.wanted());
             alignment.push(piece.wanted(), piece.output_v())?;
             for at in piece.range.clone() {
-                let fraction = piece.track.control[at] / full_v;
+                let fraction = piece.track.control[at] / full;
                 let bin = (fraction * DENSITY_BINS as f64) as usize;
                 density[bin.min(DENSITY_BINS - 1)] += 1;
                 let magnitude = piece.track.wanted[at].norm_sqr();
@@ -262,8 +259,8 @@ impl Chain<'_> {
                     let offset = instant as f64 - deepest.1 as f64;
                     notch.time_s.push(offset / rate_hz);
                     notch.wanted.push(level * piece.track.wanted[at].norm());
-                    notch.asked.push(piece.track.asked[at] / full_v);
-                    notch.control.push(piece.track.control[at] / full_v);
+                    notch.asked.push(piece.track.asked[at] / full);
+                    notch.control.push(piece.track.control[at] / full);
                 }
             }
             Ok(())

@@ -48,6 +48,20 @@ pub enum Warning {
         /// What it cannot answer.
         missing: Vec<&'static str>,
     },
+    /// Pulses of the deepest notch are narrower than the hardware makes them well.
+    GridTooCoarse {
+        /// Pulse asked for in the notch, s.
+        notch_s: f64,
+        /// Grid of the edges, s; 0 for none.
+        grid_s: f64,
+        /// Shortest pulse, s.
+        shortest_s: f64,
+    },
+    /// Output does not rise up to full width.
+    WidthTurns {
+        /// From this width on it falls.
+        width: f64,
+    },
     /// Few averages.
     FewAverages {
         /// Segments averaged.
@@ -101,6 +115,21 @@ impl fmt::Display for Warning {
                 f,
                 "the map came from a file: {} cannot be answered from it",
                 missing.join(", ")
+            ),
+            Self::GridTooCoarse {
+                notch_s,
+                grid_s,
+                shortest_s,
+            } => write!(
+                f,
+                "the time grid is too coarse for the notch: the deepest one asks for a pulse of {}, the grid is {} (at least ten steps are wanted) and the shortest pulse {}. This scheme cannot follow the signal there",
+                show(*notch_s, "s", 3),
+                show(*grid_s, "s", 3),
+                show(*shortest_s, "s", 3)
+            ),
+            Self::WidthTurns { width } => write!(
+                f,
+                "the output falls past a width of {width:.4}: full output is taken there, wider pulses are not used"
             ),
             Self::FewAverages { segments } => write!(
                 f,

@@ -3,7 +3,7 @@
 use num_complex::Complex64;
 
 use crate::drive::{Modulator, Track};
-use crate::map::Map;
+use crate::map::{Control, Map};
 
 /// Where the energy went, summed over samples.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
@@ -37,11 +37,13 @@ impl Energy {
     }
 }
 
-/// A map at work on a supply track.
+/// A map at work on a track.
 #[derive(Debug, Clone)]
 pub struct MapTransmitter<'a> {
     map: &'a Map,
     modulator: Modulator,
+    /// The supply while another control is moved, V.
+    fixed_v: Option<f64>,
     energy: Energy,
     held: u64,
     highest_control: f64,
@@ -53,6 +55,8 @@ impl<'a> MapTransmitter<'a> {
         Self {
             map,
             modulator: *modulator,
+            fixed_v: (map.control() != Control::Supply)
+                .then(|| map.points().last().map_or(f64::NAN, |point| point.supply_v)),
             energy: Energy::default(),
             held: 0,
             highest_control: 0.0,
@@ -71,7 +75,12 @@ impl<'a> MapTransmitter<'a> {
         self.energy.samples += counted.len() as u64;
         for (at, (&control, &phase)) in track.control.iter().zip(&track.phase).enumerate() {
             let (gain_v, held) = self.map.output_held_v(control);
-            let output = gain_v * phase;
+            // A linear stage scales with its supply.
+            let scale = match (track.supply_v.get(at), self.fixed_v) {
+                (Some(supply_v), Some(fixed_v)) => supply_v / fixed_v,
+                _ => 1.0,
+            };
+            let output = gain_v * phase * scale;
             output_v.push(output);
             if !counted.contains(&at) {
                 continue;
@@ -79,7 +88,10 @@ impl<'a> MapTransmitter<'a> {
             self.held += u64::from(held);
             self.highest_control = self.highest_control.max(control);
             self.energy.output_w += output.norm_sqr() / (2.0 * load_ohm);
-            let stage_w = control * self.map.supply_held_a(control).unwrap_or(f64::NAN);
+            let supply_v = self
+                .fixed_v
+                .map_or(control, |fixed_v| fixed_v * scale * scale);
+            let stage_w = supply_v * self.map.supply_held_a(control).unwrap_or(f64::NAN);
             self.energy.stage_w += stage_w;
             self.energy.driver_w += self.map.driver_held_w(control).unwrap_or(0.0);
             self.energy.modulator_w += stage_w / self.modulator.efficiency + self.modulator.idle_w;

@@ -6,7 +6,7 @@
 use num_complex::Complex64;
 
 use super::PolynomialResult;
-use crate::drive::{Scheme, SupplyDrive, Track};
+use crate::drive::Track;
 use crate::math::delay::{Delay, LATENCY};
 use crate::metrics::{Alignment, AlignmentMeter};
 use crate::predistort::{PolynomialRequest, learn};
@@ -35,11 +35,16 @@ impl Model<'_> {
     /// Output for `signal`, aligned, over the wanted gain.
     fn transmit(&mut self, signal: &[Complex64]) -> Result<Vec<Complex64>, StudyError> {
         let study = self.bench.study;
-        let Scheme::Supply(scheme) = &study.scheme;
-        let full_v = study.hardware.full_supply_v();
-        let mut drive = SupplyDrive::new(scheme, study.signal.level, full_v, self.rate_hz);
-        let mut transmitter = MapTransmitter::new(&self.bench.map, &scheme.modulator);
-        let reach = SupplyDrive::settling(scheme, self.rate_hz);
+        let scheme = &study.scheme;
+        let mut drive = scheme.drive(
+            &self.bench.map,
+            study.hardware.anchor(),
+            study.signal.level,
+            study.full_control(),
+            self.rate_hz,
+        );
+        let mut transmitter = MapTransmitter::new(&self.bench.map, &scheme.modulator());
+        let reach = scheme.settling(self.rate_hz);
         // Zeros behind the end push the last samples out.
         let mut padded = signal.to_vec();
         padded.resize(signal.len() + 2 * reach + 2 * LATENCY, Complex64::ZERO);
@@ -85,8 +90,7 @@ pub(super) fn learn_and_check(
         gain_v: bench.map.full_amplitude_v() * bench.study.signal.level,
         alignment: None,
     };
-    let Scheme::Supply(scheme) = &bench.study.scheme;
-    let edge = SupplyDrive::settling(scheme, rate_hz) + EDGE * request.rate;
+    let edge = bench.study.scheme.settling(rate_hz) + EDGE * request.rate;
     let learned = learn(request, edge, &wanted, |signal| model.transmit(signal))?;
     progress(0.5);
     let after = match &learned.fit {

@@ -1,0 +1,176 @@
+//! All schemes behind one face: what they are called, what they move, how they work at a sample rate.
+
+use num_complex::Complex64;
+
+use super::class_b::{ClassBDrive, ClassBScheme};
+use super::levels::{LevelsDrive, LevelsScheme};
+use super::outphase::{OutphaseDrive, OutphaseScheme};
+use super::rate::RateReason;
+use super::supply::{SupplyDrive, SupplyScheme};
+use super::width::{WidthDrive, WidthScheme};
+use super::{Correction, Modulator, Track};
+use crate::map::{Control, Map};
+use crate::stage::Anchor;
+
+/// How the signal moves the stage's controls.
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Scheme {
+    /// Magnitude to the supply, phase to the drive.
+    Supply(SupplyScheme),
+    /// Magnitude to the width of the pulses.
+    Width(WidthScheme),
+    /// Magnitude to a few rails and the width.
+    Levels(LevelsScheme),
+    /// Magnitude to the angle between two stages.
+    Outphase(OutphaseScheme),
+    /// An ideal linear stage, for comparison.
+    ClassB(ClassBScheme),
+}
+
+impl Scheme {
+    /// Its name in studies.
+    pub fn name(&self) -> &'static str {
+        match self {
+            Self::Supply(_) => "supply",
+            Self::Width(_) => "width",
+            Self::Levels(_) => "levels",
+            Self::Outphase(_) => "outphase",
+            Self::ClassB(_) => "class_b",
+        }
+    }
+
+    /// The control of the map that it runs on.
+    pub fn control(&self) -> Control {
+        match self {
+            Self::Supply(_) => Control::Supply,
+            Self::Width(_) | Self::Levels(_) => Control::Width,
+            Self::Outphase(_) | Self::ClassB(_) => Control::Drive,
+        }
+    }
+
+    /// What makes the supply, for the power drawn.
+    pub fn modulator(&self) -> Modulator {
+        match self {
+            Self::Supply(scheme) => scheme.modulator,
+            Self::Levels(scheme) => Modulator {
+                efficiency: scheme.efficiency,
+                idle_w: scheme.idle_w,
+                ..Modulator::default()
+            },
+            Self::Width(_) | Self::Outphase(_) | Self::ClassB(_) => Modulator::default(),
+        }
+    }
+
+    /// The part of the control's range that it never goes below.
+    pub fn floor(&self) -> f64 {
+        match self {
+            Self::Supply(scheme) => scheme.shaping.floor,
+            _ => 0.0,
+        }
+    }
+
+    /// The seed of its random parts, where it has any.
+    pub fn seed(&self) -> Option<u64> {
+        match self {
+            Self::Width(scheme) if scheme.jitter_s > 0.0 => Some(scheme.seed),
+            _ => None,
+        }
+    }
+
+    /// The anchor of the pulses where the scheme chooses another than the stage's.
+    pub fn anchor(&self) -> Option<Anchor> {
+        match self {
+            Self::Width(scheme) => scheme.anchor,
+            _ => None,
+        }
+    }
+
+    /// Instants until the track shows nothing of the start.
+    pub fn settling(&self, rate_hz: f64) -> usize {
+        match self {
+            Self::Supply(scheme) => SupplyDrive::settling(scheme, rate_hz),
+            Self::Width(scheme) => scheme.settling(rate_hz),
+            Self::Levels(scheme) => scheme.settling(rate_hz),
+            Self::Outphase(scheme) => scheme.settling(rate_hz),
+            Self::ClassB(_) => ClassBDrive::settling(),
+        }
+    }
+
+    /// The sample rates that it asks for, and why.
+    pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
+        match self {
+            Self::Supply(scheme) => scheme.rates(signal_rate_hz),
+            Self::Width(scheme) => scheme.rates(signal_rate_hz),
+            Self::Levels(scheme) => scheme.rates(signal_rate_hz),
+            Self::Outphase(scheme) => scheme.rates(signal_rate_hz),
+            Self::ClassB(_) => Vec::new(),
+        }
+    }
+
+    /// The scheme at work at `rate_hz` on `map`, whose control's full range is `full`; `anchor` is the stage's own.
+    /// Signal full scale is at `level` of the range: of the supply for `supply`, of the output for all others.
+    pub fn drive<'a>(
+        &self,
+        map: &'a Map,
+        anchor: Anchor,
+        level: f64,
+        full: f64,
+        rate_hz: f64,
+    ) -> SchemeDrive<'a> {
+        SchemeDrive(match self {
+            Self::Supply(scheme) => {
+                Kind::Supply(Box::new(SupplyDrive::new(scheme, level, full, rate_hz)))
+            }
+            Self::Width(scheme) => {
+                let drive = WidthDrive::new(scheme, map, anchor, level, rate_hz);
+                Kind::Width(Box::new(drive))
+            }
+            Self::Levels(scheme) => {
+                Kind::Levels(Box::new(LevelsDrive::new(scheme, map, level, rate_hz)))
+            }
+            Self::Outphase(scheme) => {
+                Kind::Outphase(Box::new(OutphaseDrive::new(scheme, level, rate_hz)))
+            }
+            Self::ClassB(_) => Kind::ClassB(Box::new(ClassBDrive::new(level))),
+        })
+    }
+}
+
+/// A scheme at work at one sample rate.
+#[derive(Debug, Clone)]
+pub struct SchemeDrive<'a>(Kind<'a>);
+
+#[derive(Debug, Clone)]
+enum Kind<'a> {
+    Supply(Box<SupplyDrive>),
+    Width(Box<WidthDrive<'a>>),
+    Levels(Box<LevelsDrive<'a>>),
+    Outphase(Box<OutphaseDrive>),
+    ClassB(Box<ClassBDrive>),
+}
+
+impl SchemeDrive<'_> {
+    /// The same with `correction` in front. Only the scheme `supply` takes one; a study with another is refused
+    /// when it is read.
+    #[must_use]
+    pub fn corrected(self, correction: &Correction, factor: usize) -> Self {
+        match self.0 {
+            Kind::Supply(drive) => {
+                Self(Kind::Supply(Box::new(drive.corrected(correction, factor))))
+            }
+            other => Self(other),
+        }
+    }
+
+    /// Appends the controls for `samples` to `track`.
+    pub fn push(&mut self, samples: &[Complex64], track: &mut Track) {
+        match &mut self.0 {
+            Kind::Supply(drive) => drive.push(samples, track),
+            Kind::Width(drive) => drive.push(samples, track),
+            Kind::Levels(drive) => drive.push(samples, track),
+            Kind::Outphase(drive) => drive.push(samples, track),
+            Kind::ClassB(drive) => drive.push(samples, track),
+        }
+    }
+}

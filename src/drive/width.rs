@@ -1,0 +1,340 @@
+//! Scheme `width`: one pulse a carrier cycle, its width from the magnitude, its place from the phase.
+//!
+//! The time grid is locked to the carrier: edges fall on multiples of it counted from the start of each cycle. Jitter
+//! is independent from edge to edge; what an instant of the track sees is its mean over the cycles that fall into it.
+
+use num_complex::Complex64;
+use rand::SeedableRng;
+use rand_chacha::ChaCha8Rng;
+use rand_distr::{Distribution, StandardNormal};
+use std::f64::consts::{PI, TAU};
+
+use super::Track;
+use super::phase::{PhaseLimiter, magnitude};
+use super::rate::{RateReason, band};
+use super::supply::{PhasePath, settling};
+use crate::map::Map;
+use crate::math::delay::Delay;
+use crate::stage::Anchor;
+
+/// From the wanted magnitude to the width.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum WidthLaw {
+    /// The width whose output has the wanted amplitude; the pulse is shifted by the phase that the stage adds.
+    Inverse,
+    /// The width whose output has the wanted amplitude; the phase stays as the stage bends it.
+    Amplitude,
+    /// `asin(m sin(pi d)) / pi` for full width `d`: exact for rectangular pulses, uncorrected for all else.
+    Sine,
+}
+
+/// The scheme as the study describes it.
+#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+pub struct WidthScheme {
+    /// From the wanted magnitude to the width.
+    pub law: WidthLaw,
+    /// Which edge stays, where it is not as the stage says.
+    #[serde(skip)]
+    pub anchor: Option<Anchor>,
+    /// Grid of the edges, s.
+    pub grid_s: Option<f64>,
+    /// Shortest pulse, s: shorter ones are held there.
+    pub shortest_s: f64,
+    /// RMS jitter of each edge, s.
+    pub jitter_s: f64,
+    /// Seed of the jitter.
+    pub seed: u64,
+    /// Dead time from the magnitude to the width, s.
+    pub delay_s: f64,
+    /// What makes the drive's phase.
+    pub phase_path: PhasePath,
+}
+
+impl WidthScheme {
+    pub(super) fn settling(&self, rate_hz: f64) -> usize {
+        settling(
+            self.delay_s.max(self.phase_path.delay_s),
+            &[self.phase_path.bandwidth_hz],
+            rate_hz,
+        )
+    }
+
+    pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
+        let steps = if self.grid_s.is_some() { 16.0 } else { 0.0 };
+        vec![
+            (steps * signal_rate_hz, RateReason::Edges),
+            (
+                band(self.phase_path.bandwidth_hz, signal_rate_hz),
+                RateReason::PhaseBandwidth,
+            ),
+        ]
+    }
+}
+
+/// Widths and phases of a map over equal steps of amplitude: the inverse, quick enough for every instant.
+#[derive(Debug, Clone)]
+pub(super) struct Inverse {
+    width: Vec<f64>,
+}
+
+/// Steps of the inverse.
+const STEPS: usize = 4096;
+
+impl Inverse {
+    /// Of the first rising stretch of `map`. Below its lowest amplitude the width is the lowest one.
+    pub(super) fn new(map: &Map) -> Self {
+        let end = map.turns_at().unwrap_or(map.domain().1);
+        let start = map.domain().0;
+        let full_v = map.output_held_v(end).0.norm();
+        let amplitude = |width: f64| map.output_held_v(width).0.norm();
+        let width = (0..=STEPS)
+            .map(|step| {
+                let target_v = full_v * step as f64 / STEPS as f64;
+                // Bisection: the curve rises, and 60 halvings reach the last digit.
+                let (mut low, mut high) = (start, end);
+                for _ in 0..60 {
+                    let middle = 0.5 * (low + high);
+                    if amplitude(middle) < target_v {
+                        low = middle;
+                    } else {
+                        high = middle;
+                    }
+                }
+                0.5 * (low + high)
+            })
+            .collect();
+        Self { width }
+    }
+
+    /// The width for the part `m` of the highest amplitude, linear between steps.
+    pub(super) fn width(&self, m: f64) -> f64 {
+        let at = (m.clamp(0.0, 1.0)) * STEPS as f64;
+        let step = (at as usize).min(STEPS - 1);
+        let rest = at - step as f64;
+        self.width[step] * (1.0 - rest) + self.width[step + 1] * rest
+    }
+}
+
+/// The scheme at work at one sample rate.
+#[derive(Debug, Clone)]
+pub(super) struct WidthDrive<'a> {
+    scheme: WidthScheme,
+    map: &'a Map,
+    inverse: Inverse,
+    anchor: Anchor,
+    level: f64,
+    full: f64,
+    wanted: Delay,
+    magnitude: Delay,
+    angle: Delay,
+    phase: PhaseLimiter,
+    /// Phase that the stage adds at full width, rad.
+    full_rad: f64,
+    /// Grid and shortest pulse as parts of a cycle; jitter likewise, averaged over the cycles of an instant.
+    grid: Option<f64>,
+    shortest: f64,
+    jitter: f64,
+    random: ChaCha8Rng,
+}
+
+impl<'a> WidthDrive<'a> {
+    pub(super) fn new(
+        scheme: &WidthScheme,
+        map: &'a Map,
+        anchor: Anchor,
+        level: f64,
+        rate_hz: f64,
+    ) -> Self {
+        let carrier_hz = map.frequency_hz();
+        let cycles = (carrier_hz / rate_hz).max(1.0);
+        let full = map.domain().1;
+        Self {
+            scheme: *scheme,
+            map,
+            inverse: Inverse::new(map),
+            anchor: scheme.anchor.unwrap_or(anchor),
+            level,
+            full,
+            wanted: Delay::new(0.0),
+            magnitude: Delay::new(scheme.delay_s * rate_hz),
+            angle: Delay::new(scheme.phase_path.delay_s * rate_hz),
+            phase: PhaseLimiter::new(
+                scheme.phase_path.order,
+                scheme.phase_path.bandwidth_hz,
+                rate_hz,
+            ),
+            full_rad: map.phase_at_rad(full).unwrap_or(0.0),
+            grid: scheme.grid_s.map(|grid_s| grid_s * carrier_hz),
+            shortest: scheme.shortest_s * carrier_hz,
+            jitter: scheme.jitter_s * carrier_hz / cycles.sqrt(),
+            random: ChaCha8Rng::seed_from_u64(scheme.seed),
+        }
+    }
+
+    /// The width for the wanted part `m` of full output.
+    fn width(&self, m: f64) -> f64 {
+        match self.scheme.law {
+            WidthLaw::Inverse | WidthLaw::Amplitude => self.inverse.width(m),
+            WidthLaw::Sine => (m.min(1.0) * (PI * self.full).sin()).asin() / PI,
+        }
+    }
+
+    /// Width and shift of the pulse once its edges are quantized and jittered, both parts of a cycle.
+    fn edges(&mut self, width: f64, shift: f64) -> (f64, f64) {
+        let from = match self.anchor {
+            Anchor::Leading => 0.0,
+            Anchor::Centre => -0.5 * width,
+            Anchor::Trailing => -width,
+        };
+        let mut edges = [shift + from, shift + from + width];
+        if let Some(grid) = self.grid {
+            edges = edges.map(|edge| (edge / grid).round() * grid);
+        }
+        if self.jitter > 0.0 {
+            for edge in &mut edges {
+                let normal: f64 = StandardNormal.sample(&mut self.random);
+                *edge += self.jitter * normal;
+            }
+        }
+        let place = match self.anchor {
+            Anchor::Leading => edges[0],
+            Anchor::Centre => 0.5 * (edges[0] + edges[1]),
+            Anchor::Trailing => edges[1],
+        };
+        (edges[1] - edges[0], place)
+    }
+
+    pub(super) fn push(&mut self, samples: &[Complex64], track: &mut Track) {
+        for &sample in samples {
+            let wanted = self.wanted.push(sample);
+            let delayed = self.magnitude.push(sample);
+            let angle = self.angle.push(sample);
+            let asked = self.width(self.level * magnitude(wanted));
+            let width = self.width(self.level * magnitude(delayed));
+            let width = width.max(self.shortest).min(self.full);
+            let mut phase = self.phase.push(angle);
+            if self.scheme.law == WidthLaw::Inverse {
+                let added = self.map.output_held_v(width).0.arg() - self.full_rad;
+                phase *= Complex64::from_polar(1.0, -added);
+            }
+            let (control, phase) = if self.grid.is_some() || self.jitter > 0.0 {
+                // A phase that leads is a pulse that comes earlier.
+                let (width, place) = self.edges(width, -phase.arg() / TAU);
+                (width, Complex64::from_polar(1.0, -TAU * place))
+            } else {
+                (width, phase)
+            };
+            track.wanted.push(wanted);
+            track.asked.push(asked);
+            track.control.push(control.min(self.full));
+            track.phase.push(phase);
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::map::{Control, MapPoint, Origin};
+    use crate::math::delay::LATENCY;
+
+    /// A stage of rectangular pulses whose phase bends with the width.
+    fn map() -> Map {
+        let points = (1..=400).map(|at| {
+            let width = 0.5 * f64::from(at) / 400.0;
+            MapPoint {
+                control: width,
+                output_v: Complex64::from_polar(8.0 * (PI * width).sin(), 0.4 + width),
+                supply_v: 6.0,
+                supply_a: None,
+                efficiency: None,
+                switch_peak_v: None,
+                switch_peak_a: None,
+                switch_min_v: None,
+                closing_v: None,
+                driver_w: None,
+            }
+        });
+        Map::new(Control::Width, Origin::Stage, 1e8, 50.0, points.collect()).unwrap()
+    }
+
+    fn scheme(law: WidthLaw) -> WidthScheme {
+        WidthScheme {
+            law,
+            anchor: None,
+            grid_s: None,
+            shortest_s: 0.0,
+            jitter_s: 0.0,
+            seed: 1,
+            delay_s: 0.0,
+            phase_path: PhasePath::default(),
+        }
+    }
+
+    fn signal() -> Vec<Complex64> {
+        (0..3000)
+            .map(|n| {
+                let t = 0.01 * f64::from(n);
+                Complex64::from_polar(0.5 + 0.4 * t.sin(), 1.3 * t)
+            })
+            .collect()
+    }
+
+    fn run(scheme: &WidthScheme, map: &Map) -> Track {
+        let mut track = Track::default();
+        WidthDrive::new(scheme, map, Anchor::Centre, 0.9, 1e6).push(&signal(), &mut track);
+        track
+    }
+
+    #[test]
+    fn the_inverse_undoes_amplitude_and_phase() {
+        let map = map();
+        let track = run(&scheme(WidthLaw::Inverse), &map);
+        let turn = Complex64::from_polar(7.2, 0.9);
+        for (n, sample) in signal().iter().enumerate().take(3000 - LATENCY) {
+            let at = n + LATENCY;
+            let output = map.output_held_v(track.control[at]).0 * track.phase[at];
+            // 400 points of the map and 4096 of its inverse: the rest of two interpolations.
+            assert!((output / turn - sample).norm() < 2e-5, "{n}");
+        }
+    }
+
+    #[test]
+    fn the_sine_law_is_the_inverse_of_rectangular_pulses() {
+        let map = map();
+        let (sine, inverse) = (
+            run(&scheme(WidthLaw::Sine), &map),
+            run(&scheme(WidthLaw::Amplitude), &map),
+        );
+        for at in LATENCY..3000 {
+            assert!((sine.control[at] - inverse.control[at]).abs() < 1e-5);
+        }
+    }
+
+    #[test]
+    fn jitter_has_the_stated_variance_and_a_grid_has_its_steps() {
+        let map = map();
+        let mut jittered = scheme(WidthLaw::Sine);
+        jittered.jitter_s = 20e-12;
+        let (clean, noisy) = (run(&scheme(WidthLaw::Sine), &map), run(&jittered, &map));
+        let count = (3000 - LATENCY) as f64;
+        let square: f64 = (LATENCY..3000)
+            .map(|at| (noisy.control[at] - clean.control[at]).powi(2))
+            .sum();
+        // Two edges, averaged over 100 cycles of the carrier an instant.
+        let law = 20e-12 * 1e8 * (2.0f64 / 100.0).sqrt();
+        // 3000 instants: 1.3 % of the RMS to one standard deviation.
+        assert!(((square / count).sqrt() / law - 1.0).abs() < 0.06);
+        assert_eq!(noisy, run(&jittered, &map));
+
+        let mut coarse = scheme(WidthLaw::Sine);
+        coarse.grid_s = Some(50e-12);
+        for (at, width) in run(&coarse, &map).control.iter().enumerate().skip(LATENCY) {
+            let steps = width / 0.005;
+            assert!((steps - steps.round()).abs() < 1e-9);
+            // Two edges, each off by at most half a step.
+            assert!((width - clean.control[at]).abs() <= 0.005 + 1e-12);
+        }
+    }
+}

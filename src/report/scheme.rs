@@ -1,0 +1,160 @@
+//! A scheme's settings in words.
+
+use super::text::quantity;
+use crate::drive::Scheme;
+
+/// A scheme's settings, imperfections included.
+pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
+    let Scheme::Supply(supply) = scheme else {
+        return settings(scheme);
+    };
+    let (modulator, path) = (&supply.modulator, &supply.phase_path);
+    let own = |name: &str, value: String| (name.to_owned(), value);
+    let band = |bandwidth_hz: Option<f64>, order: u32| {
+        bandwidth_hz.map_or("ideal".to_owned(), |hz| {
+            format!("{}, Butterworth of order {order}", quantity(hz, "Hz", 4))
+        })
+    };
+    vec![
+        own("kind", scheme.name().to_owned()),
+        own(
+            "floor",
+            format!(
+                "{} of the range, {:?}",
+                supply.shaping.floor, supply.shaping.shape
+            )
+            .to_lowercase(),
+        ),
+        own(
+            "modulator's bandwidth",
+            band(modulator.bandwidth_hz, modulator.order),
+        ),
+        own("modulator's dead time", quantity(modulator.delay_s, "s", 4)),
+        own(
+            "slew limit",
+            modulator
+                .slew_v_per_s
+                .map_or("none".to_owned(), |slew| quantity(slew, "V/s", 4)),
+        ),
+        own(
+            "converter",
+            modulator.converter.map_or("ideal".to_owned(), |converter| {
+                format!(
+                    "{} bits at {}",
+                    converter.bits,
+                    quantity(converter.rate_hz, "Hz", 4)
+                )
+            }),
+        ),
+        own(
+            "ripple",
+            modulator.ripple.map_or("none".to_owned(), |ripple| {
+                format!(
+                    "{} peak at {}",
+                    quantity(ripple.amplitude_v, "V", 4),
+                    quantity(ripple.frequency_hz, "Hz", 4)
+                )
+            }),
+        ),
+        own(
+            "modulator's efficiency",
+            format!(
+                "{:.1} %, {} idle",
+                100.0 * modulator.efficiency,
+                quantity(modulator.idle_w, "W", 3)
+            ),
+        ),
+        own("phase path's dead time", quantity(path.delay_s, "s", 4)),
+        own(
+            "phase path's bandwidth",
+            band(path.bandwidth_hz, path.order),
+        ),
+    ]
+}
+
+/// Settings of the schemes beside `supply`.
+fn settings(scheme: &Scheme) -> Vec<(String, String)> {
+    let own = |name: &str, value: String| (name.to_owned(), value);
+    let mut rows = vec![own("kind", scheme.name().to_owned())];
+    let band = |bandwidth_hz: Option<f64>, order: u32| {
+        bandwidth_hz.map_or("ideal".to_owned(), |hz| {
+            format!("{}, Butterworth of order {order}", quantity(hz, "Hz", 4))
+        })
+    };
+    match scheme {
+        Scheme::Supply(_) => {}
+        Scheme::Width(width) => rows.extend([
+            own("law", format!("{:?}", width.law).to_lowercase()),
+            own(
+                "grid of the edges",
+                width
+                    .grid_s
+                    .map_or("none".to_owned(), |grid_s| quantity(grid_s, "s", 4)),
+            ),
+            own("shortest pulse", quantity(width.shortest_s, "s", 4)),
+            own(
+                "jitter of each edge",
+                format!(
+                    "{} RMS, seed {}",
+                    quantity(width.jitter_s, "s", 4),
+                    width.seed
+                ),
+            ),
+            own("width's dead time", quantity(width.delay_s, "s", 4)),
+            own(
+                "phase path's dead time",
+                quantity(width.phase_path.delay_s, "s", 4),
+            ),
+            own(
+                "phase path's bandwidth",
+                band(width.phase_path.bandwidth_hz, width.phase_path.order),
+            ),
+        ]),
+        Scheme::Levels(levels) => rows.extend([
+            own(
+                "rails",
+                levels
+                    .rails
+                    .iter()
+                    .map(|rail| format!("{rail:.4}"))
+                    .collect::<Vec<_>>()
+                    .join(", ")
+                    + " of the full supply",
+            ),
+            own("hysteresis", format!("{} of a rail", levels.hysteresis)),
+            own("settling to 1 %", quantity(levels.settling_s, "s", 4)),
+            own(
+                "rails' efficiency",
+                format!(
+                    "{:.1} %, {} idle",
+                    100.0 * levels.efficiency,
+                    quantity(levels.idle_w, "W", 3)
+                ),
+            ),
+        ]),
+        Scheme::Outphase(branches) => rows.extend([
+            own("combining", "isolated: the difference is burnt".to_owned()),
+            own(
+                "second branch weaker by",
+                format!("{} dB", branches.gain_mismatch_db),
+            ),
+            own(
+                "second branch turned by",
+                format!("{:.3} deg", branches.phase_mismatch_rad.to_degrees()),
+            ),
+            own(
+                "second branch later by",
+                quantity(branches.delay_mismatch_s, "s", 4),
+            ),
+            own(
+                "branches' bandwidth",
+                band(branches.bandwidth_hz, branches.order),
+            ),
+        ]),
+        Scheme::ClassB(_) => rows.push(own(
+            "law",
+            "efficiency pi/4 times output amplitude over full amplitude".to_owned(),
+        )),
+    }
+    rows
+}
