@@ -288,7 +288,7 @@ fn worst(result: &CheckResult) -> Option<&MaskMargin> {
         .min_by(|a, b| a.margin_db.total_cmp(&b.margin_db))
 }
 
-/// The spectrum in the measuring bandwidth and with the detector of the tightest mask.
+/// The spectrum in the narrowest measuring bandwidth of the masks, with its detector.
 pub fn spectrum_figure(result: &CheckResult) -> CaptionedFigure {
     let (view, caption) = spectrum_view(result);
     CaptionedFigure {
@@ -301,13 +301,10 @@ pub fn spectrum_figure(result: &CheckResult) -> CaptionedFigure {
 pub(super) fn spectrum_view(result: &CheckResult) -> (SpectrumFigure, String) {
     let lines = &result.judgement.lines;
     let worst = worst(result);
-    let shown = worst
-        .and_then(|worst| {
-            lines
-                .iter()
-                .find(|line| line.set == worst.set && line.bandwidth_hz == worst.bandwidth_hz)
-        })
-        .or(lines.first());
+    // The narrowest measuring bandwidth: in a wide one a narrow carrier would be drawn far above its power.
+    let shown = lines
+        .iter()
+        .min_by(|a, b| a.bandwidth_hz.total_cmp(&b.bandwidth_hz));
     let resolution_hz = shown.map_or(result.output_spectrum.enbw_hz, |line| line.bandwidth_hz);
     let peak = shown
         .filter(|line| line.detector == Detector::PeakHold)
@@ -387,7 +384,7 @@ pub(super) fn spectrum_view(result: &CheckResult) -> (SpectrumFigure, String) {
     };
     let caption = match worst {
         Some(worst) => format!(
-            "Levels in {}, as the tightest mask asks. The tightest point lies {} from the carrier; lines of masks with other bandwidths are moved as noise would be.",
+            "Levels in {}, the narrowest bandwidth that a mask asks for. The tightest point lies {} from the carrier; lines of masks with other bandwidths are moved as noise would be.",
             quantity(resolution_hz, "Hz", 4),
             quantity(worst.worst_hz, "Hz", 4)
         ),

@@ -240,7 +240,11 @@ pub fn page(results: &[CheckResult], ranks: &[Rank], request: &Request) -> Page 
             .map_or_else(String::new, |result| result.study.title.clone()),
         subtitle: "Schemes side by side; the headline is that of the first in the ranking."
             .to_owned(),
-        headline: best.map(headline),
+        headline: best.map(|result| {
+            let mut headline = headline(result);
+            headline.reason = format!("scheme {}: {}", result.scheme().name(), headline.reason);
+            headline
+        }),
         warnings: warnings(results),
         figures,
         tables: vec![DataTable {
