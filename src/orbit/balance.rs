@@ -8,7 +8,7 @@ use super::network::{Drive, HARMONICS, OrbitError};
 use crate::stage::Stage;
 
 /// The largest accepted energy residual, relative to the supply power. The model bank stays below 1e-9; what
-/// circulates in a resonator of loaded Q costs about Q^2 rounding errors, so that only a Q past 30,000 fails.
+/// circulates in a resonator of loaded Q costs about Q^2 rounding errors: 3.4e-8 was seen at a loaded Q of 10,000.
 const BALANCE_TOLERANCE: f64 = 1e-6;
 
 /// Where the power goes that does not reach the load, W.
