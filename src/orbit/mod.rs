@@ -14,6 +14,7 @@ mod equations;
 mod factors;
 mod figures;
 mod gather;
+mod joined;
 mod linear;
 mod network;
 mod period;
@@ -29,6 +30,7 @@ mod unit;
 mod waveform;
 
 pub use balance::{Losses, Orbit, SwitchFigures};
+pub use joined::{Compensation, Joined, Joint, JointError, JointKind};
 pub use network::{Drive, Network, NetworkError, OrbitError};
 pub use tracker::Tracker;
 pub use waveform::{OtherSwitch, Waveform};

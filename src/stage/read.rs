@@ -3,7 +3,9 @@
 use std::f64::consts::TAU;
 
 use super::read_device::{Drain, diode, drain, gate, knee};
-use super::{Anchor, Arm, Arrangement, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use super::{
+    Anchor, Arm, Arrangement, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::units::Dimension;
 
@@ -71,6 +73,7 @@ impl Stage {
         load_section.finish()?;
 
         let switch = switch(&root.section("switch")?)?;
+        let driver = driver(root.maybe_section("driver")?)?;
         let feed = match switch.arrangement {
             Arrangement::Single => feed(&root.section("feed")?)?,
             Arrangement::Pair { .. } if root.has("feed") => {
@@ -89,7 +92,7 @@ impl Stage {
             drain_f: drain.farad,
             drain_curve: drain.curve,
             gate_coupling_f: drain.gate_coupling_f,
-            driver: driver(root.maybe_section("driver")?)?,
+            driver,
             feed,
             ladder,
             load,
@@ -217,7 +220,8 @@ fn switch(section: &Section<'_>) -> Result<Switch, Problem> {
     let pair = section
         .maybe_choice("arrangement", &[("single", false), ("pair", true)])?
         .unwrap_or(false);
-    let upper = section.maybe_quantity("upper_resistance", Dimension::Resistance, Range::Positive)?;
+    let upper =
+        section.maybe_quantity("upper_resistance", Dimension::Resistance, Range::Positive)?;
     let arrangement = match (pair, upper) {
         (false, Some(_)) => {
             return Err(section.problem(

@@ -24,7 +24,7 @@ pub use map::MapFigure;
 pub use margin::{MarginCurve, MarginFigure};
 pub use mask::{MaskFigure, MaskLine};
 pub use spectrum::{SpectrumCurve, SpectrumFigure, WorstPoint};
-pub use waveform::WaveformFigure;
+pub use waveform::{OtherCurves, WaveformFigure};
 
 use crate::report::text::quantity;
 
