@@ -25,6 +25,8 @@ mod tracker;
 mod waveform;
 
 pub use balance::{Losses, Orbit};
+pub(crate) use circuit::Owner;
 pub use network::{Drive, Network, NetworkError, OrbitError};
+pub(crate) use reduce::Reduced;
 pub use tracker::Tracker;
 pub use waveform::Waveform;

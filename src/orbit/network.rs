@@ -162,6 +162,17 @@ impl Network {
         &self.stage
     }
 
+    /// The state equations with the switch closed and open; `None` where the drain is curved.
+    ///
+    /// # Errors
+    /// [`NetworkError`], as at construction.
+    pub(crate) fn linear_equations(&self) -> Result<Option<[Reduced; 2]>, NetworkError> {
+        match &self.model {
+            Model::Linear(_) => Ok(Some(equations(&self.stage)?.1)),
+            Model::Curved(_) => Ok(None),
+        }
+    }
+
     pub(super) fn model(&self) -> &Model {
         &self.model
     }
@@ -248,7 +259,8 @@ impl Network {
     }
 }
 
-fn linear_model(stage: &Stage) -> Result<Box<dyn LinearSolver>, NetworkError> {
+/// State equations of a linear `stage`, closed and open, with the circuit they were made of.
+fn equations(stage: &Stage) -> Result<(Circuit, [Reduced; 2]), NetworkError> {
     let circuit = Circuit::new(stage);
     let subspace = Subspace::of(&circuit).ok_or(NetworkError::Undetermined)?;
     let per_load = |ohm: f64| ohm.is_finite().then_some(ohm / stage.load.ohm);
@@ -259,9 +271,14 @@ fn linear_model(stage: &Stage) -> Result<Box<dyn LinearSolver>, NetworkError> {
     };
     let closed = equations(per_load(stage.switch.closed_ohm))?;
     let open = equations(per_load(stage.switch.open_ohm))?;
-    let [closed, open] = without_idle(closed, open)
+    let both = without_idle(closed, open)
         .filter(|[closed, _]| closed.a.nrows() > 0)
         .ok_or(NetworkError::Undetermined)?;
+    Ok((circuit, both))
+}
+
+fn linear_model(stage: &Stage) -> Result<Box<dyn LinearSolver>, NetworkError> {
+    let (circuit, [closed, open]) = equations(stage)?;
     let positions = [position(&closed, "closed")?, position(&open, "open")?];
     let choke_ohm = match circuit.input {
         Input::Voltage(_) => None,
