@@ -1,4 +1,4 @@
-//! From one value a carrier cycle to the envelope at the instants of a track.
+//! From one value at each border of carrier cycles to the envelope at the instants of a track.
 //!
 //! A low-pass of finite length under Kaiser's window, read at any instant: flat to 0.0002 dB up to 0.4 of the track's rate,
 //! 100 dB down from 0.6 of it on. Where the track is finer than the carrier's cycles, the same is of the carrier's
@@ -52,10 +52,11 @@ impl Envelope {
             let taper = bessel_i0(beta * (1.0 - part * part).sqrt()) / floor;
             sinc(t / ratio) / ratio * taper
         });
-        // The middle of group k lies (k + 1/2) groups after the start.
+        // The middle of group k lies (g - 1) / 2 cycles after the border that it begins with.
+        let first = -0.5 * (group - 1) as f64 / group as f64;
         let step = own_hz / rate_hz;
         Self {
-            sampler: Sampler::new(Arc::new(kernel), -0.5, step),
+            sampler: Sampler::new(Arc::new(kernel), first, step),
             group,
             sum: Complex64::ZERO,
             summed: 0,
@@ -106,7 +107,7 @@ mod tests {
                 }
                 let mut envelope = Vec::new();
                 Envelope::new(carrier_hz, rate_hz).push(
-                    (0..cycles).map(|n| Complex64::cis(TAU * hz * (n as f64 + 0.5) / carrier_hz)),
+                    (0..cycles).map(|n| Complex64::cis(TAU * hz * n as f64 / carrier_hz)),
                     &mut envelope,
                 );
                 let edge = (40.0 / slower) as usize;

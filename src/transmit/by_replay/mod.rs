@@ -73,6 +73,8 @@ pub struct ReplayTransmitter<'a> {
     full: Drive,
     branches: Vec<Branch>,
     envelope: Envelope,
+    /// The last cycle of each branch.
+    last: [CycleOutput; 2],
     overlap: u64,
     started: bool,
     /// Instants that wait for their output.
@@ -167,6 +169,7 @@ impl<'a> ReplayTransmitter<'a> {
             full,
             branches,
             envelope: Envelope::new(carrier_hz, request.rate_hz),
+            last: [CycleOutput::default(); 2],
             overlap,
             started: false,
             waiting: VecDeque::new(),
@@ -321,11 +324,24 @@ impl<'a> ReplayTransmitter<'a> {
             .map(|one| one.outputs.len())
             .min()
             .unwrap_or(0);
+        let last = &self.last;
         let sums = (0..count).map(|at| {
-            let all = branches.iter();
-            all.map(|one| one.weight * one.outputs[at].output_v).sum()
+            let all = branches.iter().zip(last);
+            all.map(|(one, last)| {
+                let before = match at.checked_sub(1) {
+                    Some(before) => &one.outputs[before],
+                    None => last,
+                };
+                one.weight * before.border_v(&one.outputs[at])
+            })
+            .sum()
         });
         self.envelope.push(sums, &mut self.values);
+        for (last, branch) in self.last.iter_mut().zip(&self.branches) {
+            if let Some(output) = branch.outputs.last() {
+                *last = *output;
+            }
+        }
         Ok(())
     }
 

@@ -7,29 +7,61 @@ use std::f64::consts::TAU;
 
 use super::error::ReplayError;
 use crate::orbit::Drive;
+use crate::stage::Stage;
 
 /// The least by which an edge's own angle may move against the carrier, as a part of it: edges keep their order.
 pub const SLOWEST: f64 = 0.05;
 
-/// Number of the topology with the switch closed.
-pub const CLOSED: usize = 0;
+/// The most by which it may move, as a part of the carrier's own angle.
+const FASTEST: f64 = 3.0;
 
-/// Number of the topology with the switch open.
-pub const OPEN: usize = 1;
+/// Number of the topology with all switches open.
+pub const OPEN: usize = 0;
 
 /// A stretch of constant topology.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
 pub struct Interval {
-    /// Which equations hold: 0 closed, 1 open, as the stage counts them.
+    /// Which equations hold: 0 with all switches open, 1 with the only or the upper one closed, 2 with the lower one
+    /// of a pair closed.
     pub topology: usize,
     /// How long, as an angle of the carrier, rad.
     pub length_rad: f64,
 }
 
+/// What a pulse does to the switches of a stage.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Switches {
+    /// Topology while the pulse is high.
+    pub high: usize,
+    /// Topology while it is low.
+    pub low: usize,
+    /// For how long all switches are open around each edge, half of it to each side, rad.
+    pub dead_rad: f64,
+}
+
+impl Switches {
+    /// Those of `stage`.
+    pub fn of(stage: &Stage) -> Self {
+        if stage.is_pair() {
+            Self {
+                high: 1,
+                low: 2,
+                dead_rad: TAU * stage.frequency_hz * stage.driver.dead_s,
+            }
+        } else {
+            Self {
+                high: 1,
+                low: OPEN,
+                dead_rad: 0.0,
+            }
+        }
+    }
+}
+
 /// What the drive does within one carrier cycle.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub enum Pulse {
-    /// The switch stays open.
+    /// All switches stay open.
     Off,
     /// The switch closes and opens, both edges linear in time.
     Edges {
@@ -85,8 +117,8 @@ impl Timing {
     }
 }
 
-/// The most intervals of one cycle: edges keep their order, and none turns faster than `2 - SLOWEST`.
-const MOST: usize = 48;
+/// The most intervals of one cycle: seven edges at the fastest pace, dead time around each.
+const MOST: usize = 16;
 
 /// The intervals of one cycle.
 #[derive(Debug, Clone)]
@@ -130,6 +162,7 @@ impl Intervals {
     pub fn plan(
         &mut self,
         pulse: &Pulse,
+        switches: &Switches,
         timing: Option<&Timing>,
         cycle: u64,
     ) -> Result<(), ReplayError> {
@@ -155,7 +188,7 @@ impl Intervals {
         let closing_pace = 1.0 - (closing_rad[1] - closing_rad[0]) / TAU;
         let opening_pace = 1.0 - (opening_rad[1] - opening_rad[0]) / TAU;
         for pace in [closing_pace, opening_pace] {
-            if !(SLOWEST..=20.0).contains(&pace) {
+            if !(SLOWEST..=FASTEST).contains(&pace) {
                 return Err(ReplayError::EdgeTooFast {
                     cycle,
                     moved_rad: TAU * (1.0 - pace),
@@ -165,40 +198,57 @@ impl Intervals {
         }
         let since_closing = (-closing_rad[0]).rem_euclid(TAU);
         let (to_closing, to_opening) = (1.0 / closing_pace, 1.0 / opening_pace);
-        let mut closed = since_closing < width[0];
+        let mut high = since_closing < width[0];
         // Drive angles of the next closing and the next opening, counted from the start of the cycle.
         let mut closing = TAU - since_closing;
         let mut opening = width[0] - since_closing;
-        if !closed {
+        let before = if high {
+            -since_closing * to_closing
+        } else {
+            opening * to_opening
+        };
+        if !high {
             opening += TAU;
         }
+        let half_dead = 0.5 * switches.dead_rad;
+        let mut dead_until = before + half_dead;
         let (mut at, mut number) = (0.0, 0);
         loop {
-            let ideal = if closed {
+            if dead_until > at {
+                let to = dead_until.min(TAU);
+                self.push(OPEN, to - at);
+                at = to;
+            }
+            let ideal = if high {
                 opening * to_opening
             } else {
                 closing * to_closing
             };
-            if ideal >= TAU {
-                break;
+            let topology = if high { switches.high } else { switches.low };
+            if ideal - half_dead >= TAU {
+                self.push(topology, TAU - at);
+                return Ok(());
             }
             let placed = match timing {
                 None => ideal,
                 Some(timing) => timing.place(ideal, cycle, number),
             };
             number += 1;
-            let placed = placed.clamp(at, TAU);
-            self.push(if closed { CLOSED } else { OPEN }, placed - at);
-            at = placed;
-            if closed {
+            let to = (placed - half_dead).clamp(at, TAU);
+            self.push(topology, to - at);
+            at = to;
+            dead_until = if half_dead > 0.0 {
+                placed + half_dead
+            } else {
+                at
+            };
+            if high {
                 opening += TAU;
             } else {
                 closing += TAU;
             }
-            closed = !closed;
+            high = !high;
         }
-        self.push(if closed { CLOSED } else { OPEN }, TAU - at);
-        Ok(())
     }
 }
 
@@ -223,9 +273,17 @@ fn normal(seed: u64, index: u64) -> f64 {
 mod tests {
     use super::*;
 
+    const CLOSED: usize = 1;
+
+    const SINGLE: Switches = Switches {
+        high: CLOSED,
+        low: OPEN,
+        dead_rad: 0.0,
+    };
+
     fn planned(pulse: &Pulse, timing: Option<&Timing>) -> Vec<Interval> {
         let mut intervals = Intervals::default();
-        intervals.plan(pulse, timing, 3).unwrap();
+        intervals.plan(pulse, &SINGLE, timing, 3).unwrap();
         intervals.as_slice().to_vec()
     }
 
@@ -292,7 +350,12 @@ mod tests {
         let mut intervals = Intervals::default();
         for cycle in 0..count {
             intervals
-                .plan(&Pulse::phased(&HALF, 0.0, 0.0), Some(&jitter), cycle)
+                .plan(
+                    &Pulse::phased(&HALF, 0.0, 0.0),
+                    &SINGLE,
+                    Some(&jitter),
+                    cycle,
+                )
                 .unwrap();
             square += (intervals.as_slice()[0].length_rad - TAU / 4.0).powi(2);
         }
@@ -300,15 +363,38 @@ mod tests {
         assert!(((square / count as f64).sqrt() / 0.01 - 1.0).abs() < 0.02);
     }
 
+    /// The intervals of a pair are those of its orbit's schedule: dead time around both edges.
+    #[test]
+    fn dead_time_lies_around_each_edge() {
+        let pair = Switches {
+            high: 1,
+            low: 2,
+            dead_rad: 0.2,
+        };
+        // Phases that put an edge right before, at and right after the border of the cycle.
+        for phase_rad in [0.0, TAU / 4.0 - 0.05, TAU / 4.0, TAU / 4.0 + 0.05, 2.0] {
+            let mut intervals = Intervals::default();
+            let pulse = Pulse::phased(&HALF, phase_rad, 0.0);
+            intervals.plan(&pulse, &pair, None, 0).unwrap();
+            let mut lengths = [0.0; 3];
+            for interval in intervals.as_slice() {
+                lengths[interval.topology] += interval.length_rad;
+            }
+            for (found, expected) in lengths.iter().zip([0.4, TAU / 2.0 - 0.2, TAU / 2.0 - 0.2]) {
+                assert!((found - expected).abs() < 1e-12, "{phase_rad}: {lengths:?}");
+            }
+        }
+    }
+
     #[test]
     fn edges_that_would_run_backwards_are_refused() {
         let mut intervals = Intervals::default();
         let fast = Pulse::phased(&HALF, 0.0, -6.2);
         assert!(matches!(
-            intervals.plan(&fast, None, 7),
+            intervals.plan(&fast, &SINGLE, None, 7),
             Err(ReplayError::EdgeTooFast { cycle: 7, .. })
         ));
         let nothing = Pulse::phased(&HALF, f64::NAN, 0.0);
-        assert!(intervals.plan(&nothing, None, 0).is_err());
+        assert!(intervals.plan(&nothing, &SINGLE, None, 0).is_err());
     }
 }

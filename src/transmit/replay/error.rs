@@ -16,6 +16,11 @@ pub enum ReplayError {
         "only linear stages are replayed this way: this one has a diode, a curved drain capacitance, a knee or a coupled gate"
     )]
     Curved,
+    /// Several chokes.
+    #[error(
+        "a circuit with more than one ideal choke cannot be replayed: give its feeds an `inductance`"
+    )]
+    Inputs,
     /// A scheme without a stage of its own, or one that no replay knows.
     #[error(
         "the scheme {scheme} cannot be replayed: replays know supply, width, levels and outphase"

@@ -20,10 +20,11 @@ use std::f64::consts::TAU;
 
 use num_complex::Complex64;
 
-use crate::orbit::{Drive, Network};
+use crate::orbit::{Drive, Network, Reduced};
 use crate::stage::Feed;
 use choke::Choke;
-pub use edges::{Interval, Intervals, Pulse, Timing};
+pub use edges::{Interval, Pulse, Timing};
+use edges::{Intervals, Switches};
 pub use error::ReplayError;
 pub use segments::{Segments, replay_all};
 use walk::{Walk, Walker};
@@ -114,10 +115,21 @@ impl Energies {
 pub struct CycleOutput {
     /// `2/T` times the integral of load voltage times `exp(-j 2 pi f t)`, peak volts.
     pub output_v: Complex64,
-    /// The same at the second and third harmonic; zero where not asked for.
+    /// The same with the weight `t/T`, from 0 at the cycle's start to 1 at its end.
+    pub weighted_v: Complex64,
+    /// `output_v` at the second and third harmonic; zero where not asked for.
     pub harmonics_v: [Complex64; MAX_HARMONICS - 1],
     /// Its energies.
     pub energies: Energies,
+}
+
+impl CycleOutput {
+    /// The envelope at the border from `self` to `next`: the mean over both cycles under a triangle, `1 - |t|/T`. What
+    /// moving harmonics leave in it falls with the square of the movement in a cycle, in [`CycleOutput::output_v`]
+    /// in proportion.
+    pub fn border_v(&self, next: &Self) -> Complex64 {
+        self.weighted_v + next.output_v - next.weighted_v
+    }
 }
 
 /// A linear stage that is replayed.
@@ -126,6 +138,7 @@ pub struct Replay {
     walk: Box<dyn Walk>,
     choke: Option<(Choke, f64)>,
     timing: Option<Timing>,
+    switches: Switches,
     account: Account,
     intervals: Intervals,
     cycles: u64,
@@ -154,13 +167,22 @@ impl Replay {
         let equations = network.linear_equations()?.ok_or(ReplayError::Curved)?;
         let choke = match stage.feed {
             Feed::Choke { ohm } => Some((Choke::new(network, drive)?, ohm / stage.load.ohm)),
-            Feed::Inductor { .. } => None,
+            Feed::Inductor { .. } | Feed::Direct => None,
         };
+        let equations: Vec<Reduced> = equations
+            .positions
+            .into_iter()
+            .map(|(_, reduced)| reduced)
+            .collect();
+        if equations.iter().any(|one| one.b.ncols() != 1) {
+            return Err(ReplayError::Inputs);
+        }
         let states = equations.iter().map(|one| one.a.nrows()).max().unwrap_or(0);
         let build = |walk: Box<dyn Walk>| Self {
             walk,
             choke: choke.clone(),
             timing: None,
+            switches: Switches::of(stage),
             account: setup.account,
             intervals: Intervals::default(),
             cycles: 0,
@@ -212,7 +234,8 @@ impl Replay {
             supply_v: [cycle.supply_v[0]; 2],
             pulse,
         };
-        self.intervals.plan(&pulse, None, self.cycles)?;
+        self.intervals
+            .plan(&pulse, &self.switches, None, self.cycles)?;
         let [input, _] = self.input(&held)?;
         self.walk.settle(input, self.intervals.as_slice())
     }
@@ -223,8 +246,12 @@ impl Replay {
     /// Controls that are not finite, edges that run too fast, or an ideal choke with the switch off.
     #[inline]
     pub fn cycle(&mut self, cycle: &Cycle) -> Result<CycleOutput, ReplayError> {
-        self.intervals
-            .plan(&cycle.pulse, self.timing.as_ref(), self.cycles)?;
+        self.intervals.plan(
+            &cycle.pulse,
+            &self.switches,
+            self.timing.as_ref(),
+            self.cycles,
+        )?;
         let input = self.input(cycle)?;
         Ok(self.walk(cycle.supply_v, input))
     }
@@ -292,6 +319,7 @@ impl Replay {
         let [output_v, second, third] = walked.outputs;
         let mut output = CycleOutput {
             output_v,
+            weighted_v: walked.tilt,
             harmonics_v: [second, third],
             energies: Energies::default(),
         };
@@ -328,7 +356,8 @@ impl Replay {
     /// # Errors
     /// [`ReplayError`] where it never does.
     pub fn memory_cycles(&mut self, cycle: &Cycle, part: f64) -> Result<u64, ReplayError> {
-        self.intervals.plan(&cycle.pulse, None, self.cycles)?;
+        self.intervals
+            .plan(&cycle.pulse, &self.switches, None, self.cycles)?;
         let map = self.walk.period_map(self.intervals.as_slice());
         let radius = map
             .complex_eigenvalues()

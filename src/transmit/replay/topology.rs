@@ -4,6 +4,7 @@
 //!
 //! ```text
 //! integral of v exp(-jk x) dx = -[r z exp(-jk x)],     r (jk - G) = load row
+//! integral of x v exp(-jk x) dx = -[(x r + q) z exp(-jk x)],     q (jk - G) = r
 //! ```
 //!
 //! and the supply's energy, with its current `i = q . y + k u`, `u' = s`:
@@ -32,8 +33,8 @@ const LARGEST_ROW: f64 = 1e10;
 #[derive(Debug, Clone)]
 pub struct Topology<const M: usize> {
     pub propagator: Propagator<M>,
-    /// Real and imaginary part of `r` at the carrier, `p1` and `p2`; entry by entry of `z`.
-    rows: [[f64; 4]; M],
+    /// Real and imaginary parts of `r` and `q` at the carrier, `p1` and `p2`; entry by entry of `z`.
+    rows: [[f64; 6]; M],
     /// `r` at the harmonics that were asked for beside the carrier.
     higher: Vec<[Column<M>; 2]>,
     supply: SupplyEnergy,
@@ -70,23 +71,28 @@ struct Moments<const M: usize> {
 #[derive(Debug, Clone, Copy, Default)]
 pub struct Ends {
     pub output: [f64; 2],
+    pub tilt: [f64; 2],
     pub energy: [f64; 2],
 }
 
 impl<const M: usize> Topology<M> {
     pub fn new(reduced: &Reduced, setup: &Setup, choke: bool) -> Result<Self, ReplayError> {
         let n = reduced.a.nrows();
+        let b = column(&reduced.b);
         let load = reduced
             .resistors
             .iter()
             .find(|(owner, ..)| *owner == Owner::Load)
             .map(|(_, ohm, row)| row * *ohm)
             .ok_or(ReplayError::NeverSettles)?;
+        let load: Vec<Complex64> = load.iter().copied().map(Complex64::from).collect();
         let output = |harmonic: usize| fourier_row(reduced, &load, harmonic);
         let first = output(1)?;
-        let mut rows = [[0.0; 4]; M];
-        for (row, entry) in rows.iter_mut().zip(&first) {
-            (row[0], row[1]) = (entry.re, entry.im);
+        let second = fourier_row(reduced, &first, 1)?;
+        let mut rows = [[0.0; 6]; M];
+        for (row, (first, second)) in rows.iter_mut().zip(first.iter().zip(&second)) {
+            (row[0], row[1]) = (first.re, first.im);
+            (row[2], row[3]) = (second.re, second.im);
         }
         let higher = (2..=setup.harmonics.clamp(1, MAX_HARMONICS))
             .map(|harmonic| {
@@ -111,11 +117,11 @@ impl<const M: usize> Topology<M> {
             supply = match supply_rows(reduced) {
                 Some((p1, p2)) => {
                     for i in 0..n {
-                        (rows[i][2], rows[i][3]) = (p1[i], p2[i]);
+                        (rows[i][4], rows[i][5]) = (p1[i], p2[i]);
                     }
                     SupplyEnergy::Rows {
-                        square: reduced.supply[n] - reduced.b.dot(&p1),
-                        slope: -reduced.b.dot(&p2),
+                        square: reduced.supply[n] - b.dot(&p1),
+                        slope: -b.dot(&p2),
                     }
                 }
                 None => {
@@ -125,7 +131,7 @@ impl<const M: usize> Topology<M> {
             };
         }
         Ok(Self {
-            propagator: Propagator::new(&reduced.a, &reduced.b, setup.form),
+            propagator: Propagator::new(&reduced.a, &column(&reduced.b), setup.form),
             rows,
             higher,
             supply,
@@ -136,7 +142,7 @@ impl<const M: usize> Topology<M> {
     /// Rows at `z`: their difference between an interval's ends is what the interval gives.
     #[inline]
     pub fn at(&self, z: &Column<M>, input: f64, slope: f64) -> Ends {
-        let mut sums = [0.0; 4];
+        let mut sums = [0.0; 6];
         for (row, z) in self.rows.iter().zip(z) {
             for (sum, row) in sums.iter_mut().zip(row) {
                 *sum += row * z;
@@ -144,7 +150,8 @@ impl<const M: usize> Topology<M> {
         }
         Ends {
             output: [sums[0], sums[1]],
-            energy: [sums[2] * input, sums[3] * slope],
+            tilt: [sums[2], sums[3]],
+            energy: [sums[4] * input, sums[5] * slope],
         }
     }
 
@@ -205,7 +212,7 @@ impl<const M: usize> Topology<M> {
 
 impl<const M: usize> Moments<M> {
     fn new(reduced: &Reduced) -> Self {
-        let column = |row: &DVector<f64>| {
+        let padded = |row: &DVector<f64>| {
             let mut column = [0.0; M];
             for (entry, value) in column.iter_mut().zip(row.iter()) {
                 *entry = *value;
@@ -214,22 +221,22 @@ impl<const M: usize> Moments<M> {
         };
         Self {
             states: reduced.a.nrows(),
-            generator: generator(&reduced.a, &reduced.b),
-            supply: column(&reduced.supply),
+            generator: generator(&reduced.a, &column(&reduced.b)),
+            supply: padded(&reduced.supply),
             powers: power_rows(reduced).map(|parts| {
                 parts
                     .iter()
-                    .map(|(weight, left, right)| (*weight, column(left), column(right)))
+                    .map(|(weight, left, right)| (*weight, padded(left), padded(right)))
                     .collect()
             }),
         }
     }
 }
 
-/// `r` over state, supply and slope at a harmonic.
+/// The row `x` with `x (jk - G) = right` over state, supply and slope; `right` may leave out the slope.
 fn fourier_row(
     reduced: &Reduced,
-    load: &DVector<f64>,
+    right: &[Complex64],
     harmonic: usize,
 ) -> Result<Vec<Complex64>, ReplayError> {
     let n = reduced.a.nrows();
@@ -242,15 +249,16 @@ fn fourier_row(
         };
         diagonal - reduced.a[(column, row)]
     });
-    let right = DVector::from_fn(n, |i, _| Complex64::from(load[i]));
-    let row = system.lu().solve(&right).ok_or(ReplayError::NeverSettles)?;
+    let at = |i: usize| right.get(i).copied().unwrap_or(Complex64::ZERO);
+    let states = DVector::from_fn(n, |i, _| at(i));
+    let row = system
+        .lu()
+        .solve(&states)
+        .ok_or(ReplayError::NeverSettles)?;
     let forced: Complex64 = row.iter().zip(reduced.b.iter()).map(|(r, b)| r * b).sum();
-    let of_supply = (forced + load[n]) / order;
-    Ok(row
-        .iter()
-        .copied()
-        .chain([of_supply, of_supply / order])
-        .collect())
+    let of_supply = (forced + at(n)) / order;
+    let of_slope = (of_supply + at(n + 1)) / order;
+    Ok(row.iter().copied().chain([of_supply, of_slope]).collect())
 }
 
 /// `p1` and `p2`; `None` where the topology holds something without loss.
@@ -262,6 +270,11 @@ fn supply_rows(reduced: &Reduced) -> Option<(DVector<f64>, DVector<f64>)> {
     let second = transposed.solve(&-&first)?;
     let largest = first.amax().max(second.amax());
     (largest <= LARGEST_ROW * current.amax().max(1e-300)).then_some((first, second))
+}
+
+/// The only input's column.
+fn column(b: &DMatrix<f64>) -> DVector<f64> {
+    b.column(0).into_owned()
 }
 
 type Parts = Vec<(f64, DVector<f64>, DVector<f64>)>;
@@ -276,19 +289,29 @@ fn power_rows(reduced: &Reduced) -> [Parts; POWERS] {
             .map(|(_, ohm, row)| (*ohm, row.clone(), row.clone()))
             .collect()
     };
-    let mut input = DVector::zeros(reduced.a.nrows() + 1);
-    input[reduced.a.nrows()] = 1.0;
+    let n = reduced.a.nrows();
+    let mut input = DVector::zeros(n + 1);
+    input[n] = 1.0;
     [
         of(|owner| *owner == Owner::Load),
-        of(|owner| *owner == Owner::Switch),
+        of(|owner| matches!(owner, Owner::Contact(_))),
         of(|owner| *owner == Owner::Feed),
         of(|owner| matches!(owner, Owner::Rung(_))),
-        vec![(1.0, input, reduced.drain.clone())],
+        vec![(
+            1.0,
+            input,
+            reduced
+                .legs
+                .first()
+                .cloned()
+                .unwrap_or_else(|| DVector::zeros(n + 1)),
+        )],
     ]
 }
 
 fn forms<const M: usize>(reduced: &Reduced) -> Option<[Form<M>; POWERS]> {
-    let former = Former::new(&reduced.a, &reduced.b);
+    let b = column(&reduced.b);
+    let former = Former::new(&reduced.a, &b);
     let forms: Option<Vec<Form<M>>> = power_rows(reduced)
         .iter()
         .map(|parts| former.form(parts))

@@ -17,6 +17,7 @@ use crate::orbit::Reduced;
 #[derive(Debug, Clone, Copy, Default)]
 pub struct Walked {
     pub outputs: [Complex64; MAX_HARMONICS],
+    pub tilt: Complex64,
     pub supply: f64,
     pub powers: [f64; POWERS],
 }
@@ -104,7 +105,8 @@ impl<const M: usize> Walk for Walker<M> {
         z[self.states + 1] = slope;
         let mut walked = Walked::default();
         let mut outputs = [(0.0, 0.0); MAX_HARMONICS];
-        let (mut angle, mut turn) = (0.0, Complex64::ONE);
+        let mut tilt = (0.0, 0.0);
+        let (mut angle, mut turn) = (0.0f64, Complex64::ONE);
         let last = intervals.len().saturating_sub(1);
         for (index, interval) in intervals.iter().enumerate() {
             let Some(topology) = self.topologies.get(interval.topology) else {
@@ -112,6 +114,7 @@ impl<const M: usize> Walk for Walker<M> {
             };
             let length = interval.length_rad;
             let end = topology.propagator.advance(&z, length);
+            let from = angle;
             angle += length;
             let end_turn = if index == last {
                 Complex64::ONE
@@ -121,10 +124,19 @@ impl<const M: usize> Walk for Walker<M> {
             };
             let before = topology.at(&z, z[self.states], slope);
             let after = topology.at(&end, end[self.states], slope);
-            for (ends, turn, sign) in [(&before, turn, 1.0), (&after, end_turn, -1.0)] {
+            for (ends, at, turn, sign) in
+                [(&before, from, turn, 1.0), (&after, angle, end_turn, -1.0)]
+            {
                 let [re, im] = ends.output;
-                outputs[0].0 += sign * (re * turn.re - im * turn.im);
-                outputs[0].1 += sign * (re * turn.im + im * turn.re);
+                let (re, im) = (
+                    sign * (re * turn.re - im * turn.im),
+                    sign * (re * turn.im + im * turn.re),
+                );
+                outputs[0].0 += re;
+                outputs[0].1 += im;
+                let [own_re, own_im] = ends.tilt;
+                tilt.0 += at * re + sign * (own_re * turn.re - own_im * turn.im);
+                tilt.1 += at * im + sign * (own_re * turn.im + own_im * turn.re);
             }
             if self.harmonics > 1 {
                 let (mut from, mut to) = (turn, end_turn);
@@ -149,6 +161,7 @@ impl<const M: usize> Walk for Walker<M> {
         for (to, (re, im)) in walked.outputs.iter_mut().zip(outputs) {
             *to = Complex64::new(re / PI, im / PI);
         }
+        walked.tilt = Complex64::new(tilt.0, tilt.1) / (PI * TAU);
         walked
     }
 
