@@ -98,8 +98,8 @@ fn stage() -> impl Strategy<Value = Stage> {
                 feed,
                 ladder,
                 load: Load {
-                    ohm: 1.0,
                     reactance,
+                    ..Load::matched(1.0)
                 },
             },
         )

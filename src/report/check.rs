@@ -26,7 +26,7 @@ pub struct Request {
     pub inputs: Vec<(String, String)>,
 }
 
-fn outcome(outcome: verdict::Outcome) -> Outcome {
+pub(super) fn outcome(outcome: verdict::Outcome) -> Outcome {
     match outcome {
         verdict::Outcome::Within => Outcome::Within,
         verdict::Outcome::Outside => Outcome::Outside,
