@@ -28,6 +28,7 @@ fn stage(drain: f64, series_c: f64, series_l: f64, feed: Option<f64>) -> Stage {
             open_ohm: f64::INFINITY,
             knee: None,
             diode: None,
+            arrangement: Arrangement::Single,
         },
         drain_f: drain / angular_hz,
         drain_curve: None,
@@ -36,6 +37,7 @@ fn stage(drain: f64, series_c: f64, series_l: f64, feed: Option<f64>) -> Stage {
             duty: 0.5,
             anchor: Anchor::Centre,
             gate: None,
+            dead_s: 0.0,
         },
         feed: feed.map_or(Feed::Choke { ohm: 0.0 }, |ohm| Feed::Inductor {
             henry: ohm / angular_hz,

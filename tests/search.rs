@@ -19,7 +19,7 @@ use proptest::test_runner::{Config, RngAlgorithm, TestRng, TestRunner};
 use quietedge::design::{Choice, PartLosses, Targets, design};
 use quietedge::map::{Control, LoadSweep, Sweep};
 use quietedge::orbit::{Drive, Network};
-use quietedge::stage::{Device, Diode, DrainCurve, Junction, Stage, Switch};
+use quietedge::stage::{Arrangement, Device, Diode, DrainCurve, Junction, Stage, Switch};
 
 /// A solve beyond this is written down: the work limit of one orbit is about a second on a machine of its own.
 const SLOW: Duration = Duration::from_secs(20);
@@ -159,6 +159,7 @@ fn targets() -> impl Strategy<Value = Targets> {
                         open_ohm: f64::INFINITY,
                         knee: None,
                         diode,
+                        arrangement: Arrangement::Single,
                     },
                     drain_f: farad,
                     drain_curve: curve,

@@ -83,7 +83,7 @@ fn the_curved_twin_settles_to_the_orbit() {
             ("closing voltage", orbit.closing_v, twin.closing_v, peak),
         ];
         match stage.feed {
-            Feed::Inductor { .. } => {
+            Feed::Inductor { .. } | Feed::Direct => {
                 pairs.push((
                     "supply power",
                     orbit.supply_w,

@@ -88,6 +88,9 @@ impl CurvedTwin {
 /// What hangs on the drain beside the ladder.
 struct Drain<'a> {
     stage: &'a Stage,
+    /// A capacitance that stands among the conductances, so that no node floats; what the charge has beside it is
+    /// the drain's own equation.
+    stand_in_f: f64,
     fixed_f: f64,
     /// Voltage, charge and capacitance of a table, finely.
     table: Vec<[f64; 3]>,
@@ -113,11 +116,14 @@ impl<'a> Drain<'a> {
                 table.push([volt, charge, farad]);
             }
         }
-        Self {
+        let mut drain = Self {
             stage,
+            stand_in_f: 0.0,
             fixed_f: stage.drain_f + stage.gate_coupling_f,
             table,
-        }
+        };
+        drain.stand_in_f = drain.charge(stage.supply_v).1;
+        drain
     }
 
     /// Charge and capacitance.
@@ -199,23 +205,25 @@ impl<'a> Drain<'a> {
         diode.map_or(0.0, |diode| ((v + diode.drop_v) / diode.ohm).min(0.0))
     }
 
-    /// The voltage with `volt + ohm (current - (q(v) - charge)/step - device(v)) = v`.
-    fn solve(
-        &self,
-        closed: bool,
-        volt: f64,
-        ohm: f64,
-        charge: f64,
-        step_s: f64,
-        guess: f64,
-    ) -> f64 {
+    /// What flows out of the drain beside the stand-in, and how it grows with the voltage.
+    fn current(&self, closed: bool, v: f64, from: &State, step_s: f64) -> (f64, f64) {
+        let (q, c) = self.charge(v);
+        let amps = self.switch_a(closed, v) + self.diode_a(v);
+        let nudge = 1e-6 * (1.0 + v.abs());
+        let more = self.switch_a(closed, v + nudge) + self.diode_a(v + nudge);
+        let moved = (q - from.charge) - self.stand_in_f * (v - from.drain_v);
+        (
+            moved / step_s + amps,
+            (c - self.stand_in_f) / step_s + (more - amps) / nudge,
+        )
+    }
+
+    /// The voltage with `volt - ohm current(v) = v`.
+    fn solve(&self, closed: bool, volt: f64, ohm: f64, from: &State, step_s: f64) -> f64 {
+        let guess = from.drain_v;
         let gap = |v: f64| {
-            let (q, c) = self.charge(v);
-            let amps = self.switch_a(closed, v) + self.diode_a(v);
-            let nudge = 1e-6 * (1.0 + v.abs());
-            let more = self.switch_a(closed, v + nudge) + self.diode_a(v + nudge);
-            let slope = 1.0 + ohm * (c / step_s + (more - amps) / nudge);
-            (v - volt + ohm * ((q - charge) / step_s + amps), slope)
+            let (amps, slope) = self.current(closed, v, from, step_s);
+            (v - volt + ohm * amps, 1.0 + ohm * slope)
         };
         // The gap rises with v: bracket, then Newton inside it.
         let (mut low, mut high, mut width) = (guess, guess, 1.0);
@@ -295,14 +303,14 @@ struct Stepping {
 }
 
 impl Stepping {
-    fn new(net: &Network, stage: &Stage, step_s: f64) -> Self {
-        // Branch 0 is the fixed drain capacitance, which the drain's own equation holds.
+    fn new(net: &Network, stage: &Stage, step_s: f64, stand_in_f: f64) -> Self {
+        // Branch 0 is the drain's.
         let conductance: Vec<f64> = net
             .branches
             .iter()
             .enumerate()
             .map(|(index, branch)| match branch.element {
-                _ if index == 0 => 0.0,
+                _ if index == 0 => stand_in_f / step_s,
                 Element::Resistor(ohm) => 1.0 / ohm,
                 Element::Capacitor(farad) => farad / step_s,
                 Element::Inductor(henry) => step_s / henry,
@@ -396,7 +404,7 @@ impl Run<'_> {
             Some((source, _)) => self.injected[source] = self.input,
             None => self.injected[0] += self.input,
         }
-        self.injected[0] += gate_a;
+        self.injected[0] += gate_a + at.conductance[0] * from.drain_v;
         for row in 0..nodes {
             let conductances = &at.inverse[row * nodes..(row + 1) * nodes];
             let products = conductances.iter().zip(&self.injected);
@@ -404,10 +412,8 @@ impl Run<'_> {
         }
         let ohm = at.inverse[0];
         let open_v = self.node_v[0];
-        let v = self
-            .drain
-            .solve(closed, open_v, ohm, from.charge, at.step_s, from.drain_v);
-        let current = (v - open_v) / ohm;
+        let v = self.drain.solve(closed, open_v, ohm, from, at.step_s);
+        let current = -self.drain.current(closed, v, from, at.step_s).0;
         for row in 0..nodes {
             self.node_v[row] += at.inverse[row * nodes] * current;
         }
@@ -442,7 +448,7 @@ pub fn curved_twin(
         drain: Drain::new(stage),
         load_ohm: stage.load.ohm,
         input: match stage.feed {
-            Feed::Inductor { .. } => supply_v,
+            Feed::Inductor { .. } | Feed::Direct => supply_v,
             Feed::Choke { .. } => choke_a,
         },
         net,
@@ -491,7 +497,10 @@ fn plan(run: &Run<'_>, stage: &Stage, drive: &Drive, steps: usize) -> Vec<(Segme
         })
         .map(|part| {
             let step_s = part.length_s / steps as f64;
-            (part, Stepping::new(&run.net, stage, GAMMA * step_s))
+            (
+                part,
+                Stepping::new(&run.net, stage, GAMMA * step_s, run.drain.stand_in_f),
+            )
         })
         .collect()
 }
