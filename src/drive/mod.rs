@@ -41,6 +41,8 @@ pub struct Track {
     pub phase: Vec<num_complex::Complex64>,
     /// The supply, V, of schemes that move it beside the control; empty for all others.
     pub supply_v: Vec<f64>,
+    /// The drive phasors of two branches, of schemes that have them; empty for all others.
+    pub branches: Vec<[num_complex::Complex64; 2]>,
 }
 
 impl Track {
@@ -51,6 +53,7 @@ impl Track {
         self.control.clear();
         self.phase.clear();
         self.supply_v.clear();
+        self.branches.clear();
     }
 
     /// Instants held.

@@ -1,5 +1,6 @@
 //! STEP 3: from a control to the output, forward and inverse: AM-AM and AM-PM.
 
+mod mismatch;
 mod read;
 mod read_csv;
 mod read_json;
@@ -10,6 +11,7 @@ use num_complex::Complex64;
 use crate::math::monotone::{Curve, CurveError};
 use crate::units;
 
+pub use mismatch::{LoadMap, LoadPoint, LoadSweep, LoadSweepError};
 pub use read::{MapFacts, MapFormat, read_map};
 pub use sweep::{Sweep, SweepError};
 

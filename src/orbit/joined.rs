@@ -310,6 +310,7 @@ fn circuit(stage: &Stage, joint: &Joint) -> Result<Circuit, JointError> {
     let end = builder.ladder(ends[0], low, &stage.ladder[own..], 2 * own);
     let load = Load {
         ohm: load_ohm,
+        reference_ohm: load_ohm,
         // The same part of the load as in the stage.
         reactance: stage.load.reactance.map(|element| match element {
             Element::Inductor(henry) => Element::Inductor(henry * ratio),

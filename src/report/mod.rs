@@ -16,14 +16,17 @@ pub mod design;
 pub mod documents;
 mod error;
 pub mod figures;
+mod held;
 pub mod limits;
 pub mod measure;
+pub mod mismatch;
 pub mod page;
 pub mod palette;
 pub mod picture;
 pub mod predistort;
 pub mod scheme;
 pub mod stage;
+pub mod stress;
 pub mod table;
 mod text;
 

@@ -3,7 +3,7 @@
 use super::figures::{MapFigure, OtherCurves, Quantity, WaveformFigure};
 use super::picture::Figure;
 use super::table::{Align, Table};
-use super::text::quantity;
+use super::text::{quantity, zeroed};
 use crate::map::{Control, Map};
 use crate::orbit::{Orbit, Waveform};
 use crate::stage::Stage;
@@ -17,7 +17,14 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
     let row = |name: &str, value: String, remark: String| [name.to_owned(), value, remark];
     let several = !orbit.switches.is_empty();
     let percent = |watt: f64| format!("{:.2} % of the supply power", 100.0 * watt / orbit.supply_w);
-    let lost = |name: &str, watt: f64| row(name, quantity(watt, "W", 4), percent(watt));
+    let lost = |name: &str, watt: f64| {
+        let watt = zeroed(watt, orbit.supply_w + orbit.driver_w);
+        row(name, quantity(watt, "W", 4), percent(watt))
+    };
+    let slope_v = zeroed(
+        orbit.closing_slope_v_per_s * stage.period_s(),
+        orbit.supply_v,
+    );
     let mut rows = vec![
         row(
             "output power",
@@ -69,7 +76,7 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
             } else {
                 "lowest drain voltage"
             },
-            quantity(orbit.switch_min_v, "V", 4),
+            quantity(zeroed(orbit.switch_min_v, orbit.supply_v), "V", 4),
             match (stage.switch.diode, orbit.diode_conductions) {
                 (None, _) if several && orbit.switch_min_v < -BODY_DIODE_V => {
                     "beyond a rail: the body diodes, which the model leaves out, would conduct"
@@ -96,11 +103,8 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
             } else {
                 "drain at closing"
             },
-            quantity(orbit.closing_v, "V", 4),
-            format!(
-                "slope {} a period",
-                quantity(orbit.closing_slope_v_per_s * stage.period_s(), "V", 3)
-            ),
+            quantity(zeroed(orbit.closing_v, orbit.supply_v), "V", 4),
+            format!("slope {} a period", quantity(slope_v, "V", 3)),
         ),
     ];
     for switch in &orbit.switches {
@@ -250,7 +254,10 @@ pub fn map_text(title: &str, map: &Map) -> String {
                 .efficiency
                 .map_or("-".to_owned(), |e| format!("{:.2} %", 100.0 * e)),
             optional(point.switch_peak_v, "V"),
-            optional(point.closing_v, "V"),
+            optional(
+                point.closing_v.map(|volt| zeroed(volt, point.supply_v)),
+                "V",
+            ),
         ]);
     }
     let monotone = match map.turns_at() {

@@ -3,11 +3,13 @@
 use std::sync::Mutex;
 use std::sync::atomic::{AtomicUsize, Ordering};
 
-use super::check::check;
+use super::check::check_by;
 use super::error::StudyError;
 use super::load::Study;
+use super::replay::By;
 use super::result::CheckResult;
 use super::warning::Warning;
+use crate::drive::Scheme;
 use crate::signal::Source;
 use crate::verdict::Outcome;
 
@@ -27,6 +29,21 @@ pub fn compare(
     open: &OpenSignal<'_>,
     progress: &(dyn Fn(f64) + Sync),
 ) -> Result<Vec<CheckResult>, (usize, StudyError)> {
+    compare_by(studies, By::Map, threads, open, progress)
+}
+
+/// As [`compare`], with every stage replayed where `by` says so. The baseline `class_b` has no stage and stays by map,
+/// which its warnings say.
+///
+/// # Errors
+/// As [`compare`].
+pub fn compare_by(
+    studies: &[Study],
+    by: By,
+    threads: usize,
+    open: &OpenSignal<'_>,
+    progress: &(dyn Fn(f64) + Sync),
+) -> Result<Vec<CheckResult>, (usize, StudyError)> {
     let next = AtomicUsize::new(0);
     let parts = Mutex::new(vec![0.0; studies.len()]);
     let results: Mutex<Vec<Option<Result<CheckResult, StudyError>>>> =
@@ -37,13 +54,21 @@ pub fn compare(
             let Some(study) = studies.get(index) else {
                 break;
             };
+            let baseline = matches!(study.scheme, Scheme::ClassB(_));
+            let own = if baseline { By::Map } else { by };
             let result = open(index).and_then(|mut source| {
-                check(study, &mut *source, &mut |part| {
+                check_by(study, &mut *source, own, 1, &mut |part| {
                     if let Ok(mut parts) = parts.lock() {
                         parts[index] = part;
                         progress(parts.iter().sum::<f64>() / studies.len() as f64);
                     }
                 })
+            });
+            let result = result.map(|mut result| {
+                if own != by {
+                    result.warnings.push(Warning::OnlyByMap);
+                }
+                result
             });
             if let Ok(mut results) = results.lock() {
                 results[index] = Some(result);

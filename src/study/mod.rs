@@ -8,7 +8,9 @@ mod compare;
 mod error;
 mod load;
 mod measure;
+mod parting;
 mod predistort;
+mod replay;
 mod result;
 mod run;
 mod scale;
@@ -16,15 +18,17 @@ mod warning;
 
 pub use average::Averaged;
 pub use built_in::{BuiltIn, DEFAULT_STUDY};
-pub use check::check;
-pub use compare::{OpenSignal, Rank, compare, ranked};
+pub use check::{check, check_by};
+pub use compare::{OpenSignal, Rank, compare, compare_by, ranked};
 pub use error::StudyError;
 pub use load::{Hardware, Predistortion, SignalChoice, Study};
 pub use measure::{CaptureMetrics, MeasureRequest, MeasureResult, measure};
+pub use parting::{Band, Parting};
 pub use predistort::{
     PolynomialResult, PredistortRequest, PredistortResult, Reserve, SearchEnd, SearchResult,
     SearchRow, Sweep, SweepQuantity, predistort,
 };
+pub use replay::{By, ByMap, MarginPair, ReplayFacts};
 pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
 pub use scale::Scale;
 pub use warning::Warning;
