@@ -10,6 +10,8 @@ pub mod lowpass;
 pub mod monotone;
 pub mod newton;
 pub mod radau;
+pub mod response;
+mod section;
 pub mod simplex;
 pub mod small;
 pub mod window;

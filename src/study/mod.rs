@@ -1,30 +1,37 @@
 //! One study from file to verdict.
 
 mod average;
+mod backoff;
 mod built_in;
 mod check;
 mod collect;
 mod compare;
 mod error;
+mod kept;
 mod load;
 mod measure;
+mod parts;
 mod predistort;
+mod rank;
 mod result;
 mod run;
 mod scale;
 mod warning;
 
 pub use average::Averaged;
+pub use backoff::{BackoffPoint, backoff};
 pub use built_in::{BuiltIn, DEFAULT_STUDY};
 pub use check::check;
-pub use compare::{OpenSignal, Rank, compare, ranked};
+pub use compare::{Compared, Inverted, OpenSignal, compare};
 pub use error::StudyError;
 pub use load::{Hardware, Predistortion, SignalChoice, Study};
 pub use measure::{CaptureMetrics, MeasureRequest, MeasureResult, measure};
+pub use parts::EfficiencyParts;
 pub use predistort::{
     PolynomialResult, PredistortRequest, PredistortResult, Reserve, SearchEnd, SearchResult,
     SearchRow, Sweep, SweepQuantity, predistort,
 };
+pub use rank::{Rank, follows, ranked};
 pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
 pub use scale::Scale;
 pub use warning::Warning;

@@ -1,13 +1,14 @@
 //! One signal through the whole chain at one oversampling factor, block by block, in two passes.
 //!
 //! The first pass takes spectra, powers and the alignment of output and wanted signal; the second runs
-//! the same chain again and holds the aligned output against the wanted signal. Memory does not grow with
-//! the signal.
+//! the same chain again, or what was kept of a short signal, and holds the aligned output against the wanted
+//! signal. Memory does not grow with a long one.
 
 use num_complex::Complex64;
 
 use super::collect::Collected;
 use super::error::StudyError;
+use super::kept::{Kept, MOST, NotchWindow};
 use super::load::Study;
 use super::result::Notch;
 use crate::drive::{Correction, Track};
@@ -133,7 +134,7 @@ impl Chain<'_> {
         if let Some(correction) = self.correction {
             drive = drive.corrected(correction, self.factor);
         }
-        let mut transmitter = MapTransmitter::new(self.map, &study.scheme.modulator());
+        let mut transmitter = MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
         let mut oversampled = Oversampled::new(source, self.factor)?;
         let mut samples = vec![Complex64::ZERO; BLOCK];
         let mut track = Track::default();
@@ -207,7 +208,13 @@ impl Chain<'_> {
         let rate_hz = self.rate_hz(source);
         let load_ohm = self.map.load_ohm();
         let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
-        let (mut wanted_meter, _) = self.meters(rate_hz)?;
+        let mut wanted_meter = output_meter.clone();
+        let (start, end) = self.span(rate_hz);
+        let keeps = end.saturating_sub(start) <= MOST;
+        let mut kept = Kept {
+            first: start,
+            ..Kept::default()
+        };
         let mut output_envelope = EnvelopeMeter::new(load_ohm);
         let mut wanted_envelope = EnvelopeMeter::new(load_ohm);
         let search_s = self.settling(rate_hz) as f64 / rate_hz;
@@ -224,6 +231,14 @@ impl Chain<'_> {
             output_envelope.push(piece.output_v());
             wanted_envelope.push(piece.wanted());
             alignment.push(piece.wanted(), piece.output_v())?;
+            if keeps {
+                let range = piece.range.clone();
+                kept.wanted.extend_from_slice(piece.wanted());
+                kept.output_v.extend_from_slice(piece.output_v());
+                kept.asked
+                    .extend_from_slice(&piece.track.asked[range.clone()]);
+                kept.control.extend_from_slice(&piece.track.control[range]);
+            }
             for at in piece.range.clone() {
                 let fraction = piece.track.control[at] / full;
                 let bin = (fraction * DENSITY_BINS as f64) as usize;
@@ -246,25 +261,49 @@ impl Chain<'_> {
             .format
             .map(|format| Collected::new(format, self.factor, alignment.delay_s * rate_hz));
         let mut notch = Notch::default();
-        let reach = (NOTCH_SAMPLES * self.factor) as u64;
-        let level = self.study.signal.level;
-        self.pass(source, tick, |piece| {
-            errors.push(piece.wanted(), piece.output_v())?;
+        let window = NotchWindow {
+            middle: deepest.1,
+            reach: (NOTCH_SAMPLES * self.factor) as u64,
+            rate_hz,
+            level: self.study.signal.level,
+            full,
+        };
+        let mut again = |first: u64,
+                         wanted: &[Complex64],
+                         output_v: &[Complex64],
+                         asked: &[f64],
+                         control: &[f64]|
+         -> Result<(), StudyError> {
+            errors.push(wanted, output_v)?;
             if let Some(collected) = &mut collected {
-                collected.push(piece.wanted(), piece.output_v());
+                collected.push(wanted, output_v);
             }
-            for at in piece.range.clone() {
-                let instant = piece.first + at as u64;
-                if instant.abs_diff(deepest.1) <= reach {
-                    let offset = instant as f64 - deepest.1 as f64;
-                    notch.time_s.push(offset / rate_hz);
-                    notch.wanted.push(level * piece.track.wanted[at].norm());
-                    notch.asked.push(piece.track.asked[at] / full);
-                    notch.control.push(piece.track.control[at] / full);
-                }
-            }
+            window.take(first, wanted, asked, control, &mut notch);
             Ok(())
-        })?;
+        };
+        if keeps {
+            let Kept {
+                first,
+                wanted,
+                output_v,
+                asked,
+                control,
+            } = &kept;
+            again(*first, wanted, output_v, asked, control)?;
+            tick(self.signal_samples * self.factor as u64);
+        } else {
+            self.pass(source, tick, |piece| {
+                let range = piece.range.clone();
+                again(
+                    piece.first + range.start as u64,
+                    piece.wanted(),
+                    piece.output_v(),
+                    &piece.track.asked[range.clone()],
+                    &piece.track.control[range],
+                )
+            })?;
+        }
+        drop(kept);
 
         let total: u64 = density.iter().sum();
         let mut wanted_spectrum = wanted_meter.finish()?;
