@@ -6,6 +6,7 @@ use super::error::StudyError;
 use super::load::{Hardware, Predistortion, Study};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
+use super::shapes::shapes;
 use super::warning::Warning;
 use crate::drive::{
     ClassBScheme, Correction, MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, WidthLaw,
@@ -288,6 +289,7 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         orbit: network.orbit(stage.supply_v, &drive)?,
         waveform: network.waveform(stage.supply_v, &drive, 240)?,
         settling_s: network.settling_s(&drive),
+        shapes: shapes(&network, scheme, &map),
     };
     Ok((map, Some(facts)))
 }

@@ -12,6 +12,7 @@ mod predistort;
 mod result;
 mod run;
 mod scale;
+mod shapes;
 mod warning;
 
 pub use average::Averaged;
@@ -27,4 +28,5 @@ pub use predistort::{
 };
 pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
 pub use scale::Scale;
+pub use shapes::Shape;
 pub use warning::Warning;

@@ -8,6 +8,7 @@ use crate::predistort::Table;
 use crate::verdict::{Judgement, MaskMargin};
 
 use super::load::Study;
+use super::shapes::Shape;
 use super::warning::Warning;
 
 /// A study carried out.
@@ -58,6 +59,8 @@ pub struct StageFacts {
     pub waveform: Waveform,
     /// Time in which a deviation falls to 1/e, s.
     pub settling_s: f64,
+    /// The drain's waveform at full, half and lowest control.
+    pub shapes: Vec<Shape>,
 }
 
 /// The signal as it was found.
