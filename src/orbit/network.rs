@@ -249,6 +249,17 @@ impl Network {
         &self.stage
     }
 
+    /// The state equations in every position of the switches; `None` where the drain is curved.
+    ///
+    /// # Errors
+    /// [`NetworkError`], as at construction.
+    pub(crate) fn linear_equations(&self) -> Result<Option<Equations>, NetworkError> {
+        match &self.model {
+            Model::Linear(_) => Equations::new(Circuit::new(&self.stage)).map(Some),
+            Model::Curved(_) => Ok(None),
+        }
+    }
+
     pub(super) fn model(&self) -> &Model {
         &self.model
     }
