@@ -8,6 +8,7 @@ use super::parts::EfficiencyParts;
 use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
+use super::shapes::shapes;
 use super::warning::Warning;
 use crate::drive::{
     ClassBScheme, Correction, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme, Polynomial,
@@ -457,6 +458,7 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         orbit: network.orbit(stage.supply_v, &drive)?,
         waveform: network.waveform(stage.supply_v, &drive, 240)?,
         settling_s: network.settling_s(&drive),
+        shapes: shapes(&network, scheme, &map),
     };
     Ok((map, Some(facts)))
 }

@@ -10,6 +10,7 @@ use crate::verdict::{Judgement, MaskMargin, Stress};
 use super::load::Study;
 use super::parts::EfficiencyParts;
 use super::replay::ReplayFacts;
+use super::shapes::Shape;
 use super::warning::Warning;
 
 /// A study carried out.
@@ -64,6 +65,8 @@ pub struct StageFacts {
     pub waveform: Waveform,
     /// Time in which a deviation falls to 1/e, s.
     pub settling_s: f64,
+    /// The drain's waveform at full, half and lowest control.
+    pub shapes: Vec<Shape>,
 }
 
 /// The signal as it was found.

@@ -29,7 +29,7 @@ const FINE_PART: f64 = 0.01;
 
 /// Steps in each part of each segment: the first to settle from rest, the others to be extrapolated.
 const COARSE: usize = 50;
-const STEPS: [usize; 2] = [250, 500];
+const STEPS: [usize; 2] = [400, 800];
 
 /// Phasor, supply and power move by less than this part of themselves in a period.
 const SETTLED: f64 = 1e-6;
@@ -41,7 +41,7 @@ const MOST_PERIODS: usize = 1000;
 const PERIODIC: f64 = 1e-9;
 
 /// What it may be where Newton's method gains nothing more: the node equations at small steps leave so much.
-const ROUNDING: f64 = 3e-6;
+const ROUNDING: f64 = 1e-5;
 
 /// Periods of settling with finer steps before Newton's method.
 const FINE_PERIODS: usize = 60;
@@ -570,7 +570,7 @@ fn periodic(
         }
     }
     let mut best = f64::INFINITY;
-    for _ in 0..12 {
+    for _ in 0..25 {
         let here = vector(state);
         let (twin, there) = advance(run, state);
         let size = here.amax();
