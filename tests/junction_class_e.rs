@@ -14,7 +14,8 @@ use std::f64::consts::{PI, TAU};
 
 use quietedge::orbit::{Drive, Network};
 use quietedge::stage::{
-    Anchor, Arm, Arrangement, DrainCurve, Driver, Element, Feed, Junction, Load, Part, Rung, Stage, Switch,
+    Anchor, Arm, Arrangement, DrainCurve, Driver, Element, Feed, Junction, Load, Part, Rung, Stage,
+    Switch,
 };
 
 const POINTS: usize = 20_000;
@@ -101,10 +102,7 @@ fn design(phi: f64, loaded_q: f64) -> Design {
                     1.0 / (angular_hz * (loaded_q - reactance)),
                 )),
             ],
-            load: Load {
-                ohm: 1.0,
-                reactance: None,
-            },
+            load: Load::matched(1.0),
         },
     }
 }

@@ -47,6 +47,8 @@ pub struct Track {
     pub phase: Vec<num_complex::Complex64>,
     /// The supply, V, of schemes that move it beside the control; empty for all others.
     pub supply_v: Vec<f64>,
+    /// The drive phasors of two branches, of schemes that have them; empty for all others.
+    pub branches: Vec<[num_complex::Complex64; 2]>,
     /// Instants within which the controls change at once: their output is the mean over these parts in place of
     /// the rows' own values, which are those of the instant's middle. By instant; the weights of one add up to 1.
     pub parts: Vec<TrackPart>,
@@ -76,6 +78,7 @@ impl Track {
         self.phase.clear();
         self.supply_v.clear();
         self.parts.clear();
+        self.branches.clear();
     }
 
     /// Instants held.

@@ -62,6 +62,13 @@ pub struct WidthScheme {
 }
 
 impl WidthScheme {
+    /// The same with edges that fall anywhere: for those who place every edge themselves.
+    #[must_use]
+    pub fn without_timing(mut self) -> Self {
+        (self.grid_s, self.jitter_s) = (None, 0.0);
+        self
+    }
+
     pub(super) fn settling(&self, rate_hz: f64) -> usize {
         settling(
             self.delay_s.max(self.phase_path.delay_s),

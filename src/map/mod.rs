@@ -1,5 +1,6 @@
 //! STEP 3: from a control to the output, forward and inverse: AM-AM and AM-PM.
 
+mod mismatch;
 mod planes;
 mod read;
 mod read_csv;
@@ -11,6 +12,7 @@ use num_complex::Complex64;
 use crate::math::monotone::{Curve, CurveError};
 use crate::units;
 
+pub use mismatch::{LoadMap, LoadPoint, LoadSweep, LoadSweepError};
 pub use read::{MapFacts, MapFormat, read_map};
 pub use sweep::{Sweep, SweepError};
 

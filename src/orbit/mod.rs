@@ -29,6 +29,8 @@ mod unit;
 mod waveform;
 
 pub use balance::{Losses, Orbit, SwitchFigures};
+pub(crate) use circuit::Owner;
 pub use network::{Drive, Network, NetworkError, OrbitError};
+pub(crate) use reduce::Reduced;
 pub use tracker::Tracker;
 pub use waveform::{OtherSwitch, Waveform};

@@ -5,6 +5,7 @@ use num_complex::Complex64;
 use super::error::StudyError;
 use super::load::{Hardware, Predistortion, Study};
 use super::parts::EfficiencyParts;
+use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
 use super::warning::Warning;
@@ -17,6 +18,7 @@ use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
 use crate::orbit::{Drive, Network};
 use crate::predistort::{Table, TableRequest};
 use crate::signal::Source;
+use crate::stage::Stage;
 use crate::units::dbm_from_watt;
 use crate::verdict::{Judgement, Measured, Wanted, judge};
 
@@ -33,7 +35,7 @@ const PLANE_DISTANCE: f64 = 0.1;
 const CONVERGED_DB: f64 = 0.1;
 
 /// Margins past this in both runs do not count, dB: no decision hangs on them, and numerical floors lie there.
-const FAR_WITHIN_DB: f64 = 30.0;
+pub(super) const FAR_WITHIN_DB: f64 = 30.0;
 
 /// How often the sampling is doubled beyond the first comparison.
 const MORE_DOUBLINGS: usize = 2;
@@ -65,8 +67,24 @@ pub fn check(
     source: &mut dyn Source,
     progress: &mut dyn FnMut(f64),
 ) -> Result<CheckResult, StudyError> {
+    check_by(study, source, By::Map, 1, progress)
+}
+
+/// As [`check`], the output taken from the map, from a replay of the stage, or from both, with `workers` segments of
+/// the replay at a time; the result is the same for any number of them to 1e-9.
+///
+/// # Errors
+/// [`StudyError`] where no verdict can be reached, or nothing can be replayed.
+pub fn check_by(
+    study: &Study,
+    source: &mut dyn Source,
+    by: By,
+    workers: usize,
+    progress: &mut dyn FnMut(f64),
+) -> Result<CheckResult, StudyError> {
     let bench = Bench::new(study, source)?;
-    bench.check(bench.front()?, source, progress)
+    let front = bench.front()?;
+    bench.check_by(front, source, by, workers, progress)
 }
 
 /// What stands in front of the scheme in one check.
@@ -80,7 +98,7 @@ pub(super) enum Front {
 }
 
 impl Front {
-    fn correction(&self) -> Option<Correction> {
+    pub(super) fn correction(&self) -> Option<Correction> {
         match self {
             Self::None => None,
             Self::Table(table) => Some(Correction::Table(table.lookup.clone())),
@@ -95,7 +113,7 @@ impl Front {
 pub(super) struct Bench<'a> {
     pub(super) study: &'a Study,
     pub(super) map: Map,
-    stage: Option<StageFacts>,
+    pub(super) stage: Option<StageFacts>,
     pub(super) signal: SignalFacts,
     wanted: Wanted,
     /// What several checks side by side share.
@@ -236,6 +254,7 @@ impl<'a> Bench<'a> {
                 .or(study.limits.authorized_bandwidth_hz)
                 .unwrap_or(self.signal.rate_hz),
             signal_samples: self.signal.samples,
+            replay: None,
         }
     }
 
@@ -250,6 +269,21 @@ impl<'a> Bench<'a> {
             .chain(front, correction.as_ref())
             .run(source, &mut |_| {})?;
         Ok(self.verdict_of(&run))
+    }
+
+    /// By map, by replay, or both.
+    pub(super) fn check_by(
+        &self,
+        front: Front,
+        source: &mut dyn Source,
+        by: By,
+        workers: usize,
+        progress: &mut dyn FnMut(f64),
+    ) -> Result<CheckResult, StudyError> {
+        match by {
+            By::Map => self.check(front, source, progress),
+            By::Replay | By::Both => replayed(self, &front, source, by, workers, progress),
+        }
     }
 
     pub(super) fn check(
@@ -332,6 +366,7 @@ impl<'a> Bench<'a> {
             control_density: run.control_density,
             symbols: run.symbols,
             notch: run.notch,
+            replay: None,
             warnings: Vec::new(),
             judgement,
         };
@@ -339,7 +374,7 @@ impl<'a> Bench<'a> {
         Ok(result)
     }
 
-    fn verdict_of(&self, run: &Run) -> Judgement {
+    pub(super) fn verdict_of(&self, run: &Run) -> Judgement {
         let until_hz = self.common.map_or(f64::INFINITY, |common| common.until_hz);
         let fine = run.output_spectrum.within(until_hz);
         let peak_hold: Vec<_> = run
@@ -371,22 +406,26 @@ impl<'a> Bench<'a> {
     }
 }
 
+/// The stage of `study`, its pulses anchored as the scheme says.
+pub(super) fn stage_of(study: &Study) -> Option<Stage> {
+    let Hardware::Stage(stage) = &study.hardware else {
+        return None;
+    };
+    let mut stage = Stage::clone(stage);
+    if let Some(anchor) = study.scheme.anchor() {
+        stage.driver.anchor = anchor;
+    }
+    Some(stage)
+}
+
 /// The map, and the stage at full supply where there is one.
 fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
     let scheme = &study.scheme;
-    let mut stage = match &study.hardware {
-        Hardware::Map(map) => {
-            return Ok((
-                straight(scheme, map)?.unwrap_or_else(|| Map::clone(map)),
-                None,
-            ));
-        }
-        Hardware::Stage(stage) => stage.clone(),
-    };
-    if let Some(anchor) = scheme.anchor() {
-        stage.driver.anchor = anchor;
+    if let Hardware::Map(map) = &study.hardware {
+        let own = straight(scheme, map)?;
+        return Ok((own.unwrap_or_else(|| Map::clone(map)), None));
     }
-    let stage = &*stage;
+    let stage = &stage_of(study).ok_or(StudyError::NoStage)?;
     let network = Network::new(stage)?;
     let map = match scheme.control() {
         Control::Supply => Sweep::full(&network, Control::Supply, MAP_POINTS)?,
@@ -514,7 +553,11 @@ fn largest_move(before: &Judgement, after: &Judgement) -> f64 {
     pairs.fold(0.0, f64::max)
 }
 
-fn metrics(study: &Study, run: &Run, judgement: &Judgement) -> Result<Metrics, StudyError> {
+pub(super) fn metrics(
+    study: &Study,
+    run: &Run,
+    judgement: &Judgement,
+) -> Result<Metrics, StudyError> {
     let acpr = if judgement.acpr.is_empty() {
         default_acpr(study, run)
     } else {
@@ -586,7 +629,7 @@ fn coarse_grid(result: &CheckResult) -> Option<Warning> {
     )
 }
 
-fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
+pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     let mut warnings = Vec::new();
     let RateFacts {
         factor,
@@ -637,7 +680,7 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
             });
         }
         let signal_s = 1.0 / result.signal.rate_hz;
-        if stage.settling_s > SLOW * signal_s {
+        if result.replay.is_none() && stage.settling_s > SLOW * signal_s {
             warnings.push(Warning::SlowStage {
                 settling_s: stage.settling_s,
                 signal_s,

@@ -10,8 +10,10 @@ use std::sync::atomic::{AtomicUsize, Ordering};
 use super::check::{Bench, Common};
 use super::error::StudyError;
 use super::load::Study;
+use super::replay::By;
 use super::result::CheckResult;
-use crate::drive::Inversion;
+use super::warning::Warning;
+use crate::drive::{Inversion, Scheme};
 use crate::signal::Source;
 
 /// Opens the signal of the study with this index.
@@ -103,6 +105,21 @@ pub fn compare(
     open: &OpenSignal<'_>,
     progress: &(dyn Fn(f64) + Sync),
 ) -> Result<Vec<Compared>, (usize, StudyError)> {
+    compare_by(studies, By::Map, threads, open, progress)
+}
+
+/// As [`compare`], with every stage replayed where `by` says so. The baseline `class_b` has no stage and stays by map,
+/// which its warnings say.
+///
+/// # Errors
+/// As [`compare`].
+pub fn compare_by(
+    studies: &[Study],
+    by: By,
+    threads: usize,
+    open: &OpenSignal<'_>,
+    progress: &(dyn Fn(f64) + Sync),
+) -> Result<Vec<Compared>, (usize, StudyError)> {
     let entries: Vec<Entry> = studies
         .iter()
         .enumerate()
@@ -148,7 +165,14 @@ pub fn compare(
     let numbered: Vec<_> = jobs.iter().enumerate().collect();
     let results = in_order(threads, &numbered, |(at, (entry, bench, front))| {
         let mut source = open(entry.scheme)?;
-        bench.check(front.clone(), &mut *source, &mut |part| told(*at, part))
+        let baseline = matches!(entry.study.scheme, Scheme::ClassB(_));
+        let own = if baseline { By::Map } else { by };
+        let mut tell = |part| told(*at, part);
+        let mut result = bench.check_by(front.clone(), &mut *source, own, 1, &mut tell)?;
+        if own != by {
+            result.warnings.push(Warning::OnlyByMap);
+        }
+        Ok(result)
     })
     .map_err(|(at, error)| (jobs[at].0.scheme, error))?;
     let compared = jobs

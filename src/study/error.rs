@@ -6,6 +6,7 @@ use crate::metrics::{PairError, SpectrumError, SymbolError, SyncError};
 use crate::orbit::{NetworkError, OrbitError};
 use crate::predistort::{FitError, TableError};
 use crate::signal::SignalError;
+use crate::transmit::ReplayError;
 
 /// The step that failed, with its own words.
 #[derive(Debug, thiserror::Error)]
@@ -22,6 +23,12 @@ pub enum StudyError {
     /// The stage has no orbit.
     #[error("the stage: {0}")]
     Orbit(#[from] OrbitError),
+    /// The stage or its track cannot be replayed.
+    #[error("the replay: {0}")]
+    Replay(#[from] ReplayError),
+    /// Only a stage can be replayed.
+    #[error("a replay needs a `stage`: this study has a map, which knows no memory. Use --by map")]
+    NoStage,
     /// The stage has no map.
     #[error("the stage: {0}")]
     Sweep(#[from] SweepError),

@@ -9,6 +9,7 @@ use crate::verdict::{Judgement, MaskMargin, Stress};
 
 use super::load::Study;
 use super::parts::EfficiencyParts;
+use super::replay::ReplayFacts;
 use super::warning::Warning;
 
 /// A study carried out.
@@ -48,6 +49,8 @@ pub struct CheckResult {
     pub symbols: Option<SymbolFigures>,
     /// A stretch of time around the deepest notch.
     pub notch: Notch,
+    /// The replay that gave all numbers, and what the map says in its place; absent where the map gave them.
+    pub replay: Option<Box<ReplayFacts>>,
     /// What limits how far this can be trusted.
     pub warnings: Vec<Warning>,
 }

@@ -11,14 +11,15 @@ use super::error::StudyError;
 use super::kept::{Kept, MOST, NotchWindow};
 use super::load::Study;
 use super::result::Notch;
-use crate::drive::{Correction, Track};
+use crate::drive::{Correction, Scheme, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
     Spectrum, SpectrumMeter, SpectrumPlan, SymbolFigures,
 };
+use crate::orbit::Network;
 use crate::signal::{Oversampled, Source};
-use crate::transmit::{Energy, MapTransmitter};
+use crate::transmit::{Energy, MapTransmitter, ReplayRequest, ReplayTransmitter};
 use crate::verdict::{Stress, Wanted};
 
 /// Samples a block of the chain.
@@ -49,6 +50,44 @@ pub struct Chain<'a> {
     pub evm_band_hz: f64,
     /// Samples of the signal at its own rate.
     pub signal_samples: u64,
+    /// The stage, where it is replayed; else the map stands for it.
+    pub replay: Option<Replayed<'a>>,
+}
+
+/// A stage that is replayed.
+#[derive(Debug, Clone, Copy)]
+pub struct Replayed<'a> {
+    pub network: &'a Network,
+    /// Segments at a time.
+    pub workers: usize,
+}
+
+/// Instants of a replay that are kept for the second pass: 64 MB. Longer ones are replayed again.
+const MOST_KEPT: u64 = 1 << 22;
+
+/// A replay against the map on the same track.
+#[derive(Debug, Clone, Copy)]
+pub struct AgainstMap {
+    pub alignment: Alignment,
+    pub errors: ErrorFigures,
+    /// Carrier cycles replayed.
+    pub cycles: u64,
+}
+
+/// What makes an output of a track.
+enum Transmitter<'a> {
+    Map(MapTransmitter<'a>),
+    Replay(Box<ReplayTransmitter<'a>>),
+    /// Outputs of a replay before.
+    Kept(&'a [Complex64]),
+}
+
+/// What a pass leaves.
+struct Passed {
+    energy: Energy,
+    held: u64,
+    stress: Option<Stress>,
+    cycles: u64,
 }
 
 /// What came out.
@@ -72,6 +111,8 @@ pub struct Run {
     pub notch: Notch,
     /// Errors of symbols, where the study states the signal's format.
     pub symbols: Option<SymbolFigures>,
+    /// The replay against the map, where there was one.
+    pub against_map: Option<AgainstMap>,
 }
 
 /// The instants of a block that count: start and end of the signal are left out.
@@ -80,6 +121,8 @@ struct Piece<'a> {
     first: u64,
     track: &'a Track,
     output_v: &'a [Complex64],
+    /// What the map makes of the same track, beside a replay; else empty.
+    by_map_v: &'a [Complex64],
     range: std::ops::Range<usize>,
 }
 
@@ -90,6 +133,10 @@ impl Piece<'_> {
 
     fn output_v(&self) -> &[Complex64] {
         &self.output_v[self.range.clone()]
+    }
+
+    fn by_map_v(&self) -> &[Complex64] {
+        self.by_map_v.get(self.range.clone()).unwrap_or(&[])
     }
 }
 
@@ -116,57 +163,118 @@ impl Chain<'_> {
         )
     }
 
-    /// Runs the chain once over the whole source and hands out what counts.
+    /// Runs the chain once over the whole source and hands out what counts. Outputs in `kept` are used in place of a
+    /// replay.
     fn pass(
         &self,
         source: &mut dyn Source,
+        kept: Option<&[Complex64]>,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
-    ) -> Result<(Energy, u64, Option<Stress>), StudyError> {
+    ) -> Result<Passed, StudyError> {
         let rate_hz = self.rate_hz(source);
         let (start, end) = self.span(rate_hz);
         let study = self.study;
         let full = study.full_control();
         let anchor = study.hardware.anchor();
-        let mut drive = study
-            .scheme
-            .drive(self.map, anchor, study.signal.level, full, rate_hz);
+        let scheme = match (&study.scheme, self.replay) {
+            // A replay places every edge itself.
+            (Scheme::Width(width), Some(_)) => Scheme::Width(width.without_timing()),
+            (scheme, _) => scheme.clone(),
+        };
+        let mut drive = scheme.drive(self.map, anchor, study.signal.level, full, rate_hz);
         if let Some(correction) = self.correction {
             drive = drive.corrected(correction, self.factor);
         }
-        let mut transmitter = MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
+        let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
+        let mut transmitter = match (self.replay, kept) {
+            (None, _) => Transmitter::Map(by_map()),
+            (Some(_), Some(kept)) => Transmitter::Kept(kept),
+            (Some(replay), None) => {
+                Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
+                    network: replay.network,
+                    scheme: &study.scheme,
+                    map: self.map,
+                    rate_hz,
+                    counted: (start, end),
+                    workers: replay.workers,
+                })?))
+            }
+        };
+        let mut beside = self.replay.map(|_| by_map());
         let mut oversampled = Oversampled::new(source, self.factor)?;
         let mut samples = vec![Complex64::ZERO; BLOCK];
-        let mut track = Track::default();
-        let mut output_v = Vec::with_capacity(BLOCK);
+        let (mut fresh, mut track) = (Track::default(), Track::default());
+        let (mut output_v, mut by_map_v) = (Vec::with_capacity(BLOCK), Vec::new());
         let mut first = 0u64;
-        loop {
+        let mut ended = false;
+        while !ended && first < end {
             let count = oversampled.read(&mut samples)?;
-            if count == 0 || first >= end {
-                break;
-            }
+            ended = count == 0;
+            fresh.clear();
             track.clear();
             output_v.clear();
-            drive.push(&samples[..count], &mut track);
-            let inside = |at: u64| (at.clamp(first, first + count as u64) - first) as usize;
+            by_map_v.clear();
+            drive.push(&samples[..count], &mut fresh);
+            match &mut transmitter {
+                Transmitter::Map(_) | Transmitter::Kept(_) => {
+                    std::mem::swap(&mut fresh, &mut track);
+                }
+                Transmitter::Replay(replay) if ended => {
+                    replay.finish(&mut track, &mut output_v)?;
+                }
+                Transmitter::Replay(replay) => {
+                    replay.push(&fresh, &mut track, &mut output_v)?;
+                }
+            }
+            let length = track.len();
+            let inside = |at: u64| (at.clamp(first, first + length as u64) - first) as usize;
             let range = inside(start)..inside(end);
-            transmitter.push(&track, range.clone(), &mut output_v);
+            match &mut transmitter {
+                Transmitter::Map(map) => map.push(&track, range.clone(), &mut output_v),
+                Transmitter::Kept(kept) => {
+                    let from = (first as usize).min(kept.len());
+                    output_v.extend_from_slice(&kept[from..(from + length).min(kept.len())]);
+                    // Only the very end can be missing, and it does not count.
+                    output_v.resize(length, Complex64::ZERO);
+                }
+                Transmitter::Replay(_) => {}
+            }
+            if let Some(map) = &mut beside {
+                map.push(&track, range.clone(), &mut by_map_v);
+            }
             if !range.is_empty() {
                 take(&Piece {
                     first,
                     track: &track,
                     output_v: &output_v,
+                    by_map_v: &by_map_v,
                     range,
                 })?;
             }
-            first += count as u64;
+            first += length as u64;
             tick(count as u64);
         }
-        let stress = self
-            .map
-            .stress_up_to(transmitter.highest_control())
-            .map(|(peak_v, peak_a)| Stress { peak_v, peak_a });
-        Ok((transmitter.energy(), transmitter.held(), stress))
+        let (energy, held, highest, cycles) = match &transmitter {
+            Transmitter::Map(map) => (map.energy(), map.held(), map.highest_control(), 0),
+            Transmitter::Replay(replay) => {
+                let held = beside.as_ref().map_or(0, MapTransmitter::held);
+                (
+                    replay.energy(),
+                    held,
+                    replay.highest_control(),
+                    replay.cycles(),
+                )
+            }
+            Transmitter::Kept(_) => (Energy::default(), 0, 0.0, 0),
+        };
+        let stress = self.map.stress_up_to(highest);
+        Ok(Passed {
+            energy,
+            held,
+            stress: stress.map(|(peak_v, peak_a)| Stress { peak_v, peak_a }),
+            cycles,
+        })
     }
 
     fn meters(&self, rate_hz: f64) -> Result<(SpectrumMeter, Vec<SpectrumMeter>), StudyError> {
@@ -210,8 +318,8 @@ impl Chain<'_> {
         let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
         let mut wanted_meter = output_meter.clone();
         let (start, end) = self.span(rate_hz);
-        let keeps = end.saturating_sub(start) <= MOST;
-        let mut kept = Kept {
+        let keeps = self.replay.is_none() && end.saturating_sub(start) <= MOST;
+        let mut streams = Kept {
             first: start,
             ..Kept::default()
         };
@@ -222,7 +330,20 @@ impl Chain<'_> {
         let mut density = vec![0u64; DENSITY_BINS];
         let full = self.study.full_control();
         let mut deepest = (f64::INFINITY, 0u64);
-        let (energy, held, stress) = self.pass(source, tick, |piece| {
+        let mut map_alignment = match self.replay {
+            Some(_) => Some(AlignmentMeter::new(rate_hz, search_s)?),
+            None => None,
+        };
+        let instants = self.signal_samples * self.factor as u64;
+        let mut kept = (self.replay.is_some() && instants <= MOST_KEPT).then(Vec::new);
+        let passed = self.pass(source, None, tick, |piece| {
+            if let Some(meter) = &mut map_alignment {
+                meter.push(piece.by_map_v(), piece.output_v())?;
+            }
+            if let Some(kept) = &mut kept {
+                kept.resize(piece.first as usize, Complex64::ZERO);
+                kept.extend_from_slice(piece.output_v);
+            }
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
                 meter.push(piece.output_v());
@@ -233,11 +354,14 @@ impl Chain<'_> {
             alignment.push(piece.wanted(), piece.output_v())?;
             if keeps {
                 let range = piece.range.clone();
-                kept.wanted.extend_from_slice(piece.wanted());
-                kept.output_v.extend_from_slice(piece.output_v());
-                kept.asked
+                streams.wanted.extend_from_slice(piece.wanted());
+                streams.output_v.extend_from_slice(piece.output_v());
+                streams
+                    .asked
                     .extend_from_slice(&piece.track.asked[range.clone()]);
-                kept.control.extend_from_slice(&piece.track.control[range]);
+                streams
+                    .control
+                    .extend_from_slice(&piece.track.control[range]);
             }
             for at in piece.range.clone() {
                 let fraction = piece.track.control[at] / full;
@@ -253,7 +377,12 @@ impl Chain<'_> {
         let output_envelope = output_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let wanted_envelope = wanted_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let alignment = alignment.finish()?;
+        let map_alignment = map_alignment.map(AlignmentMeter::finish).transpose()?;
 
+        let mut map_errors = match map_alignment {
+            Some(alignment) => Some(ErrorMeter::new(alignment, rate_hz, None)?),
+            None => None,
+        };
         let mut errors = ErrorMeter::new(alignment, rate_hz, Some(self.evm_band_hz))?;
         let mut collected = self
             .study
@@ -288,11 +417,14 @@ impl Chain<'_> {
                 output_v,
                 asked,
                 control,
-            } = &kept;
+            } = &streams;
             again(*first, wanted, output_v, asked, control)?;
             tick(self.signal_samples * self.factor as u64);
         } else {
-            self.pass(source, tick, |piece| {
+            self.pass(source, kept.as_deref(), tick, |piece| {
+                if let Some(meter) = &mut map_errors {
+                    meter.push(piece.by_map_v(), piece.output_v())?;
+                }
                 let range = piece.range.clone();
                 again(
                     piece.first + range.start as u64,
@@ -303,7 +435,7 @@ impl Chain<'_> {
                 )
             })?;
         }
-        drop(kept);
+        drop(streams);
 
         let total: u64 = density.iter().sum();
         let mut wanted_spectrum = wanted_meter.finish()?;
@@ -324,14 +456,22 @@ impl Chain<'_> {
             wanted_envelope,
             alignment,
             errors: errors.finish()?,
-            energy,
-            held: held as f64 / total.max(1) as f64,
-            stress,
+            energy: passed.energy,
+            held: passed.held as f64 / total.max(1) as f64,
+            stress: passed.stress,
             control_density: density
                 .iter()
                 .map(|&n| n as f64 / total.max(1) as f64)
                 .collect(),
             notch,
+            against_map: match (map_alignment, map_errors) {
+                (Some(alignment), Some(meter)) => Some(AgainstMap {
+                    alignment,
+                    errors: meter.finish()?,
+                    cycles: passed.cycles,
+                }),
+                _ => None,
+            },
             symbols: collected
                 .map(|collected| collected.finish(rate_hz / self.factor as f64))
                 .transpose()?,
