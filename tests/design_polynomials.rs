@@ -4,7 +4,9 @@
 use std::f64::consts::TAU;
 
 use quietedge::orbit::{Drive, Network, Orbit};
-use quietedge::stage::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use quietedge::stage::{
+    Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 
 const HERTZ: f64 = 1e6;
 

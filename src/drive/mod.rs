@@ -77,8 +77,8 @@ impl Track {
         self.control.clear();
         self.phase.clear();
         self.supply_v.clear();
-        self.parts.clear();
         self.branches.clear();
+        self.parts.clear();
     }
 
     /// Instants held.

@@ -83,8 +83,7 @@ pub fn check_by(
     progress: &mut dyn FnMut(f64),
 ) -> Result<CheckResult, StudyError> {
     let bench = Bench::new(study, source)?;
-    let front = bench.front()?;
-    bench.check_by(front, source, by, workers, progress)
+    bench.check_by(bench.front()?, source, by, workers, progress)
 }
 
 /// What stands in front of the scheme in one check.
@@ -271,7 +270,7 @@ impl<'a> Bench<'a> {
         Ok(self.verdict_of(&run))
     }
 
-    /// By map, by replay, or both.
+    /// As [`Bench::check`], or by replay, with `workers` segments at a time.
     pub(super) fn check_by(
         &self,
         front: Front,
@@ -286,6 +285,7 @@ impl<'a> Bench<'a> {
         }
     }
 
+    /// The study by map, at the factor of oversampling at which its margins stand still.
     pub(super) fn check(
         &self,
         front: Front,

@@ -4,7 +4,7 @@ use num_complex::Complex64;
 
 use super::result::Notch;
 
-/// Instants kept at most: 96 MB.
+/// Instants kept at most: 128 MB.
 pub(super) const MOST: u64 = 1 << 21;
 
 /// What the second pass needs of every instant that counts.
@@ -14,6 +14,8 @@ pub(super) struct Kept {
     pub first: u64,
     pub wanted: Vec<Complex64>,
     pub output_v: Vec<Complex64>,
+    /// What the map makes of the same track, beside a replay; else empty.
+    pub by_map_v: Vec<Complex64>,
     pub asked: Vec<f64>,
     pub control: Vec<f64>,
 }

@@ -187,8 +187,8 @@ pub(super) fn replayed(
         signal: by_map.signal,
         map: by_map.map,
         stage: by_map.stage,
-        stress: run.stress,
         table: by_map.table,
+        stress: run.stress,
     };
     result.warnings = warnings(&result, run.held);
     if let Some(facts) = &result.replay {

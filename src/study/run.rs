@@ -62,9 +62,6 @@ pub struct Replayed<'a> {
     pub workers: usize,
 }
 
-/// Instants of a replay that are kept for the second pass: 64 MB. Longer ones are replayed again.
-const MOST_KEPT: u64 = 1 << 22;
-
 /// A replay against the map on the same track.
 #[derive(Debug, Clone, Copy)]
 pub struct AgainstMap {
@@ -76,10 +73,8 @@ pub struct AgainstMap {
 
 /// What makes an output of a track.
 enum Transmitter<'a> {
-    Map(MapTransmitter<'a>),
+    Map(Box<MapTransmitter<'a>>),
     Replay(Box<ReplayTransmitter<'a>>),
-    /// Outputs of a replay before.
-    Kept(&'a [Complex64]),
 }
 
 /// What a pass leaves.
@@ -163,12 +158,10 @@ impl Chain<'_> {
         )
     }
 
-    /// Runs the chain once over the whole source and hands out what counts. Outputs in `kept` are used in place of a
-    /// replay.
+    /// Runs the chain once over the whole source and hands out what counts.
     fn pass(
         &self,
         source: &mut dyn Source,
-        kept: Option<&[Complex64]>,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
     ) -> Result<Passed, StudyError> {
@@ -187,19 +180,16 @@ impl Chain<'_> {
             drive = drive.corrected(correction, self.factor);
         }
         let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
-        let mut transmitter = match (self.replay, kept) {
-            (None, _) => Transmitter::Map(by_map()),
-            (Some(_), Some(kept)) => Transmitter::Kept(kept),
-            (Some(replay), None) => {
-                Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
-                    network: replay.network,
-                    scheme: &study.scheme,
-                    map: self.map,
-                    rate_hz,
-                    counted: (start, end),
-                    workers: replay.workers,
-                })?))
-            }
+        let mut transmitter = match self.replay {
+            None => Transmitter::Map(Box::new(by_map())),
+            Some(replay) => Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
+                network: replay.network,
+                scheme: &study.scheme,
+                map: self.map,
+                rate_hz,
+                counted: (start, end),
+                workers: replay.workers,
+            })?)),
         };
         let mut beside = self.replay.map(|_| by_map());
         let mut oversampled = Oversampled::new(source, self.factor)?;
@@ -217,7 +207,7 @@ impl Chain<'_> {
             by_map_v.clear();
             drive.push(&samples[..count], &mut fresh);
             match &mut transmitter {
-                Transmitter::Map(_) | Transmitter::Kept(_) => {
+                Transmitter::Map(_) => {
                     std::mem::swap(&mut fresh, &mut track);
                 }
                 Transmitter::Replay(replay) if ended => {
@@ -232,12 +222,6 @@ impl Chain<'_> {
             let range = inside(start)..inside(end);
             match &mut transmitter {
                 Transmitter::Map(map) => map.push(&track, range.clone(), &mut output_v),
-                Transmitter::Kept(kept) => {
-                    let from = (first as usize).min(kept.len());
-                    output_v.extend_from_slice(&kept[from..(from + length).min(kept.len())]);
-                    // Only the very end can be missing, and it does not count.
-                    output_v.resize(length, Complex64::ZERO);
-                }
                 Transmitter::Replay(_) => {}
             }
             if let Some(map) = &mut beside {
@@ -266,7 +250,6 @@ impl Chain<'_> {
                     replay.cycles(),
                 )
             }
-            Transmitter::Kept(_) => (Energy::default(), 0, 0.0, 0),
         };
         let stress = self.map.stress_up_to(highest);
         Ok(Passed {
@@ -318,8 +301,8 @@ impl Chain<'_> {
         let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
         let mut wanted_meter = output_meter.clone();
         let (start, end) = self.span(rate_hz);
-        let keeps = self.replay.is_none() && end.saturating_sub(start) <= MOST;
-        let mut streams = Kept {
+        let keeps = end.saturating_sub(start) <= MOST;
+        let mut kept = Kept {
             first: start,
             ..Kept::default()
         };
@@ -334,15 +317,9 @@ impl Chain<'_> {
             Some(_) => Some(AlignmentMeter::new(rate_hz, search_s)?),
             None => None,
         };
-        let instants = self.signal_samples * self.factor as u64;
-        let mut kept = (self.replay.is_some() && instants <= MOST_KEPT).then(Vec::new);
-        let passed = self.pass(source, None, tick, |piece| {
+        let passed = self.pass(source, tick, |piece| {
             if let Some(meter) = &mut map_alignment {
                 meter.push(piece.by_map_v(), piece.output_v())?;
-            }
-            if let Some(kept) = &mut kept {
-                kept.resize(piece.first as usize, Complex64::ZERO);
-                kept.extend_from_slice(piece.output_v);
             }
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
@@ -354,14 +331,12 @@ impl Chain<'_> {
             alignment.push(piece.wanted(), piece.output_v())?;
             if keeps {
                 let range = piece.range.clone();
-                streams.wanted.extend_from_slice(piece.wanted());
-                streams.output_v.extend_from_slice(piece.output_v());
-                streams
-                    .asked
+                kept.wanted.extend_from_slice(piece.wanted());
+                kept.output_v.extend_from_slice(piece.output_v());
+                kept.by_map_v.extend_from_slice(piece.by_map_v());
+                kept.asked
                     .extend_from_slice(&piece.track.asked[range.clone()]);
-                streams
-                    .control
-                    .extend_from_slice(&piece.track.control[range]);
+                kept.control.extend_from_slice(&piece.track.control[range]);
             }
             for at in piece.range.clone() {
                 let fraction = piece.track.control[at] / full;
@@ -400,9 +375,13 @@ impl Chain<'_> {
         let mut again = |first: u64,
                          wanted: &[Complex64],
                          output_v: &[Complex64],
+                         by_map_v: &[Complex64],
                          asked: &[f64],
                          control: &[f64]|
          -> Result<(), StudyError> {
+            if let Some(meter) = &mut map_errors {
+                meter.push(by_map_v, output_v)?;
+            }
             errors.push(wanted, output_v)?;
             if let Some(collected) = &mut collected {
                 collected.push(wanted, output_v);
@@ -415,27 +394,26 @@ impl Chain<'_> {
                 first,
                 wanted,
                 output_v,
+                by_map_v,
                 asked,
                 control,
-            } = &streams;
-            again(*first, wanted, output_v, asked, control)?;
+            } = &kept;
+            again(*first, wanted, output_v, by_map_v, asked, control)?;
             tick(self.signal_samples * self.factor as u64);
         } else {
-            self.pass(source, kept.as_deref(), tick, |piece| {
-                if let Some(meter) = &mut map_errors {
-                    meter.push(piece.by_map_v(), piece.output_v())?;
-                }
+            self.pass(source, tick, |piece| {
                 let range = piece.range.clone();
                 again(
                     piece.first + range.start as u64,
                     piece.wanted(),
                     piece.output_v(),
+                    piece.by_map_v(),
                     &piece.track.asked[range.clone()],
                     &piece.track.control[range],
                 )
             })?;
         }
-        drop(streams);
+        drop(kept);
 
         let total: u64 = density.iter().sum();
         let mut wanted_spectrum = wanted_meter.finish()?;
