@@ -17,6 +17,7 @@ use nalgebra::{DMatrix, DVector};
 use num_complex::Complex64;
 
 use super::circuit::Owner;
+use super::gating::GateRun;
 use super::network::{Drive, HARMONICS, OrbitError};
 use crate::math::flow::Flow;
 use crate::math::small::{Column, Square, dot};
@@ -80,6 +81,10 @@ pub trait LinearSolver: fmt::Debug + Send + Sync {
     /// What one period does to a deviation of the state from its orbit.
     fn period_map(&self, drive: &Drive) -> DMatrix<f64>;
     fn solve(&self, drive: &Drive) -> Result<UnitOrbit, OrbitError>;
+    /// What one period does to the state while the switch stays open.
+    fn open_map(&self) -> DMatrix<f64>;
+    /// From rest through `periods` of the drive, and on with the switch open; `None` with an ideal choke.
+    fn gate(&self, drive: &Drive, periods: [usize; 2]) -> Result<Option<GateRun>, OrbitError>;
     fn samples(&self, drive: &Drive, points: usize) -> Result<Vec<UnitSample>, OrbitError>;
 }
 
@@ -249,6 +254,29 @@ impl<const N: usize> Sized_<N> {
         })
     }
 
+    /// What an interval that starts from `start` adds to the fundamental's phasor, and to the mean supply current.
+    fn exposed(
+        &self,
+        position: &SizedPosition<N>,
+        flow: &Flow<N>,
+        from: f64,
+        start: &Column<N>,
+        end: &Column<N>,
+    ) -> (Complex64, f64) {
+        let to = from + flow.length();
+        let exposure = (Complex64::cis(-from) - Complex64::cis(-to)) / Complex64::I;
+        let (row, forced) = &position.harmonics[0];
+        let mut boundary = Complex64::ZERO;
+        for i in 0..self.states {
+            boundary += row[i] * (Complex64::cis(-to) * end[i] - Complex64::cis(-from) * start[i]);
+        }
+        let moment = flow.second_moment(start);
+        let current: f64 = (0..N)
+            .map(|i| position.supply[i] * moment.0[i][self.states])
+            .sum();
+        ((forced * exposure - boundary) / PI, current / TAU)
+    }
+
     /// Mean drain voltage over the period for a unit input.
     fn choke_scale(&self, moments: [&Square<N>; 2]) -> Result<f64, OrbitError> {
         let Some(ohm) = self.choke_ohm else {
@@ -283,6 +311,67 @@ impl<const N: usize> LinearSolver for Sized_<N> {
             column[j] = 1.0;
             open.end(&closed.end(&column))[i]
         })
+    }
+
+    fn open_map(&self) -> DMatrix<f64> {
+        let open = Flow::new(&self.open.generator, TAU, 0);
+        DMatrix::from_fn(self.states, self.states, |i, j| {
+            let mut column = [0.0; N];
+            column[j] = 1.0;
+            open.end(&column)[i]
+        })
+    }
+
+    fn gate(&self, drive: &Drive, periods: [usize; 2]) -> Result<Option<GateRun>, OrbitError> {
+        if self.choke_ohm.is_some() {
+            return Ok(None);
+        }
+        let cycle = self.cycle(drive)?;
+        let n = self.states;
+        let mut forced = [0.0; N];
+        for (entry, row) in forced.iter_mut().zip(&self.open.generator.0) {
+            *entry = row[n];
+        }
+        let mut rest = self
+            .open
+            .generator
+            .scaled(-1.0)
+            .solve_leading(n, &forced)
+            .ok_or(OrbitError::NeverSettles)?;
+        for entry in &mut rest[n..] {
+            *entry = 0.0;
+        }
+        rest[n] = 1.0;
+        let closing = drive.closing_rad;
+        let opening = closing + drive.width_rad;
+        let period = |start: &Column<N>| {
+            let middle = cycle.closed.end(start);
+            let end = cycle.open.end(&middle);
+            let first = self.exposed(&self.closed, &cycle.closed, closing, start, &middle);
+            let second = self.exposed(&self.open, &cycle.open, opening, &middle, &end);
+            ((first.0 + second.0, first.1 + second.1), end)
+        };
+        let mut state = rest;
+        let mut on = Vec::with_capacity(periods[0]);
+        for _ in 0..periods[0] {
+            let (figures, end) = period(&state);
+            on.push(figures);
+            state = end;
+        }
+        let open = Flow::new(&self.open.generator, TAU, 0);
+        let mut state = cycle.closing;
+        let mut off = Vec::with_capacity(periods[1]);
+        for _ in 0..periods[1] {
+            let end = open.end(&state);
+            off.push(self.exposed(&self.open, &open, closing, &state, &end));
+            state = end;
+        }
+        Ok(Some(GateRun {
+            on,
+            off,
+            rest: dot(&self.open.supply, &rest),
+            orbit: period(&cycle.closing).0,
+        }))
     }
 
     fn solve(&self, drive: &Drive) -> Result<UnitOrbit, OrbitError> {

@@ -13,6 +13,7 @@ mod engine;
 mod factors;
 mod figures;
 mod gather;
+mod gating;
 mod linear;
 mod network;
 mod period;
@@ -25,6 +26,7 @@ mod tracker;
 mod waveform;
 
 pub use balance::{Losses, Orbit};
+pub use gating::{Decay, Gating, TransitionArea};
 pub use network::{Drive, Network, NetworkError, OrbitError};
 pub use tracker::Tracker;
 pub use waveform::Waveform;

@@ -25,6 +25,8 @@ pub use predistort::{
     PolynomialResult, PredistortRequest, PredistortResult, Reserve, SearchEnd, SearchResult,
     SearchRow, Sweep, SweepQuantity, predistort,
 };
-pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
+pub use result::{
+    CheckResult, Convergence, GateTrain, Metrics, Notch, RateFacts, SignalFacts, StageFacts,
+};
 pub use scale::Scale;
 pub use warning::Warning;

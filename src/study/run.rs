@@ -9,14 +9,14 @@ use num_complex::Complex64;
 use super::collect::Collected;
 use super::error::StudyError;
 use super::load::Study;
-use super::result::Notch;
-use crate::drive::{Correction, Track};
+use super::result::{GateTrain, Notch};
+use crate::drive::{Correction, GateFigures, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
     Spectrum, SpectrumMeter, SpectrumPlan, SymbolFigures,
 };
-use crate::signal::{Oversampled, Source};
+use crate::signal::{Edge, Oversampled, Source};
 use crate::transmit::{Energy, MapTransmitter};
 use crate::verdict::{Stress, Wanted};
 
@@ -69,8 +69,18 @@ pub struct Run {
     pub stress: Option<Stress>,
     pub control_density: Vec<f64>,
     pub notch: Notch,
+    /// The pulses, of a scheme that gates the stage.
+    pub gate: Option<GateTrain>,
     /// Errors of symbols, where the study states the signal's format.
     pub symbols: Option<SymbolFigures>,
+}
+
+/// Sums over one pass.
+struct Passed {
+    energy: Energy,
+    held: u64,
+    stress: Option<Stress>,
+    gate: Option<GateFigures>,
 }
 
 /// The instants of a block that count: start and end of the signal are left out.
@@ -121,7 +131,7 @@ impl Chain<'_> {
         source: &mut dyn Source,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
-    ) -> Result<(Energy, u64, Option<Stress>), StudyError> {
+    ) -> Result<Passed, StudyError> {
         let rate_hz = self.rate_hz(source);
         let (start, end) = self.span(rate_hz);
         let study = self.study;
@@ -165,7 +175,12 @@ impl Chain<'_> {
             .map
             .stress_up_to(transmitter.highest_control())
             .map(|(peak_v, peak_a)| Stress { peak_v, peak_a });
-        Ok((transmitter.energy(), transmitter.held(), stress))
+        Ok(Passed {
+            energy: transmitter.energy(),
+            held: transmitter.held(),
+            stress,
+            gate: drive.gate_figures(),
+        })
     }
 
     fn meters(&self, rate_hz: f64) -> Result<(SpectrumMeter, Vec<SpectrumMeter>), StudyError> {
@@ -215,7 +230,10 @@ impl Chain<'_> {
         let mut density = vec![0u64; DENSITY_BINS];
         let full = self.study.full_control();
         let mut deepest = (f64::INFINITY, 0u64);
-        let (energy, held, stress) = self.pass(source, tick, |piece| {
+        let mut edges: Vec<Edge> = Vec::new();
+        let passed = self.pass(source, tick, |piece| {
+            let room = GateTrain::MOST - edges.len();
+            edges.extend(piece.track.gate.iter().take(room));
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
                 meter.push(piece.output_v());
@@ -235,6 +253,12 @@ impl Chain<'_> {
             }
             Ok(())
         })?;
+        let Passed {
+            energy,
+            held,
+            stress,
+            gate,
+        } = passed;
         let output_envelope = output_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let wanted_envelope = wanted_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let alignment = alignment.finish()?;
@@ -293,6 +317,7 @@ impl Chain<'_> {
                 .map(|&n| n as f64 / total.max(1) as f64)
                 .collect(),
             notch,
+            gate: gate.map(|figures| GateTrain { figures, edges }),
             symbols: collected
                 .map(|collected| collected.finish(rate_hz / self.factor as f64))
                 .transpose()?,

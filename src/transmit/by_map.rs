@@ -80,14 +80,24 @@ impl<'a> MapTransmitter<'a> {
                 (Some(supply_v), Some(fixed_v)) => supply_v / fixed_v,
                 _ => 1.0,
             };
-            let output = gain_v * phase * scale;
+            let output = match track.output_v.get(at) {
+                Some(output_v) => *output_v,
+                None => gain_v * phase * scale,
+            };
             output_v.push(output);
             if !counted.contains(&at) {
                 continue;
             }
-            self.held += u64::from(held);
+            self.held += u64::from(held && track.drawn.is_empty());
             self.highest_control = self.highest_control.max(control);
             self.energy.output_w += output.norm_sqr() / (2.0 * load_ohm);
+            if let Some(drawn) = track.drawn.get(at) {
+                self.energy.stage_w += drawn.stage_w;
+                self.energy.driver_w += drawn.driver_w;
+                self.energy.modulator_w +=
+                    drawn.stage_w / self.modulator.efficiency + self.modulator.idle_w;
+                continue;
+            }
             let supply_v = self
                 .fixed_v
                 .map_or(control, |fixed_v| fixed_v * scale * scale);
