@@ -156,10 +156,12 @@ impl BurstScheme {
     }
 
     pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
+        // Edges are exact at any rate: it only decides which lines are seen. The first ones of a ramp, and shaped noise to its
+        // clock, lie within the clean band.
         let per_second = match (self.sampling, &self.pulses) {
-            (Sampling::Natural | Sampling::Uniform, _) => 16.0 * self.rate_hz,
-            (Sampling::Shaped, _) => 8.0 * self.rate_hz,
-            (Sampling::File, Some(file)) => 8.0 * file.sequence.edges_per_s(),
+            (Sampling::Natural | Sampling::Uniform, _) => 4.0 * self.rate_hz,
+            (Sampling::Shaped, _) => 2.5 * self.rate_hz,
+            (Sampling::File, Some(file)) => 2.0 * file.sequence.edges_per_s(),
             (Sampling::File, None) => 0.0,
         };
         let width_hz = self.filter.map_or(0.0, |filter| filter.bandwidth_hz);
