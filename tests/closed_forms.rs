@@ -9,7 +9,9 @@ use std::f64::consts::{FRAC_PI_2, PI, TAU};
 
 use quietedge::map::{Control, Sweep};
 use quietedge::orbit::{Drive, Network};
-use quietedge::stage::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use quietedge::stage::{
+    Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use serde_json::Value;
 
 /// Asked for: four digits, 1e-4. What the extrapolation leaves is smaller: 7e-7 over all designs, of which the
@@ -53,6 +55,7 @@ impl Design {
                 open_ohm: f64::INFINITY,
                 knee: None,
                 diode: None,
+                arrangement: Arrangement::Single,
             },
             drain_f: self.wrc / angular_hz,
             drain_curve: None,
@@ -61,6 +64,7 @@ impl Design {
                 duty: self.duty,
                 anchor: Anchor::Centre,
                 gate: None,
+                dead_s: 0.0,
             },
             feed: self
                 .feed

@@ -5,7 +5,9 @@ use proptest::prelude::*;
 use quietedge::map::{Control, Map, MapFacts, MapFormat, Sweep, read_map};
 use quietedge::orbit::{Drive, Network, Orbit};
 use quietedge::report::documents::{map_csv, map_document};
-use quietedge::stage::{Anchor, Arm, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use quietedge::stage::{
+    Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use quietedge::units::{Dimension, parse, show};
 use std::f64::consts::TAU;
 
@@ -86,6 +88,7 @@ fn stage() -> impl Strategy<Value = Stage> {
                     open_ohm,
                     knee: None,
                     diode: None,
+                    arrangement: Arrangement::Single,
                 },
                 drain_f: 1.0 / drain,
                 drain_curve: None,
@@ -94,6 +97,7 @@ fn stage() -> impl Strategy<Value = Stage> {
                     duty,
                     anchor: Anchor::Centre,
                     gate: None,
+                    dead_s: 0.0,
                 },
                 feed,
                 ladder,
@@ -130,6 +134,7 @@ fn scaled(stage: &Stage, ohms: f64, times: f64) -> Stage {
             henry: henry * ohms / times,
             ohm: ohm * ohms,
         },
+        Feed::Direct => Feed::Direct,
         Feed::Choke { ohm } => Feed::Choke { ohm: ohm * ohms },
     };
     for part in other.ladder.iter_mut().flat_map(|rung| &mut rung.parts) {

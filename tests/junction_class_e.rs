@@ -14,7 +14,8 @@ use std::f64::consts::{PI, TAU};
 
 use quietedge::orbit::{Drive, Network};
 use quietedge::stage::{
-    Anchor, Arm, DrainCurve, Driver, Element, Feed, Junction, Load, Part, Rung, Stage, Switch,
+    Anchor, Arm, Arrangement, DrainCurve, Driver, Element, Feed, Junction, Load, Part, Rung, Stage,
+    Switch,
 };
 
 const POINTS: usize = 20_000;
@@ -79,6 +80,7 @@ fn design(phi: f64, loaded_q: f64) -> Design {
                 open_ohm: f64::INFINITY,
                 knee: None,
                 diode: None,
+                arrangement: Arrangement::Single,
             },
             drain_f: 0.0,
             drain_curve: Some(DrainCurve::Junction(Junction {
@@ -91,6 +93,7 @@ fn design(phi: f64, loaded_q: f64) -> Design {
                 duty: 0.5,
                 anchor: Anchor::Centre,
                 gate: None,
+                dead_s: 0.0,
             },
             feed: Feed::Choke { ohm: 0.0 },
             ladder: vec![

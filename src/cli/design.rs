@@ -9,7 +9,7 @@ use crate::input::{Files, Problem};
 use crate::orbit::{Drive, Network};
 use crate::report::design::{Rounded, design_document, design_text, series_word};
 use crate::report::stage::waveform_figure;
-use crate::stage::{Device, Stage, Switch, TABLE_NAME};
+use crate::stage::{Arrangement, Device, Stage, Switch, TABLE_NAME};
 use crate::units::Dimension;
 
 /// Design a class E stage for a power, solved with its losses, and write its stage file
@@ -278,6 +278,7 @@ impl Arguments {
                     open_ohm: self.open_resistance.unwrap_or(f64::INFINITY),
                     knee: None,
                     diode: None,
+                    arrangement: Arrangement::Single,
                 },
                 drain_f: self.device_capacitance,
                 drain_curve: None,

@@ -116,6 +116,7 @@ impl Parts {
                 duty: targets.duty,
                 anchor: Anchor::Centre,
                 gate: device.gate,
+                dead_s: 0.0,
             },
             feed: match self.feed_h {
                 Some(henry) => Feed::Inductor {

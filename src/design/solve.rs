@@ -488,7 +488,7 @@ fn best_effort(
 mod tests {
     use super::*;
     use crate::design::PartLosses;
-    use crate::stage::{Device, Switch};
+    use crate::stage::{Arrangement, Device, Switch};
 
     fn targets(choice: Choice) -> Targets {
         Targets {
@@ -506,6 +506,7 @@ mod tests {
                     open_ohm: f64::INFINITY,
                     knee: None,
                     diode: None,
+                    arrangement: Arrangement::Single,
                 },
                 drain_f: 20e-12,
                 drain_curve: None,

@@ -2,11 +2,8 @@
 
 use num_complex::Complex64;
 
-use super::figures::gate_charge_w;
-use super::linear::UnitOrbit;
+use super::linear::{UnitContact, UnitOrbit};
 use super::network::{Drive, HARMONICS, OrbitError};
-use crate::stage::Stage;
-
 /// The largest accepted energy residual, relative to the supply power. The model bank stays below 1e-9; what
 /// circulates in a resonator of loaded Q costs about Q^2 rounding errors: 3.4e-8 was seen at a loaded Q of 10,000.
 const BALANCE_TOLERANCE: f64 = 1e-6;
@@ -45,6 +42,36 @@ impl Losses {
     }
 }
 
+/// One of several switches.
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
+pub struct SwitchFigures {
+    /// `upper` and `lower` of a pair; `first` and `second` of two stages.
+    pub name: String,
+    /// Highest voltage across it, V.
+    pub peak_v: f64,
+    /// Lowest voltage across it, V; below zero a real device's diode would conduct.
+    pub min_v: f64,
+    /// Highest current, A.
+    pub peak_a: f64,
+    /// Lowest current, A; below zero it flows backwards.
+    pub min_a: f64,
+    /// Voltage across it just before it closes, V.
+    pub closing_v: f64,
+    /// Its slope at that instant, V/s.
+    pub closing_slope_v_per_s: f64,
+    /// Lost in it, closed and open, W.
+    pub lost_w: f64,
+}
+
+/// What takes an orbit at one volt to the stage's own units.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Scale {
+    pub load_ohm: f64,
+    pub frequency_hz: f64,
+    /// Power that the driver draws, W.
+    pub driver_w: f64,
+}
+
 /// The periodic steady state of a stage at one supply and one width.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Orbit {
@@ -68,18 +95,20 @@ pub struct Orbit {
     pub losses: Losses,
     /// Harmonics 2, 3, ... of the load voltage relative to the fundamental, dB.
     pub harmonics_dbc: [f64; HARMONICS - 1],
-    /// Highest drain voltage of the period, V.
+    /// Highest voltage across the switch, that of the drain, V; the highest of all where there are several.
     pub switch_peak_v: f64,
-    /// Lowest drain voltage of the period, V; below zero a real device's diode would conduct.
+    /// Lowest voltage across the switch, of all where there are several, V; below zero a real device's diode would conduct.
     pub switch_min_v: f64,
     /// Highest switch current, A.
     pub switch_peak_a: f64,
     /// Lowest switch current, A; below zero it flows backwards.
     pub switch_min_a: f64,
-    /// Drain voltage just before the switch closes, V.
+    /// Voltage across the switch just before it closes, V: of several the one furthest from zero.
     pub closing_v: f64,
     /// Its slope at that instant, V/s.
     pub closing_slope_v_per_s: f64,
+    /// Each switch by itself, where there are several.
+    pub switches: Vec<SwitchFigures>,
     /// How many times a period the diode begins to conduct.
     pub diode_conductions: usize,
     /// Charge that one period leaves on the drain, over the charge it moves on and off.
@@ -92,21 +121,48 @@ impl Orbit {
     /// The orbit at `supply_v` of a stage whose orbit at one volt is `unit`.
     pub(super) fn scaled(
         unit: &UnitOrbit,
-        stage: &Stage,
+        scale: &Scale,
         supply_v: f64,
         drive: &Drive,
+        names: &[String],
     ) -> Result<Self, OrbitError> {
-        let load_ohm = stage.load.ohm;
+        let Scale {
+            load_ohm,
+            frequency_hz,
+            driver_w,
+        } = *scale;
+        let turns = std::f64::consts::TAU * frequency_hz;
+        let switch = |(contact, name): (&UnitContact, &String)| SwitchFigures {
+            name: name.clone(),
+            peak_v: contact.across_max * supply_v,
+            min_v: contact.across_min * supply_v,
+            peak_a: contact.current_max * supply_v / load_ohm,
+            min_a: contact.current_min * supply_v / load_ohm,
+            closing_v: contact.closing * supply_v,
+            closing_slope_v_per_s: contact.closing_slope * supply_v * turns,
+            lost_w: (contact.closed_loss + contact.open_loss) * supply_v * supply_v / load_ohm,
+        };
+        let over = |value: fn(&UnitContact) -> f64| unit.contacts.iter().map(value);
+        let highest = |value| over(value).fold(f64::MIN, f64::max);
+        let lowest = |value| over(value).fold(f64::MAX, f64::min);
+        let (closed_loss, open_loss) = (
+            over(|contact| contact.closed_loss).sum::<f64>(),
+            over(|contact| contact.open_loss).sum::<f64>(),
+        );
+        let hardest = unit
+            .contacts
+            .iter()
+            .max_by(|a, b| a.closing.abs().total_cmp(&b.closing.abs()))
+            .unwrap_or(&UnitContact::UNSEEN);
         // Normalised powers are volts squared; divided by the load resistance they are watts.
         let watt = |unit_power: f64| unit_power * supply_v * supply_v / load_ohm;
         let output_v = unit.harmonics[0] * supply_v;
         let output_w = output_v.norm_sqr() / (2.0 * load_ohm);
         let supply_w = watt(unit.supply);
-        let driver_w = gate_charge_w(stage);
         let rungs: Vec<f64> = unit.rungs.iter().map(|&power| watt(power)).collect();
         let losses = Losses {
-            closed_switch: watt(unit.closed_switch),
-            open_switch: watt(unit.open_switch),
+            closed_switch: watt(closed_loss),
+            open_switch: watt(open_loss),
             diode: 0.0,
             feed: watt(unit.feed),
             ladder: rungs.iter().fold(0.0, |sum, loss| sum + loss),
@@ -116,8 +172,8 @@ impl Orbit {
         };
         // At zero supply nothing flows and nothing is left over.
         let unit_output = unit.harmonics[0].norm_sqr() / 2.0;
-        let unit_lost: f64 = unit.closed_switch
-            + unit.open_switch
+        let unit_lost: f64 = closed_loss
+            + open_loss
             + unit.feed
             + unit.rungs.iter().sum::<f64>()
             + (unit.load - unit_output);
@@ -143,15 +199,16 @@ impl Orbit {
             },
             losses,
             harmonics_dbc,
-            switch_peak_v: unit.drain_max * supply_v,
-            switch_min_v: unit.drain_min * supply_v,
-            switch_peak_a: unit.switch_max * supply_v / load_ohm,
-            switch_min_a: unit.switch_min * supply_v / load_ohm,
-            closing_v: unit.closing * supply_v,
-            closing_slope_v_per_s: unit.closing_slope
-                * supply_v
-                * std::f64::consts::TAU
-                * stage.frequency_hz,
+            switch_peak_v: highest(|contact| contact.across_max) * supply_v,
+            switch_min_v: lowest(|contact| contact.across_min) * supply_v,
+            switch_peak_a: highest(|contact| contact.current_max) * supply_v / load_ohm,
+            switch_min_a: lowest(|contact| contact.current_min) * supply_v / load_ohm,
+            closing_v: hardest.closing * supply_v,
+            closing_slope_v_per_s: hardest.closing_slope * supply_v * turns,
+            switches: match unit.contacts.len() {
+                0 | 1 => Vec::new(),
+                _ => unit.contacts.iter().zip(names).map(switch).collect(),
+            },
             diode_conductions: 0,
             // The state was found to return to itself to rounding.
             charge_residual: unit.period_miss,

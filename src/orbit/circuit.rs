@@ -6,7 +6,7 @@
 
 use std::f64::consts::TAU;
 
-use crate::stage::{Arm, Element, Feed, Part, Stage};
+use crate::stage::{Arm, Arrangement, Element, Feed, Load, Part, Rung, Stage};
 
 /// Node 0 is ground.
 pub const GROUND: usize = 0;
@@ -14,8 +14,8 @@ pub const GROUND: usize = 0;
 /// Whose losses a resistor counts to.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum Owner {
-    /// The switch, closed or open.
-    Switch,
+    /// The contact of this number, closed or open.
+    Contact(usize),
     /// The feed inductor.
     Feed,
     /// Rung of this number, from 0.
@@ -40,102 +40,217 @@ pub enum Normalised {
     Resistor(f64, Owner),
 }
 
-/// Where the power comes from.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Input {
-    /// A voltage source at this node.
-    Voltage(usize),
-    /// A constant current into this node: an ideal choke.
-    Current(usize),
+/// A voltage source: its node, and its voltage as a part of the supply.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Rail {
+    pub node: usize,
+    pub share: f64,
 }
 
-/// The stage without its switch.
+/// An ideal choke: the node that its constant current enters, its resistance, which stands in no branch, and the
+/// voltage that it hangs on as a part of the supply.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Choke {
+    pub node: usize,
+    pub ohm: f64,
+    pub share: f64,
+}
+
+/// Where the power comes from: one input for all rails, or one for each choke.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Input {
+    Voltage(Vec<Rail>),
+    Current(Vec<Choke>),
+}
+
+impl Input {
+    /// How many constants drive the network.
+    pub fn count(&self) -> usize {
+        match self {
+            Self::Voltage(_) => 1,
+            Self::Current(chokes) => chokes.len(),
+        }
+    }
+}
+
+/// The far end of a contact.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum End {
+    Ground,
+    /// The rail of this node.
+    Rail(Rail),
+}
+
+/// A switch at a leg.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Contact {
+    /// Index into the circuit's legs.
+    pub leg: usize,
+    pub end: End,
+    pub closed_ohm: f64,
+    /// None without leakage.
+    pub open_ohm: Option<f64>,
+}
+
+impl Contact {
+    /// Resistance of the contact in one of its positions; none where no current flows at all.
+    pub fn ohm(&self, closed: bool) -> Option<f64> {
+        if closed {
+            Some(self.closed_ohm)
+        } else {
+            self.open_ohm
+        }
+    }
+}
+
+/// The network with its switches beside it.
 #[derive(Debug, Clone, PartialEq)]
 pub struct Circuit {
     pub nodes: usize,
-    pub drain: usize,
+    /// The switched nodes: the drain of each stage.
+    pub legs: Vec<usize>,
+    pub contacts: Vec<Contact>,
     pub input: Input,
     pub branches: Vec<Branch>,
-    /// Feed resistance of an ideal choke, which stands in no branch.
-    pub choke_ohm: f64,
 }
 
 impl Circuit {
     /// The branches of `stage`.
     pub fn new(stage: &Stage) -> Self {
-        let mut builder = Builder {
+        let mut builder = Builder::new(TAU * stage.frequency_hz, stage.load.ohm);
+        let drain = builder.leg(stage, 1.0);
+        let end = builder.ladder(drain, GROUND, &stage.ladder, 0);
+        builder.load(end, GROUND, &stage.load);
+        builder.finish()
+    }
+}
+
+/// A circuit in the making.
+#[derive(Debug)]
+pub struct Builder {
+    angular_hz: f64,
+    load_ohm: f64,
+    nodes: usize,
+    legs: Vec<usize>,
+    contacts: Vec<Contact>,
+    rails: Vec<Rail>,
+    chokes: Vec<Choke>,
+    branches: Vec<Branch>,
+}
+
+impl Builder {
+    /// Nothing but ground; impedances will be divided by `load_ohm`.
+    pub fn new(angular_hz: f64, load_ohm: f64) -> Self {
+        Self {
+            angular_hz,
+            load_ohm,
             nodes: 1,
-            angular_hz: TAU * stage.frequency_hz,
-            load_ohm: stage.load.ohm,
+            legs: Vec::new(),
+            contacts: Vec::new(),
+            rails: Vec::new(),
+            chokes: Vec::new(),
             branches: Vec::new(),
-        };
-        let drain = builder.node();
-        builder.add(
+        }
+    }
+
+    pub fn finish(self) -> Circuit {
+        Circuit {
+            nodes: self.nodes,
+            legs: self.legs,
+            contacts: self.contacts,
+            input: if self.chokes.is_empty() {
+                Input::Voltage(self.rails)
+            } else {
+                Input::Current(self.chokes)
+            },
+            branches: self.branches,
+        }
+    }
+
+    /// Supply, feed, drain capacitance and switches of `stage`, at `share` of the supply. Returns its drain.
+    pub fn leg(&mut self, stage: &Stage, share: f64) -> usize {
+        let drain = self.node();
+        let leg = self.legs.len();
+        self.legs.push(drain);
+        self.add(
             drain,
             GROUND,
             Element::Capacitor(stage.drain_f),
-            Owner::Switch,
+            Owner::Contact(self.contacts.len()),
         );
-        let (input, choke_ohm) = match stage.feed {
+        match stage.feed {
             Feed::Inductor { henry, ohm } => {
-                let supply = builder.node();
+                let node = self.node();
+                self.rails.push(Rail { node, share });
                 let part = Part {
                     element: Element::Inductor(henry),
                     loss_ohm: ohm,
                 };
-                builder.chain(supply, drain, &[part], Owner::Feed);
-                (Input::Voltage(supply), 0.0)
+                self.chain(node, drain, &[part], Owner::Feed);
             }
-            Feed::Choke { ohm } => (Input::Current(drain), ohm / stage.load.ohm),
+            Feed::Choke { ohm } => self.chokes.push(Choke {
+                node: drain,
+                ohm: ohm / self.load_ohm,
+                share,
+            }),
+            Feed::Direct => {
+                let node = self.node();
+                self.rails.push(Rail { node, share });
+            }
+        }
+        let per_load = |ohm: f64| ohm.is_finite().then_some(ohm / self.load_ohm);
+        let contact = |end: End, closed_ohm: f64| Contact {
+            leg,
+            end,
+            closed_ohm: closed_ohm / self.load_ohm,
+            open_ohm: per_load(stage.switch.open_ohm),
         };
-        let mut through = drain;
-        for (index, rung) in stage.ladder.iter().enumerate() {
-            let owner = Owner::Rung(index);
+        let lower = contact(End::Ground, stage.switch.closed_ohm);
+        if let (Arrangement::Pair { upper_ohm }, Some(&rail)) =
+            (stage.switch.arrangement, self.rails.last())
+        {
+            let upper = contact(End::Rail(rail), upper_ohm);
+            self.contacts.push(upper);
+        }
+        self.contacts.push(lower);
+        drain
+    }
+
+    /// `rungs` from `from`, the shunt ones to `ground`, counted from `first`. Returns the far end.
+    pub fn ladder(&mut self, from: usize, ground: usize, rungs: &[Rung], first: usize) -> usize {
+        let mut through = from;
+        for (index, rung) in rungs.iter().enumerate() {
+            let owner = Owner::Rung(first + index);
             match rung.arm {
-                Arm::Shunt => builder.chain(through, GROUND, &rung.parts, owner),
+                Arm::Shunt => self.chain(through, ground, &rung.parts, owner),
                 Arm::Series => {
-                    let next = builder.node();
-                    builder.chain(through, next, &rung.parts, owner);
+                    let next = self.node();
+                    self.chain(through, next, &rung.parts, owner);
                     through = next;
                 }
                 Arm::Tank => {
-                    let next = builder.node();
+                    let next = self.node();
                     for part in &rung.parts {
-                        builder.chain(through, next, std::slice::from_ref(part), owner);
+                        self.chain(through, next, std::slice::from_ref(part), owner);
                     }
                     through = next;
                 }
             }
         }
-        if let Some(element) = stage.load.reactance {
-            let next = builder.node();
-            builder.add(through, next, element, Owner::Load);
+        through
+    }
+
+    /// The load between two nodes.
+    pub fn load(&mut self, from: usize, to: usize, load: &Load) {
+        let mut through = from;
+        if let Some(element) = load.reactance {
+            let next = self.node();
+            self.add(through, next, element, Owner::Load);
             through = next;
         }
-        builder.add(
-            through,
-            GROUND,
-            Element::Resistor(stage.load.ohm),
-            Owner::Load,
-        );
-        Self {
-            nodes: builder.nodes,
-            drain,
-            input,
-            branches: builder.branches,
-            choke_ohm,
-        }
+        self.add(through, to, Element::Resistor(load.ohm), Owner::Load);
     }
-}
 
-struct Builder {
-    nodes: usize,
-    angular_hz: f64,
-    load_ohm: f64,
-    branches: Vec<Branch>,
-}
-
-impl Builder {
     fn node(&mut self) -> usize {
         self.nodes += 1;
         self.nodes - 1
@@ -155,7 +270,7 @@ impl Builder {
     }
 
     /// `parts` with their loss resistances, all in series from `from` to `to`.
-    fn chain(&mut self, from: usize, to: usize, parts: &[Part], owner: Owner) {
+    pub fn chain(&mut self, from: usize, to: usize, parts: &[Part], owner: Owner) {
         let mut elements = Vec::new();
         for part in parts {
             elements.push(part.element);

@@ -259,6 +259,7 @@ impl Curved {
             drain_v: column(1, size),
             switch_a: column(2, size / stage.load.ohm),
             load_v: column(3, size),
+            others: Vec::new(),
         })
     }
 

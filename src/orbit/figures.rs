@@ -96,7 +96,7 @@ pub fn orbit(
     for (owner, ohm, current) in &port.resistors {
         let loss = watt(ohm * square(current));
         match owner {
-            Owner::Switch => {}
+            Owner::Contact(_) => {}
             Owner::Feed => losses.feed += loss,
             Owner::Rung(index) => losses.rungs[*index] += loss,
             Owner::Load => losses.harmonics += loss,
@@ -165,15 +165,17 @@ pub fn orbit(
         closing_v: end.v,
         closing_slope_v_per_s: slope * TAU * stage.frequency_hz,
         diode_conductions: sums.conductions,
+        switches: Vec::new(),
         charge_residual: sums.charge[0].abs() / sums.charge[1],
         energy_residual,
     }
     .balanced()
 }
 
-/// What the gate itself costs: its charge at the swing, each period.
+/// What the gate itself costs, or both of a pair: its charge at the swing, each period.
 pub fn gate_charge_w(stage: &Stage) -> f64 {
     stage.driver.gate.map_or(0.0, |gate| {
-        gate.charge_c * gate.swing_v * stage.frequency_hz
+        let gates = if stage.is_pair() { 2.0 } else { 1.0 };
+        gates * gate.charge_c * gate.swing_v * stage.frequency_hz
     })
 }

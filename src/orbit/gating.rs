@@ -14,7 +14,7 @@
 use nalgebra::DMatrix;
 use num_complex::Complex64;
 
-use super::network::{Drive, Model, Network, OrbitError, check};
+use super::network::{Drive, Model, Network, OrbitError, check, intervals};
 
 /// Left of a transition when it counts as over.
 const SETTLED: f64 = 1e-8;
@@ -126,10 +126,14 @@ impl Network {
     /// [`OrbitError`].
     pub fn gating(&self, supply_v: f64, drive: &Drive) -> Result<Option<Gating>, OrbitError> {
         check(supply_v, drive)?;
-        let Model::Linear(solver) = self.model() else {
+        let Model::Linear(linear) = self.model() else {
             return Ok(None);
         };
-        let (on_map, off_map) = (solver.period_map(drive), solver.open_map());
+        let schedule = intervals(self.stage(), drive)?;
+        let on_map = linear.solver.period_map(&schedule)?;
+        let Some(off_map) = linear.solver.open_map() else {
+            return Ok(None);
+        };
         let periods = |map: &DMatrix<f64>| {
             let radius = map
                 .complex_eigenvalues()
@@ -144,7 +148,7 @@ impl Network {
             }
         };
         let counts = [periods(&on_map), periods(&off_map)];
-        let Some(run) = solver.gate(drive, counts)? else {
+        let Some(run) = linear.solver.gate(&schedule, counts)? else {
             return Ok(None);
         };
         let stage = self.stage();

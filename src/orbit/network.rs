@@ -1,15 +1,13 @@
 //! A stage made ready to be solved again and again at different supplies and widths.
 
-use std::f64::consts::{PI, TAU};
-
-use nalgebra::DMatrix;
-use num_complex::Complex64;
+use std::f64::consts::TAU;
 
 use super::balance::Orbit;
-use super::circuit::{Circuit, Input, Owner};
+use super::circuit::Circuit;
 use super::curved::Curved;
-use super::linear::{self, LinearSolver, Position};
-use super::reduce::{Reduced, Subspace, without_idle};
+use super::equations::{Equations, contact_name};
+use super::linear::{self, LinearSolver};
+use super::schedule::{Interval, Span, schedule};
 use super::tracker::Tracker;
 use super::waveform::Waveform;
 use crate::stage::{Anchor, Driver, Stage};
@@ -36,11 +34,11 @@ pub enum NetworkError {
     },
     /// A lossless resonance exactly on a harmonic, which would never settle.
     #[error(
-        "with the switch {position} the network rings without loss exactly at harmonic {harmonic} of the carrier: give its parts a q"
+        "with {position} the network rings without loss exactly at harmonic {harmonic} of the carrier: give its parts a q"
     )]
     LosslessResonance {
-        /// `closed` or `open`.
-        position: &'static str,
+        /// In words, such as `the switch open`.
+        position: String,
         /// 1 is the carrier.
         harmonic: usize,
     },
@@ -64,6 +62,9 @@ pub enum OrbitError {
         "the stage has no unique periodic state: something in it never settles (a lossless resonance, or a blocked direct current)"
     )]
     NeverSettles,
+    /// The two switches of a pair overlap.
+    #[error("both switches of a pair would be closed at once")]
+    ShootThrough,
     /// Newton's method and every detour around it failed.
     #[error("no periodic state was found: the solution diverged from every start")]
     Diverged,
@@ -125,7 +126,71 @@ impl Drive {
     }
 }
 
-/// A stage's state equations for both positions of its switch.
+/// What the solver and its user need to know of a linear network.
+#[derive(Debug)]
+pub(super) struct Linear {
+    pub solver: Box<dyn LinearSolver>,
+    /// What the contacts are called, where there are several.
+    pub names: Vec<String>,
+}
+
+impl Linear {
+    /// Prepares `circuit`.
+    ///
+    /// # Errors
+    /// [`NetworkError`].
+    pub fn new(circuit: Circuit) -> Result<Self, NetworkError> {
+        let equations = Equations::new(circuit)?;
+        let too_large = NetworkError::TooLarge {
+            given: equations.states(),
+        };
+        let circuit = &equations.circuit;
+        Ok(Self {
+            solver: linear::solver(circuit, &equations.prepared()?).ok_or(too_large)?,
+            names: (0..circuit.contacts.len())
+                .map(|index| contact_name(circuit, index))
+                .collect(),
+        })
+    }
+}
+
+/// When each switch of `stage` is closed: that to the supply first where there are two.
+///
+/// # Errors
+/// [`OrbitError::OutOfRange`] where the dead time leaves a switch of a pair no time to be closed.
+pub(super) fn spans(stage: &Stage, drive: &Drive) -> Result<Vec<Span>, OrbitError> {
+    let whole = Span {
+        closing_rad: drive.closing_rad,
+        width_rad: drive.width_rad,
+    };
+    if !stage.is_pair() {
+        return Ok(vec![whole]);
+    }
+    let dead_rad = TAU * stage.frequency_hz * stage.driver.dead_s;
+    let pair = [
+        (drive.closing_rad, drive.width_rad),
+        (drive.closing_rad + drive.width_rad, TAU - drive.width_rad),
+    ];
+    let spans = pair.map(|(from, width)| Span {
+        closing_rad: from + 0.5 * dead_rad,
+        width_rad: width - dead_rad,
+    });
+    if spans.iter().any(|span| span.width_rad <= 0.0) {
+        return Err(OrbitError::OutOfRange {
+            what: "width",
+            given: drive.duty(),
+            allowed: "more than the dead time, and less than the period without it",
+        });
+    }
+    Ok(spans.to_vec())
+}
+
+/// The intervals of one period of a linear `stage`.
+pub(super) fn intervals(stage: &Stage, drive: &Drive) -> Result<Vec<Interval>, OrbitError> {
+    Ok(schedule(&spans(stage, drive)?))
+}
+
+/// A stage's state equations for every position of its switches.
 #[derive(Debug)]
 pub struct Network {
     stage: Stage,
@@ -135,7 +200,7 @@ pub struct Network {
 #[derive(Debug)]
 pub(super) enum Model {
     /// Linear between switching instants: solved exactly.
-    Linear(Box<dyn LinearSolver>),
+    Linear(Linear),
     /// Anything else about the drain: integrated.
     Curved(Curved),
 }
@@ -169,7 +234,7 @@ impl Network {
     /// Number of independent states.
     pub fn states(&self) -> usize {
         match &self.model {
-            Model::Linear(solver) => solver.states(),
+            Model::Linear(linear) => linear.solver.states(),
             Model::Curved(curved) => curved.states(),
         }
     }
@@ -204,7 +269,14 @@ impl Network {
     /// own supply; one without an orbit there never settles.
     pub fn settling_s(&self, drive: &Drive) -> f64 {
         let period_map = match &self.model {
-            Model::Linear(solver) => solver.period_map(drive),
+            Model::Linear(linear) => {
+                let found = intervals(&self.stage, drive)
+                    .and_then(|intervals| linear.solver.period_map(&intervals));
+                match found {
+                    Ok(map) => map,
+                    Err(_) => return f64::INFINITY,
+                }
+            }
             Model::Curved(curved) => {
                 let found = curved.engine(&self.stage, drive).and_then(|mut engine| {
                     let supply_v = self.stage.supply_v;
@@ -239,38 +311,25 @@ impl Network {
         check(supply_v, drive)?;
         let points = points.max(2);
         match &self.model {
-            Model::Linear(solver) => {
-                let samples = solver.samples(drive, points)?;
-                Ok(Waveform::scaled(&samples, &self.stage, supply_v, drive))
+            Model::Linear(linear) => {
+                let spans = spans(&self.stage, drive)?;
+                let samples = linear.solver.samples(&schedule(&spans), points)?;
+                Ok(Waveform::scaled(
+                    &samples,
+                    self.stage.period_s(),
+                    self.stage.load.ohm,
+                    supply_v,
+                    &spans,
+                    &linear.names,
+                ))
             }
             Model::Curved(curved) => curved.waveform(&self.stage, supply_v, drive, points),
         }
     }
 }
 
-fn linear_model(stage: &Stage) -> Result<Box<dyn LinearSolver>, NetworkError> {
-    let circuit = Circuit::new(stage);
-    let subspace = Subspace::of(&circuit).ok_or(NetworkError::Undetermined)?;
-    let per_load = |ohm: f64| ohm.is_finite().then_some(ohm / stage.load.ohm);
-    let equations = |ohm| {
-        subspace
-            .equations(&circuit, ohm)
-            .ok_or(NetworkError::Undetermined)
-    };
-    let closed = equations(per_load(stage.switch.closed_ohm))?;
-    let open = equations(per_load(stage.switch.open_ohm))?;
-    let [closed, open] = without_idle(closed, open)
-        .filter(|[closed, _]| closed.a.nrows() > 0)
-        .ok_or(NetworkError::Undetermined)?;
-    let positions = [position(&closed, "closed")?, position(&open, "open")?];
-    let choke_ohm = match circuit.input {
-        Input::Voltage(_) => None,
-        Input::Current(_) => Some(circuit.choke_ohm),
-    };
-    let switch_ohm = stage.switch.closed_ohm / stage.load.ohm;
-    let states = closed.a.nrows();
-    linear::solver(states, positions, choke_ohm, switch_ohm)
-        .ok_or(NetworkError::TooLarge { given: states })
+fn linear_model(stage: &Stage) -> Result<Linear, NetworkError> {
+    Linear::new(Circuit::new(stage))
 }
 
 pub(super) fn check(supply_v: f64, drive: &Drive) -> Result<(), OrbitError> {
@@ -292,67 +351,4 @@ pub(super) fn check(supply_v: f64, drive: &Drive) -> Result<(), OrbitError> {
         });
     }
     Ok(())
-}
-
-/// Everything about one switch position that does not depend on supply or width.
-fn position(reduced: &Reduced, name: &'static str) -> Result<Position, NetworkError> {
-    let load = reduced
-        .resistors
-        .iter()
-        .find(|(owner, ..)| *owner == Owner::Load)
-        .map(|(_, ohm, row)| row * *ohm)
-        .ok_or(NetworkError::Undetermined)?;
-    let states = reduced.a.nrows();
-    let mut harmonics = Vec::with_capacity(HARMONICS);
-    for harmonic in 1..=HARMONICS {
-        // r (jk - A) = load row: the transpose is solved for.
-        let order = Complex64::new(0.0, harmonic as f64);
-        let system = DMatrix::from_fn(states, states, |i, j| {
-            let diagonal = if i == j { order } else { Complex64::ZERO };
-            diagonal - reduced.a[(j, i)]
-        });
-        let right = load.rows(0, states).map(Complex64::from);
-        let size = right.amax_or_zero();
-        let row = system.lu().solve(&right).filter(|row| {
-            row.iter()
-                .all(|x| x.is_finite() && x.norm() < 1e12 * size.max(1e-30))
-        });
-        let row = row.ok_or(NetworkError::LosslessResonance {
-            position: name,
-            harmonic,
-        })?;
-        let forced: Complex64 = row
-            .iter()
-            .zip(reduced.b.iter())
-            .map(|(r, b)| r * b)
-            .sum::<Complex64>()
-            + load[states];
-        harmonics.push((row.iter().copied().collect(), forced));
-    }
-    let fastest = reduced
-        .a
-        .complex_eigenvalues()
-        .iter()
-        .map(|e| e.im.abs())
-        .fold(0.0, f64::max);
-    Ok(Position {
-        a: reduced.a.clone(),
-        b: reduced.b.clone(),
-        drain: reduced.drain.clone(),
-        load,
-        supply: reduced.supply.clone(),
-        resistors: reduced.resistors.clone(),
-        harmonics,
-        cycles: fastest * TAU / (2.0 * PI),
-    })
-}
-
-trait AmaxOrZero {
-    fn amax_or_zero(&self) -> f64;
-}
-
-impl AmaxOrZero for nalgebra::DVector<Complex64> {
-    fn amax_or_zero(&self) -> f64 {
-        self.iter().map(|x| x.norm()).fold(0.0, f64::max)
-    }
 }

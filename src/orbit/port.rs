@@ -18,7 +18,7 @@ use nalgebra::{DMatrix, DVector};
 use super::circuit::{Circuit, Input, Owner};
 use super::linear;
 use super::network::NetworkError;
-use super::reduce::{Subspace, without_idle};
+use super::reduce::{Contacts, Subspace, without_idle};
 use crate::stage::Stage;
 
 /// A quantity as a row over drain voltage, rest and input.
@@ -85,21 +85,21 @@ impl Port {
         stand_in.drain_f = charge.at(stage.supply_v).1;
         let circuit = Circuit::new(&stand_in);
         let subspace = Subspace::of(&circuit).ok_or(NetworkError::Undetermined)?;
-        let equations = |ohm| {
+        let equations = |contacts| {
             subspace
-                .equations(&circuit, ohm)
+                .equations(&circuit, contacts)
                 .ok_or(NetworkError::Undetermined)
         };
-        let closed = equations(Some(stage.switch.closed_ohm / stage.load.ohm))?;
-        let open = equations(None)?;
-        let [_, bare] = without_idle(closed, open).ok_or(NetworkError::Undetermined)?;
+        let both = vec![equations(Contacts::Absent)?, equations(Contacts::At(1))?];
+        let both = without_idle(both).ok_or(NetworkError::Undetermined)?;
+        let bare = both.first().ok_or(NetworkError::Undetermined)?;
         let states = bare.a.nrows();
         if states > linear::MAX_STATES || states == 0 {
             return Err(NetworkError::TooLarge { given: states });
         }
-        let e = bare.drain.rows(0, states).into_owned();
+        let e = bare.legs[0].rows(0, states).into_owned();
         let size = e.norm();
-        if !(size > 0.0 && size.is_finite()) || bare.drain[states].abs() > 1e-9 {
+        if !(size > 0.0 && size.is_finite()) || bare.legs[0][states].abs() > 1e-9 {
             return Err(NetworkError::Undetermined);
         }
         let turn = turned_to(&(&e / size));
@@ -127,10 +127,11 @@ impl Port {
             }
             resistors.push((*owner, *ohm, current));
         }
-        let (source, supply) = match circuit.input {
-            Input::Voltage(_) => (Source::Voltage, row(&bare.supply)),
-            Input::Current(_) => (Source::Choke(circuit.choke_ohm), row(&bare.supply)),
+        let source = match &circuit.input {
+            Input::Voltage(_) => Source::Voltage,
+            Input::Current(chokes) => Source::Choke(chokes.iter().map(|choke| choke.ohm).sum()),
         };
+        let supply = row(&bare.supply);
         Ok(Self {
             rest,
             alpha: a[(0, 0)] / (size * size),

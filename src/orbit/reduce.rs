@@ -12,7 +12,8 @@
 
 use nalgebra::{DMatrix, DVector};
 
-use super::circuit::{Branch, Circuit, GROUND, Input, Normalised, Owner};
+use super::circuit::{Branch, Circuit, End, GROUND, Input, Normalised, Owner};
+use super::schedule::Closed;
 
 /// Singular values below this fraction of the largest count as zero. The tableau's entries are at most
 /// one in magnitude, so rounding is near 1e-15.
@@ -27,17 +28,18 @@ const REFINEMENTS: usize = 2;
 pub struct Reduced {
     /// n x n
     pub a: DMatrix<f64>,
-    /// n
-    pub b: DVector<f64>,
-    /// Drain voltage, n + 1.
-    pub drain: DVector<f64>,
-    /// Current drawn from the supply, n + 1.
+    /// n x m, one column for each input.
+    pub b: DMatrix<f64>,
+    /// Voltage of each switched node, n + m.
+    pub legs: Vec<DVector<f64>>,
+    /// Power drawn from the supply over its voltage, n + m.
     pub supply: DVector<f64>,
-    /// Every resistor: owner, resistance, current row of n + 1.
+    /// Every resistor: owner, resistance, current row of n + m.
     pub resistors: Vec<(Owner, f64, DVector<f64>)>,
 }
 
-/// The constrained subspace of the states, the same in both positions of the switch.
+/// The constrained subspace of the states, the same in all positions of the switches: closing one puts a resistor
+/// beside the capacitance of its node and adds no constraint.
 #[derive(Debug, Clone)]
 pub struct Subspace {
     /// Constraint rows over the scaled states.
@@ -46,28 +48,47 @@ pub struct Subspace {
     basis: DMatrix<f64>,
 }
 
-/// The equations of one switch position before reduction.
+/// The equations of one position of the switches before reduction.
 struct Tableau {
     t: DMatrix<f64>,
     h: DMatrix<f64>,
-    g: DVector<f64>,
+    g: DMatrix<f64>,
     /// Scaled state derivatives as rows over `w`.
     derivative: DMatrix<f64>,
     node: Vec<Option<usize>>,
-    source: Option<usize>,
+    /// Currents out of the voltage sources, each with its part of the supply.
+    sources: Vec<(usize, f64)>,
     resistors: Vec<(Owner, f64, usize)>,
 }
 
+/// What the contacts of a circuit do.
+#[derive(Debug, Clone, Copy)]
+pub enum Contacts {
+    /// None of them is there.
+    Absent,
+    /// Each stands with its resistance, closed or open.
+    At(Closed),
+}
+
 impl Tableau {
-    fn new(circuit: &Circuit, switch_ohm: Option<f64>) -> Self {
+    fn new(circuit: &Circuit, contacts: Contacts) -> Self {
         let mut branches = circuit.branches.clone();
-        if let Some(ohm) = switch_ohm {
-            let element = Normalised::Resistor(ohm, Owner::Switch);
-            branches.push(Branch {
-                from: circuit.drain,
-                to: GROUND,
-                element,
-            });
+        if let Contacts::At(closed) = contacts {
+            for (index, contact) in circuit.contacts.iter().enumerate() {
+                if let Some(ohm) = contact.ohm(closed & (1 << index) != 0) {
+                    let leg = circuit.legs[contact.leg];
+                    // Current flows out of the rail into the leg, and out of the leg into ground.
+                    let (from, to) = match contact.end {
+                        End::Ground => (leg, GROUND),
+                        End::Rail(rail) => (rail.node, leg),
+                    };
+                    branches.push(Branch {
+                        from,
+                        to,
+                        element: Normalised::Resistor(ohm, Owner::Contact(index)),
+                    });
+                }
+            }
         }
         let voltages = circuit.nodes - 1;
         let own_current = |branch: &&Branch| !matches!(branch.element, Normalised::Inductor(_));
@@ -76,16 +97,19 @@ impl Tableau {
             .iter()
             .filter(|b| !matches!(b.element, Normalised::Resistor(..)))
             .count();
-        let with_source = matches!(circuit.input, Input::Voltage(_));
-        let size = voltages + currents + usize::from(with_source);
+        let rails: &[_] = match &circuit.input {
+            Input::Voltage(rails) => rails,
+            Input::Current(_) => &[],
+        };
+        let size = voltages + currents + rails.len();
 
         let mut tableau = Self {
             t: DMatrix::zeros(size, size),
             h: DMatrix::zeros(size, states),
-            g: DVector::zeros(size),
+            g: DMatrix::zeros(size, circuit.input.count()),
             derivative: DMatrix::zeros(states, size),
             node: (0..circuit.nodes).map(|node| node.checked_sub(1)).collect(),
-            source: with_source.then_some(size - 1),
+            sources: Vec::new(),
             resistors: Vec::new(),
         };
         let mut current = voltages;
@@ -129,14 +153,17 @@ impl Tableau {
                 }
             }
         }
-        match circuit.input {
-            Input::Voltage(node) => {
-                let node = node - 1;
-                tableau.t[(node, size - 1)] = -1.0;
-                tableau.t[(size - 1, node)] = 1.0;
-                tableau.g[size - 1] = 1.0;
+        for (at, rail) in (voltages + currents..).zip(rails) {
+            let node = rail.node - 1;
+            tableau.t[(node, at)] = -1.0;
+            tableau.t[(at, node)] = 1.0;
+            tableau.g[(at, 0)] = rail.share;
+            tableau.sources.push((at, rail.share));
+        }
+        if let Input::Current(chokes) = &circuit.input {
+            for (input, choke) in chokes.iter().enumerate() {
+                tableau.g[(choke.node - 1, input)] = 1.0;
             }
-            Input::Current(node) => tableau.g[node - 1] = 1.0,
         }
         tableau
     }
@@ -150,7 +177,7 @@ impl Tableau {
 impl Subspace {
     /// The subspace of `circuit`; `None` where the decomposition does not converge.
     pub fn of(circuit: &Circuit) -> Option<Self> {
-        let constraints = Tableau::new(circuit, None).constraints()?;
+        let constraints = Tableau::new(circuit, Contacts::Absent).constraints()?;
         let states = constraints.ncols();
         if constraints.nrows() == 0 {
             return Some(Self {
@@ -162,11 +189,10 @@ impl Subspace {
         Some(Self { constraints, basis })
     }
 
-    /// State equations with the switch at `switch_ohm` (`None`: open without leakage).
-    ///
-    /// `None` where the network has no unique solution.
-    pub fn equations(&self, circuit: &Circuit, switch_ohm: Option<f64>) -> Option<Reduced> {
-        let tableau = Tableau::new(circuit, switch_ohm);
+    /// State equations with the contacts as told. `None` where the network has no unique solution.
+    pub fn equations(&self, circuit: &Circuit, contacts: Contacts) -> Option<Reduced> {
+        let tableau = Tableau::new(circuit, contacts);
+        let inputs = circuit.input.count();
         let (size, extra) = (tableau.t.nrows(), self.constraints.nrows());
         let states = self.basis.ncols();
         let mut left = DMatrix::zeros(size + extra, size);
@@ -177,11 +203,13 @@ impl Subspace {
             left.row_mut(size + row)
                 .copy_from(&(rates.row(row) / scale));
         }
-        let mut right = DMatrix::zeros(size + extra, states + 1);
+        let mut right = DMatrix::zeros(size + extra, states + inputs);
         right
             .view_mut((0, 0), (size, states))
             .copy_from(&(&tableau.h * &self.basis));
-        right.view_mut((0, states), (size, 1)).copy_from(&tableau.g);
+        right
+            .view_mut((0, states), (size, inputs))
+            .copy_from(&tableau.g);
         let svd = left.clone().svd(true, true);
         let limit = RANK_TOLERANCE * svd.singular_values.max();
         if svd.singular_values.min() <= limit {
@@ -195,18 +223,23 @@ impl Subspace {
         }
         let rate = self.basis.transpose() * &tableau.derivative * &solution;
         let row = |index: usize| solution.row(index).transpose();
-        let supply = match tableau.source {
-            Some(source) => row(source),
-            None => {
-                let mut constant = DVector::zeros(states + 1);
-                constant[states] = 1.0;
-                constant
+        let mut supply = DVector::zeros(states + inputs);
+        match &circuit.input {
+            Input::Voltage(_) => {
+                for &(source, share) in &tableau.sources {
+                    supply += share * row(source);
+                }
             }
-        };
+            Input::Current(chokes) => {
+                for (input, choke) in chokes.iter().enumerate() {
+                    supply[states + input] = choke.share;
+                }
+            }
+        }
         Some(Reduced {
             a: rate.columns(0, states).into_owned(),
-            b: rate.column(states).into_owned(),
-            drain: row(circuit.drain - 1),
+            b: rate.columns(states, inputs).into_owned(),
+            legs: circuit.legs.iter().map(|leg| row(leg - 1)).collect(),
             supply,
             resistors: tableau
                 .resistors
@@ -217,36 +250,43 @@ impl Subspace {
     }
 }
 
-/// Takes out what never moves: a combination of states that neither position of the switch nor the input can
+/// Takes out what never moves: a combination of states that no position of the switches and no input can
 /// change, such as the charge trapped between two series capacitors with only coils between them. A stage that
 /// started from rest holds none of it; left in, it would make the periodic state ambiguous.
-pub fn without_idle(closed: Reduced, open: Reduced) -> Option<[Reduced; 2]> {
-    let states = open.a.nrows();
-    let idle = left_null(&joined(&open), RANK_TOLERANCE)?;
-    if idle.ncols() == 0 {
-        return Some([closed, open]);
+pub fn without_idle(positions: Vec<Reduced>) -> Option<Vec<Reduced>> {
+    let (first, others) = positions.split_first()?;
+    let states = first.a.nrows();
+    let mut idle = left_null(&joined(first), RANK_TOLERANCE)?;
+    for other in others {
+        if idle.ncols() == 0 {
+            break;
+        }
+        // Of these, the combinations that this position does not touch either.
+        let touched = idle.transpose() * joined(other);
+        idle = &idle * left_null(&touched, 1e-9)?;
     }
-    // Of these, the combinations that the closed switch does not touch either.
-    let touched = idle.transpose() * joined(&closed);
-    let idle = &idle * left_null(&touched, 1e-9)?;
     if idle.ncols() == 0 {
-        return Some([closed, open]);
+        return Some(positions);
     }
     // The states that are free to move: the null space of a square matrix that spans the idle ones.
     let basis = left_null(&(&idle * idle.transpose()), 1e-9)?;
-    let project = |reduced: Reduced| {
+    let kept = basis.ncols();
+    let project = |reduced: &Reduced| {
         let row = |row: &DVector<f64>| {
-            let mut short = DVector::zeros(basis.ncols() + 1);
+            let inputs = row.len() - states;
+            let mut short = DVector::zeros(kept + inputs);
             short
-                .rows_mut(0, basis.ncols())
+                .rows_mut(0, kept)
                 .copy_from(&(basis.transpose() * row.rows(0, states)));
-            short[basis.ncols()] = row[states];
+            short
+                .rows_mut(kept, inputs)
+                .copy_from(&row.rows(states, inputs));
             short
         };
         Reduced {
             a: basis.transpose() * &reduced.a * &basis,
             b: basis.transpose() * &reduced.b,
-            drain: row(&reduced.drain),
+            legs: reduced.legs.iter().map(row).collect(),
             supply: row(&reduced.supply),
             resistors: reduced
                 .resistors
@@ -255,14 +295,14 @@ pub fn without_idle(closed: Reduced, open: Reduced) -> Option<[Reduced; 2]> {
                 .collect(),
         }
     };
-    Some([project(closed), project(open)])
+    Some(positions.iter().map(project).collect())
 }
 
 fn joined(reduced: &Reduced) -> DMatrix<f64> {
-    let states = reduced.a.nrows();
-    let mut all = DMatrix::zeros(states, states + 1);
+    let (states, inputs) = reduced.b.shape();
+    let mut all = DMatrix::zeros(states, states + inputs);
     all.columns_mut(0, states).copy_from(&reduced.a);
-    all.set_column(states, &reduced.b);
+    all.columns_mut(states, inputs).copy_from(&reduced.b);
     all
 }
 

@@ -1,8 +1,9 @@
 //! Orbits one after another, each found from the last.
 
-use super::balance::Orbit;
+use super::balance::{Orbit, Scale};
 use super::engine::Engine;
-use super::network::{Drive, Model, Network, OrbitError, check};
+use super::figures::gate_charge_w;
+use super::network::{Drive, Model, Network, OrbitError, check, intervals};
 use super::period::{Scales, State};
 use super::shooting::Found;
 
@@ -34,9 +35,14 @@ impl<'a> Tracker<'a> {
         check(supply_v, drive)?;
         let stage = self.network.stage();
         let curved = match self.network.model() {
-            Model::Linear(solver) => {
-                let unit = solver.solve(drive)?;
-                return Orbit::scaled(&unit, stage, supply_v, drive);
+            Model::Linear(linear) => {
+                let unit = linear.solver.solve(&intervals(stage, drive)?)?;
+                let scale = Scale {
+                    load_ohm: stage.load.ohm,
+                    frequency_hz: stage.frequency_hz,
+                    driver_w: gate_charge_w(stage),
+                };
+                return Orbit::scaled(&unit, &scale, supply_v, drive, &linear.names);
             }
             Model::Curved(curved) => curved,
         };

@@ -157,6 +157,7 @@ pub fn check_document(result: &CheckResult) -> Value {
             "rate": table.lookup.rate(),
             "entries": table.counts(),
         })),
+        "gate": result.gate.as_ref().map(|train| train.figures),
         "warnings": result.warnings,
     })
 }

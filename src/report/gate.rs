@@ -12,7 +12,9 @@ const TICK_S: f64 = 1e-12;
 
 /// Edges as `time,level`: seconds from the signal's first sample, to the last digit.
 pub fn gate_csv(train: &GateTrain) -> String {
-    let mut text = String::from("# the gate's edges; time in seconds from the signal's first sample\ntime,level\n");
+    let mut text = String::from(
+        "# the gate's edges; time in seconds from the signal's first sample\ntime,level\n",
+    );
     for edge in train.edges.iter().filter(|edge| edge.time_s >= 0.0) {
         // Writing to a string cannot fail.
         let _ = writeln!(text, "{},{}", edge.time_s, edge.level);
@@ -27,7 +29,10 @@ pub fn gate_csv(train: &GateTrain) -> String {
 pub fn gate_vcd(train: &GateTrain) -> io::Result<Vec<u8>> {
     let mut bytes = Vec::new();
     let mut writer = vcd::Writer::new(&mut bytes);
-    let wire = train.edges.iter().all(|edge| edge.level == 0.0 || edge.level == 1.0);
+    let wire = train
+        .edges
+        .iter()
+        .all(|edge| edge.level == 0.0 || edge.level == 1.0);
     writer.comment("times rounded to 1 ps, from the signal's first sample")?;
     writer.timescale(1, TimescaleUnit::PS)?;
     writer.add_module("burst")?;

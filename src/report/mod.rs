@@ -16,6 +16,8 @@ pub mod design;
 pub mod documents;
 mod error;
 pub mod figures;
+pub mod gate;
+mod held;
 pub mod limits;
 pub mod measure;
 pub mod page;

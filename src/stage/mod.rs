@@ -60,6 +60,21 @@ pub struct Switch {
     pub knee: Option<Knee>,
     /// Conducts from ground to the drain.
     pub diode: Option<Diode>,
+    /// Alone, or with a second one to the supply.
+    pub arrangement: Arrangement,
+}
+
+/// How many switches stand at the drain.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub enum Arrangement {
+    /// One switch to ground: class E.
+    Single,
+    /// A second switch to the supply, closed while the pulse is high; the other is closed while it is low: class D,
+    /// voltage switching.
+    Pair {
+        /// Resistance of the closed switch to the supply, ohm.
+        upper_ohm: f64,
+    },
 }
 
 /// When the switch is closed.
@@ -71,6 +86,8 @@ pub struct Driver {
     pub anchor: Anchor,
     /// What the driver does to the gate, where it is told.
     pub gate: Option<Gate>,
+    /// How long both switches of a pair are open at each edge, centred on it, s; 0 elsewhere.
+    pub dead_s: f64,
 }
 
 /// From the supply to the drain.
@@ -88,6 +105,8 @@ pub enum Feed {
         /// ohm
         ohm: f64,
     },
+    /// Nothing: the upper switch of a pair stands at the supply.
+    Direct,
 }
 
 /// The end of the ladder.
@@ -103,6 +122,11 @@ impl Stage {
     /// One period of the carrier, s.
     pub fn period_s(&self) -> f64 {
         1.0 / self.frequency_hz
+    }
+
+    /// Whether it has a switch to ground and one to the supply.
+    pub fn is_pair(&self) -> bool {
+        matches!(self.switch.arrangement, Arrangement::Pair { .. })
     }
 
     /// Whether anything makes it more than linear between switching instants.

@@ -3,7 +3,9 @@
 use std::f64::consts::TAU;
 
 use super::read_device::{Drain, diode, drain, gate, knee};
-use super::{Anchor, Arm, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use super::{
+    Anchor, Arm, Arrangement, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::units::Dimension;
 
@@ -70,19 +72,31 @@ impl Stage {
         let (ladder, load) = load(&load_section, frequency_hz)?;
         load_section.finish()?;
 
+        let switch = switch(&root.section("switch")?)?;
+        let feed = match switch.arrangement {
+            Arrangement::Single => feed(&root.section("feed")?)?,
+            Arrangement::Pair { .. } if root.has("feed") => {
+                return Err(root.problem(
+                    "feed",
+                    "no [feed] with arrangement = \"pair\": its upper switch stands at the supply itself",
+                ));
+            }
+            Arrangement::Pair { .. } => Feed::Direct,
+        };
         let stage = Self {
             title,
             frequency_hz,
             supply_v,
-            switch: switch(&root.section("switch")?)?,
+            switch,
             drain_f: drain.farad,
             drain_curve: drain.curve,
             gate_coupling_f: drain.gate_coupling_f,
             driver: driver(root.maybe_section("driver")?)?,
-            feed: feed(&root.section("feed")?)?,
+            feed,
             ladder,
             load,
         };
+        stage.pair_fits(&root)?;
         if stage.gate_coupling_f > 0.0 && stage.driver.gate.is_none() {
             let section = root.section("drain")?;
             return Err(section.problem(
@@ -92,6 +106,49 @@ impl Stage {
         }
         root.finish()?;
         Ok(stage)
+    }
+}
+
+impl Stage {
+    /// Whether what only a single switch, or only a pair, can have stands in the right kind of stage.
+    fn pair_fits(&self, root: &Section<'_>) -> Result<(), Problem> {
+        if !self.is_pair() {
+            return match root.maybe_section("driver")? {
+                Some(driver) if driver.has("dead_time") => Err(driver.problem(
+                    "dead_time",
+                    "dead_time only with [switch] arrangement = \"pair\"",
+                )),
+                _ => Ok(()),
+            };
+        }
+        let (switch, drain) = (root.section("switch")?, root.section("drain")?);
+        let only_single = |section: &Section<'_>, key: &'static str| {
+            let what = format!("no {key} with arrangement = \"pair\": a pair is solved as linear");
+            Err(section.problem(key, what))
+        };
+        for key in ["diode", "knee"] {
+            if switch.has(key) {
+                return only_single(&switch, key);
+            }
+        }
+        for key in ["junction", "table", "gate_coupling"] {
+            if drain.has(key) {
+                return only_single(&drain, key);
+            }
+        }
+        let (period_s, dead_s) = (self.period_s(), self.driver.dead_s);
+        let shortest_s = self.driver.duty.min(1.0 - self.driver.duty) * period_s;
+        if dead_s >= shortest_s {
+            let driver = root.section("driver")?;
+            return Err(driver.problem(
+                "dead_time",
+                format!(
+                    "less than the shorter part of the pulse, {}",
+                    crate::units::show(shortest_s, "s", 4)
+                ),
+            ));
+        }
+        Ok(())
     }
 }
 
@@ -133,8 +190,13 @@ impl Device {
                 "gate_coupling only where [driver] has a swing with rise and fall",
             ));
         }
+        let section = root.section("switch")?;
+        let switch = switch(&section)?;
+        if switch.arrangement != Arrangement::Single {
+            return Err(section.problem("arrangement", "\"single\" for a device to design with"));
+        }
         let device = Self {
-            switch: switch(&root.section("switch")?)?,
+            switch,
             drain_f: drain.farad,
             drain_curve: drain.curve,
             gate_coupling_f: drain.gate_coupling_f,
@@ -154,6 +216,28 @@ fn switch(section: &Section<'_>) -> Result<Switch, Problem> {
     if open_ohm <= closed_ohm {
         return Err(section.problem("open_resistance", "more than closed_resistance"));
     }
+    let pair = section
+        .maybe_choice("arrangement", &[("single", false), ("pair", true)])?
+        .unwrap_or(false);
+    let upper =
+        section.maybe_quantity("upper_resistance", Dimension::Resistance, Range::Positive)?;
+    let arrangement = match (pair, upper) {
+        (false, Some(_)) => {
+            return Err(section.problem(
+                "upper_resistance",
+                "upper_resistance only with arrangement = \"pair\"",
+            ));
+        }
+        (false, None) => Arrangement::Single,
+        (true, upper) => Arrangement::Pair {
+            upper_ohm: upper.unwrap_or(closed_ohm),
+        },
+    };
+    if let Arrangement::Pair { upper_ohm } = arrangement
+        && open_ohm <= upper_ohm
+    {
+        return Err(section.problem("open_resistance", "more than upper_resistance"));
+    }
     let knee = knee(section)?;
     let diode = diode(section)?;
     section.finish()?;
@@ -162,6 +246,7 @@ fn switch(section: &Section<'_>) -> Result<Switch, Problem> {
         open_ohm,
         knee,
         diode,
+        arrangement,
     })
 }
 
@@ -170,6 +255,7 @@ fn driver(section: Option<Section<'_>>) -> Result<Driver, Problem> {
         duty: 0.5,
         anchor: Anchor::Centre,
         gate: None,
+        dead_s: 0.0,
     };
     if let Some(section) = section {
         driver.duty = section
@@ -179,6 +265,9 @@ fn driver(section: Option<Section<'_>>) -> Result<Driver, Problem> {
             .maybe_choice("anchor", &ANCHORS)?
             .unwrap_or(driver.anchor);
         driver.gate = gate(&section)?;
+        driver.dead_s = section
+            .maybe_quantity("dead_time", Dimension::Time, Range::NotNegative)?
+            .unwrap_or(0.0);
         section.finish()?;
     }
     Ok(driver)

@@ -3,7 +3,7 @@
 use std::f64::consts::TAU;
 use std::fmt::Write;
 
-use super::{Anchor, Arm, DrainCurve, Element, Feed, Part, Rung, Stage};
+use super::{Anchor, Arm, Arrangement, DrainCurve, Element, Feed, Part, Rung, Stage};
 use crate::units::show;
 
 /// Digits that bring every part back to a relative 1e-12.
@@ -59,6 +59,12 @@ impl Stage {
                 quoted(self.switch.open_ohm, "ohm")
             ));
         }
+        if let Arrangement::Pair { upper_ohm } = self.switch.arrangement {
+            let upper = quoted(upper_ohm, "ohm");
+            line(format!(
+                "arrangement = \"pair\"\nupper_resistance = {upper}"
+            ));
+        }
         if let Some(knee) = self.switch.knee {
             let current = quoted(knee.current_a, "A");
             line(format!(
@@ -105,18 +111,26 @@ impl Stage {
             line(format!("fall = {}", quoted(gate.fall_s, "s")));
             line(format!("gate_charge = {}", quoted(gate.charge_c, "C")));
         }
-        line("\n[feed]".to_owned());
+        if self.is_pair() {
+            line(format!("dead_time = {}", quoted(self.driver.dead_s, "s")));
+        }
+        if self.feed != Feed::Direct {
+            line("\n[feed]".to_owned());
+        }
         let ohm = match self.feed {
+            Feed::Direct => None,
             Feed::Inductor { henry, ohm } => {
                 line(format!("inductance = {}", quoted(henry, "H")));
-                ohm
+                Some(ohm)
             }
             Feed::Choke { ohm } => {
                 line("choke = true".to_owned());
-                ohm
+                Some(ohm)
             }
         };
-        line(format!("resistance = {}", quoted(ohm, "ohm")));
+        if let Some(ohm) = ohm {
+            line(format!("resistance = {}", quoted(ohm, "ohm")));
+        }
         line(format!(
             "\n[load]\nresistance = {}",
             quoted(self.load.ohm, "ohm")
@@ -184,6 +198,27 @@ fn rung_text(rung: &Rung, angular_hz: f64) -> String {
 #[cfg(test)]
 mod tests {
     use super::*;
+
+    #[test]
+    fn a_pair_reads_back_to_the_same_stage() {
+        let text = r#"
+            frequency = "3.5 MHz"
+            supply = { voltage = "24 V" }
+            switch = { arrangement = "pair", closed_resistance = "0.12 ohm", upper_resistance = "0.2 ohm" }
+            drain = { capacitance = "90 pF" }
+            driver = { duty = 0.45, dead_time = "4 ns", swing = "5 V", rise = "1 ns", gate_charge = "2 nC" }
+            load = { resistance = "12 ohm" }
+        "#;
+        let stage = Stage::parse("a", text).unwrap_or_else(|problem| panic!("{problem}"));
+        let again = Stage::parse("a", &stage.to_toml(&[])).unwrap_or_else(|p| panic!("{p}"));
+        assert_eq!(again, stage);
+        assert_eq!(stage.feed, Feed::Direct);
+        assert_eq!(
+            stage.switch.arrangement,
+            Arrangement::Pair { upper_ohm: 0.2 }
+        );
+        assert!((stage.driver.dead_s - 4e-9).abs() < 1e-20);
+    }
 
     #[test]
     fn reads_back_to_the_same_stage() {

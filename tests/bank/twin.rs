@@ -326,11 +326,11 @@ pub fn twin(stage: &Stage, supply_v: f64, drive: &Drive) -> Twin {
         let (sums, unit) = settle(stage, drive, steps, &mut state);
         // A choke's ampere becomes what its mean drain voltage allows.
         let scale = match stage.feed {
-            Feed::Inductor { .. } => supply_v,
+            Feed::Inductor { .. } | Feed::Direct => supply_v,
             Feed::Choke { ohm } => supply_v / (sums.drain_v + ohm),
         };
         let feed_w = match stage.feed {
-            Feed::Inductor { .. } => 0.0,
+            Feed::Inductor { .. } | Feed::Direct => 0.0,
             Feed::Choke { ohm } => ohm * scale * scale,
         };
         Twin {
