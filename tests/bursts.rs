@@ -2,13 +2,21 @@
 
 use std::f64::consts::{PI, TAU};
 
+use std::io::{self, Cursor};
+use std::sync::Arc;
+
 use num_complex::Complex64;
+use proptest::prelude::*;
 use quietedge::drive::{
-    BandFilter, BandShape, BurstScheme, MovedEdges, PhasePath, Sampling, Scheme, StopBand, Track,
-    Updates,
+    BandFilter, BandShape, BurstScheme, GateFigures, MovedEdges, PhasePath, PulseFile,
+    PulseSequence, Sampling, Scheme, StopBand, Track, Updates,
 };
+use quietedge::input::{Files, ReadSeek};
 use quietedge::map::{Control, Map, MapPoint, Origin};
+use quietedge::report::gate::{gate_csv, gate_vcd};
+use quietedge::signal::{PulseOptions, SignalError, read_edges};
 use quietedge::stage::Anchor;
+use quietedge::study::GateTrain;
 use quietedge::transmit::MapTransmitter;
 
 const RATE_HZ: f64 = 1e6;
@@ -94,8 +102,7 @@ fn bessel(n: i32, x: f64) -> f64 {
 
 #[test]
 fn the_bessel_function_is_the_tabulated_one() {
-    // scipy 1.17.1, scipy.special.jv: jv(0, 2.5) = -0.048383776468197996, jv(3, 4.2) = 0.43439427638720134 (recomputed
-    // by tests/reference/bursts.py).
+    // scipy 1.17.1, scipy.special.jv: jv(0, 2.5) = -0.04838377646819792, jv(3, 4.2) = 0.4343942763872008.
     assert!((bessel(0, 2.5) + 0.048_383_776_468_197_996).abs() < 1e-14);
     assert!((bessel(3, 4.2) - 0.434_394_276_387_200_7).abs() < 1e-12);
 }
@@ -398,5 +405,218 @@ fn a_grid_and_a_shortest_pulse_are_kept() {
     for edge in &self::track(&fine, &map, &tone(0.5, 0.499), RATE_HZ).gate {
         let steps = edge.time_s / 0.3e-6;
         assert!((steps - steps.round()).abs() < 1e-6, "{steps}");
+    }
+}
+
+/// One file in memory.
+struct One(&'static str, Vec<u8>);
+
+impl Files for One {
+    fn open(&self, name: &str) -> io::Result<Box<dyn ReadSeek>> {
+        if name == self.0 {
+            return Ok(Box::new(Cursor::new(self.1.clone())));
+        }
+        Err(io::Error::from(io::ErrorKind::NotFound))
+    }
+}
+
+fn of_signal(signal: &str) -> PulseOptions {
+    PulseOptions {
+        signal: Some(signal.to_owned()),
+        ..PulseOptions::default()
+    }
+}
+
+const DUMP: &[u8] = include_bytes!("reference/gate_dump.vcd");
+
+/// What a dump is refused with.
+fn refusal(text: &[u8], signal: &str) -> String {
+    let files = One("x.vcd", text.to_vec());
+    let error: SignalError = read_edges(&files, "x.vcd", &of_signal(signal)).unwrap_err();
+    error.to_string()
+}
+
+#[test]
+fn a_dump_of_a_simulator_is_read() {
+    // Icarus Verilog 11.0 on tests/reference/gate_dump.v; the events as a script of its own reads them from the text
+    // (tests/reference/gate_dump.py): 32 known values of the gate, the first ones and the last ones in picoseconds.
+    let files = One("x.vcd", DUMP.to_vec());
+    for name in ["bench.shaper.gate", "bench.gate", "shaper.gate", "gate"] {
+        let list = read_edges(&files, "x.vcd", &of_signal(name)).unwrap();
+        assert_eq!(list.edges.len(), 32);
+        let near = |at: usize, ps: f64, level: f64| {
+            let edge = list.edges[at];
+            assert!(
+                (edge.time_s - ps * 1e-12).abs() < 1e-18 && edge.level == level,
+                "{edge:?}"
+            );
+        };
+        near(0, 150_000.0, 0.0);
+        near(1, 550_000.0, 1.0);
+        near(2, 650_000.0, 0.0);
+        near(30, 5_950_000.0, 0.0);
+        near(31, 6_050_000.0, 1.0);
+        assert!((list.end_s.unwrap() - 6.22e-6).abs() < 1e-15);
+    }
+    // A vector over its largest number, or over what is stated; a real as it is.
+    let wanted = read_edges(&files, "x.vcd", &of_signal("bench.wanted")).unwrap();
+    let levels: Vec<f64> = wanted.edges.iter().map(|edge| edge.level).collect();
+    assert_eq!(levels, [77.0 / 255.0, 200.0 / 255.0]);
+    assert!((wanted.edges[1].time_s - 3.22e-6).abs() < 1e-15);
+    let mut scaled = of_signal("bench.wanted");
+    scaled.full_scale = Some(256.0);
+    assert_eq!(
+        read_edges(&files, "x.vcd", &scaled).unwrap().edges[0].level,
+        77.0 / 256.0
+    );
+    scaled.threshold = Some(0.5);
+    let split = read_edges(&files, "x.vcd", &scaled).unwrap();
+    assert_eq!(
+        split.edges.iter().map(|e| e.level).collect::<Vec<_>>(),
+        [0.0, 1.0]
+    );
+    let level = read_edges(&files, "x.vcd", &of_signal("level")).unwrap();
+    assert!(
+        level
+            .edges
+            .iter()
+            .all(|edge| edge.level == 0.0 || edge.level == 0.5)
+    );
+}
+
+#[test]
+fn wrong_dumps_are_refused_with_their_place() {
+    let head = "$timescale 1 ns $end\n$scope module a $end\n$var wire 1 ! g $end\n$var wire 1 \" h $end\n$upscope $end\n$enddefinitions $end\n";
+    let with = |body: &str| format!("{head}{body}").into_bytes();
+    for (text, signal, parts) in [
+        (with("#5\n1!\n#4\n0!\n"), "g", ["x.vcd:9", "time 4 after 5"]),
+        (
+            with("#5\n1!\n#6\nx!\n"),
+            "g",
+            ["x.vcd:10", "unknown value (x or z) of a.g"],
+        ),
+        (with("#5\n1!\n#6\n7!\n"), "g", ["x.vcd:10", "IEEE 1364"]),
+        (with("#5\n1!\n"), "i", ["signal \"i\"", "one of a.g, a.h"]),
+        (with("#5\n1!\n"), "h", ["no known value of a.h", "changes"]),
+        (with("#5\nb1"), "g", ["x.vcd:9", "end of VCD file"]),
+        (
+            b"$scope module a $end\n".to_vec(),
+            "g",
+            ["x.vcd", "within the header"],
+        ),
+        (
+            b"$var wire 1 ! g $end\n$enddefinitions $end\n#1\n1!\n".to_vec(),
+            "g",
+            ["time unit", "$timescale"],
+        ),
+        (
+            b"$timescale 3 ns $end\n".to_vec(),
+            "g",
+            ["time unit of 3", "1, 10 or 100"],
+        ),
+        (
+            "$scope module a $end\n".repeat(200_000).into_bytes(),
+            "g",
+            ["x.vcd:1001", "scopes within scopes"],
+        ),
+        (
+            format!("$comment {} $end\n", "x".repeat(3 << 20)).into_bytes(),
+            "g",
+            ["x.vcd:1", "more than 1048576 bytes"],
+        ),
+    ] {
+        let message = refusal(&text, signal);
+        for part in parts {
+            assert!(message.contains(part), "{part} is not in: {message}");
+        }
+    }
+    // Without a choice the only signal is meant.
+    let files = One("x.vcd", with("#5\n1!\n"));
+    let error = read_edges(&files, "x.vcd", &PulseOptions::default()).unwrap_err();
+    assert!(
+        error.to_string().contains("signal = one of a.g, a.h"),
+        "{error}"
+    );
+    // Levels out of range, in any format.
+    let files = One("x.csv", b"time,level\n0,0\n1e-6,1.5\n".to_vec());
+    let error = read_edges(&files, "x.csv", &PulseOptions::default()).unwrap_err();
+    assert!(
+        error
+            .to_string()
+            .contains("a level of 1.5 at 0.000001 s (edge 1"),
+        "{error}"
+    );
+}
+
+proptest! {
+    #![proptest_config(ProptestConfig::with_cases(600))]
+
+    /// A dump with bytes changed, left out or cut off is read or refused, and what is read is in order.
+    #[test]
+    fn spoilt_dumps_never_panic(
+        changes in prop::collection::vec((0usize..4453, any::<u8>(), 0u8..3), 1..8),
+        cut in 1usize..4454,
+    ) {
+        let mut bytes = DUMP.to_vec();
+        for (at, byte, how) in changes {
+            let at = at.min(bytes.len() - 1);
+            match how {
+                0 => bytes[at] = byte,
+                1 => { bytes.remove(at); }
+                _ => bytes.insert(at, byte),
+            }
+        }
+        bytes.truncate(cut);
+        let files = One("x.vcd", bytes);
+        for signal in ["bench.gate", "bench.wanted", "bench.level"] {
+            if let Ok(list) = read_edges(&files, "x.vcd", &of_signal(signal)) {
+                prop_assert!(list.edges.is_sorted_by(|a, b| a.time_s < b.time_s));
+                prop_assert!(list.edges.iter().all(|e| (0.0..=1.0).contains(&e.level)));
+            }
+        }
+    }
+}
+
+#[test]
+fn a_gate_that_was_written_gates_the_same() {
+    let map = map();
+    let samples = tone(0.53, 0.4);
+    for levels in [2, 3] {
+        let mut made = scheme(Sampling::Natural, MovedEdges::Two);
+        made.levels = levels;
+        let own = track(&made, &map, &samples, RATE_HZ);
+        let train = GateTrain {
+            figures: GateFigures::default(),
+            edges: own.gate.clone(),
+        };
+        let written = [
+            ("x.csv", gate_csv(&train).into_bytes(), 1e-9),
+            // A picosecond of a microsecond's instant, at both edges.
+            ("x.vcd", gate_vcd(&train).unwrap(), 8.0 * 2e-6),
+        ];
+        for (name, bytes, tolerance) in written {
+            let list = read_edges(&One(name, bytes), name, &PulseOptions::default()).unwrap();
+            let mut read = scheme(Sampling::File, MovedEdges::Two);
+            read.pulses = Some(PulseFile {
+                file: name.to_owned(),
+                start_s: 0.0,
+                options: PulseOptions::default(),
+                sequence: Arc::new(PulseSequence {
+                    end_s: list.edges.last().unwrap().time_s,
+                    edges: list.edges,
+                }),
+            });
+            let again = track(&read, &map, &samples, RATE_HZ);
+            // The last edges of the one are made from magnitudes that the other does not see.
+            for (n, (a, b)) in own
+                .output_v
+                .iter()
+                .zip(&again.output_v)
+                .enumerate()
+                .take(24_900)
+            {
+                assert!((a - b).norm() < tolerance, "{name} {n}: {a} {b}");
+            }
+        }
     }
 }

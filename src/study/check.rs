@@ -518,7 +518,7 @@ fn gate_warnings(result: &CheckResult) -> Vec<Warning> {
     }
     if let Scheme::Burst(burst) = result.scheme()
         && burst.filter.is_none()
-        && burst.rate_hz > CLEAN_BAND * result.rate.rate_hz
+        && burst.rate_hz > 0.0
     {
         warnings.push(Warning::BurstsOutOfSight {
             rate_hz: burst.rate_hz,

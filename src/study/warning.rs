@@ -170,8 +170,8 @@ impl fmt::Display for Warning {
                 transition_s,
             } => write!(
                 f,
-                "{} of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate, or replay the stage cycle by cycle",
-                show(100.0 * fraction, "%", 3),
+                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate, or replay the stage cycle by cycle",
+                100.0 * fraction,
                 show(*transition_s, "s", 3),
                 show(*shortest_s, "s", 3)
             ),
@@ -192,7 +192,7 @@ impl fmt::Display for Warning {
             ),
             Self::BurstsOutOfSight { rate_hz, seen_hz } => write!(
                 f,
-                "the lines of the bursts at multiples of {} lie beyond {}, the highest offset that is sampled: no filter stands behind the stage, and they leave it unseen",
+                "no filter stands behind the stage, so that the lines of the bursts, multiples of {}, leave it: those up to {} are seen, and power and margins move with every line that finer sampling shows",
                 show(*rate_hz, "Hz", 4),
                 show(*seen_hz, "Hz", 4)
             ),

@@ -82,8 +82,9 @@ impl PulseFile {
         scheme: &Section<'_>,
         grid_s: Option<f64>,
     ) -> Result<Self, Problem> {
+        let pulses = scheme.section("pulses")?;
         let list = read_edges(files, &self.file, &self.options)
-            .map_err(|error| scheme.problem("pulses", format!("a pulse sequence ({error})")))?;
+            .map_err(|error| pulses.problem("file", format!("a pulse sequence ({error})")))?;
         if let Some(grid_s) = grid_s {
             let off = list.edges.iter().position(|edge| {
                 let steps = edge.time_s / grid_s;
