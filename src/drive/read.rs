@@ -175,12 +175,24 @@ fn burst(section: &Section<'_>) -> Result<BurstScheme, Problem> {
         (Some(_), None) => return Err(section.problem("fall", "a time constant, beside rise")),
         (None, Some(_)) => return Err(section.problem("rise", "a time constant, beside fall")),
     };
+    let rate_hz = match made {
+        true => section.quantity("rate", Dimension::Frequency, Range::Positive)?,
+        false => 0.0,
+    };
+    let grid_s = section.maybe_quantity("grid", Dimension::Time, Range::Positive)?;
+    let shortest_s = match made {
+        true => time("shortest")?.unwrap_or(0.0),
+        false => 0.0,
+    };
+    // Edges that wait longer would wait for each other.
+    for (key, long_s) in [("grid", grid_s.unwrap_or(0.0)), ("shortest", shortest_s)] {
+        if long_s * rate_hz > 0.5 {
+            return Err(section.problem(key, "at most half of 1 / rate"));
+        }
+    }
     Ok(BurstScheme {
         sampling,
-        rate_hz: match made {
-            true => section.quantity("rate", Dimension::Frequency, Range::Positive)?,
-            false => 0.0,
-        },
+        rate_hz,
         edges,
         updates: updates.unwrap_or(Updates::Once),
         order: match sampling {
@@ -191,11 +203,8 @@ fn burst(section: &Section<'_>) -> Result<BurstScheme, Problem> {
             true => section.maybe_whole("levels", 2, MOST_LEVELS)?.unwrap_or(2) as u32,
             false => 2,
         },
-        grid_s: section.maybe_quantity("grid", Dimension::Time, Range::Positive)?,
-        shortest_s: match made {
-            true => time("shortest")?.unwrap_or(0.0),
-            false => 0.0,
-        },
+        grid_s,
+        shortest_s,
         delay_s: match made {
             true => delay(section)?,
             false => 0.0,

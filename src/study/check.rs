@@ -14,7 +14,7 @@ use crate::drive::{
 use crate::map::{Control, Map, Origin, Sweep};
 use crate::math::edges::CLEAN_BAND;
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
-use crate::orbit::{Drive, Gating, Network};
+use crate::orbit::{Drive, Gating, Network, OrbitError};
 use crate::predistort::{Table, TableRequest};
 use crate::signal::Source;
 use crate::units::dbm_from_watt;
@@ -311,6 +311,9 @@ fn gating(network: &Network, supply_v: f64, drive: &Drive) -> Result<Gating, Stu
         Some(gating) => gating,
         None => {
             let settling_s = network.settling_s(drive);
+            if !settling_s.is_finite() {
+                return Err(OrbitError::NeverSettles.into());
+            }
             Gating::of_time_constants(settling_s, settling_s)
         }
     })

@@ -81,6 +81,8 @@ struct Passed {
     held: u64,
     stress: Option<Stress>,
     gate: Option<GateFigures>,
+    /// The gate's edges from the signal's first sample to its last; only the first [`GateTrain::MOST`] of them.
+    edges: Vec<Edge>,
 }
 
 /// The instants of a block that count: start and end of the signal are left out.
@@ -149,14 +151,18 @@ impl Chain<'_> {
         let mut track = Track::default();
         let mut output_v = Vec::with_capacity(BLOCK);
         let mut first = 0u64;
+        let mut edges: Vec<Edge> = Vec::new();
         loop {
             let count = oversampled.read(&mut samples)?;
-            if count == 0 || first >= end {
+            // A gate is told to its end, though what it does there is not measured.
+            if count == 0 || (first >= end && edges.is_empty()) {
                 break;
             }
             track.clear();
             output_v.clear();
             drive.push(&samples[..count], &mut track);
+            let room = GateTrain::MOST - edges.len();
+            edges.extend(track.gate.iter().take(room));
             let inside = |at: u64| (at.clamp(first, first + count as u64) - first) as usize;
             let range = inside(start)..inside(end);
             transmitter.push(&track, range.clone(), &mut output_v);
@@ -180,6 +186,7 @@ impl Chain<'_> {
             held: transmitter.held(),
             stress,
             gate: drive.gate_figures(),
+            edges,
         })
     }
 
@@ -230,10 +237,7 @@ impl Chain<'_> {
         let mut density = vec![0u64; DENSITY_BINS];
         let full = self.study.full_control();
         let mut deepest = (f64::INFINITY, 0u64);
-        let mut edges: Vec<Edge> = Vec::new();
         let passed = self.pass(source, tick, |piece| {
-            let room = GateTrain::MOST - edges.len();
-            edges.extend(piece.track.gate.iter().take(room));
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
                 meter.push(piece.output_v());
@@ -258,6 +262,7 @@ impl Chain<'_> {
             held,
             stress,
             gate,
+            edges,
         } = passed;
         let output_envelope = output_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let wanted_envelope = wanted_envelope.finish().ok_or(StudyError::SilentSignal)?;
