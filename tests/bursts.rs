@@ -338,7 +338,7 @@ fn efficiency(scheme: &BurstScheme, duty: f64) -> f64 {
     let samples = vec![Complex64::new(duty, 0.0); 40_000];
     let track = track(scheme, &map, &samples, RATE_HZ);
     let modulator = Scheme::Burst(scheme.clone()).modulator();
-    let mut transmitter = MapTransmitter::new(&map, &modulator);
+    let mut transmitter = MapTransmitter::new(&map, &modulator, RATE_HZ);
     let mut output_v = Vec::new();
     // Whole periods of 20 instants, the start left out.
     transmitter.push(&track, 10_000..30_000, &mut output_v);

@@ -16,6 +16,7 @@ mod figures;
 mod gated;
 mod gather;
 mod gating;
+mod joined;
 mod linear;
 mod network;
 mod period;
@@ -31,7 +32,10 @@ mod unit;
 mod waveform;
 
 pub use balance::{Losses, Orbit, SwitchFigures};
+pub(crate) use circuit::Owner;
 pub use gating::{Decay, Gating, TransitionArea};
+pub use joined::{Compensation, Joined, Joint, JointError, JointKind};
 pub use network::{Drive, Network, NetworkError, OrbitError};
+pub(crate) use reduce::Reduced;
 pub use tracker::Tracker;
 pub use waveform::{OtherSwitch, Waveform};

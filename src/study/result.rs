@@ -6,9 +6,12 @@ use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum, SymbolFigures};
 use crate::orbit::{Orbit, Waveform};
 use crate::predistort::Table;
 use crate::signal::Edge;
-use crate::verdict::{Judgement, MaskMargin};
+use crate::verdict::{Judgement, MaskMargin, Stress};
 
 use super::load::Study;
+use super::parts::EfficiencyParts;
+use super::replay::ReplayFacts;
+use super::shapes::Shape;
 use super::warning::Warning;
 
 /// A study carried out.
@@ -22,6 +25,8 @@ pub struct CheckResult {
     pub map: Map,
     /// How a stage behaves at full supply; absent for a map from a file.
     pub stage: Option<StageFacts>,
+    /// What the switch had to stand, where the map knows.
+    pub stress: Option<Stress>,
     /// The table that stood in front of the scheme.
     pub table: Option<Table>,
     /// How finely it was sampled.
@@ -48,6 +53,8 @@ pub struct CheckResult {
     pub notch: Notch,
     /// The gate's pulses, of a scheme that gates the stage.
     pub gate: Option<GateTrain>,
+    /// The replay that gave all numbers, and what the map says in its place; absent where the map gave them.
+    pub replay: Option<Box<ReplayFacts>>,
     /// What limits how far this can be trusted.
     pub warnings: Vec<Warning>,
 }
@@ -75,6 +82,8 @@ pub struct StageFacts {
     pub waveform: Waveform,
     /// Time in which a deviation falls to 1/e, s.
     pub settling_s: f64,
+    /// The drain's waveform at full, half and lowest control.
+    pub shapes: Vec<Shape>,
 }
 
 /// The signal as it was found.
@@ -157,6 +166,8 @@ pub struct Metrics {
     pub efficiency: Option<f64>,
     /// Output over what the stage draws.
     pub stage_efficiency: Option<f64>,
+    /// Its factors.
+    pub efficiency_parts: EfficiencyParts,
 }
 
 /// A stretch of time around the deepest notch of the magnitude.

@@ -43,6 +43,19 @@ pub enum Warning {
         /// Sample period of the signal, s.
         signal_s: f64,
     },
+    /// Map and replay give different answers.
+    MapMisleads {
+        /// Largest movement of any margin, dB; infinite where a check is decided in only one of them.
+        moved_db: f64,
+        /// The check that moved most.
+        check: String,
+        /// Whether the two verdicts differ as well.
+        other_verdict: bool,
+    },
+    /// A replayed stage whose choke is ideal.
+    IdealChoke,
+    /// A scheme without a stage among replayed ones.
+    OnlyByMap,
     /// A map from a file knows neither stress nor memory.
     MapFromFile {
         /// What it cannot answer.
@@ -144,6 +157,33 @@ impl fmt::Display for Warning {
                 show(*settling_s, "s", 3),
                 show(*signal_s, "s", 3)
             ),
+            Self::MapMisleads {
+                moved_db,
+                check,
+                other_verdict,
+            } => {
+                let verdict = match other_verdict {
+                    true => "; its verdict is another one",
+                    false => "",
+                };
+                if moved_db.is_finite() {
+                    write!(
+                        f,
+                        "the map misleads here: {check} differs by {moved_db:.2} dB between map and replay (0.5 dB is taken as agreement){verdict}. Judge this study by replay"
+                    )
+                } else {
+                    write!(
+                        f,
+                        "the map misleads here: {check} is decided in only one of map and replay{verdict}. Judge this study by replay"
+                    )
+                }
+            }
+            Self::IdealChoke => f.write_str(
+                "the feed is an ideal choke: its current is taken to follow the supply at once, so that the memory of a real choke is missing. Give the feed an `inductance` to see it",
+            ),
+            Self::OnlyByMap => {
+                f.write_str("an ideal linear stage has nothing to replay: its numbers are by map")
+            }
             Self::MapFromFile { missing } => write!(
                 f,
                 "the map came from a file: {} cannot be answered from it",
@@ -170,14 +210,14 @@ impl fmt::Display for Warning {
                 transition_s,
             } => write!(
                 f,
-                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate, or replay the stage cycle by cycle",
+                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate; gated stages are not replayed yet",
                 100.0 * fraction,
                 show(*transition_s, "s", 3),
                 show(*shortest_s, "s", 3)
             ),
             Self::PoorTransition { left } => write!(
                 f,
-                "one or two modes leave {} of the stage's rise or fall (RMS): its transitions are known to that only; replay the stage cycle by cycle for more",
+                "one or two modes leave {} of the stage's rise or fall (RMS): its transitions are known to that only",
                 show(100.0 * left, "%", 2)
             ),
             Self::OverloadedShaping { ticks } => write!(
