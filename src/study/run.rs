@@ -73,7 +73,7 @@ pub struct AgainstMap {
 
 /// What makes an output of a track.
 enum Transmitter<'a> {
-    Map(MapTransmitter<'a>),
+    Map(Box<MapTransmitter<'a>>),
     Replay(Box<ReplayTransmitter<'a>>),
 }
 
@@ -181,7 +181,7 @@ impl Chain<'_> {
         }
         let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
         let mut transmitter = match self.replay {
-            None => Transmitter::Map(by_map()),
+            None => Transmitter::Map(Box::new(by_map())),
             Some(replay) => Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
                 network: replay.network,
                 scheme: &study.scheme,

@@ -28,7 +28,7 @@ pub use mask::{MaskFigure, MaskLine};
 pub use mismatch::MismatchFigure;
 pub use shapes::{ShapeCurve, ShapesFigure};
 pub use spectrum::{SpectrumCurve, SpectrumFigure, WorstPoint};
-pub use waveform::WaveformFigure;
+pub use waveform::{OtherCurves, WaveformFigure};
 
 use crate::report::text::quantity;
 
