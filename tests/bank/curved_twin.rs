@@ -395,7 +395,7 @@ pub fn curved_twin(
     supply_v: f64,
     choke_a: f64,
     drive: &Drive,
-) -> Option<CurvedTwin> {
+) -> CurvedTwin {
     let period_s = 1.0 / stage.frequency_hz;
     let net = Network::new(stage);
     let branches = net.branches.len();
