@@ -9,7 +9,9 @@ use std::f64::consts::{FRAC_PI_2, PI, TAU};
 
 use quietedge::map::{Control, Sweep};
 use quietedge::orbit::{Drive, Network};
-use quietedge::stage::{Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use quietedge::stage::{
+    Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use serde_json::Value;
 
 /// Asked for: four digits, 1e-4. What the extrapolation leaves is smaller: 7e-7 over all designs, of which the

@@ -5,7 +5,9 @@ use proptest::prelude::*;
 use quietedge::map::{Control, Map, MapFacts, MapFormat, Sweep, read_map};
 use quietedge::orbit::{Drive, Network, Orbit};
 use quietedge::report::documents::{map_csv, map_document};
-use quietedge::stage::{Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use quietedge::stage::{
+    Anchor, Arm, Arrangement, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use quietedge::units::{Dimension, parse, show};
 use std::f64::consts::TAU;
 

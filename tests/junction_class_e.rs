@@ -14,7 +14,8 @@ use std::f64::consts::{PI, TAU};
 
 use quietedge::orbit::{Drive, Network};
 use quietedge::stage::{
-    Anchor, Arm, Arrangement, DrainCurve, Driver, Element, Feed, Junction, Load, Part, Rung, Stage, Switch,
+    Anchor, Arm, Arrangement, DrainCurve, Driver, Element, Feed, Junction, Load, Part, Rung, Stage,
+    Switch,
 };
 
 const POINTS: usize = 20_000;

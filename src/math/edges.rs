@@ -291,10 +291,7 @@ mod tests {
                 let got = line(bin as f64).norm();
                 // A hundred dB below the jump's own line at its place: 1e-5 / pi of a jump each, and 1e-5 of the
                 // observer's ripple.
-                assert!(
-                    (got - law).abs() < 1e-5,
-                    "{period} {bin}: {got:e} {law:e}"
-                );
+                assert!((got - law).abs() < 1e-5, "{period} {bin}: {got:e} {law:e}");
             }
         }
     }

@@ -90,10 +90,7 @@ impl Port {
                 .equations(&circuit, contacts)
                 .ok_or(NetworkError::Undetermined)
         };
-        let both = vec![
-            equations(Contacts::Absent)?,
-            equations(Contacts::At(1))?,
-        ];
+        let both = vec![equations(Contacts::Absent)?, equations(Contacts::At(1))?];
         let both = without_idle(both).ok_or(NetworkError::Undetermined)?;
         let bare = both.first().ok_or(NetworkError::Undetermined)?;
         let states = bare.a.nrows();

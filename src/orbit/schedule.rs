@@ -80,19 +80,15 @@ mod tests {
     #[test]
     fn one_switch_has_two_intervals() {
         let all = schedule(&[span(-1.0, 2.5)]);
-        assert_eq!(
-            all.iter().map(|i| i.closed).collect::<Vec<_>>(),
-            [0b1, 0b0]
-        );
+        assert_eq!(all.iter().map(|i| i.closed).collect::<Vec<_>>(), [0b1, 0b0]);
         assert!((all[0].from_rad + 1.0).abs() < 1e-15 && (all[0].length_rad - 2.5).abs() < 1e-15);
         assert!((all[1].length_rad - (TAU - 2.5)).abs() < 1e-15);
     }
 
     #[test]
     fn two_with_gaps_have_four_and_without_two() {
-        let closed = |spans: &[Span]| -> Vec<Closed> {
-            schedule(spans).iter().map(|i| i.closed).collect()
-        };
+        let closed =
+            |spans: &[Span]| -> Vec<Closed> { schedule(spans).iter().map(|i| i.closed).collect() };
         let pair = [span(-1.5, 3.0), span(1.6, TAU - 3.2)];
         assert_eq!(closed(&pair), [0b01, 0b00, 0b10, 0b00]);
         // Edges that coincide up to rounding, three turns away.

@@ -131,7 +131,12 @@ impl<const N: usize> Walk<N> {
     }
 
     pub(super) fn scale(&mut self, factor: f64) {
-        for entry in self.starts.as_flattened_mut().iter_mut().chain(&mut self.end) {
+        for entry in self
+            .starts
+            .as_flattened_mut()
+            .iter_mut()
+            .chain(&mut self.end)
+        {
             *entry *= factor;
         }
     }
@@ -249,7 +254,11 @@ impl<const N: usize> Sized_<N> {
             .collect()
     }
 
-    pub(super) fn walk(&self, flows: &Flows<'_, N>, closing: &Column<N>) -> Result<Walk<N>, OrbitError> {
+    pub(super) fn walk(
+        &self,
+        flows: &Flows<'_, N>,
+        closing: &Column<N>,
+    ) -> Result<Walk<N>, OrbitError> {
         let n = self.states;
         let mut starts = Vec::with_capacity(flows.spans.len());
         let mut state = *closing;

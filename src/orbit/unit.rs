@@ -57,9 +57,8 @@ impl<const N: usize> LinearSolver for Sized_<N> {
             *harmonic /= PI;
         }
 
-        let power = |row: &Column<N>, moment: &Square<N>| {
-            dot(row, &moment.apply(row)).max(0.0) / TAU
-        };
+        let power =
+            |row: &Column<N>, moment: &Square<N>| dot(row, &moment.apply(row)).max(0.0) / TAU;
         let mut unit = UnitOrbit {
             harmonics,
             supply: 0.0,
@@ -101,11 +100,7 @@ impl<const N: usize> LinearSolver for Sized_<N> {
         Ok(unit)
     }
 
-    fn samples(
-        &self,
-        schedule: &[Interval],
-        points: usize,
-    ) -> Result<Vec<UnitSample>, OrbitError> {
+    fn samples(&self, schedule: &[Interval], points: usize) -> Result<Vec<UnitSample>, OrbitError> {
         let flows = self.flows(schedule)?;
         let cycle = self.cycle(&flows)?;
         let mut samples = Vec::with_capacity(flows.spans.len() * points);
@@ -167,8 +162,7 @@ impl<const N: usize> Sized_<N> {
             if next.closed & !position.closed & (1 << index) != 0 {
                 let row = &position.legs[contact.leg];
                 unit.closing = contact.across(dot(row, end));
-                unit.closing_slope =
-                    contact.across_slope(dot(row, &position.generator.apply(end)));
+                unit.closing_slope = contact.across_slope(dot(row, &position.generator.apply(end)));
             }
         }
     }

@@ -3,7 +3,9 @@
 use std::f64::consts::TAU;
 
 use super::read_device::{Drain, diode, drain, gate, knee};
-use super::{Anchor, Arm, Arrangement, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch};
+use super::{
+    Anchor, Arm, Arrangement, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
+};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::units::Dimension;
 
@@ -217,7 +219,8 @@ fn switch(section: &Section<'_>) -> Result<Switch, Problem> {
     let pair = section
         .maybe_choice("arrangement", &[("single", false), ("pair", true)])?
         .unwrap_or(false);
-    let upper = section.maybe_quantity("upper_resistance", Dimension::Resistance, Range::Positive)?;
+    let upper =
+        section.maybe_quantity("upper_resistance", Dimension::Resistance, Range::Positive)?;
     let arrangement = match (pair, upper) {
         (false, Some(_)) => {
             return Err(section.problem(

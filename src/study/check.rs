@@ -63,6 +63,7 @@ pub fn check(
         None => Front::None,
         Some(Predistortion::Table(table)) => Front::Table(table.clone()),
         Some(Predistortion::Request(request)) => Front::Table(bench.table(request)?),
+        Some(Predistortion::Polynomial(polynomial)) => Front::Polynomial(polynomial.clone()),
     };
     bench.check(front, source, progress)
 }

@@ -3,6 +3,7 @@
 mod average;
 mod built_in;
 mod check;
+mod closed;
 mod collect;
 mod compare;
 mod error;
@@ -17,6 +18,7 @@ mod warning;
 pub use average::Averaged;
 pub use built_in::{BuiltIn, DEFAULT_STUDY};
 pub use check::check;
+pub use closed::{ClosedRequest, ClosedResult, ClosedSide, next_from_capture};
 pub use compare::{OpenSignal, Rank, compare, ranked};
 pub use error::StudyError;
 pub use load::{Hardware, Predistortion, SignalChoice, Study};
