@@ -2,12 +2,13 @@
 
 use std::path::{Path, PathBuf};
 
+use super::arguments::ByChoice;
 use super::{Console, Disk, Ending, Failure, OutputFolder, OutputOptions};
 use crate::input::Files;
 use crate::report::check::{Request, page, spectrum_figure, text};
 use crate::report::documents::{check_document, map_csv};
 use crate::signal;
-use crate::study::{BuiltIn, CheckResult, DEFAULT_STUDY, Study, StudyError, check};
+use crate::study::{BuiltIn, By, CheckResult, DEFAULT_STUDY, Study, StudyError, check_by};
 use crate::verdict::Outcome;
 
 /// Hold the output of a study against its limits: exit code 0 within, 1 outside, 2 undecided
@@ -17,10 +18,20 @@ use crate::verdict::Outcome;
       the built-in study; its report goes to quietedge-report/, made anew each time
   quietedge check my.study.toml --out report
       writes report.html, result.json, spectrum.png and map.csv into report/
+  quietedge check my.study.toml --by both
+      integrates the stage cycle by cycle and says whether its map may be trusted
   quietedge check my.study.toml --json | jq .verdict.outcome")]
 pub struct Arguments {
     /// Study file (TOML); the built-in one where absent
     study: Option<PathBuf>,
+
+    /// What the output is taken from
+    #[arg(long, value_enum, default_value_t)]
+    by: ByChoice,
+
+    /// Segments of a replay worked on at a time; the result is the same for any number to 1e-9
+    #[arg(long, default_value_t = 2, value_parser = clap::value_parser!(u8).range(1..=64))]
+    threads: u8,
 
     #[command(flatten)]
     output: OutputOptions,
@@ -59,13 +70,15 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
         }
     };
     let study = Study::read(&name, &*files)?;
-    let result = carry_out(&study, &*files, console).map_err(|error| {
+    let result = carry_out(&study, &*files, arguments, console).map_err(|error| {
         let culprit = match &error {
             StudyError::Network(_) | StudyError::Orbit(_) | StudyError::Sweep(_) => {
                 &study.hardware_file
             }
             StudyError::SignalTooShort { .. } | StudyError::SilentSignal => &study.signal.file,
-            StudyError::Spectrum(_) | StudyError::Pair(_) => &name,
+            StudyError::Spectrum(_) | StudyError::Pair(_) | StudyError::NoWorkingPoint { .. } => {
+                &name
+            }
             // These name their file themselves.
             _ => return Failure::from(error),
         };
@@ -104,12 +117,28 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
 fn carry_out(
     study: &Study,
     files: &dyn Files,
+    arguments: &Arguments,
     console: &Console,
 ) -> Result<CheckResult, StudyError> {
     let mut source = signal::open(files, &study.signal.file, &study.signal.options)?;
-    let bar = console.progress(STEPS, "checking");
-    let result = check(study, &mut *source, &mut |part| {
+    let by = arguments.by.by();
+    let (what, threads) = match by {
+        By::Map => ("checking", 1),
+        By::Replay | By::Both => ("replaying", usize::from(arguments.threads)),
+    };
+    let bar = console.progress(STEPS, what);
+    // The rate of a replay, from the carrier cycles that the signal lasts.
+    let cycles = source.len().map_or(0.0, |samples| {
+        samples as f64 / source.rate_hz() * study.hardware.frequency_hz()
+    });
+    let start = std::time::Instant::now();
+    let result = check_by(study, &mut *source, by, threads, &mut |part| {
         bar.set_position((part * STEPS as f64) as u64);
+        let seconds = start.elapsed().as_secs_f64();
+        if by != By::Map && cycles > 0.0 && seconds > 1.0 {
+            let rate = 1e-6 * part * cycles / seconds;
+            bar.set_message(format!("{what}, {rate:.1} million cycles/s"));
+        }
     });
     bar.finish_and_clear();
     result
@@ -130,10 +159,11 @@ fn write(folder: &OutputFolder, result: &CheckResult, request: &Request) -> Resu
 }
 
 fn command_line(arguments: &Arguments) -> String {
-    match &arguments.study {
-        None => "quietedge check".to_owned(),
-        Some(study) => format!("quietedge check {}", study.display()),
-    }
+    let study = match &arguments.study {
+        None => String::new(),
+        Some(study) => format!(" {}", study.display()),
+    };
+    format!("quietedge check{study}{}", arguments.by.option())
 }
 
 /// The text of the stage or map file that the study names.

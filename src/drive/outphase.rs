@@ -124,6 +124,7 @@ impl OutphaseDrive {
             track.asked.push((self.level * magnitude(wanted)).min(1.0));
             track.control.push(drive.min(1.0));
             track.phase.push(self.last);
+            track.branches.push([first, second]);
         }
     }
 }

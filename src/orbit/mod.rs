@@ -14,6 +14,7 @@ mod equations;
 mod factors;
 mod figures;
 mod gather;
+mod joined;
 mod linear;
 mod network;
 mod period;
@@ -29,6 +30,9 @@ mod unit;
 mod waveform;
 
 pub use balance::{Losses, Orbit, SwitchFigures};
+pub(crate) use circuit::Owner;
+pub use joined::{Compensation, Joined, Joint, JointError, JointKind};
 pub use network::{Drive, Network, NetworkError, OrbitError};
+pub(crate) use reduce::Reduced;
 pub use tracker::Tracker;
 pub use waveform::{OtherSwitch, Waveform};

@@ -4,9 +4,10 @@ use serde::Serialize;
 use serde_json::{Value, json};
 
 use crate::map::Map;
+use crate::metrics::Spectrum;
 use crate::orbit::Orbit;
 use crate::stage::Stage;
-use crate::study::CheckResult;
+use crate::study::{By, CheckResult, ReplayFacts};
 
 /// The document of `quietedge solve`; `others` are further periodic states of the same stage.
 pub fn solve_document(stage: &Stage, orbit: &Orbit, others: &[Orbit]) -> Value {
@@ -21,7 +22,7 @@ pub fn solve_document(stage: &Stage, orbit: &Orbit, others: &[Orbit]) -> Value {
             })
         })
         .collect();
-    json!({
+    let mut document = json!({
         "stage": stage.title,
         "frequency_hz": stage.frequency_hz,
         "supply_v": orbit.supply_v,
@@ -47,7 +48,11 @@ pub fn solve_document(stage: &Stage, orbit: &Orbit, others: &[Orbit]) -> Value {
             "energy_residual": orbit.energy_residual,
         },
         "other_orbits": others,
-    })
+    });
+    if !orbit.switches.is_empty() {
+        document["orbit"]["switches"] = json!(orbit.switches);
+    }
+    document
 }
 
 #[derive(Serialize)]
@@ -146,17 +151,53 @@ pub fn check_document(result: &CheckResult) -> Value {
     json!({
         "study": result.study.title,
         "scheme": result.scheme().name(),
+        "scheme_settings": result.scheme(),
+        "seed": result.scheme().seed(),
         "signal": result.signal,
         "level": result.study.signal.level,
         "sampling": result.rate,
         "metrics": result.metrics,
         "symbols": result.symbols,
         "verdict": result.judgement.verdict,
+        "stress": result.stress,
         "predistort": result.table.as_ref().map(|table| json!({
             "size": table.lookup.size(),
             "rate": table.lookup.rate(),
             "entries": table.counts(),
         })),
+        "by": result.replay.as_ref().map_or(By::Map, |facts| facts.by),
+        "replay": result.replay.as_ref().map(|facts| replay_document(result, facts)),
         "warnings": result.warnings,
+    })
+}
+
+/// The replay of a check against its map; with `both` the map's own numbers and both spectra as well.
+fn replay_document(result: &CheckResult, facts: &ReplayFacts) -> Value {
+    let outcome = result.judgement.verdict.outcome;
+    let both = facts.by == By::Both;
+    let spectrum = |spectrum: &Spectrum| {
+        json!({
+            "from_hz": spectrum.offset_hz(0),
+            "step_hz": spectrum.bin_hz,
+            "mean_w_per_hz": spectrum.mean_w_per_hz,
+        })
+    };
+    json!({
+        "cycles": facts.cycles,
+        "nmse_db": facts.nmse_db,
+        "delay_s": facts.delay_s,
+        "gain_db": facts.gain_db,
+        "map_holds": facts.map_holds(outcome),
+        "statement": facts.statement(outcome),
+        "margins": facts.margins,
+        "parting": facts.parting,
+        "map": both.then(|| json!({
+            "metrics": facts.map.metrics,
+            "verdict": facts.map.judgement.verdict,
+        })),
+        "spectra": both.then(|| json!({
+            "map": spectrum(&facts.map.output_spectrum),
+            "replay": spectrum(&result.output_spectrum),
+        })),
     })
 }

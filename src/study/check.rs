@@ -4,29 +4,39 @@ use num_complex::Complex64;
 
 use super::error::StudyError;
 use super::load::{Hardware, Predistortion, Study};
+use super::parts::EfficiencyParts;
+use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
+use super::shapes::shapes;
 use super::warning::Warning;
 use crate::drive::{
-    ClassBScheme, Correction, MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, WidthLaw,
-    oversampling,
+    ClassBScheme, Correction, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme, Polynomial,
+    RateReason, Scheme, WidthLaw, oversampling,
 };
 use crate::map::{Control, Map, Origin, Sweep};
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
 use crate::orbit::{Drive, Network};
 use crate::predistort::{Table, TableRequest};
 use crate::signal::Source;
+use crate::stage::Stage;
 use crate::units::dbm_from_watt;
 use crate::verdict::{Judgement, Measured, Wanted, judge};
 
 /// Points of a map solved for a check.
 const MAP_POINTS: usize = 201;
 
+/// Points of the width maps of a curved stage at lower supplies.
+const PLANE_POINTS: usize = 101;
+
+/// Their distance while a rail settles, as a part of the full supply.
+const PLANE_DISTANCE: f64 = 0.1;
+
 /// How far a margin may move when the sampling is doubled, dB.
 const CONVERGED_DB: f64 = 0.1;
 
 /// Margins past this in both runs do not count, dB: no decision hangs on them, and numerical floors lie there.
-const FAR_WITHIN_DB: f64 = 30.0;
+pub(super) const FAR_WITHIN_DB: f64 = 30.0;
 
 /// How often the sampling is doubled beyond the first comparison.
 const MORE_DOUBLINGS: usize = 2;
@@ -58,14 +68,23 @@ pub fn check(
     source: &mut dyn Source,
     progress: &mut dyn FnMut(f64),
 ) -> Result<CheckResult, StudyError> {
+    check_by(study, source, By::Map, 1, progress)
+}
+
+/// As [`check`], the output taken from the map, from a replay of the stage, or from both, with `workers` segments of
+/// the replay at a time; the result is the same for any number of them to 1e-9.
+///
+/// # Errors
+/// [`StudyError`] where no verdict can be reached, or nothing can be replayed.
+pub fn check_by(
+    study: &Study,
+    source: &mut dyn Source,
+    by: By,
+    workers: usize,
+    progress: &mut dyn FnMut(f64),
+) -> Result<CheckResult, StudyError> {
     let bench = Bench::new(study, source)?;
-    let front = match &study.predistort {
-        None => Front::None,
-        Some(Predistortion::Table(table)) => Front::Table(table.clone()),
-        Some(Predistortion::Request(request)) => Front::Table(bench.table(request)?),
-        Some(Predistortion::Polynomial(polynomial)) => Front::Polynomial(polynomial.clone()),
-    };
-    bench.check(front, source, progress)
+    bench.check_by(bench.front()?, source, by, workers, progress)
 }
 
 /// What stands in front of the scheme in one check.
@@ -73,14 +92,17 @@ pub fn check(
 pub(super) enum Front {
     None,
     Table(Table),
+    /// A table so fine, on the track's own clock, that nothing but the inverse itself is seen.
+    Inverse(Table),
     Polynomial(Polynomial),
 }
 
 impl Front {
-    fn correction(&self) -> Option<Correction> {
+    pub(super) fn correction(&self) -> Option<Correction> {
         match self {
             Self::None => None,
             Self::Table(table) => Some(Correction::Table(table.lookup.clone())),
+            Self::Inverse(table) => Some(Correction::Instant(table.lookup.clone())),
             Self::Polynomial(polynomial) => Some(Correction::Polynomial(polynomial.clone())),
         }
     }
@@ -91,21 +113,83 @@ impl Front {
 pub(super) struct Bench<'a> {
     pub(super) study: &'a Study,
     pub(super) map: Map,
-    stage: Option<StageFacts>,
+    pub(super) stage: Option<StageFacts>,
     pub(super) signal: SignalFacts,
     wanted: Wanted,
+    /// What several checks side by side share.
+    pub(super) common: Option<Common>,
+}
+
+/// What schemes that are compared share, so that their margins are of the same readings.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Common {
+    /// None is sampled at less, Hz.
+    pub(super) rate_hz: f64,
+    /// Offsets past this are not judged, Hz.
+    pub(super) until_hz: f64,
 }
 
 impl<'a> Bench<'a> {
     pub(super) fn new(study: &'a Study, source: &mut dyn Source) -> Result<Self, StudyError> {
         let (map, stage) = hardware(study)?;
+        if let Scheme::Supply(supply) = &study.scheme
+            && let Some(supply_v) = supply.falls_at_v(&map)
+        {
+            return Err(StudyError::NoWorkingPoint {
+                supply_v,
+                ohm: supply.modulator.output_ohm,
+            });
+        }
         Ok(Self {
             study,
             map,
             stage,
             signal: signal_facts(study, source)?,
             wanted: Wanted::of(&study.limits),
+            common: None,
         })
+    }
+
+    /// The same hardware and signal for another study of the same stage, control and anchor.
+    pub(super) fn with_study<'b>(&self, study: &'b Study) -> Bench<'b> {
+        Bench {
+            study,
+            map: self.map.clone(),
+            stage: self.stage.clone(),
+            signal: self.signal.clone(),
+            wanted: self.wanted.clone(),
+            common: self.common,
+        }
+    }
+
+    /// The sample rate that a check behind `front` starts from, Hz.
+    pub(super) fn rate_hz(&self, front: &Front) -> f64 {
+        self.oversampling(front).0 as f64 * self.signal.rate_hz
+    }
+
+    /// What the study itself puts in front of its scheme.
+    pub(super) fn front(&self) -> Result<Front, StudyError> {
+        Ok(match &self.study.predistort {
+            None => Front::None,
+            Some(Predistortion::Table(table)) => Front::Table(table.clone()),
+            Some(Predistortion::Request(request)) => Front::Table(self.table(request)?),
+            Some(Predistortion::Polynomial(polynomial)) => Front::Polynomial(polynomial.clone()),
+        })
+    }
+
+    /// The inverse of the map in front of the scheme, without a clock or words of its own.
+    pub(super) fn inverse(&self) -> Result<Front, StudyError> {
+        let depth = LookupSize::DEPTHS.1;
+        let request = TableRequest {
+            size: LookupSize {
+                depth,
+                address_bits: LookupSize::BITS.1,
+                amplitude_bits: LookupSize::BITS.1,
+                phase_bits: LookupSize::BITS.1,
+            },
+            ..TableRequest::default()
+        };
+        Ok(Front::Inverse(self.table(&request)?))
     }
 
     /// The table of `request` for this study.
@@ -127,15 +211,31 @@ impl<'a> Bench<'a> {
     }
 
     /// The factor of the oversampling that `correction` needs, and what asked for it.
-    fn oversampling(&self, correction: Option<&Correction>) -> (usize, RateReason) {
-        let own = oversampling(&self.study.scheme, self.signal.rate_hz, self.wanted.span_hz);
-        match correction.map(|correction| INSTANTS_PER_HOLD * correction.rate()) {
+    fn oversampling(&self, front: &Front) -> (usize, RateReason) {
+        let mut own = oversampling(&self.study.scheme, self.signal.rate_hz, self.wanted.span_hz);
+        if let Some(common) = self.common {
+            let factor = (common.rate_hz / self.signal.rate_hz * (1.0 - 1e-9)).ceil() as usize;
+            let factor = factor.next_power_of_two().min(MAX_FACTOR);
+            if factor > own.0 {
+                own = (factor, RateReason::Common);
+            }
+        }
+        let held = match front {
+            Front::None | Front::Inverse(_) => None,
+            Front::Table(table) => Some(table.lookup.rate()),
+            Front::Polynomial(polynomial) => Some(polynomial.rate),
+        };
+        match held.map(|rate| INSTANTS_PER_HOLD * rate) {
             Some(factor) if factor > own.0 => (factor, RateReason::Predistortion),
             _ => own,
         }
     }
 
-    pub(super) fn chain<'b>(&'b self, correction: Option<&'b Correction>) -> Chain<'b> {
+    pub(super) fn chain<'b>(
+        &'b self,
+        front: &Front,
+        correction: Option<&'b Correction>,
+    ) -> Chain<'b> {
         let study = self.study;
         let resolution_hz = [self.wanted.fine_resolution_hz, study.resolution_hz]
             .into_iter()
@@ -146,7 +246,7 @@ impl<'a> Bench<'a> {
             study,
             map: &self.map,
             correction,
-            factor: self.oversampling(correction).0,
+            factor: self.oversampling(front).0,
             wanted: &self.wanted,
             resolution_hz,
             evm_band_hz: study
@@ -155,6 +255,7 @@ impl<'a> Bench<'a> {
                 .or(study.limits.authorized_bandwidth_hz)
                 .unwrap_or(self.signal.rate_hz),
             signal_samples: self.signal.samples,
+            replay: None,
         }
     }
 
@@ -165,10 +266,28 @@ impl<'a> Bench<'a> {
         source: &mut dyn Source,
     ) -> Result<Judgement, StudyError> {
         let correction = front.correction();
-        let run = self.chain(correction.as_ref()).run(source, &mut |_| {})?;
-        Ok(verdict_of(self.study, self.stage.as_ref(), &run))
+        let run = self
+            .chain(front, correction.as_ref())
+            .run(source, &mut |_| {})?;
+        Ok(self.verdict_of(&run))
     }
 
+    /// As [`Bench::check`], or by replay, with `workers` segments at a time.
+    pub(super) fn check_by(
+        &self,
+        front: Front,
+        source: &mut dyn Source,
+        by: By,
+        workers: usize,
+        progress: &mut dyn FnMut(f64),
+    ) -> Result<CheckResult, StudyError> {
+        match by {
+            By::Map => self.check(front, source, progress),
+            By::Replay | By::Both => replayed(self, &front, source, by, workers, progress),
+        }
+    }
+
+    /// The study by map, at the factor of oversampling at which its margins stand still.
     pub(super) fn check(
         &self,
         front: Front,
@@ -186,8 +305,8 @@ impl<'a> Bench<'a> {
             });
         }
         let correction = front.correction();
-        let (factor, reason) = self.oversampling(correction.as_ref());
-        let mut chain = self.chain(correction.as_ref());
+        let (factor, reason) = self.oversampling(&front);
+        let mut chain = self.chain(&front, correction.as_ref());
         let signal = &self.signal;
 
         // The chosen factor is held against half of it, and doubled while that moves the margins.
@@ -203,7 +322,7 @@ impl<'a> Bench<'a> {
         };
         chain.factor = (factor / 2).max(1);
         let mut run = chain.run(source, &mut tick)?;
-        let mut judgement = verdict_of(study, self.stage.as_ref(), &run);
+        let mut judgement = self.verdict_of(&run);
         for _ in 0..=MORE_DOUBLINGS {
             let instants = 2 * chain.factor as u64 * signal.samples;
             if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS)
@@ -212,7 +331,7 @@ impl<'a> Bench<'a> {
             }
             chain.factor *= 2;
             let finer = chain.run(source, &mut tick)?;
-            let finer_judgement = verdict_of(study, self.stage.as_ref(), &finer);
+            let finer_judgement = self.verdict_of(&finer);
             convergence = Convergence {
                 against_factor: run.factor,
                 moved_db: largest_move(&judgement, &finer_judgement),
@@ -235,9 +354,10 @@ impl<'a> Bench<'a> {
             signal: signal.clone(),
             map: self.map.clone(),
             stage: self.stage.clone(),
+            stress: run.stress,
             table: match front {
                 Front::Table(table) => Some(table),
-                Front::None | Front::Polynomial(_) => None,
+                Front::None | Front::Inverse(_) | Front::Polynomial(_) => None,
             },
             metrics,
             output_spectrum: run.output_spectrum,
@@ -248,30 +368,66 @@ impl<'a> Bench<'a> {
             control_density: run.control_density,
             symbols: run.symbols,
             notch: run.notch,
+            replay: None,
             warnings: Vec::new(),
             judgement,
         };
         result.warnings = warnings(&result, run.held);
         Ok(result)
     }
+
+    pub(super) fn verdict_of(&self, run: &Run) -> Judgement {
+        let until_hz = self.common.map_or(f64::INFINITY, |common| common.until_hz);
+        let fine = run.output_spectrum.within(until_hz);
+        let peak_hold: Vec<_> = run
+            .peak_spectra
+            .iter()
+            .map(|s| s.within(until_hz))
+            .collect();
+        let symbols = run.symbols.as_ref();
+        let measured = Measured {
+            fine: &fine,
+            peak_hold: &peak_hold,
+            mean_w: run.output_envelope.mean_w,
+            peak_w: run.output_envelope.peak_w,
+            evm_percent: Some(symbols.map_or(run.errors.evm_percent, |s| s.evm_percent)),
+            evm_peak_percent: Some(
+                symbols.map_or(run.errors.evm_peak_percent, |s| s.evm_peak_percent),
+            ),
+            evm_p95_percent: symbols.map(|s| s.evm_p95_percent),
+            evm_p99_percent: symbols.map(|s| s.evm_p99_percent),
+            modulation: None,
+            // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
+            harmonics_dbc: self
+                .stage
+                .as_ref()
+                .map(|facts| &facts.orbit.harmonics_dbc[..]),
+            stress: run.stress,
+        };
+        judge(&measured, &self.study.limits)
+    }
+}
+
+/// The stage of `study`, its pulses anchored as the scheme says.
+pub(super) fn stage_of(study: &Study) -> Option<Stage> {
+    let Hardware::Stage(stage) = &study.hardware else {
+        return None;
+    };
+    let mut stage = Stage::clone(stage);
+    if let Some(anchor) = study.scheme.anchor() {
+        stage.driver.anchor = anchor;
+    }
+    Some(stage)
 }
 
 /// The map, and the stage at full supply where there is one.
 fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
     let scheme = &study.scheme;
-    let mut stage = match &study.hardware {
-        Hardware::Map(map) => {
-            return Ok((
-                straight(scheme, map)?.unwrap_or_else(|| Map::clone(map)),
-                None,
-            ));
-        }
-        Hardware::Stage(stage) => stage.clone(),
-    };
-    if let Some(anchor) = scheme.anchor() {
-        stage.driver.anchor = anchor;
+    if let Hardware::Map(map) = &study.hardware {
+        let own = straight(scheme, map)?;
+        return Ok((own.unwrap_or_else(|| Map::clone(map)), None));
     }
-    let stage = &*stage;
+    let stage = &stage_of(study).ok_or(StudyError::NoStage)?;
     let network = Network::new(stage)?;
     let map = match scheme.control() {
         Control::Supply => Sweep::full(&network, Control::Supply, MAP_POINTS)?,
@@ -283,14 +439,47 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         }
     }
     .solve(&network)?;
+    let map = match scheme {
+        Scheme::Levels(levels) if stage.is_curved() => {
+            let planes = supply_planes(levels, stage.supply_v)
+                .into_iter()
+                .map(|supply_v| {
+                    let mut sweep = Sweep::full(&network, Control::Width, PLANE_POINTS)?;
+                    sweep.supply_v = supply_v;
+                    sweep.solve(&network)
+                })
+                .collect::<Result<_, _>>()?;
+            map.with_planes(planes)
+        }
+        _ => map,
+    };
     let map = straight(scheme, &map)?.unwrap_or(map);
     let drive = Drive::new(&stage.driver, stage.driver.duty);
     let facts = StageFacts {
         orbit: network.orbit(stage.supply_v, &drive)?,
         waveform: network.waveform(stage.supply_v, &drive, 240)?,
         settling_s: network.settling_s(&drive),
+        shapes: shapes(&network, scheme, &map),
     };
     Ok((map, Some(facts)))
+}
+
+/// The lower supplies at which the width map of a curved stage is solved, rising: the rails, and where these settle
+/// slowly or lie far apart, supplies between them.
+fn supply_planes(levels: &LevelsScheme, full_v: f64) -> Vec<f64> {
+    let rails = levels.rails.parts(full_v);
+    let mut planes = Vec::new();
+    for pair in rails.windows(2) {
+        let steps = if levels.settling_s > 0.0 {
+            ((pair[1] - pair[0]) / PLANE_DISTANCE).ceil().max(1.0)
+        } else {
+            1.0
+        };
+        for step in 0..steps as usize {
+            planes.push((pair[0] + (pair[1] - pair[0]) * step as f64 / steps) * full_v);
+        }
+    }
+    planes
 }
 
 /// The straight map of a scheme over the drive, from the last point of `map`.
@@ -306,12 +495,12 @@ fn straight(scheme: &Scheme, map: &Map) -> Result<Option<Map>, StudyError> {
             map.origin(),
             top,
         )?),
-        Scheme::Outphase(_) => Some(OutphaseScheme::map(
-            frequency_hz,
-            load_ohm,
-            map.origin(),
-            top,
-        )?),
+        Scheme::Outphase(_) => {
+            let made = OutphaseScheme::map(frequency_hz, load_ohm, map.origin(), top)?;
+            // Both stages deliver the same whatever of it the combiner passes on.
+            let full_w = made.full_amplitude_v().powi(2) / (2.0 * load_ohm);
+            Some(made.with_generated_w(full_w))
+        }
         _ => None,
     })
 }
@@ -348,25 +537,6 @@ fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, S
     })
 }
 
-fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement {
-    let symbols = run.symbols.as_ref();
-    let measured = Measured {
-        fine: &run.output_spectrum,
-        peak_hold: &run.peak_spectra,
-        mean_w: run.output_envelope.mean_w,
-        peak_w: run.output_envelope.peak_w,
-        evm_percent: Some(symbols.map_or(run.errors.evm_percent, |s| s.evm_percent)),
-        evm_peak_percent: Some(symbols.map_or(run.errors.evm_peak_percent, |s| s.evm_peak_percent)),
-        evm_p95_percent: symbols.map(|s| s.evm_p95_percent),
-        evm_p99_percent: symbols.map(|s| s.evm_p99_percent),
-        modulation: None,
-        // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
-        harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
-        stress: run.stress,
-    };
-    judge(&measured, &study.limits)
-}
-
 /// The largest movement of any margin that counts between two verdicts on the same limits, dB. A check that is
 /// decided in only one of them counts as infinite.
 fn largest_move(before: &Judgement, after: &Judgement) -> f64 {
@@ -386,7 +556,11 @@ fn largest_move(before: &Judgement, after: &Judgement) -> f64 {
     pairs.fold(0.0, f64::max)
 }
 
-fn metrics(study: &Study, run: &Run, judgement: &Judgement) -> Result<Metrics, StudyError> {
+pub(super) fn metrics(
+    study: &Study,
+    run: &Run,
+    judgement: &Judgement,
+) -> Result<Metrics, StudyError> {
     let acpr = if judgement.acpr.is_empty() {
         default_acpr(study, run)
     } else {
@@ -417,6 +591,7 @@ fn metrics(study: &Study, run: &Run, judgement: &Judgement) -> Result<Metrics, S
         mask: judgement.mask.clone(),
         efficiency: known(run.energy.efficiency()),
         stage_efficiency: known(run.energy.stage_efficiency()),
+        efficiency_parts: EfficiencyParts::of(&run.energy),
     })
 }
 
@@ -457,7 +632,7 @@ fn coarse_grid(result: &CheckResult) -> Option<Warning> {
     )
 }
 
-fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
+pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     let mut warnings = Vec::new();
     let RateFacts {
         factor,
@@ -508,7 +683,7 @@ fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
             });
         }
         let signal_s = 1.0 / result.signal.rate_hz;
-        if stage.settling_s > SLOW * signal_s {
+        if result.replay.is_none() && stage.settling_s > SLOW * signal_s {
             warnings.push(Warning::SlowStage {
                 settling_s: stage.settling_s,
                 signal_s,

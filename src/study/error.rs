@@ -6,6 +6,7 @@ use crate::metrics::{PairError, SpectrumError, SymbolError, SyncError};
 use crate::orbit::{NetworkError, OrbitError};
 use crate::predistort::{FitError, TableError};
 use crate::signal::SignalError;
+use crate::transmit::ReplayError;
 
 /// The step that failed, with its own words.
 #[derive(Debug, thiserror::Error)]
@@ -22,6 +23,12 @@ pub enum StudyError {
     /// The stage has no orbit.
     #[error("the stage: {0}")]
     Orbit(#[from] OrbitError),
+    /// The stage or its track cannot be replayed.
+    #[error("the replay: {0}")]
+    Replay(#[from] ReplayError),
+    /// Only a stage can be replayed.
+    #[error("a replay needs a `stage`: this study has a map, which knows no memory. Use --by map")]
+    NoStage,
     /// The stage has no map.
     #[error("the stage: {0}")]
     Sweep(#[from] SweepError),
@@ -42,6 +49,16 @@ pub enum StudyError {
     NoTable {
         /// The study's.
         scheme: &'static str,
+    },
+    /// The modulator's output resistance and the stage's current have no single working point.
+    #[error(
+        "the modulator's output resistance of {ohm} ohm has no single working point with this stage from a supply of {supply_v:.4} V on, where the stage's current falls as its supply rises: lower output_resistance"
+    )]
+    NoWorkingPoint {
+        /// V.
+        supply_v: f64,
+        /// ohm.
+        ohm: f64,
     },
     /// No map can be made.
     #[error(transparent)]

@@ -5,9 +5,12 @@ use crate::map::Map;
 use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum, SymbolFigures};
 use crate::orbit::{Orbit, Waveform};
 use crate::predistort::Table;
-use crate::verdict::{Judgement, MaskMargin};
+use crate::verdict::{Judgement, MaskMargin, Stress};
 
 use super::load::Study;
+use super::parts::EfficiencyParts;
+use super::replay::ReplayFacts;
+use super::shapes::Shape;
 use super::warning::Warning;
 
 /// A study carried out.
@@ -21,6 +24,8 @@ pub struct CheckResult {
     pub map: Map,
     /// How a stage behaves at full supply; absent for a map from a file.
     pub stage: Option<StageFacts>,
+    /// What the switch had to stand, where the map knows.
+    pub stress: Option<Stress>,
     /// The table that stood in front of the scheme.
     pub table: Option<Table>,
     /// How finely it was sampled.
@@ -45,6 +50,8 @@ pub struct CheckResult {
     pub symbols: Option<SymbolFigures>,
     /// A stretch of time around the deepest notch.
     pub notch: Notch,
+    /// The replay that gave all numbers, and what the map says in its place; absent where the map gave them.
+    pub replay: Option<Box<ReplayFacts>>,
     /// What limits how far this can be trusted.
     pub warnings: Vec<Warning>,
 }
@@ -58,6 +65,8 @@ pub struct StageFacts {
     pub waveform: Waveform,
     /// Time in which a deviation falls to 1/e, s.
     pub settling_s: f64,
+    /// The drain's waveform at full, half and lowest control.
+    pub shapes: Vec<Shape>,
 }
 
 /// The signal as it was found.
@@ -140,6 +149,8 @@ pub struct Metrics {
     pub efficiency: Option<f64>,
     /// Output over what the stage draws.
     pub stage_efficiency: Option<f64>,
+    /// Its factors.
+    pub efficiency_parts: EfficiencyParts,
 }
 
 /// A stretch of time around the deepest notch of the magnitude.

@@ -1,23 +1,25 @@
 //! One signal through the whole chain at one oversampling factor, block by block, in two passes.
 //!
 //! The first pass takes spectra, powers and the alignment of output and wanted signal; the second runs
-//! the same chain again and holds the aligned output against the wanted signal. Memory does not grow with
-//! the signal.
+//! the same chain again, or what was kept of a short signal, and holds the aligned output against the wanted
+//! signal. Memory does not grow with a long one.
 
 use num_complex::Complex64;
 
 use super::collect::Collected;
 use super::error::StudyError;
+use super::kept::{Kept, MOST, NotchWindow};
 use super::load::Study;
 use super::result::Notch;
-use crate::drive::{Correction, Track};
+use crate::drive::{Correction, Scheme, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
     Spectrum, SpectrumMeter, SpectrumPlan, SymbolFigures,
 };
+use crate::orbit::Network;
 use crate::signal::{Oversampled, Source};
-use crate::transmit::{Energy, MapTransmitter};
+use crate::transmit::{Energy, MapTransmitter, ReplayRequest, ReplayTransmitter};
 use crate::verdict::{Stress, Wanted};
 
 /// Samples a block of the chain.
@@ -48,6 +50,39 @@ pub struct Chain<'a> {
     pub evm_band_hz: f64,
     /// Samples of the signal at its own rate.
     pub signal_samples: u64,
+    /// The stage, where it is replayed; else the map stands for it.
+    pub replay: Option<Replayed<'a>>,
+}
+
+/// A stage that is replayed.
+#[derive(Debug, Clone, Copy)]
+pub struct Replayed<'a> {
+    pub network: &'a Network,
+    /// Segments at a time.
+    pub workers: usize,
+}
+
+/// A replay against the map on the same track.
+#[derive(Debug, Clone, Copy)]
+pub struct AgainstMap {
+    pub alignment: Alignment,
+    pub errors: ErrorFigures,
+    /// Carrier cycles replayed.
+    pub cycles: u64,
+}
+
+/// What makes an output of a track.
+enum Transmitter<'a> {
+    Map(Box<MapTransmitter<'a>>),
+    Replay(Box<ReplayTransmitter<'a>>),
+}
+
+/// What a pass leaves.
+struct Passed {
+    energy: Energy,
+    held: u64,
+    stress: Option<Stress>,
+    cycles: u64,
 }
 
 /// What came out.
@@ -71,6 +106,8 @@ pub struct Run {
     pub notch: Notch,
     /// Errors of symbols, where the study states the signal's format.
     pub symbols: Option<SymbolFigures>,
+    /// The replay against the map, where there was one.
+    pub against_map: Option<AgainstMap>,
 }
 
 /// The instants of a block that count: start and end of the signal are left out.
@@ -79,6 +116,8 @@ struct Piece<'a> {
     first: u64,
     track: &'a Track,
     output_v: &'a [Complex64],
+    /// What the map makes of the same track, beside a replay; else empty.
+    by_map_v: &'a [Complex64],
     range: std::ops::Range<usize>,
 }
 
@@ -89,6 +128,10 @@ impl Piece<'_> {
 
     fn output_v(&self) -> &[Complex64] {
         &self.output_v[self.range.clone()]
+    }
+
+    fn by_map_v(&self) -> &[Complex64] {
+        self.by_map_v.get(self.range.clone()).unwrap_or(&[])
     }
 }
 
@@ -121,51 +164,100 @@ impl Chain<'_> {
         source: &mut dyn Source,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
-    ) -> Result<(Energy, u64, Option<Stress>), StudyError> {
+    ) -> Result<Passed, StudyError> {
         let rate_hz = self.rate_hz(source);
         let (start, end) = self.span(rate_hz);
         let study = self.study;
         let full = study.full_control();
         let anchor = study.hardware.anchor();
-        let mut drive = study
-            .scheme
-            .drive(self.map, anchor, study.signal.level, full, rate_hz);
+        let scheme = match (&study.scheme, self.replay) {
+            // A replay places every edge itself.
+            (Scheme::Width(width), Some(_)) => Scheme::Width(width.without_timing()),
+            (scheme, _) => scheme.clone(),
+        };
+        let mut drive = scheme.drive(self.map, anchor, study.signal.level, full, rate_hz);
         if let Some(correction) = self.correction {
             drive = drive.corrected(correction, self.factor);
         }
-        let mut transmitter = MapTransmitter::new(self.map, &study.scheme.modulator());
+        let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
+        let mut transmitter = match self.replay {
+            None => Transmitter::Map(Box::new(by_map())),
+            Some(replay) => Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
+                network: replay.network,
+                scheme: &study.scheme,
+                map: self.map,
+                rate_hz,
+                counted: (start, end),
+                workers: replay.workers,
+            })?)),
+        };
+        let mut beside = self.replay.map(|_| by_map());
         let mut oversampled = Oversampled::new(source, self.factor)?;
         let mut samples = vec![Complex64::ZERO; BLOCK];
-        let mut track = Track::default();
-        let mut output_v = Vec::with_capacity(BLOCK);
+        let (mut fresh, mut track) = (Track::default(), Track::default());
+        let (mut output_v, mut by_map_v) = (Vec::with_capacity(BLOCK), Vec::new());
         let mut first = 0u64;
-        loop {
+        let mut ended = false;
+        while !ended && first < end {
             let count = oversampled.read(&mut samples)?;
-            if count == 0 || first >= end {
-                break;
-            }
+            ended = count == 0;
+            fresh.clear();
             track.clear();
             output_v.clear();
-            drive.push(&samples[..count], &mut track);
-            let inside = |at: u64| (at.clamp(first, first + count as u64) - first) as usize;
+            by_map_v.clear();
+            drive.push(&samples[..count], &mut fresh);
+            match &mut transmitter {
+                Transmitter::Map(_) => {
+                    std::mem::swap(&mut fresh, &mut track);
+                }
+                Transmitter::Replay(replay) if ended => {
+                    replay.finish(&mut track, &mut output_v)?;
+                }
+                Transmitter::Replay(replay) => {
+                    replay.push(&fresh, &mut track, &mut output_v)?;
+                }
+            }
+            let length = track.len();
+            let inside = |at: u64| (at.clamp(first, first + length as u64) - first) as usize;
             let range = inside(start)..inside(end);
-            transmitter.push(&track, range.clone(), &mut output_v);
+            match &mut transmitter {
+                Transmitter::Map(map) => map.push(&track, range.clone(), &mut output_v),
+                Transmitter::Replay(_) => {}
+            }
+            if let Some(map) = &mut beside {
+                map.push(&track, range.clone(), &mut by_map_v);
+            }
             if !range.is_empty() {
                 take(&Piece {
                     first,
                     track: &track,
                     output_v: &output_v,
+                    by_map_v: &by_map_v,
                     range,
                 })?;
             }
-            first += count as u64;
+            first += length as u64;
             tick(count as u64);
         }
-        let stress = self
-            .map
-            .stress_up_to(transmitter.highest_control())
-            .map(|(peak_v, peak_a)| Stress { peak_v, peak_a });
-        Ok((transmitter.energy(), transmitter.held(), stress))
+        let (energy, held, highest, cycles) = match &transmitter {
+            Transmitter::Map(map) => (map.energy(), map.held(), map.highest_control(), 0),
+            Transmitter::Replay(replay) => {
+                let held = beside.as_ref().map_or(0, MapTransmitter::held);
+                (
+                    replay.energy(),
+                    held,
+                    replay.highest_control(),
+                    replay.cycles(),
+                )
+            }
+        };
+        let stress = self.map.stress_up_to(highest);
+        Ok(Passed {
+            energy,
+            held,
+            stress: stress.map(|(peak_v, peak_a)| Stress { peak_v, peak_a }),
+            cycles,
+        })
     }
 
     fn meters(&self, rate_hz: f64) -> Result<(SpectrumMeter, Vec<SpectrumMeter>), StudyError> {
@@ -207,7 +299,13 @@ impl Chain<'_> {
         let rate_hz = self.rate_hz(source);
         let load_ohm = self.map.load_ohm();
         let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
-        let (mut wanted_meter, _) = self.meters(rate_hz)?;
+        let mut wanted_meter = output_meter.clone();
+        let (start, end) = self.span(rate_hz);
+        let keeps = end.saturating_sub(start) <= MOST;
+        let mut kept = Kept {
+            first: start,
+            ..Kept::default()
+        };
         let mut output_envelope = EnvelopeMeter::new(load_ohm);
         let mut wanted_envelope = EnvelopeMeter::new(load_ohm);
         let search_s = self.settling(rate_hz) as f64 / rate_hz;
@@ -215,7 +313,14 @@ impl Chain<'_> {
         let mut density = vec![0u64; DENSITY_BINS];
         let full = self.study.full_control();
         let mut deepest = (f64::INFINITY, 0u64);
-        let (energy, held, stress) = self.pass(source, tick, |piece| {
+        let mut map_alignment = match self.replay {
+            Some(_) => Some(AlignmentMeter::new(rate_hz, search_s)?),
+            None => None,
+        };
+        let passed = self.pass(source, tick, |piece| {
+            if let Some(meter) = &mut map_alignment {
+                meter.push(piece.by_map_v(), piece.output_v())?;
+            }
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
                 meter.push(piece.output_v());
@@ -224,6 +329,15 @@ impl Chain<'_> {
             output_envelope.push(piece.output_v());
             wanted_envelope.push(piece.wanted());
             alignment.push(piece.wanted(), piece.output_v())?;
+            if keeps {
+                let range = piece.range.clone();
+                kept.wanted.extend_from_slice(piece.wanted());
+                kept.output_v.extend_from_slice(piece.output_v());
+                kept.by_map_v.extend_from_slice(piece.by_map_v());
+                kept.asked
+                    .extend_from_slice(&piece.track.asked[range.clone()]);
+                kept.control.extend_from_slice(&piece.track.control[range]);
+            }
             for at in piece.range.clone() {
                 let fraction = piece.track.control[at] / full;
                 let bin = (fraction * DENSITY_BINS as f64) as usize;
@@ -238,7 +352,12 @@ impl Chain<'_> {
         let output_envelope = output_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let wanted_envelope = wanted_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let alignment = alignment.finish()?;
+        let map_alignment = map_alignment.map(AlignmentMeter::finish).transpose()?;
 
+        let mut map_errors = match map_alignment {
+            Some(alignment) => Some(ErrorMeter::new(alignment, rate_hz, None)?),
+            None => None,
+        };
         let mut errors = ErrorMeter::new(alignment, rate_hz, Some(self.evm_band_hz))?;
         let mut collected = self
             .study
@@ -246,25 +365,55 @@ impl Chain<'_> {
             .format
             .map(|format| Collected::new(format, self.factor, alignment.delay_s * rate_hz));
         let mut notch = Notch::default();
-        let reach = (NOTCH_SAMPLES * self.factor) as u64;
-        let level = self.study.signal.level;
-        self.pass(source, tick, |piece| {
-            errors.push(piece.wanted(), piece.output_v())?;
+        let window = NotchWindow {
+            middle: deepest.1,
+            reach: (NOTCH_SAMPLES * self.factor) as u64,
+            rate_hz,
+            level: self.study.signal.level,
+            full,
+        };
+        let mut again = |first: u64,
+                         wanted: &[Complex64],
+                         output_v: &[Complex64],
+                         by_map_v: &[Complex64],
+                         asked: &[f64],
+                         control: &[f64]|
+         -> Result<(), StudyError> {
+            if let Some(meter) = &mut map_errors {
+                meter.push(by_map_v, output_v)?;
+            }
+            errors.push(wanted, output_v)?;
             if let Some(collected) = &mut collected {
-                collected.push(piece.wanted(), piece.output_v());
+                collected.push(wanted, output_v);
             }
-            for at in piece.range.clone() {
-                let instant = piece.first + at as u64;
-                if instant.abs_diff(deepest.1) <= reach {
-                    let offset = instant as f64 - deepest.1 as f64;
-                    notch.time_s.push(offset / rate_hz);
-                    notch.wanted.push(level * piece.track.wanted[at].norm());
-                    notch.asked.push(piece.track.asked[at] / full);
-                    notch.control.push(piece.track.control[at] / full);
-                }
-            }
+            window.take(first, wanted, asked, control, &mut notch);
             Ok(())
-        })?;
+        };
+        if keeps {
+            let Kept {
+                first,
+                wanted,
+                output_v,
+                by_map_v,
+                asked,
+                control,
+            } = &kept;
+            again(*first, wanted, output_v, by_map_v, asked, control)?;
+            tick(self.signal_samples * self.factor as u64);
+        } else {
+            self.pass(source, tick, |piece| {
+                let range = piece.range.clone();
+                again(
+                    piece.first + range.start as u64,
+                    piece.wanted(),
+                    piece.output_v(),
+                    piece.by_map_v(),
+                    &piece.track.asked[range.clone()],
+                    &piece.track.control[range],
+                )
+            })?;
+        }
+        drop(kept);
 
         let total: u64 = density.iter().sum();
         let mut wanted_spectrum = wanted_meter.finish()?;
@@ -285,14 +434,22 @@ impl Chain<'_> {
             wanted_envelope,
             alignment,
             errors: errors.finish()?,
-            energy,
-            held: held as f64 / total.max(1) as f64,
-            stress,
+            energy: passed.energy,
+            held: passed.held as f64 / total.max(1) as f64,
+            stress: passed.stress,
             control_density: density
                 .iter()
                 .map(|&n| n as f64 / total.max(1) as f64)
                 .collect(),
             notch,
+            against_map: match (map_alignment, map_errors) {
+                (Some(alignment), Some(meter)) => Some(AgainstMap {
+                    alignment,
+                    errors: meter.finish()?,
+                    cycles: passed.cycles,
+                }),
+                _ => None,
+            },
             symbols: collected
                 .map(|collected| collected.finish(rate_hz / self.factor as f64))
                 .transpose()?,

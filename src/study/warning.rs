@@ -43,6 +43,19 @@ pub enum Warning {
         /// Sample period of the signal, s.
         signal_s: f64,
     },
+    /// Map and replay give different answers.
+    MapMisleads {
+        /// Largest movement of any margin, dB; infinite where a check is decided in only one of them.
+        moved_db: f64,
+        /// The check that moved most.
+        check: String,
+        /// Whether the two verdicts differ as well.
+        other_verdict: bool,
+    },
+    /// A replayed stage whose choke is ideal.
+    IdealChoke,
+    /// A scheme without a stage among replayed ones.
+    OnlyByMap,
     /// A map from a file knows neither stress nor memory.
     MapFromFile {
         /// What it cannot answer.
@@ -111,6 +124,33 @@ impl fmt::Display for Warning {
                 show(*settling_s, "s", 3),
                 show(*signal_s, "s", 3)
             ),
+            Self::MapMisleads {
+                moved_db,
+                check,
+                other_verdict,
+            } => {
+                let verdict = match other_verdict {
+                    true => "; its verdict is another one",
+                    false => "",
+                };
+                if moved_db.is_finite() {
+                    write!(
+                        f,
+                        "the map misleads here: {check} differs by {moved_db:.2} dB between map and replay (0.5 dB is taken as agreement){verdict}. Judge this study by replay"
+                    )
+                } else {
+                    write!(
+                        f,
+                        "the map misleads here: {check} is decided in only one of map and replay{verdict}. Judge this study by replay"
+                    )
+                }
+            }
+            Self::IdealChoke => f.write_str(
+                "the feed is an ideal choke: its current is taken to follow the supply at once, so that the memory of a real choke is missing. Give the feed an `inductance` to see it",
+            ),
+            Self::OnlyByMap => {
+                f.write_str("an ideal linear stage has nothing to replay: its numbers are by map")
+            }
             Self::MapFromFile { missing } => write!(
                 f,
                 "the map came from a file: {} cannot be answered from it",

@@ -103,7 +103,7 @@ impl Lab {
         }
         let (mut track, mut output) = (Track::default(), Vec::new());
         drive.push(&wanted, &mut track);
-        let mut transmitter = MapTransmitter::new(map, &scheme.modulator());
+        let mut transmitter = MapTransmitter::new(map, &scheme.modulator(), rate_hz);
         transmitter.push(&track, 0..track.len(), &mut output);
         let mut late = Delay::new(37.3);
         let mut state = seed;

@@ -102,5 +102,6 @@ pub(super) fn facts(result: &CheckResult) -> Vec<FactGroup> {
             ),
         ],
     });
+    groups.extend(super::replay::facts(result));
     groups
 }

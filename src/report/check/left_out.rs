@@ -13,9 +13,18 @@ const MODEL_LIMITS: [&str; 4] = [
     "Harmonics of the carrier are not part of the masks.",
 ];
 
+/// What stands in place of the first where the stage was replayed.
+const REPLAYED: &str = "By replay: the stage is integrated carrier cycle by carrier cycle from its state equations, so that \
+     the memory of its feed and network is in every number. Within a cycle supply and edges move on straight lines; \
+     between the track's instants they are interpolated. The largest voltages and currents of the switch and the \
+     carrier's harmonics are those of orbits, not of the replay.";
+
 /// What it leaves out, the stage's own model included.
 pub(super) fn model_limits(result: &CheckResult) -> Vec<String> {
     let mut limits: Vec<String> = MODEL_LIMITS.iter().map(|text| (*text).to_owned()).collect();
+    if result.replay.is_some() {
+        REPLAYED.clone_into(&mut limits[0]);
+    }
     let Hardware::Stage(stage) = &result.study.hardware else {
         return limits;
     };
@@ -49,10 +58,16 @@ pub(super) fn model_limits(result: &CheckResult) -> Vec<String> {
     } else {
         limits.insert(
             1,
-            "The stage is linear between switching instants: fixed capacitances, a switch with one closed resistance \
-             that opens and closes at once, no diode, no gate coupling, no temperature. Its supply map is therefore \
-             straight; what bends the signal here are the floor, the modulator and the paths."
-                .to_owned(),
+            format!(
+                "The stage is linear between switching instants: fixed capacitances, {}, no diode, no gate coupling, \
+                 no temperature. Its supply map is therefore straight; what bends a signal on the supply are the \
+                 floor, the modulator, the paths and, where it is replayed, the stage's memory.",
+                if stage.is_pair() {
+                    "two switches with one closed resistance each that open and close at once, with dead time between"
+                } else {
+                    "a switch with one closed resistance that opens and closes at once"
+                }
+            ),
         );
     }
     limits.insert(

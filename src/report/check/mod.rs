@@ -4,6 +4,7 @@ mod facts;
 mod figures;
 mod left_out;
 mod numbers;
+mod replay;
 mod spectrum;
 
 use super::page::{Conditions, Headline, Outcome, Page};
@@ -58,7 +59,10 @@ pub fn page(result: &CheckResult, request: &Request) -> Page {
         warnings: result.warnings.iter().map(ToString::to_string).collect(),
         key_figures: numbers::key_figures(result),
         figures: figures::figures(result),
-        tables: numbers::tables(result),
+        tables: numbers::tables(result)
+            .into_iter()
+            .chain(replay::tables(result))
+            .collect(),
         facts: facts::facts(result),
         model_limits: left_out::model_limits(result),
         conditions: Conditions {
@@ -131,6 +135,7 @@ pub fn text(result: &CheckResult) -> String {
     for (title, table) in [("Checks", checks), ("Numbers", numbers)] {
         text.push_str(&format!("\n{title}\n{}\n", table.text()));
     }
+    text.push_str(&replay::text(result));
     if !result.warnings.is_empty() {
         text.push_str("\nWarnings\n");
         for warning in &result.warnings {

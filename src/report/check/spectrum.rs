@@ -5,7 +5,7 @@ use crate::report::figures::{SpectrumCurve, SpectrumFigure};
 use crate::report::held::{HeldSpectrum, narrowest, tightest};
 use crate::report::page::CaptionedFigure;
 use crate::report::text::quantity;
-use crate::study::CheckResult;
+use crate::study::{By, CheckResult};
 use crate::units;
 
 /// The spectrum in the narrowest measuring bandwidth of the masks, with its detector.
@@ -61,6 +61,15 @@ pub(in crate::report) fn spectrum_view(result: &CheckResult) -> (SpectrumFigure,
         &result.output_spectrum,
         resolution_hz,
     ));
+    if let Some(facts) = &result.replay
+        && facts.by == By::Both
+    {
+        curves.push(SpectrumCurve::in_dbm(
+            "output by map",
+            &facts.map.output_spectrum,
+            resolution_hz,
+        ));
+    }
     curves.push(SpectrumCurve::in_dbm(
         "wanted",
         &result.wanted_spectrum,

@@ -11,6 +11,8 @@ mod lookup;
 mod map;
 mod margin;
 mod mask;
+mod mismatch;
+mod shapes;
 mod spectrum;
 mod waveform;
 
@@ -23,8 +25,10 @@ pub use lookup::{LookupCurve, LookupFigure};
 pub use map::MapFigure;
 pub use margin::{MarginCurve, MarginFigure};
 pub use mask::{MaskFigure, MaskLine};
+pub use mismatch::MismatchFigure;
+pub use shapes::{ShapeCurve, ShapesFigure};
 pub use spectrum::{SpectrumCurve, SpectrumFigure, WorstPoint};
-pub use waveform::WaveformFigure;
+pub use waveform::{OtherCurves, WaveformFigure};
 
 use crate::report::text::quantity;
 

@@ -1,0 +1,421 @@
+//! A track through the replayed stage: controls to cycles, cycles through the stage, their envelope back to the track's
+//! instants.
+
+mod controls;
+mod envelope;
+
+use std::collections::VecDeque;
+use std::f64::consts::TAU;
+use std::ops::Range;
+
+use num_complex::Complex64;
+
+use super::by_map::Energy;
+use super::replay::{
+    Account, Cycle, CycleOutput, Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all,
+};
+use crate::drive::{Scheme, Track};
+use crate::map::Map;
+use crate::orbit::{Drive, Network};
+use controls::{Between, Border, Controls};
+use envelope::Envelope;
+
+/// Cycles that are replayed at a time: some MB.
+const STRETCH: usize = 1 << 16;
+
+/// What is left of a wrong start where a segment begins to count.
+const FORGOTTEN: f64 = 1e-12;
+
+/// What a replay needs besides the track.
+#[derive(Debug, Clone, Copy)]
+pub struct ReplayRequest<'a> {
+    /// The stage.
+    pub network: &'a Network,
+    /// The scheme whose track it is.
+    pub scheme: &'a Scheme,
+    /// The map of the scheme, for what a replay does not tell: the driver's power.
+    pub map: &'a Map,
+    /// Rate of the track, Hz.
+    pub rate_hz: f64,
+    /// Instants whose energies count.
+    pub counted: (u64, u64),
+    /// Segments at a time.
+    pub workers: usize,
+}
+
+/// What moves the stage along the track.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+enum Moves {
+    /// The control is the supply; the width is full.
+    Supply,
+    /// The control is the width; the supply is full, or in the track.
+    Width,
+    /// Two branches of full supply and width.
+    Branches,
+}
+
+/// One stage with its controls and what it gave.
+#[derive(Debug, Clone)]
+struct Branch {
+    controls: Controls,
+    replay: Replay,
+    cycles: Vec<Cycle>,
+    outputs: Vec<CycleOutput>,
+    /// Factor of its output in the sum.
+    weight: f64,
+}
+
+/// A replayed stage at work on a track.
+#[derive(Debug, Clone)]
+pub struct ReplayTransmitter<'a> {
+    request: ReplayRequest<'a>,
+    moves: Moves,
+    full: Drive,
+    branches: Vec<Branch>,
+    envelope: Envelope,
+    /// The last cycle of each branch.
+    last: [CycleOutput; 2],
+    overlap: u64,
+    started: bool,
+    /// Instants that wait for their output.
+    waiting: VecDeque<Row>,
+    taken: u64,
+    given: u64,
+    energy: Energy,
+    /// From the supply in counted cycles, and how many those are.
+    supply_j: f64,
+    counted_cycles: u64,
+    highest_control: f64,
+    scratch: [Vec<Complex64>; 3],
+    values: Vec<Complex64>,
+}
+
+#[derive(Debug, Clone, Copy)]
+struct Row {
+    wanted: Complex64,
+    asked: f64,
+    control: f64,
+    phase: Complex64,
+    supply_v: Option<f64>,
+}
+
+impl<'a> ReplayTransmitter<'a> {
+    /// The stage of `request` before the track's first instant.
+    ///
+    /// # Errors
+    /// [`ReplayError`].
+    pub fn new(request: ReplayRequest<'a>) -> Result<Self, ReplayError> {
+        let stage = request.network.stage();
+        let carrier_hz = stage.frequency_hz;
+        let full = Drive::new(&stage.driver, stage.driver.duty);
+        let mut replay = Replay::new(request.network, &full, Setup::of(Account::Supply))?;
+        let (moves, between) = match request.scheme {
+            Scheme::Supply(_) => (Moves::Supply, Between::BandLimited),
+            Scheme::Width(_) => (Moves::Width, Between::BandLimited),
+            Scheme::Levels(_) => (Moves::Width, Between::Straight),
+            Scheme::Outphase(_) => (Moves::Branches, Between::BandLimited),
+            other => {
+                return Err(ReplayError::Scheme {
+                    scheme: other.name(),
+                });
+            }
+        };
+        if let Scheme::Width(scheme) = request.scheme {
+            replay = replay.with_timing(Timing {
+                grid_rad: scheme.grid_s.unwrap_or(0.0) * carrier_hz * TAU,
+                jitter_rad: scheme.jitter_s * carrier_hz * TAU,
+                seed: scheme.seed,
+            });
+        }
+        let held = Cycle {
+            supply_v: [stage.supply_v; 2],
+            pulse: Pulse::phased(&full, 0.0, 0.0),
+        };
+        // A narrow pulse lets a stage ring longer.
+        let narrow = Drive::new(&stage.driver, 0.05 * stage.driver.duty);
+        let rarely = Cycle {
+            pulse: Pulse::phased(&narrow, 0.0, 0.0),
+            ..held
+        };
+        let mut overlap = replay.memory_cycles(&held, FORGOTTEN)?;
+        if moves == Moves::Width {
+            overlap = overlap.max(replay.memory_cycles(&rarely, FORGOTTEN)?);
+        }
+        let branch = Branch {
+            controls: Controls::new(carrier_hz, request.rate_hz, between),
+            replay,
+            cycles: Vec::new(),
+            outputs: Vec::new(),
+            weight: 1.0,
+        };
+        let branches = match request.scheme {
+            Scheme::Outphase(scheme) => {
+                // sqrt(2) V (b1 + g b2) / 2, see the scheme.
+                let gains = [1.0, 10f64.powf(-scheme.gain_mismatch_db / 20.0)];
+                gains
+                    .iter()
+                    .map(|gain| {
+                        let mut one = branch.clone();
+                        one.weight = gain / std::f64::consts::SQRT_2;
+                        one
+                    })
+                    .collect()
+            }
+            _ => vec![branch],
+        };
+        Ok(Self {
+            request,
+            moves,
+            full,
+            branches,
+            envelope: Envelope::new(carrier_hz, request.rate_hz),
+            last: [CycleOutput::default(); 2],
+            overlap,
+            started: false,
+            waiting: VecDeque::new(),
+            taken: 0,
+            given: 0,
+            energy: Energy::default(),
+            supply_j: 0.0,
+            counted_cycles: 0,
+            highest_control: 0.0,
+            scratch: Default::default(),
+            values: Vec::new(),
+        })
+    }
+
+    /// Takes the instants of `track`. Appends to `ready` and `output_v` the instants whose output is complete, in
+    /// order: both lag behind what was taken.
+    ///
+    /// # Errors
+    /// [`ReplayError`] of a cycle.
+    pub fn push(
+        &mut self,
+        track: &Track,
+        ready: &mut Track,
+        output_v: &mut Vec<Complex64>,
+    ) -> Result<(), ReplayError> {
+        for at in 0..track.len() {
+            self.waiting.push_back(Row {
+                wanted: track.wanted[at],
+                asked: track.asked[at],
+                control: track.control[at],
+                phase: track.phase[at],
+                supply_v: track.supply_v.get(at).copied(),
+            });
+        }
+        self.taken += track.len() as u64;
+        // In pieces, so that the cycles of a piece are a stretch or few.
+        let carrier_hz = self.request.network.stage().frequency_hz;
+        let piece = (STRETCH as f64 * self.request.rate_hz / carrier_hz).ceil() as usize;
+        let mut from = 0;
+        while from < track.len() {
+            let to = (from + piece.max(1)).min(track.len());
+            self.piece(track, from..to)?;
+            from = to;
+        }
+        self.give(ready, output_v);
+        Ok(())
+    }
+
+    /// Holds the last instant until the output of every instant that was taken is complete.
+    ///
+    /// # Errors
+    /// [`ReplayError`] of a cycle.
+    pub fn finish(
+        &mut self,
+        ready: &mut Track,
+        output_v: &mut Vec<Complex64>,
+    ) -> Result<(), ReplayError> {
+        let Some(last) = self.waiting.back().copied() else {
+            return Ok(());
+        };
+        let latency = self.branches[0].controls.latency() + self.envelope.latency();
+        let mut held = Track::default();
+        let branch = [last.phase; 2];
+        for _ in 0..latency {
+            held.wanted.push(last.wanted);
+            held.asked.push(last.asked);
+            held.control.push(last.control);
+            held.phase.push(last.phase);
+            held.supply_v.extend(last.supply_v);
+            held.branches.push(branch);
+        }
+        let mut rounds = 0;
+        while !self.waiting.is_empty() && rounds < 64 {
+            self.piece(&held, 0..latency)?;
+            self.give(ready, output_v);
+            rounds += 1;
+        }
+        Ok(())
+    }
+
+    fn piece(&mut self, track: &Track, range: Range<usize>) -> Result<(), ReplayError> {
+        let full_v = self.request.network.stage().supply_v;
+        let driver = &self.request.network.stage().driver;
+        let (full, moves) = (self.full, self.moves);
+        let limit = self.request.map.domain();
+        let [controls, first, second] = &mut self.scratch;
+        controls.clear();
+        first.clear();
+        second.clear();
+        for at in range.clone() {
+            let supply_v = track.supply_v.get(at).copied().unwrap_or(full_v);
+            controls.push(Complex64::new(track.control[at], supply_v));
+        }
+        match moves {
+            Moves::Branches => {
+                for pair in track.branches.get(range).unwrap_or(&[]) {
+                    first.push(pair[0]);
+                    second.push(pair[1]);
+                }
+            }
+            _ => first.extend_from_slice(&track.phase[range]),
+        }
+        // The controls between instants may pass what is there at them.
+        let cycle_of = |start: Border, end: Border| {
+            let ends = [start, end];
+            let turn = end.phase_rad - start.phase_rad;
+            match moves {
+                Moves::Supply => Cycle {
+                    supply_v: ends.map(|border| border.control[0].clamp(0.0, full_v)),
+                    pulse: Pulse::phased(&full, start.phase_rad, turn),
+                },
+                Moves::Branches => Cycle {
+                    supply_v: [full_v; 2],
+                    pulse: Pulse::phased(&full, start.phase_rad, turn),
+                },
+                Moves::Width => {
+                    let [from, to] = ends
+                        .map(|border| Drive::new(driver, border.control[0].clamp(1e-4, limit.1)));
+                    Cycle {
+                        supply_v: ends.map(|border| border.control[1].clamp(0.0, full_v)),
+                        pulse: Pulse::between(&from, &to, start.phase_rad, turn),
+                    }
+                }
+            }
+        };
+        let segments = Segments {
+            workers: self.request.workers,
+            overlap: self.overlap,
+        };
+        for (index, branch) in self.branches.iter_mut().enumerate() {
+            let phasors = if index == 0 { &*first } else { &*second };
+            branch.cycles.clear();
+            let cycles = &mut branch.cycles;
+            branch.controls.push(controls, phasors, |start, end| {
+                cycles.push(cycle_of(start, end));
+            });
+            if let (false, Some(cycle)) = (self.started, branch.cycles.first()) {
+                branch.replay.settle(cycle)?;
+            }
+            replay_all(
+                &mut branch.replay,
+                &branch.cycles,
+                segments,
+                &mut branch.outputs,
+            )?;
+        }
+        self.started |= !self.branches[0].cycles.is_empty();
+        self.account();
+        let branches = &self.branches;
+        let count = branches
+            .iter()
+            .map(|one| one.outputs.len())
+            .min()
+            .unwrap_or(0);
+        let last = &self.last;
+        let sums = (0..count).map(|at| {
+            let all = branches.iter().zip(last);
+            all.map(|(one, last)| {
+                let before = match at.checked_sub(1) {
+                    Some(before) => &one.outputs[before],
+                    None => last,
+                };
+                one.weight * before.border_v(&one.outputs[at])
+            })
+            .sum()
+        });
+        self.envelope.push(sums, &mut self.values);
+        for (last, branch) in self.last.iter_mut().zip(&self.branches) {
+            if let Some(output) = branch.outputs.last() {
+                *last = *output;
+            }
+        }
+        Ok(())
+    }
+
+    /// Adds the energies of the cycles that were just replayed, where they count.
+    fn account(&mut self) {
+        let Some(first) = self.branches.first() else {
+            return;
+        };
+        let instants = self.request.rate_hz / self.request.network.stage().frequency_hz;
+        let begin = first.replay.cycles() - first.outputs.len() as u64;
+        let (from, to) = self.request.counted;
+        // Border cycles are those whose middle lies inside.
+        let border = |instant: u64| (instant as f64 / instants - 0.5).ceil().max(0.0) as u64;
+        let clip = |cycle: u64| (cycle.max(begin) - begin).min(first.outputs.len() as u64);
+        let range = clip(border(from)) as usize..clip(border(to)) as usize;
+        self.counted_cycles += range.len() as u64;
+        for branch in &self.branches {
+            let outputs = branch.outputs.get(range.clone()).unwrap_or(&[]);
+            self.supply_j += outputs
+                .iter()
+                .map(|output| output.energies.supply_j)
+                .sum::<f64>();
+        }
+    }
+
+    /// Hands out the instants whose output is complete.
+    fn give(&mut self, ready: &mut Track, output_v: &mut Vec<Complex64>) {
+        let load_ohm = self.request.map.load_ohm();
+        let count = self.values.len().min(self.waiting.len());
+        let (from, to) = self.request.counted;
+        for (value, row) in self.values.drain(..).zip(self.waiting.drain(..count)) {
+            ready.wanted.push(row.wanted);
+            ready.asked.push(row.asked);
+            ready.control.push(row.control);
+            ready.phase.push(row.phase);
+            ready.supply_v.extend(row.supply_v);
+            output_v.push(value);
+            if (from..to).contains(&self.given) {
+                self.energy.samples += 1;
+                self.energy.output_w += value.norm_sqr() / (2.0 * load_ohm);
+                self.energy.driver_w += self.request.map.driver_held_w(row.control).unwrap_or(0.0);
+                self.highest_control = self.highest_control.max(row.control);
+            }
+            self.given += 1;
+        }
+    }
+
+    /// The sums so far: the supply's from integrated energy, the driver's by the map.
+    pub fn energy(&self) -> Energy {
+        let mut energy = self.energy;
+        let carrier_hz = self.request.network.stage().frequency_hz;
+        let modulator = self.request.scheme.modulator();
+        let mean_w = self.supply_j * carrier_hz / self.counted_cycles as f64;
+        let samples = energy.samples as f64;
+        energy.stage_w = mean_w * samples;
+        energy.modulator_w = energy.stage_w / modulator.efficiency + modulator.idle_w * samples;
+        energy
+    }
+
+    /// The highest control so far.
+    pub fn highest_control(&self) -> f64 {
+        self.highest_control
+    }
+
+    /// Carrier cycles so far, of all branches.
+    pub fn cycles(&self) -> u64 {
+        self.branches
+            .iter()
+            .map(|branch| branch.replay.cycles())
+            .sum()
+    }
+
+    /// Cycles that a segment starts early.
+    pub fn overlap_cycles(&self) -> u64 {
+        self.overlap
+    }
+}
