@@ -39,7 +39,9 @@ pub use predistort::{
 };
 pub use rank::{Rank, follows, ranked};
 pub use replay::{By, ByMap, MarginPair, ReplayFacts};
-pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
+pub use result::{
+    CheckResult, Convergence, GateTrain, Metrics, Notch, RateFacts, SignalFacts, StageFacts,
+};
 pub use scale::Scale;
 pub use shapes::Shape;
 pub use warning::Warning;

@@ -45,6 +45,8 @@ pub(super) fn shapes(network: &Network, scheme: &Scheme, map: &Map) -> Vec<Shape
     }
     [("full", full), ("half", 0.5 * full), ("lowest", lowest)]
         .into_iter()
+        // Bursts are of full pulses.
+        .filter(|(place, _)| *place == "full" || !matches!(scheme, Scheme::Burst(_)))
         .map(|(place, value)| {
             let (supply_v, duty) = match control {
                 Control::Supply | Control::Drive => (value, stage.driver.duty),
