@@ -180,6 +180,7 @@ impl<'a> Bench<'a> {
             None => Front::None,
             Some(Predistortion::Table(table)) => Front::Table(table.clone()),
             Some(Predistortion::Request(request)) => Front::Table(self.table(request)?),
+            Some(Predistortion::Polynomial(polynomial)) => Front::Polynomial(polynomial.clone()),
         })
     }
 
