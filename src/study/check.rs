@@ -8,6 +8,7 @@ use super::parts::EfficiencyParts;
 use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
+use super::validity::of_scheme;
 use super::warning::Warning;
 use crate::drive::{
     ClassBScheme, Correction, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme, Polynomial,
@@ -662,6 +663,7 @@ pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     if let Some(coarse) = coarse_grid(result) {
         warnings.push(coarse);
     }
+    warnings.extend(of_scheme(result));
     if let Some(first) = result.map.failures().first() {
         warnings.push(Warning::PointsFailed {
             count: result.map.failures().len(),

@@ -18,6 +18,7 @@ mod replay;
 mod result;
 mod run;
 mod scale;
+mod validity;
 mod warning;
 
 pub use average::Averaged;
