@@ -115,6 +115,39 @@ pub enum Warning {
         /// dB
         gain_db: f64,
     },
+    /// Edges of the gate that the map cannot answer for.
+    HurriedGate {
+        /// Part of all edges.
+        fraction: f64,
+        /// Shortest time between two of them, s.
+        shortest_s: f64,
+        /// Until 1 % is left of a transition, s.
+        transition_s: f64,
+    },
+    /// The stage's transitions are more than one or two modes.
+    PoorTransition {
+        /// Part left, RMS.
+        left: f64,
+    },
+    /// The error of noise shaping ran away.
+    OverloadedShaping {
+        /// Ticks at which it was cut.
+        ticks: u64,
+    },
+    /// A pulse sequence does not last as long as the signal.
+    PulsesOfOtherLength {
+        /// When it ends, s.
+        end_s: f64,
+        /// When the signal ends, s.
+        signal_s: f64,
+    },
+    /// The lines of the bursts lie outside what is sampled.
+    BurstsOutOfSight {
+        /// Rate of the bursts, Hz.
+        rate_hz: f64,
+        /// Highest offset that is seen, Hz.
+        seen_hz: f64,
+    },
     /// Few averages.
     FewAverages {
         /// Segments averaged.
@@ -253,6 +286,38 @@ impl fmt::Display for Warning {
             Self::UnequalBranches { gain_db } => write!(
                 f,
                 "branches that differ by {gain_db:.2} dB: the weaker one is taken to draw as much as the other, so that the efficiency is understated"
+            ),
+            Self::HurriedGate {
+                fraction,
+                shortest_s,
+                transition_s,
+            } => write!(
+                f,
+                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate; gated stages are not replayed yet",
+                100.0 * fraction,
+                show(*transition_s, "s", 3),
+                show(*shortest_s, "s", 3)
+            ),
+            Self::PoorTransition { left } => write!(
+                f,
+                "one or two modes leave {} of the stage's rise or fall (RMS): its transitions are known to that only",
+                show(100.0 * left, "%", 2)
+            ),
+            Self::OverloadedShaping { ticks } => write!(
+                f,
+                "noise shaping was overloaded at {ticks} ticks, where its error was cut: lower the level, take more levels or the first order"
+            ),
+            Self::PulsesOfOtherLength { end_s, signal_s } => write!(
+                f,
+                "the pulse sequence ends at {}, the signal at {}: beyond its end the gate keeps its last level",
+                show(*end_s, "s", 5),
+                show(*signal_s, "s", 5)
+            ),
+            Self::BurstsOutOfSight { rate_hz, seen_hz } => write!(
+                f,
+                "no filter stands behind the stage, so that the lines of the bursts, multiples of {}, leave it: those up to {} are seen, and power and margins move with every line that finer sampling shows",
+                show(*rate_hz, "Hz", 4),
+                show(*seen_hz, "Hz", 4)
             ),
             Self::FewAverages { segments } => write!(
                 f,
