@@ -173,7 +173,7 @@ fn the_document_has_settings_parts_and_one_span() {
         assert!(own >= rate, "{own} {rate}");
         let metrics = &scheme["metrics"];
         let parts = &metrics["efficiency_parts"];
-        let product: f64 = ["modulator", "stage", "driver", "combiner"]
+        let product: f64 = ["modulator", "stage", "driver", "combiner", "filter"]
             .iter()
             .map(|part| parts[part].as_f64().unwrap())
             .product();
