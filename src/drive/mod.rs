@@ -74,6 +74,8 @@ pub struct Drawn {
     pub stage_w: f64,
     /// By the driver.
     pub driver_w: f64,
+    /// Not drawn, but delivered: what the stage's filter takes in, or the output itself without one.
+    pub delivered_w: f64,
 }
 
 impl Drawn {

@@ -9,6 +9,7 @@ use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
 use super::shapes::shapes;
+use super::validity::of_scheme;
 use super::warning::Warning;
 use crate::drive::{
     ClassBScheme, Correction, GateFigures, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme,
@@ -740,6 +741,7 @@ pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     if let Some(coarse) = coarse_grid(result) {
         warnings.push(coarse);
     }
+    warnings.extend(of_scheme(result));
     if let Some(first) = result.map.failures().first() {
         warnings.push(Warning::PointsFailed {
             count: result.map.failures().len(),

@@ -20,6 +20,7 @@ mod result;
 mod run;
 mod scale;
 mod shapes;
+mod validity;
 mod warning;
 
 pub use average::Averaged;
