@@ -53,13 +53,11 @@ pub(super) fn of_scheme(result: &CheckResult) -> Vec<Warning> {
                 });
             }
         }
-        Scheme::Levels(scheme) => {
-            if scheme.settling_s < RAIL_TO_STAGE * settling_s {
-                warnings.push(Warning::RailsFasterThanStage {
-                    rail_s: scheme.settling_s,
-                    settling_s,
-                });
-            }
+        Scheme::Levels(scheme) if scheme.settling_s < RAIL_TO_STAGE * settling_s => {
+            warnings.push(Warning::RailsFasterThanStage {
+                rail_s: scheme.settling_s,
+                settling_s,
+            });
         }
         Scheme::Outphase(scheme) => warnings.extend(branches(result, scheme, settling_s)),
         _ => {}
