@@ -40,7 +40,10 @@ pub fn bend_figure(result: &CheckResult) -> CaptionedFigure {
         control: control_quantity(map.control()),
         curves: vec![BendCurve {
             name: "map".to_owned(),
-            control: points.iter().map(|point| point.control).collect(),
+            control: points
+                .iter()
+                .map(|point| map.control().shown(point.control))
+                .collect(),
             amplitude_v: points.iter().map(|point| point.output_v.norm()).collect(),
             phase_deg: phases_deg(map),
         }],
@@ -48,7 +51,10 @@ pub fn bend_figure(result: &CheckResult) -> CaptionedFigure {
             .control_density
             .iter()
             .enumerate()
-            .map(|(bin, &part)| ((bin as f64 + 0.5) / bins * full, part))
+            .map(|(bin, &part)| {
+                let control = (bin as f64 + 0.5) / bins * full;
+                (map.control().shown(control), part)
+            })
             .collect(),
         floor: (floor > 0.0).then_some(floor * full),
     }
