@@ -120,6 +120,7 @@ impl Study {
             (Control::Width, Hardware::Stage(stage)) => stage.driver.duty,
             (Control::Width, Hardware::Map(map)) => map.domain().1,
             (Control::Drive, _) => 1.0,
+            (Control::Angle, _) => std::f64::consts::FRAC_PI_2,
         }
     }
 
@@ -210,6 +211,12 @@ impl Study {
     fn fits(&self, scheme: &Section<'_>) -> Result<(), Problem> {
         let wanted = self.scheme.control();
         match &self.hardware {
+            Hardware::Map(_) if wanted == Control::Angle => {
+                return Err(scheme.problem(
+                    "combining",
+                    "\"isolated\" with a map from a file: joined stages are solved together, from a stage",
+                ));
+            }
             Hardware::Map(map) if wanted != Control::Drive && map.control() != wanted => {
                 return Err(scheme.problem(
                     "kind",

@@ -4,7 +4,7 @@ use std::f64::consts::TAU;
 
 use super::result::CheckResult;
 use super::warning::Warning;
-use crate::drive::{OutphaseScheme, Scheme};
+use crate::drive::{Combining, OutphaseScheme, Scheme};
 use crate::map::Control;
 
 /// A tone on the supply turns by less than this part of a radian while the stage settles: its sidebands are then right
@@ -82,16 +82,25 @@ fn below_map(result: &CheckResult) -> Option<Warning> {
 
 fn branches(result: &CheckResult, scheme: &OutphaseScheme, settling_s: f64) -> Vec<Warning> {
     let mut warnings = Vec::new();
+    let joined = matches!(scheme.combining, Combining::Joined(_));
     let branch_s = 1.0 / (BRANCH_WIDENING * result.signal.rate_hz);
     let signal_s = 1.0 / result.signal.rate_hz;
     // Slower stages have the warning that holds for every scheme.
     if settling_s > SLOW * branch_s && settling_s <= SLOW * signal_s {
-        warnings.push(Warning::BranchesFasterThanStage {
-            settling_s,
-            branch_s,
+        warnings.push(match joined {
+            // No replay knows them.
+            true => Warning::SlowStage {
+                settling_s,
+                signal_s: branch_s,
+            },
+            false => Warning::BranchesFasterThanStage {
+                settling_s,
+                branch_s,
+            },
         });
     }
-    if scheme.gain_mismatch_db > UNEQUAL_DB {
+    // What joined branches draw is solved.
+    if !joined && scheme.gain_mismatch_db > UNEQUAL_DB {
         warnings.push(Warning::UnequalBranches {
             gain_db: scheme.gain_mismatch_db,
         });

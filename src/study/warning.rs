@@ -75,6 +75,18 @@ pub enum Warning {
         /// From this width on it falls.
         width: f64,
     },
+    /// Several switches, one of which goes beyond a rail.
+    BeyondRails {
+        /// Lowest voltage across a switch, V.
+        lowest_v: f64,
+    },
+    /// Joined branches neither add up at angle 0 nor cancel at a quarter turn.
+    AngleReach {
+        /// The angle of full output, degrees.
+        full_deg: f64,
+        /// Output at a quarter turn, dB below full.
+        lowest_db: f64,
+    },
     /// The sampled band reaches past the carrier.
     WiderThanCarrier {
         /// Farthest offset that is sampled, Hz.
@@ -243,6 +255,15 @@ impl fmt::Display for Warning {
             Self::WidthTurns { width } => write!(
                 f,
                 "the output falls past a width of {width:.4}: full output is taken there, wider pulses are not used"
+            ),
+            Self::BeyondRails { lowest_v } => write!(
+                f,
+                "a switch sees down to {} across it: a real one's body diode would conduct and clamp it, which this model leaves out",
+                show(*lowest_v, "V", 3)
+            ),
+            Self::AngleReach { full_deg, lowest_db } => write!(
+                f,
+                "the joined branches give most at {full_deg:.1} deg, where full output is taken, and {lowest_db:.1} dB of it at 90 deg, the least that is asked of them: magnitudes below that are held there"
             ),
             Self::WiderThanCarrier {
                 span_hz,

@@ -14,7 +14,7 @@ use super::by_map::Energy;
 use super::replay::{
     Account, Cycle, CycleOutput, Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all,
 };
-use crate::drive::{Scheme, Track};
+use crate::drive::{Combining, Scheme, Track};
 use crate::map::Map;
 use crate::orbit::{Drive, Network};
 use controls::{Between, Border, Controls};
@@ -113,6 +113,12 @@ impl<'a> ReplayTransmitter<'a> {
             Scheme::Supply(_) => (Moves::Supply, Between::BandLimited),
             Scheme::Width(_) => (Moves::Width, Between::BandLimited),
             Scheme::Levels(_) => (Moves::Width, Between::Straight),
+            // Each branch is replayed by itself, which joined ones are not.
+            Scheme::Outphase(scheme) if matches!(scheme.combining, Combining::Joined(_)) => {
+                return Err(ReplayError::Scheme {
+                    scheme: "outphase, joined,",
+                });
+            }
             Scheme::Outphase(_) => (Moves::Branches, Between::BandLimited),
             other => {
                 return Err(ReplayError::Scheme {
