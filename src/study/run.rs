@@ -61,8 +61,8 @@ pub struct Replayed<'a> {
     pub workers: usize,
 }
 
-/// Instants of a replay that are kept for the second pass: 64 MB. Longer ones are replayed again.
-const MOST_KEPT: u64 = 1 << 22;
+/// Instants of a replay that are kept for the second pass: 128 MB. Longer ones are replayed again.
+const MOST_KEPT: u64 = 1 << 23;
 
 /// A replay against the map on the same track.
 #[derive(Debug, Clone, Copy)]
