@@ -28,6 +28,8 @@ pub enum Dimension {
     Charge,
     /// V/s
     SlewRate,
+    /// Where a pole or zero lies, rad/s inside; `Hz` is 2 pi times as much.
+    Root,
     /// A pure number; `%` is allowed.
     Ratio,
     /// dB
@@ -52,6 +54,7 @@ impl Dimension {
             Self::Inductance => "H",
             Self::Charge => "C",
             Self::SlewRate => "V/s",
+            Self::Root => "rad/s",
             Self::Ratio => "",
             Self::Decibel => "dB",
             Self::Angle => "rad",
@@ -72,6 +75,7 @@ impl Dimension {
             Self::Charge => (1e-21, 1e3),
             Self::Inductance => (1e-18, 1e6),
             Self::SlewRate => (1e-9, 1e18),
+            Self::Root => (1e-6, 1e15),
             Self::Ratio => (1e-15, 1e15),
             Self::Decibel | Self::Level => (0.0, 1e4),
             Self::Angle => (0.0, 1e6),
@@ -109,6 +113,7 @@ impl Dimension {
             Self::Inductance => "an inductance",
             Self::Charge => "a charge",
             Self::SlewRate => "a slew rate",
+            Self::Root => "a place of a pole or zero",
             Self::Ratio => "a pure number",
             Self::Decibel => "a ratio in dB",
             Self::Angle => "an angle",
@@ -129,6 +134,7 @@ impl Dimension {
             Self::Inductance => "\"8.2 nH\"",
             Self::Charge => "\"2 nC\"",
             Self::SlewRate => "\"40 V/us\"",
+            Self::Root => "\"60 kHz\" or \"377 krad/s\"",
             Self::Ratio => "0.5 or \"50 %\"",
             Self::Decibel => "\"-3 dB\"",
             Self::Angle => "\"30 deg\"",
@@ -157,6 +163,9 @@ impl Dimension {
                 let volt = prefix(volt.strip_suffix('V')?)?;
                 let time = prefix(time.strip_suffix('s')?)?;
                 Some(scale(number, volt - time))
+            }
+            Self::Root => {
+                scaled("rad/s").or_else(|| scaled("Hz").map(|hertz| std::f64::consts::TAU * hertz))
             }
             Self::Ratio => (unit == "%").then(|| number / 100.0),
             Self::Decibel => (unit == "dB").then_some(number),
@@ -341,6 +350,8 @@ mod tests {
             ("-3 dB", Dimension::Decibel, -3.0),
             ("4.7 µs", Dimension::Time, 4.7e-6),
             ("40 V/us", Dimension::SlewRate, 40e6),
+            ("-60 kHz", Dimension::Root, -60e3 * std::f64::consts::TAU),
+            ("377 krad/s", Dimension::Root, 377e3),
             ("50 %", Dimension::Ratio, 0.5),
             ("5 W", Dimension::Level, 36.989_700_043_360_19),
             ("1e-12", Dimension::Capacitance, 1e-12),

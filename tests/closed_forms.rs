@@ -79,10 +79,7 @@ impl Design {
                     part(Element::Capacitor(1.0 / (angular_hz * loaded_q))),
                 ],
             }],
-            load: Load {
-                ohm: 1.0,
-                reactance: None,
-            },
+            load: Load::matched(1.0),
         }
     }
 }

@@ -102,8 +102,8 @@ fn stage() -> impl Strategy<Value = Stage> {
                 feed,
                 ladder,
                 load: Load {
-                    ohm: 1.0,
                     reactance,
+                    ..Load::matched(1.0)
                 },
             },
         )

@@ -102,10 +102,7 @@ fn design(phi: f64, loaded_q: f64) -> Design {
                     1.0 / (angular_hz * (loaded_q - reactance)),
                 )),
             ],
-            load: Load {
-                ohm: 1.0,
-                reactance: None,
-            },
+            load: Load::matched(1.0),
         },
     }
 }

@@ -76,7 +76,9 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
                 &study.hardware_file
             }
             StudyError::SignalTooShort { .. } | StudyError::SilentSignal => &study.signal.file,
-            StudyError::Spectrum(_) | StudyError::Pair(_) => &name,
+            StudyError::Spectrum(_) | StudyError::Pair(_) | StudyError::NoWorkingPoint { .. } => {
+                &name
+            }
             // These name their file themselves.
             _ => return Failure::from(error),
         };

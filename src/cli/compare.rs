@@ -6,18 +6,18 @@ use super::arguments::ByChoice;
 use super::{Console, Disk, Ending, Failure, OutputFolder, OutputOptions};
 use crate::input::Files;
 use crate::report::check::Request;
-use crate::report::compare::{document, page, spectrum_figure, text};
+use crate::report::compare::{document, page, spectrum_figures, text};
 use crate::signal;
 use crate::study::{Study, compare_by, ranked};
 use crate::verdict::Outcome;
 
-/// Schemes side by side on one table, ranked: exit code 0 where one of them is within limits, else 1
+/// Schemes side by side, with and without static predistortion, ranked: exit code 0 where one is within limits, else 1
 #[derive(Debug, clap::Args)]
 #[command(after_help = "Examples:
   quietedge compare signals/tide-gauge-compare.study.toml
       one study with several [[scheme]] tables
   quietedge compare one.study.toml other.study.toml --out report
-      several studies; writes compare.html, compare.json and spectra.png into report/
+      several studies; writes compare.html, compare.json and pictures of the spectra into report/
   quietedge compare my.study.toml --by replay
       every stage integrated cycle by cycle
   quietedge compare my.study.toml --json | jq '.ranking[0].reason'")]
@@ -38,7 +38,12 @@ pub struct Arguments {
     output: OutputOptions,
 }
 
-const NAMES: [&str; 3] = ["compare.html", "compare.json", "spectra.png"];
+const NAMES: [&str; 4] = [
+    "compare.html",
+    "compare.json",
+    "spectra.png",
+    "spectra-predistorted.png",
+];
 
 /// Parts of the progress bar.
 const STEPS: u64 = 1000;
@@ -99,15 +104,15 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
         folder.write(NAMES[0], html.as_bytes())?;
         let json = serde_json::to_vec_pretty(&document(&results, &ranks))?;
         folder.write(NAMES[1], &json)?;
-        if let Some(figure) = spectrum_figure(&results) {
-            folder.write(NAMES[2], &figure.figure.png()?)?;
+        for (name, figure) in NAMES[2..].iter().zip(spectrum_figures(&results)) {
+            folder.write(name, &figure.figure.png()?)?;
         }
         let report = folder.path(NAMES[0]);
         console.remark(&format!("the report is in {}", report.display()));
     }
     let outcomes: Vec<Outcome> = results
         .iter()
-        .map(|result| result.judgement.verdict.outcome)
+        .map(|compared| compared.result.judgement.verdict.outcome)
         .collect();
     if outcomes.contains(&Outcome::Within) {
         Ok(Ending::Within)

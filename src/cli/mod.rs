@@ -12,6 +12,7 @@ mod map;
 mod measure;
 mod output;
 mod predistort;
+mod ratings;
 mod signal;
 mod solve;
 
@@ -58,7 +59,7 @@ enum Command {
     Compare(compare::Arguments),
     Design(Box<design::Arguments>),
     Solve(solve::Arguments),
-    Map(map::Arguments),
+    Map(Box<map::Arguments>),
     Predistort(predistort::Arguments),
     Measure(Box<measure::Arguments>),
     Signal(signal::Arguments),

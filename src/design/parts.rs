@@ -126,10 +126,7 @@ impl Parts {
                 None => Feed::Choke { ohm: feed_ohm },
             },
             ladder,
-            load: Load {
-                ohm: targets.load_ohm,
-                reactance: None,
-            },
+            load: Load::matched(targets.load_ohm),
         }
     }
 

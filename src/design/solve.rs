@@ -89,7 +89,22 @@ pub enum DesignError {
         /// Largest residual, in supplies and parts of the power.
         residual: f64,
     },
+    /// The device's capacitance leaves no zero voltage, and the search for the next best missed the power.
+    #[error(
+        "with the device's capacitance no stage of {} was found; the nearest delivers {}: a lower frequency, another power or a smaller device may help",
+        show(*.wanted_w, "W", 4),
+        show(*.found_w, "W", 4)
+    )]
+    PowerMissed {
+        /// W
+        wanted_w: f64,
+        /// W
+        found_w: f64,
+    },
 }
+
+/// How far the power of a best effort may be from the wanted one, relative.
+const POWER_MET: f64 = 1e-2;
 
 /// Residuals that count as zero: voltage and slope in supplies, power as a part of the wanted one.
 const ZERO: f64 = 1e-9;
@@ -481,7 +496,12 @@ fn best_effort(
     }
     let needed_f = nominal.map(|parts| parts.drain_f);
     let reason = BestEffort::TooMuchCapacitance { needed_f, device_f };
-    finish(targets, ideal, with(&x), Zero::BestEffort(reason))
+    let design = finish(targets, ideal, with(&x), Zero::BestEffort(reason))?;
+    let (found_w, wanted_w) = (design.orbit.output_w, targets.output_w);
+    if (found_w / wanted_w - 1.0).abs() > POWER_MET {
+        return Err(DesignError::PowerMissed { wanted_w, found_w });
+    }
+    Ok(design)
 }
 
 #[cfg(test)]

@@ -4,12 +4,15 @@ use num_complex::Complex64;
 
 use super::lookup::Lookup;
 use super::polynomial::{Polynomial, PolynomialStream};
+use super::rate::MAX_FACTOR;
 
 /// What stands in front of the scheme.
 #[derive(Debug, Clone, PartialEq)]
 pub enum Correction {
     /// Magnitude to control and phase; the scheme's own shaping is in the table.
     Table(Lookup),
+    /// The same without a clock of its own: at every instant.
+    Instant(Lookup),
     /// Signal to signal; the scheme follows as it is.
     Polynomial(Polynomial),
 }
@@ -19,6 +22,7 @@ impl Correction {
     pub fn rate(&self) -> usize {
         match self {
             Self::Table(lookup) => lookup.rate(),
+            Self::Instant(_) => MAX_FACTOR,
             Self::Polynomial(polynomial) => polynomial.rate,
         }
     }
@@ -26,7 +30,7 @@ impl Correction {
     /// Samples of its own clock over which one output reaches, the hold included.
     pub fn span(&self) -> usize {
         match self {
-            Self::Table(_) => 1,
+            Self::Table(_) | Self::Instant(_) => 1,
             Self::Polynomial(polynomial) => polynomial.memory() + 1,
         }
     }
@@ -65,7 +69,9 @@ impl Corrector {
             every: (factor / correction.rate()).max(1),
             clock: 0,
             work: match correction {
-                Correction::Table(lookup) => Work::Table(lookup.clone()),
+                Correction::Table(lookup) | Correction::Instant(lookup) => {
+                    Work::Table(lookup.clone())
+                }
                 Correction::Polynomial(polynomial) => {
                     Work::Polynomial(PolynomialStream::new(polynomial))
                 }

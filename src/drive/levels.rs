@@ -1,22 +1,30 @@
 //! Scheme `levels`: the supply is switched among a few rails, the width does the rest.
 //!
-//! A linear stage scales with its supply, so that `V(supply, width) = supply / full * V(full, width)` holds exactly.
+//! A linear stage scales with its supply: `V(supply, width) = supply / full * V(full, width)`. A curved one is
+//! solved at each rail and at supplies between them.
+//!
+//! Rails change where the wanted amplitude, taken as straight between two instants, crosses a threshold. An instant
+//! within which that happens hands on its parts, so that the output is the mean over the instant and margins do
+//! not hang on where the instants fall. A row's supply is its mean over the instant likewise.
 
 use num_complex::Complex64;
 
-use super::Track;
 use super::phase::{PhaseLimiter, magnitude};
+use super::rails::{Change, Decider, Rails};
 use super::rate::{RateReason, band};
 use super::supply::{PhasePath, settling};
-use super::width::Inverse;
+use super::width::{Inverse, WidthLaw};
+use super::{Track, TrackPart};
 use crate::map::Map;
 use crate::math::delay::Delay;
 
 /// The scheme as the study describes it.
 #[derive(Debug, Clone, PartialEq, serde::Serialize)]
 pub struct LevelsScheme {
-    /// Rails as parts of the full supply, rising, the last one 1.
-    pub rails: Vec<f64>,
+    /// Rails, rising, the last one the full supply.
+    pub rails: Rails,
+    /// From the wanted part of a rail's output to the width.
+    pub law: WidthLaw,
     /// Part of a rail's output by which the wanted amplitude must fall below it before it is taken.
     pub hysteresis: f64,
     /// Time in which a change of the rail settles to 1 %, s.
@@ -32,7 +40,7 @@ pub struct LevelsScheme {
 impl LevelsScheme {
     pub(super) fn settling(&self, rate_hz: f64) -> usize {
         let dead = self.phase_path.delay_s.max(3.0 * self.settling_s);
-        settling(dead, &[self.phase_path.bandwidth_hz], rate_hz)
+        settling(dead, &[self.phase_path.bandwidth_hz], rate_hz) + 2
     }
 
     pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
@@ -50,22 +58,91 @@ impl LevelsScheme {
             ),
         ]
     }
+
+    /// The working points at rest for `steps` even parts of full output on `map`, rising from the first part.
+    pub fn at_rest(&self, map: &Map, steps: usize) -> Vec<RestPoint> {
+        let full_supply_v = map.own_supply_v();
+        let rails = RailWidths::of(self, map);
+        let reaches: Vec<f64> = rails.iter().map(|rail| rail.reach).collect();
+        (1..=steps)
+            .map(|step| {
+                let part = step as f64 / steps as f64;
+                let rail = &rails[Decider::at_rest(&reaches, part)];
+                RestPoint {
+                    part,
+                    supply_v: rail.part * full_supply_v,
+                    width: rail.inverse.width(part / rail.reach),
+                }
+            })
+            .collect()
+    }
+}
+
+/// A working point of `levels` while the signal rests.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct RestPoint {
+    /// Part of full output.
+    pub part: f64,
+    /// The rail, V.
+    pub supply_v: f64,
+    /// Part of the period.
+    pub width: f64,
+}
+
+/// What the width does on one rail.
+#[derive(Debug, Clone)]
+struct RailWidths<'a> {
+    /// Of the full supply.
+    part: f64,
+    /// Highest output, as a part of that at full supply: the same for a linear stage.
+    reach: f64,
+    map: &'a Map,
+    inverse: Inverse,
+}
+
+impl<'a> RailWidths<'a> {
+    fn of(scheme: &LevelsScheme, map: &'a Map) -> Vec<Self> {
+        let full_v = map.own_supply_v();
+        let top = |map: &Map| map.amplitude_held_v(map.turns_at().unwrap_or(map.domain().1));
+        let parts = scheme.rails.parts(full_v);
+        parts
+            .into_iter()
+            .map(|part| {
+                let plane = map.plane(part * full_v);
+                let scale = part * full_v / plane.own_supply_v();
+                Self {
+                    part,
+                    reach: scale * top(plane) / top(map),
+                    map: plane,
+                    inverse: Inverse::new(plane),
+                }
+            })
+            .collect()
+    }
 }
 
 /// The scheme at work at one sample rate.
 #[derive(Debug, Clone)]
 pub(super) struct LevelsDrive<'a> {
-    scheme: LevelsScheme,
-    map: &'a Map,
-    inverse: Inverse,
+    law: WidthLaw,
+    rails: Vec<RailWidths<'a>>,
+    decider: Decider,
+    /// Changes from the last instant to the present one, and from there to the next.
+    before: Vec<Change>,
+    after: Vec<Change>,
     level: f64,
     full_supply_v: f64,
+    full_width: f64,
     full_rad: f64,
+    /// Wanted part of full output at the last instant, the present one and the next.
+    wanted_m: [f64; 3],
+    /// At the start of the present instant's time.
     rail: usize,
-    supply: Option<f64>,
-    /// Part of a step that is left after an instant.
-    left: f64,
+    supply: f64,
+    /// Rate at which a change settles, to an instant; infinite where it does at once.
+    rate: f64,
     wanted: Delay,
+    ahead: Delay,
     angle: Delay,
     phase: PhaseLimiter,
 }
@@ -73,22 +150,31 @@ pub(super) struct LevelsDrive<'a> {
 impl<'a> LevelsDrive<'a> {
     pub(super) fn new(scheme: &LevelsScheme, map: &'a Map, level: f64, rate_hz: f64) -> Self {
         let full = map.domain().1;
+        let full_supply_v = map.own_supply_v();
+        let rails = RailWidths::of(scheme, map);
+        let reaches = rails.iter().map(|rail| rail.reach).collect();
         Self {
-            scheme: scheme.clone(),
-            map,
-            inverse: Inverse::new(map),
+            law: scheme.law,
+            rail: rails.len() - 1,
+            supply: 1.0,
+            rails,
+            decider: Decider::new(reaches, scheme.hysteresis),
+            before: Vec::new(),
+            after: Vec::new(),
             level,
-            full_supply_v: map.points().last().map_or(0.0, |point| point.supply_v),
-            full_rad: map.phase_at_rad(full).unwrap_or(0.0),
-            rail: scheme.rails.len() - 1,
-            supply: None,
-            left: if scheme.settling_s > 0.0 {
-                (-100f64.ln() / (scheme.settling_s * rate_hz)).exp()
+            full_supply_v,
+            full_width: full,
+            full_rad: map.phase_held_rad(full),
+            wanted_m: [0.0; 3],
+            rate: if scheme.settling_s > 0.0 {
+                100f64.ln() / (scheme.settling_s * rate_hz)
             } else {
-                0.0
+                f64::INFINITY
             },
-            wanted: Delay::new(0.0),
-            angle: Delay::new(scheme.phase_path.delay_s * rate_hz),
+            // One instant later than the decision, which looks half an instant ahead.
+            wanted: Delay::new(1.0),
+            ahead: Delay::new(0.0),
+            angle: Delay::new(scheme.phase_path.delay_s * rate_hz + 1.0),
             phase: PhaseLimiter::new(
                 scheme.phase_path.order,
                 scheme.phase_path.bandwidth_hz,
@@ -97,38 +183,110 @@ impl<'a> LevelsDrive<'a> {
         }
     }
 
-    /// The rail for the wanted part `m` of full output: up at once, down past the hysteresis.
-    fn decide(&mut self, m: f64) -> f64 {
-        let rails = &self.scheme.rails;
-        while self.rail + 1 < rails.len() && m > rails[self.rail] {
-            self.rail += 1;
+    /// The width for the part `m` of full output on `rail`, and the phasor that undoes what the stage adds.
+    fn width(&self, rail: usize, m: f64) -> (f64, Complex64) {
+        let rail = &self.rails[rail];
+        let m = (m / rail.reach).min(1.0);
+        let width = self.law.width(&rail.inverse, self.full_width, m);
+        let turn = match self.law {
+            WidthLaw::Inverse => Complex64::cis(self.full_rad - rail.map.phase_held_rad(width)),
+            WidthLaw::Amplitude | WidthLaw::Sine => Complex64::ONE,
+        };
+        (width, turn)
+    }
+
+    /// Lets the supply settle for `time`, in instants; its mean meanwhile.
+    fn settle(&mut self, time: f64) -> f64 {
+        let target = self.rails[self.rail].part;
+        let off = self.supply - target;
+        if self.rate.is_infinite() || off == 0.0 {
+            self.supply = target;
+            return target;
         }
-        while self.rail > 0 && m < rails[self.rail - 1] * (1.0 - self.scheme.hysteresis) {
-            self.rail -= 1;
+        let fallen = -(-self.rate * time).exp_m1();
+        self.supply = target + off * (1.0 - fallen);
+        if time > 0.0 {
+            target + off * fallen / (self.rate * time)
+        } else {
+            target
         }
-        rails[self.rail]
+    }
+
+    /// The wanted part of full output at `time` from the present instant, straight between instants.
+    fn wanted_at(&self, time: f64) -> f64 {
+        let [before, now, after] = self.wanted_m;
+        let other = if time < 0.0 { before } else { after };
+        now + (other - now) * time.abs()
     }
 
     pub(super) fn push(&mut self, samples: &[Complex64], track: &mut Track) {
         for &sample in samples {
             let wanted = self.wanted.push(sample);
             let angle = self.angle.push(sample);
-            let m = (self.level * magnitude(wanted)).min(1.0);
-            let rail = self.decide(m);
-            let supply = match self.supply {
-                None => rail,
-                Some(last) => rail + (last - rail) * self.left,
-            };
-            self.supply = Some(supply);
-            let width = self.inverse.width(m / rail);
-            let added = self.map.output_held_v(width).0.arg() - self.full_rad;
-            let phase = self.phase.push(angle) * Complex64::from_polar(1.0, -added);
+            let next = (self.level * magnitude(self.ahead.push(sample))).min(1.0);
+            self.wanted_m = [self.wanted_m[1], self.wanted_m[2], next];
+            std::mem::swap(&mut self.before, &mut self.after);
+            let [_, now, _] = self.wanted_m;
+            let mut after = std::mem::take(&mut self.after);
+            self.decider.changes(now, next, &mut after);
+            self.after = after;
+            let phase = self.phase.push(angle);
+            self.instant(now, phase, track);
             track.wanted.push(wanted);
+        }
+    }
+
+    /// The half of the time before the present instant and the half after it.
+    fn instant(&mut self, now: f64, phase: Complex64, track: &mut Track) {
+        let at = track.control.len();
+        let inside = |time: f64| (-0.5..0.5).contains(&time);
+        let before = self.before.iter().map(|c| (c.at - 1.0, c.rail));
+        let after = self.after.iter().map(|c| (c.at, c.rail));
+        let mut changes = before.chain(after).filter(|(time, _)| inside(*time));
+        let Some(first) = changes.next() else {
+            let supply = self.settle(1.0);
+            let (width, turn) = self.width(self.rail, now);
             track.asked.push(width);
             track.control.push(width);
-            track.phase.push(phase);
+            track.phase.push(phase * turn);
             track.supply_v.push(supply * self.full_supply_v);
+            return;
+        };
+        let changes: Vec<(f64, usize)> = std::iter::once(first).chain(changes).collect();
+        let mut start = -0.5;
+        let mut middle = None;
+        let mut mean = 0.0;
+        let ends = changes
+            .iter()
+            .copied()
+            .chain(std::iter::once((0.5, usize::MAX)));
+        for (end, rail) in ends {
+            let weight = end - start;
+            let supply = self.settle(weight);
+            let (control, turn) = self.width(self.rail, self.wanted_at(0.5 * (start + end)));
+            mean += weight * supply;
+            if middle.is_none() && end > 0.0 {
+                middle = Some(self.width(self.rail, now));
+            }
+            if weight > 0.0 {
+                track.parts.push(TrackPart {
+                    at,
+                    weight,
+                    control,
+                    phase: phase * turn,
+                    supply_v: supply * self.full_supply_v,
+                });
+            }
+            if rail != usize::MAX {
+                self.rail = rail;
+            }
+            start = end;
         }
+        let (width, turn) = middle.unwrap_or((self.full_width, Complex64::ONE));
+        track.asked.push(width);
+        track.control.push(width);
+        track.phase.push(phase * turn);
+        track.supply_v.push(mean * self.full_supply_v);
     }
 }
 
@@ -158,7 +316,8 @@ mod tests {
         });
         let map = Map::new(Control::Width, Origin::Stage, 1e8, 50.0, points.collect()).unwrap();
         let scheme = LevelsScheme {
-            rails: vec![0.25, 0.5, 1.0],
+            rails: Rails::Parts(vec![0.25, 0.5, 1.0]),
+            law: WidthLaw::Inverse,
             hysteresis,
             settling_s,
             efficiency: 1.0,

@@ -8,8 +8,12 @@ mod modulator;
 mod outphase;
 mod phase;
 mod polynomial;
+mod power;
+mod rails;
 mod rate;
 mod read;
+mod read_modulator;
+mod sag;
 mod scheme;
 mod shaping;
 mod supply;
@@ -17,13 +21,15 @@ mod width;
 
 pub use class_b::{CLASS_B_PEAK_EFFICIENCY, ClassBScheme};
 pub use correct::Correction;
-pub use levels::LevelsScheme;
+pub use levels::{LevelsScheme, RestPoint};
 pub use lookup::{Between, Lookup, LookupError, LookupSize, MAX_TABLE_RATE, Spacing, Word};
-pub use modulator::{Converter, Modulator, Ripple, SupplyModulator};
+pub use modulator::{Converter, Modulator, PoleZero, Ripple, SupplyModulator};
 pub use outphase::OutphaseScheme;
 pub use polynomial::{Polynomial, Term};
+pub use power::{DrawnPower, PowerModel};
+pub use rails::Rails;
 pub use rate::{MAX_FACTOR, RateReason, oversampling};
-pub use scheme::{Scheme, SchemeDrive};
+pub use scheme::{Inversion, Scheme, SchemeDrive};
 pub use shaping::{Shape, Shaping};
 pub use supply::{PhasePath, SupplyDrive, SupplyScheme};
 pub use width::{WidthLaw, WidthScheme};
@@ -43,6 +49,24 @@ pub struct Track {
     pub supply_v: Vec<f64>,
     /// The drive phasors of two branches, of schemes that have them; empty for all others.
     pub branches: Vec<[num_complex::Complex64; 2]>,
+    /// Instants within which the controls change at once: their output is the mean over these parts in place of
+    /// the rows' own values, which are those of the instant's middle. By instant; the weights of one add up to 1.
+    pub parts: Vec<TrackPart>,
+}
+
+/// A part of an instant of a [`Track`].
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct TrackPart {
+    /// Which instant of the track.
+    pub at: usize,
+    /// The part of the instant's time that it takes, 0 to 1.
+    pub weight: f64,
+    /// As [`Track::control`].
+    pub control: f64,
+    /// As [`Track::phase`].
+    pub phase: num_complex::Complex64,
+    /// As [`Track::supply_v`], its mean.
+    pub supply_v: f64,
 }
 
 impl Track {
@@ -54,6 +78,7 @@ impl Track {
         self.phase.clear();
         self.supply_v.clear();
         self.branches.clear();
+        self.parts.clear();
     }
 
     /// Instants held.

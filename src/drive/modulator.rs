@@ -2,15 +2,19 @@
 
 use std::f64::consts::TAU;
 
+use super::power::PowerModel;
 use crate::math::lowpass::Lowpass;
+use crate::math::response::{Response, Roots};
 
 /// A supply modulator as the study describes it. What is absent is ideal.
-#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
 pub struct Modulator {
     /// -3 dB bandwidth of its Butterworth response, Hz.
     pub bandwidth_hz: Option<f64>,
     /// Order of that response.
     pub order: u32,
+    /// Its response by poles and zeros in place of that.
+    pub response: Option<Box<PoleZero>>,
     /// Dead time from the magnitude to the supply, s. The filter's own group delay comes on top.
     pub delay_s: f64,
     /// The fastest the supply can move, V/s, at the output of the filter.
@@ -23,6 +27,34 @@ pub struct Modulator {
     pub efficiency: f64,
     /// Power it draws whatever it delivers, W.
     pub idle_w: f64,
+    /// How it turns power.
+    pub power: PowerModel,
+    /// In series with the stage's supply current, ohm.
+    pub output_ohm: f64,
+}
+
+/// A response by its poles and zeros, rad/s, one of each conjugate pair; 1 at direct current.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct PoleZero {
+    /// All left of the imaginary axis.
+    pub poles: Roots,
+    /// At most as many.
+    pub zeros: Roots,
+}
+
+impl serde::Serialize for PoleZero {
+    /// As lists of `[real, imaginary]` part, rad/s.
+    fn serialize<S: serde::Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        use serde::ser::SerializeStruct;
+        let list = |roots: &Roots| -> Vec<[f64; 2]> {
+            let roots = roots.as_slice().iter();
+            roots.map(|root| [root.re, root.im]).collect()
+        };
+        let mut fields = serializer.serialize_struct("PoleZero", 2)?;
+        fields.serialize_field("poles_rad_per_s", &list(&self.poles))?;
+        fields.serialize_field("zeros_rad_per_s", &list(&self.zeros))?;
+        fields.end()
+    }
 }
 
 /// A digital-to-analogue converter: quantized steps over the full range, held for a sample.
@@ -48,12 +80,79 @@ impl Default for Modulator {
         Self {
             bandwidth_hz: None,
             order: 2,
+            response: None,
             delay_s: 0.0,
             slew_v_per_s: None,
             converter: None,
             ripple: None,
             efficiency: 1.0,
             idle_w: 0.0,
+            power: PowerModel::Switching,
+            output_ohm: 0.0,
+        }
+    }
+}
+
+impl Modulator {
+    /// The bandwidth that a track must carry, Hz, where there is one.
+    pub(super) fn widest_hz(&self) -> Option<f64> {
+        let roots = self
+            .response
+            .as_ref()
+            .map(|response| response.poles.fastest().max(response.zeros.fastest()) / TAU);
+        roots.or(self.bandwidth_hz)
+    }
+
+    /// The bandwidth after whose reciprocal times twelve nothing shows of the start, Hz, where there is one.
+    pub(super) fn slowest_hz(&self) -> Option<f64> {
+        // e^-20 even of a pole that stands there several times is below 1e-6.
+        let roots = self
+            .response
+            .as_ref()
+            .map(|response| 12.0 / 20.0 * response.poles.slowest());
+        roots.or(self.bandwidth_hz)
+    }
+}
+
+/// What shapes the supply.
+#[derive(Debug, Clone)]
+enum Filter {
+    Butterworth(Lowpass<f64>),
+    Roots(Response<f64>),
+}
+
+impl Filter {
+    fn of(settings: &Modulator, rate_hz: f64) -> Option<Self> {
+        if let Some(response) = &settings.response {
+            let made = Response::new(&response.poles, &response.zeros, rate_hz);
+            return Some(Self::Roots(made));
+        }
+        let bandwidth_hz = settings.bandwidth_hz?;
+        Some(Self::Butterworth(Lowpass::new(
+            settings.order,
+            bandwidth_hz,
+            rate_hz,
+        )))
+    }
+
+    fn settle(&mut self, volt: f64) {
+        match self {
+            Self::Butterworth(filter) => filter.settle(volt),
+            Self::Roots(filter) => filter.settle(volt),
+        }
+    }
+
+    fn push(&mut self, volt: f64) -> f64 {
+        match self {
+            Self::Butterworth(filter) => filter.push(volt),
+            Self::Roots(filter) => filter.push(volt),
+        }
+    }
+
+    fn push_held(&mut self, volt: f64) -> f64 {
+        match self {
+            Self::Butterworth(filter) => filter.push_held(volt),
+            Self::Roots(filter) => filter.push_held(volt),
         }
     }
 }
@@ -64,7 +163,7 @@ pub struct SupplyModulator {
     full_v: f64,
     rate_hz: f64,
     settings: Modulator,
-    filter: Option<Lowpass<f64>>,
+    filter: Option<Filter>,
     held: Held,
     /// The supply after the slew limit; absent before the first sample.
     supply_v: Option<f64>,
@@ -86,10 +185,8 @@ impl SupplyModulator {
         Self {
             full_v,
             rate_hz,
-            settings: *settings,
-            filter: settings
-                .bandwidth_hz
-                .map(|bandwidth_hz| Lowpass::new(settings.order, bandwidth_hz, rate_hz)),
+            settings: settings.clone(),
+            filter: Filter::of(settings, rate_hz),
             held: Held::default(),
             supply_v: None,
             clock: 0,

@@ -25,6 +25,8 @@ pub enum RateReason {
     Edges,
     /// Two branches of constant magnitude are far wider than the signal.
     Branches,
+    /// The rate of the schemes that it is compared with.
+    Common,
     /// The rate of a table or polynomial in front.
     Predistortion,
 }
@@ -41,6 +43,7 @@ impl RateReason {
             Self::Ripple => "the ripple's frequency",
             Self::Edges => "steps of the pulses or rails",
             Self::Branches => "branches of constant magnitude are far wider than the signal",
+            Self::Common => "the schemes that it is compared with",
             Self::Predistortion => "the rate of the predistortion",
         }
     }
@@ -97,16 +100,16 @@ mod tests {
     #[test]
     fn the_widest_imperfection_decides() {
         let ideal = Modulator::default();
-        assert_eq!(factor(ideal, 0.0), (8, RateReason::PolarExpansion));
-        assert_eq!(factor(ideal, 20e6), (32, RateReason::LimitsSpan));
+        assert_eq!(factor(ideal.clone(), 0.0), (8, RateReason::PolarExpansion));
+        assert_eq!(factor(ideal.clone(), 20e6), (32, RateReason::LimitsSpan));
         let band = Modulator {
             bandwidth_hz: Some(5e6),
-            ..ideal
+            ..ideal.clone()
         };
         assert_eq!(factor(band, 0.0), (32, RateReason::ModulatorBandwidth));
         let wide = Modulator {
             bandwidth_hz: Some(1e12),
-            ..ideal
+            ..ideal.clone()
         };
         assert_eq!(factor(wide, 0.0), (32, RateReason::ModulatorBandwidth));
         let ripple = Some(Ripple {

@@ -1,8 +1,9 @@
 //! The `[scheme]` table of a study.
 
+use super::read_modulator::modulator;
 use super::{
-    ClassBScheme, Converter, LevelsScheme, Modulator, OutphaseScheme, PhasePath, Ripple, Scheme,
-    Shape, Shaping, SupplyScheme, WidthLaw, WidthScheme,
+    ClassBScheme, LevelsScheme, OutphaseScheme, PhasePath, Rails, Scheme, Shape, Shaping,
+    SupplyScheme, WidthLaw, WidthScheme,
 };
 use crate::input::{Problem, Range, Section};
 use crate::math::lowpass::MAX_ORDER;
@@ -94,25 +95,48 @@ fn width(section: &Section<'_>) -> Result<WidthScheme, Problem> {
 const MOST_RAILS: u64 = 64;
 
 fn levels(section: &Section<'_>) -> Result<LevelsScheme, Problem> {
-    let rails = match section.maybe_whole("count", 1, MOST_RAILS)? {
-        Some(count) if !section.has("rails") => {
-            (1..=count).map(|at| at as f64 / count as f64).collect()
+    let count = section.maybe_whole("count", 1, MOST_RAILS)?;
+    let given = [
+        count.is_some(),
+        section.has("rails"),
+        section.has("rail_voltages"),
+    ];
+    if given.iter().filter(|given| **given).count() != 1 {
+        return Err(section.problem(
+            "rails",
+            "one of: rails (parts of the full supply), rail_voltages, count (equal steps)",
+        ));
+    }
+    let rising = |rails: &[f64]| {
+        rails.windows(2).all(|pair| pair[0] < pair[1])
+            && (1..=MOST_RAILS as usize).contains(&rails.len())
+    };
+    let rails = if let Some(count) = count {
+        Rails::Parts((1..=count).map(|at| at as f64 / count as f64).collect())
+    } else if section.has("rails") {
+        let parts = section.quantities("rails", Dimension::Ratio, Range::UpTo(0.0, 1.0))?;
+        if !rising(&parts) || parts.last() != Some(&1.0) {
+            return Err(section.problem(
+                "rails",
+                "parts of the full supply, rising, the last one 1 (or count = 3 for equal steps)",
+            ));
         }
-        Some(_) => return Err(section.problem("rails", "either rails or their count")),
-        None => {
-            let rails = section.quantities("rails", Dimension::Ratio, Range::UpTo(0.0, 1.0))?;
-            let rising = rails.windows(2).all(|pair| pair[0] < pair[1]);
-            if !rising || rails.last() != Some(&1.0) || rails.len() as u64 > MOST_RAILS {
-                return Err(section.problem(
-                    "rails",
-                    "parts of the full supply, rising, the last one 1 (or count = 3 for equal steps)",
-                ));
-            }
-            rails
+        Rails::Parts(parts)
+    } else {
+        let volts = section.quantities("rail_voltages", Dimension::Voltage, Range::Positive)?;
+        if !rising(&volts) {
+            return Err(section.problem(
+                "rail_voltages",
+                "up to 64 voltages, rising, the last one the full supply",
+            ));
         }
+        Rails::Volts(volts)
     };
     Ok(LevelsScheme {
         rails,
+        law: section
+            .maybe_choice("law", &LAWS)?
+            .unwrap_or(WidthLaw::Inverse),
         hysteresis: section
             .maybe_quantity("hysteresis", Dimension::Ratio, Range::Within(0.0, 0.9))?
             .unwrap_or(0.05),
@@ -189,70 +213,20 @@ fn supply(section: &Section<'_>) -> Result<SupplyScheme, Problem> {
     })
 }
 
-fn order(section: &Section<'_>) -> Result<u32, Problem> {
+pub(super) fn order(section: &Section<'_>) -> Result<u32, Problem> {
     Ok(section
         .maybe_whole("order", 1, u64::from(MAX_ORDER))?
         .unwrap_or(2) as u32)
 }
 
-fn modulator(section: &Section<'_>) -> Result<Modulator, Problem> {
-    let bits = section.maybe_whole("bits", 1, 24)?;
-    let rate_hz = section.maybe_quantity("sample_rate", Dimension::Frequency, Range::Positive)?;
-    let converter = match (bits, rate_hz) {
-        (Some(bits), Some(rate_hz)) => Some(Converter {
-            bits: bits as u32,
-            rate_hz,
-        }),
-        (None, None) => None,
-        (Some(_), None) => {
-            return Err(section.problem(
-                "sample_rate",
-                "the converter's sample rate, beside its bits",
-            ));
-        }
-        (None, Some(_)) => {
-            return Err(section.problem("bits", "the converter's bits, beside its sample rate"));
-        }
-    };
-    let ripple = section
-        .maybe_section("ripple")?
-        .map(|s| ripple(&s))
-        .transpose()?;
-    let modulator = Modulator {
-        bandwidth_hz: section.maybe_quantity("bandwidth", Dimension::Frequency, Range::Positive)?,
-        order: order(section)?,
-        delay_s: delay(section)?,
-        slew_v_per_s: section.maybe_quantity("slew_rate", Dimension::SlewRate, Range::Positive)?,
-        converter,
-        ripple,
-        efficiency: section
-            .maybe_quantity("efficiency", Dimension::Ratio, Range::UpTo(0.0, 1.0))?
-            .unwrap_or(1.0),
-        idle_w: section
-            .maybe_quantity("idle", Dimension::Power, Range::NotNegative)?
-            .unwrap_or(0.0),
-    };
-    section.finish()?;
-    Ok(modulator)
-}
-
 /// Dead times longer than this are no dead times of a transmitter, and their buffers would not fit.
 const MAX_DELAY_S: f64 = 1e-3;
 
-fn delay(section: &Section<'_>) -> Result<f64, Problem> {
+pub(super) fn delay(section: &Section<'_>) -> Result<f64, Problem> {
     let allowed = Range::Within(0.0, MAX_DELAY_S);
     Ok(section
         .maybe_quantity("delay", Dimension::Time, allowed)?
         .unwrap_or(0.0))
-}
-
-fn ripple(section: &Section<'_>) -> Result<Ripple, Problem> {
-    let ripple = Ripple {
-        amplitude_v: section.quantity("amplitude", Dimension::Voltage, Range::NotNegative)?,
-        frequency_hz: section.quantity("frequency", Dimension::Frequency, Range::Positive)?,
-    };
-    section.finish()?;
-    Ok(ripple)
 }
 
 fn phase_path(section: &Section<'_>) -> Result<PhasePath, Problem> {

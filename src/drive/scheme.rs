@@ -7,7 +7,7 @@ use super::levels::{LevelsDrive, LevelsScheme};
 use super::outphase::{OutphaseDrive, OutphaseScheme};
 use super::rate::RateReason;
 use super::supply::{SupplyDrive, SupplyScheme};
-use super::width::{WidthDrive, WidthScheme};
+use super::width::{WidthDrive, WidthLaw, WidthScheme};
 use super::{Correction, Modulator, Track};
 use crate::map::{Control, Map};
 use crate::stage::Anchor;
@@ -52,13 +52,45 @@ impl Scheme {
     /// What makes the supply, for the power drawn.
     pub fn modulator(&self) -> Modulator {
         match self {
-            Self::Supply(scheme) => scheme.modulator,
+            Self::Supply(scheme) => scheme.modulator.clone(),
             Self::Levels(scheme) => Modulator {
                 efficiency: scheme.efficiency,
                 idle_w: scheme.idle_w,
                 ..Modulator::default()
             },
             Self::Width(_) | Self::Outphase(_) | Self::ClassB(_) => Modulator::default(),
+        }
+    }
+
+    /// What static predistortion from the inverse of the map means for it.
+    pub fn inversion(&self) -> Inversion {
+        let other = |law: WidthLaw| match law {
+            WidthLaw::Inverse => WidthLaw::Sine,
+            WidthLaw::Amplitude | WidthLaw::Sine => WidthLaw::Inverse,
+        };
+        let pair = |law: WidthLaw, own: Self, changed: Self| match law {
+            WidthLaw::Inverse => Inversion::Law {
+                without: Box::new(changed),
+                with: Box::new(own),
+            },
+            WidthLaw::Amplitude | WidthLaw::Sine => Inversion::Law {
+                without: Box::new(own),
+                with: Box::new(changed),
+            },
+        };
+        match self {
+            Self::Supply(_) => Inversion::Table,
+            Self::Width(scheme) => {
+                let mut changed = *scheme;
+                changed.law = other(scheme.law);
+                pair(scheme.law, self.clone(), Self::Width(changed))
+            }
+            Self::Levels(scheme) => {
+                let mut changed = scheme.clone();
+                changed.law = other(scheme.law);
+                pair(scheme.law, self.clone(), Self::Levels(changed))
+            }
+            Self::Outphase(_) | Self::ClassB(_) => Inversion::Straight,
         }
     }
 
@@ -120,7 +152,8 @@ impl Scheme {
     ) -> SchemeDrive<'a> {
         SchemeDrive(match self {
             Self::Supply(scheme) => {
-                Kind::Supply(Box::new(SupplyDrive::new(scheme, level, full, rate_hz)))
+                let drive = SupplyDrive::new(scheme, level, full, rate_hz).loaded(scheme, map);
+                Kind::Supply(Box::new(drive))
             }
             Self::Width(scheme) => {
                 let drive = WidthDrive::new(scheme, map, anchor, level, rate_hz);
@@ -135,6 +168,22 @@ impl Scheme {
             Self::ClassB(_) => Kind::ClassB(Box::new(ClassBDrive::new(level))),
         })
     }
+}
+
+/// What static predistortion from the inverse of the map means for a scheme.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Inversion {
+    /// A table in front of it.
+    Table,
+    /// The law of its widths: one that knows nothing of the stage, or the inverse of its map.
+    Law {
+        /// The sine law of rectangular pulses, or the user's own law.
+        without: Box<Scheme>,
+        /// The inverse of the map, phase included.
+        with: Box<Scheme>,
+    },
+    /// Its map is straight: nothing to undo.
+    Straight,
 }
 
 /// A scheme at work at one sample rate.

@@ -12,11 +12,13 @@ use super::correct::{Corrected, Correction, Corrector};
 use super::modulator::{Modulator, SupplyModulator};
 use super::phase::{PhaseLimiter, magnitude};
 use super::rate::{RateReason, band};
+use super::sag::Sag;
 use super::shaping::Shaping;
+use crate::map::Map;
 use crate::math::delay::{Delay, LATENCY};
 
 /// The scheme as the study describes it.
-#[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
+#[derive(Debug, Clone, PartialEq, serde::Serialize)]
 pub struct SupplyScheme {
     /// From the wanted magnitude to the supply's fraction.
     pub shaping: Shaping,
@@ -57,6 +59,8 @@ pub struct SupplyDrive {
     magnitude: Delay,
     angle: Delay,
     modulator: SupplyModulator,
+    /// Where the modulator has an output resistance.
+    sag: Option<Sag>,
     phase: PhaseLimiter,
     correctors: Option<Correctors>,
 }
@@ -79,6 +83,7 @@ impl SupplyDrive {
             magnitude: Delay::new(scheme.modulator.delay_s * rate_hz),
             angle: Delay::new(scheme.phase_path.delay_s * rate_hz),
             modulator: SupplyModulator::new(&scheme.modulator, full_v, rate_hz),
+            sag: None,
             phase: PhaseLimiter::new(
                 scheme.phase_path.order,
                 scheme.phase_path.bandwidth_hz,
@@ -86,6 +91,13 @@ impl SupplyDrive {
             ),
             correctors: None,
         }
+    }
+
+    /// The same on the stage of `map`, whose current the modulator's output resistance carries.
+    #[must_use]
+    pub fn loaded(mut self, scheme: &SupplyScheme, map: &Map) -> Self {
+        self.sag = Sag::new(scheme.modulator.output_ohm, map);
+        self
     }
 
     /// The same with `correction` in front, at `factor` times the signal's rate: at least the correction's own
@@ -124,7 +136,7 @@ impl SupplyDrive {
         settling(
             scheme.modulator.delay_s.max(scheme.phase_path.delay_s),
             &[
-                scheme.modulator.bandwidth_hz,
+                scheme.modulator.slowest_hz(),
                 scheme.phase_path.bandwidth_hz,
             ],
             rate_hz,
@@ -144,7 +156,11 @@ impl SupplyDrive {
                 None => self.full_v * self.shaping.apply(self.level * magnitude(wanted)),
                 Some(_) => asked_v,
             });
-            track.control.push(self.modulator.push(asked_v));
+            let open_v = self.modulator.push(asked_v);
+            track.control.push(match &mut self.sag {
+                Some(sag) => sag.push(open_v),
+                None => open_v,
+            });
             track.phase.push(self.phase.push(signal));
         }
     }
@@ -164,12 +180,18 @@ pub(super) fn settling(dead_s: f64, bandwidths_hz: &[Option<f64>], rate_hz: f64)
 }
 
 impl SupplyScheme {
+    /// The first supply, V, at which the modulator's output resistance and the stage of `map` have no single
+    /// working point.
+    pub fn falls_at_v(&self, map: &Map) -> Option<f64> {
+        Sag::falls_at_v(self.modulator.output_ohm, map)
+    }
+
     /// The sample rates that it asks for, and why.
     pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
         let modulator = &self.modulator;
         vec![
             (
-                band(modulator.bandwidth_hz, signal_rate_hz),
+                band(modulator.widest_hz(), signal_rate_hz),
                 RateReason::ModulatorBandwidth,
             ),
             (

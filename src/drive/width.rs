@@ -29,6 +29,16 @@ pub enum WidthLaw {
     Sine,
 }
 
+impl WidthLaw {
+    /// The width for the wanted part `m` of full output, 0 to 1, at full width `full`.
+    pub(super) fn width(self, inverse: &Inverse, full: f64, m: f64) -> f64 {
+        match self {
+            Self::Inverse | Self::Amplitude => inverse.width(m),
+            Self::Sine => (m.min(1.0) * (PI * full).sin()).asin() / PI,
+        }
+    }
+}
+
 /// The scheme as the study describes it.
 #[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
 pub struct WidthScheme {
@@ -93,8 +103,8 @@ impl Inverse {
     pub(super) fn new(map: &Map) -> Self {
         let end = map.turns_at().unwrap_or(map.domain().1);
         let start = map.domain().0;
-        let full_v = map.output_held_v(end).0.norm();
-        let amplitude = |width: f64| map.output_held_v(width).0.norm();
+        let full_v = map.amplitude_held_v(end);
+        let amplitude = |width: f64| map.amplitude_held_v(width);
         let width = (0..=STEPS)
             .map(|step| {
                 let target_v = full_v * step as f64 / STEPS as f64;
@@ -181,10 +191,7 @@ impl<'a> WidthDrive<'a> {
 
     /// The width for the wanted part `m` of full output.
     fn width(&self, m: f64) -> f64 {
-        match self.scheme.law {
-            WidthLaw::Inverse | WidthLaw::Amplitude => self.inverse.width(m),
-            WidthLaw::Sine => (m.min(1.0) * (PI * self.full).sin()).asin() / PI,
-        }
+        self.scheme.law.width(&self.inverse, self.full, m)
     }
 
     /// Width and shift of the pulse once its edges are quantized and jittered, both parts of a cycle.
@@ -222,7 +229,7 @@ impl<'a> WidthDrive<'a> {
             let width = width.max(self.shortest).min(self.full);
             let mut phase = self.phase.push(angle);
             if self.scheme.law == WidthLaw::Inverse {
-                let added = self.map.output_held_v(width).0.arg() - self.full_rad;
+                let added = self.map.phase_held_rad(width) - self.full_rad;
                 phase *= Complex64::from_polar(1.0, -added);
             }
             let (control, phase) = if self.grid.is_some() || self.jitter > 0.0 {

@@ -1,5 +1,7 @@
 //! STEP 3: from a control to the output, forward and inverse: AM-AM and AM-PM.
 
+mod mismatch;
+mod planes;
 mod read;
 mod read_csv;
 mod read_json;
@@ -10,6 +12,7 @@ use num_complex::Complex64;
 use crate::math::monotone::{Curve, CurveError};
 use crate::units;
 
+pub use mismatch::{LoadMap, LoadPoint, LoadSweep, LoadSweepError};
 pub use read::{MapFacts, MapFormat, read_map};
 pub use sweep::{Sweep, SweepError};
 
@@ -105,6 +108,10 @@ pub struct Map {
     failures: Vec<Failure>,
     /// Between the points beside failed ones: nothing is known inside.
     gaps: Vec<(f64, f64)>,
+    /// What the stages generate in front of a combiner, W, where that is not the output.
+    generated_w: Option<f64>,
+    /// A width map at lower supplies, rising; empty where it scales.
+    planes: Vec<Map>,
 }
 
 /// Why points make no map.
@@ -155,8 +162,22 @@ impl Map {
             driver_w: optional(|point| point.driver_w)?,
             failures: Vec::new(),
             gaps: Vec::new(),
+            generated_w: None,
+            planes: Vec::new(),
             points,
         })
+    }
+
+    /// The same map behind a combiner into which the stages deliver `watt` whatever comes out of it.
+    #[must_use]
+    pub fn with_generated_w(mut self, watt: f64) -> Self {
+        self.generated_w = Some(watt);
+        self
+    }
+
+    /// What the stages deliver into a combiner, W; none where they deliver the output itself.
+    pub fn generated_w(&self) -> Option<f64> {
+        self.generated_w
     }
 
     /// The same map with points that failed. Between their neighbours nothing is interpolated: forward and
@@ -255,6 +276,18 @@ impl Map {
         self.phase_rad.at(control)
     }
 
+    /// The phase of [`Map::output_held_v`], rad, without jumps of a turn.
+    pub fn phase_held_rad(&self, control: f64) -> f64 {
+        let held = self.gap_edge(control).unwrap_or(control);
+        self.phase_rad.at_held(held).0
+    }
+
+    /// The magnitude of [`Map::output_held_v`], V.
+    pub fn amplitude_held_v(&self, control: f64) -> f64 {
+        let held = self.gap_edge(control).unwrap_or(control);
+        self.amplitude_v.at_held(held).0
+    }
+
     /// Output phasor at `control` held within the domain and out of gaps, and whether it had to be held.
     pub fn output_held_v(&self, control: f64) -> (Complex64, bool) {
         if let Some(edge) = self.gap_edge(control) {
@@ -268,6 +301,11 @@ impl Map {
     /// Supply current at `control` held within the domain, A, where the map knows it.
     pub fn supply_held_a(&self, control: f64) -> Option<f64> {
         self.supply_a.as_ref().map(|curve| curve.at_held(control).0)
+    }
+
+    /// Supply current over the control, A, where the map knows it.
+    pub fn supply_curve_a(&self) -> Option<&Curve> {
+        self.supply_a.as_ref()
     }
 
     /// Driver power at `control` held within the domain, W, where the map knows it.

@@ -3,8 +3,7 @@
 use std::f64::consts::{PI, TAU};
 use std::ops::{AddAssign, Mul};
 
-use super::flow::Flow;
-use super::small::Square;
+use super::section::{Output, Section};
 
 /// The highest order on offer.
 pub const MAX_ORDER: u32 = 8;
@@ -20,18 +19,6 @@ pub struct Lowpass<T> {
     sections: Vec<Section<T>>,
 }
 
-/// `w' = [[0, 1], [-1, -1/q]] w + [0, 1] u` in time scaled by the bandwidth, or `w' = u - w`.
-#[derive(Debug, Clone)]
-struct Section<T> {
-    /// State to state.
-    step: [[f64; 2]; 2],
-    /// Input at the start and at the end of the step to the state.
-    start: [f64; 2],
-    end: [f64; 2],
-    state: [T; 2],
-    last: T,
-}
-
 impl<T> Lowpass<T>
 where
     T: Copy + Default + AddAssign + Mul<f64, Output = T>,
@@ -42,7 +29,12 @@ where
         let step = TAU * bandwidth_hz / rate_hz;
         let mut sections = Vec::new();
         if order % 2 == 1 {
-            sections.push(Section::new([[-1.0, 0.0], [0.0, -1.0]], [1.0, 0.0], step));
+            sections.push(Section::new(
+                [[-1.0, 0.0], [0.0, -1.0]],
+                [1.0, 0.0],
+                Output::FIRST,
+                step,
+            ));
         }
         for pair in 0..order / 2 {
             // The pair of poles at the angle theta from the negative axis has 1/Q = 2 cos(theta).
@@ -55,6 +47,7 @@ where
             sections.push(Section::new(
                 [[0.0, 1.0], [-1.0, -damping]],
                 [0.0, 1.0],
+                Output::FIRST,
                 step,
             ));
         }
@@ -64,8 +57,7 @@ where
     /// Starts from the state in which the constant `value` has always been the input.
     pub fn settle(&mut self, value: T) {
         for section in &mut self.sections {
-            section.state = [value, T::default()];
-            section.last = value;
+            section.settle(value, [1.0, 0.0]);
         }
     }
 
@@ -73,7 +65,7 @@ where
     /// converter that holds its values: the period's input is taken as constant.
     pub fn push_held(&mut self, mean: T) -> T {
         if let Some(first) = self.sections.first_mut() {
-            first.last = mean;
+            first.hold(mean);
         }
         self.push(mean)
     }
@@ -83,44 +75,6 @@ where
         self.sections
             .iter_mut()
             .fold(input, |signal, section| section.push(signal))
-    }
-}
-
-impl<T> Section<T>
-where
-    T: Copy + Default + AddAssign + Mul<f64, Output = T>,
-{
-    fn new(a: [[f64; 2]; 2], b: [f64; 2], step: f64) -> Self {
-        // Input u and its slope v (u' = v) as two more states: exp gives the response to steps and ramps.
-        let generator = Square([
-            [a[0][0], a[0][1], b[0], 0.0],
-            [a[1][0], a[1][1], b[1], 0.0],
-            [0.0, 0.0, 0.0, 1.0],
-            [0.0, 0.0, 0.0, 0.0],
-        ]);
-        let flow = Flow::new(&generator, step, 0);
-        let d = &flow.difference().0;
-        let ramp = [d[0][3] / step, d[1][3] / step];
-        Self {
-            step: [[1.0 + d[0][0], d[0][1]], [d[1][0], 1.0 + d[1][1]]],
-            start: [d[0][2] - ramp[0], d[1][2] - ramp[1]],
-            end: ramp,
-            state: [T::default(); 2],
-            last: T::default(),
-        }
-    }
-
-    fn push(&mut self, input: T) -> T {
-        let mut next = [T::default(); 2];
-        for (i, entry) in next.iter_mut().enumerate() {
-            *entry += self.state[0] * self.step[i][0];
-            *entry += self.state[1] * self.step[i][1];
-            *entry += self.last * self.start[i];
-            *entry += input * self.end[i];
-        }
-        self.state = next;
-        self.last = input;
-        self.state[0]
     }
 }
 

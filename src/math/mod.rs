@@ -12,6 +12,8 @@ pub mod modal;
 pub mod monotone;
 pub mod newton;
 pub mod radau;
+pub mod response;
+mod section;
 pub mod simplex;
 pub mod small;
 pub mod window;

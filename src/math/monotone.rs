@@ -9,9 +9,21 @@
 pub struct Curve {
     x: Vec<f64>,
     y: Vec<f64>,
-    slope: Vec<f64>,
+    /// The cubic over each piece.
+    cubics: Vec<Cubic>,
     /// Distance of the abscissae where they are evenly spaced: their piece is found without a search.
     step: Option<f64>,
+}
+
+/// `start + t (first + t (second + t third))` over `t` from 0 to 1.
+#[derive(Debug, Clone, Copy, PartialEq)]
+struct Cubic {
+    left: f64,
+    width: f64,
+    start: f64,
+    first: f64,
+    second: f64,
+    third: f64,
 }
 
 /// Why points make no curve.
@@ -53,13 +65,29 @@ impl Curve {
             }
         }
         let slope = slopes(&x, &y);
+        let cubics = (0..count - 1)
+            .map(|piece| {
+                let width = x[piece + 1] - x[piece];
+                let rise = y[piece + 1] - y[piece];
+                let (a, b) = (slope[piece] * width, slope[piece + 1] * width);
+                // Hermite form around the left point.
+                Cubic {
+                    left: x[piece],
+                    width,
+                    start: y[piece],
+                    first: a,
+                    second: 3.0 * rise - 2.0 * a - b,
+                    third: a + b - 2.0 * rise,
+                }
+            })
+            .collect();
         let step = (x[count - 1] - x[0]) / (count - 1) as f64;
         // Rounding may put x into the piece beside its own: both cubics agree at the shared point.
         let even = (0..count).all(|i| (x[0] + i as f64 * step - x[i]).abs() < 1e-9 * step);
         Ok(Self {
             x,
             y,
-            slope,
+            cubics,
             step: even.then_some(step),
         })
     }
@@ -133,16 +161,22 @@ impl Curve {
         self.piece(piece, x).0
     }
 
+    /// The slope at `x` held within the domain.
+    pub fn slope_held(&self, x: f64) -> f64 {
+        let (low, high) = self.domain();
+        let held = x.clamp(low, high);
+        let last = self.x.len() - 2;
+        let piece = self.x[1..=last].partition_point(|&knot| knot <= held);
+        self.piece(piece, held).1
+    }
+
     /// Value and slope at `x` of the cubic over piece `piece`.
     fn piece(&self, piece: usize, x: f64) -> (f64, f64) {
-        let width = self.x[piece + 1] - self.x[piece];
-        let t = (x - self.x[piece]) / width;
-        let rise = self.y[piece + 1] - self.y[piece];
-        let (a, b) = (self.slope[piece] * width, self.slope[piece + 1] * width);
-        // Hermite form around the left point.
-        let (second, third) = (3.0 * rise - 2.0 * a - b, a + b - 2.0 * rise);
-        let value = self.y[piece] + t * (a + t * (second + t * third));
-        (value, (a + t * (2.0 * second + 3.0 * t * third)) / width)
+        let cubic = &self.cubics[piece];
+        let t = (x - cubic.left) / cubic.width;
+        let value = cubic.start + t * (cubic.first + t * (cubic.second + t * cubic.third));
+        let slope = cubic.first + t * (2.0 * cubic.second + 3.0 * t * cubic.third);
+        (value, slope / cubic.width)
     }
 }
 

@@ -117,6 +117,26 @@ impl Spectrum {
         )
     }
 
+    /// The same without the bins whose centres lie farther than `until_hz` from the carrier.
+    #[must_use]
+    pub fn within(&self, until_hz: f64) -> Self {
+        let side = (until_hz / self.bin_hz).max(0.0).floor();
+        if side >= (self.bins() / 2) as f64 {
+            return self.clone();
+        }
+        let (side, centre) = (side as usize, self.bins() / 2);
+        // An odd number of bins keeps the carrier in the middle one; the highest bin may be missing.
+        let inside = centre - side..(centre + side + 1).min(self.bins());
+        Self {
+            mean_w_per_hz: self.mean_w_per_hz[inside.clone()].to_vec(),
+            peak_w_per_hz: self
+                .peak_w_per_hz
+                .as_ref()
+                .map(|densities| densities[inside.clone()].to_vec()),
+            ..*self
+        }
+    }
+
     /// Total mean power, W.
     pub fn total_w(&self) -> f64 {
         self.mean_w_per_hz.iter().sum::<f64>() * self.bin_hz
@@ -158,5 +178,33 @@ impl Spectrum {
             sum += covered.max(0.0) * self.mean_w_per_hz[bin] * weight(self.offset_hz(bin));
         }
         Ok(sum * self.bin_hz)
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn cut_spectra_keep_offsets_and_densities() {
+        for bins in [8usize, 9] {
+            let spectrum = Spectrum {
+                bin_hz: 10.0,
+                enbw_hz: 15.0,
+                mean_w_per_hz: (0..bins).map(|bin| bin as f64).collect(),
+                peak_w_per_hz: Some((0..bins).map(|bin| 2.0 * bin as f64).collect()),
+                segments: 3,
+            };
+            let cut = spectrum.within(25.0);
+            assert_eq!(cut.bins(), 5);
+            let shift = bins / 2 - 2;
+            for bin in 0..5 {
+                assert_eq!(cut.offset_hz(bin), spectrum.offset_hz(bin + shift));
+                assert_eq!(cut.mean_w_per_hz[bin], (bin + shift) as f64);
+            }
+            assert_eq!(cut.peak_w_per_hz.unwrap()[0], 2.0 * shift as f64);
+            assert_eq!(spectrum.within(f64::INFINITY), spectrum);
+            assert_eq!(spectrum.within(1000.0), spectrum);
+        }
     }
 }

@@ -3,6 +3,8 @@
 use std::f64::consts::TAU;
 use std::sync::Arc;
 
+use num_complex::Complex64;
+
 use super::balance::Orbit;
 use super::device::Throw;
 use super::engine::Engine;
@@ -23,6 +25,15 @@ use crate::stage::Stage;
 /// The supply, relative to the stage's, at which the limit towards zero is taken.
 const VANISHING: f64 = 1e-9;
 
+/// How often an orbit whose energy does not balance is solved again.
+const REFINEMENTS: usize = 2;
+
+/// The tolerance of its steps over the one before.
+const FINER: f64 = 0.02;
+
+/// A deviation that one period makes larger than this, relative to what it was, grows: rounding is left out.
+const GROWING: f64 = 1.0 + 1e-6;
+
 /// The port equations of a stage, ready for any drive.
 #[derive(Debug)]
 pub struct Curved {
@@ -34,6 +45,32 @@ pub struct Curved {
 pub struct Solved {
     pub orbit: Orbit,
     pub found: Found,
+}
+
+impl Solved {
+    /// The largest eigenvalue in magnitude of the map of one period, a choke's current held.
+    pub fn multiplier(&self) -> Complex64 {
+        let multipliers = self.found.period_map.complex_eigenvalues();
+        multipliers
+            .iter()
+            .copied()
+            .max_by(|a, b| a.norm().total_cmp(&b.norm()))
+            .unwrap_or_default()
+    }
+
+    /// Whether every small deviation dies out.
+    pub fn is_stable(&self) -> bool {
+        self.multiplier().norm() <= GROWING
+    }
+
+    /// Why it is no state that a stage stays in.
+    pub fn unstable(&self) -> OrbitError {
+        let multiplier = self.multiplier();
+        OrbitError::Unstable {
+            re: multiplier.re,
+            im: multiplier.im,
+        }
+    }
 }
 
 impl Curved {
@@ -55,7 +92,7 @@ impl Curved {
         Engine::new(stage, Arc::clone(&self.port), drive)
     }
 
-    /// Solves at `supply_v`, from `near` where that is given.
+    /// Solves at `supply_v`, from `near` where that is given: a state that a deviation does not grow away from.
     ///
     /// # Errors
     /// [`OrbitError`].
@@ -67,18 +104,21 @@ impl Curved {
         drive: &Drive,
         near: Option<(State, Scales)>,
     ) -> Result<Solved, OrbitError> {
-        let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
-        let found = shooting::find(
-            engine,
-            effective_supply_v(stage, supply_v),
-            least_scale_v(stage, engine),
-            near,
-            &mut gatherer,
-        )?;
-        self.figures(stage, engine, supply_v, drive, found, gatherer.sums)
+        let first = self.any(stage, engine, supply_v, drive, near)?;
+        if first.is_stable() {
+            return Ok(first);
+        }
+        if engine.work > WORK_LIMIT / 10 {
+            return Err(first.unstable());
+        }
+        // Periodic, but nothing stays there: another one may be stable.
+        let others = self.further(stage, engine, supply_v, drive, &first);
+        let unstable = first.unstable();
+        others.into_iter().find(Solved::is_stable).ok_or(unstable)
     }
 
-    /// Every periodic state that a few different starts lead to; the first is that of [`Curved::solve`].
+    /// Every periodic state that a few different starts lead to, stable or not; the first is that of
+    /// [`Curved::solve`] where that is stable.
     ///
     /// # Errors
     /// [`OrbitError`] of the first.
@@ -89,14 +129,66 @@ impl Curved {
         supply_v: f64,
         drive: &Drive,
     ) -> Result<Vec<Solved>, OrbitError> {
-        let first = self.solve(stage, engine, supply_v, drive, None)?;
+        let first = self.any(stage, engine, supply_v, drive, None)?;
+        let costly = engine.work > WORK_LIMIT / 10;
+        let others = if costly {
+            Vec::new()
+        } else {
+            self.further(stage, engine, supply_v, drive, &first)
+        };
+        Ok(std::iter::once(first).chain(others).collect())
+    }
+
+    /// A periodic state, stable or not. Where its energy does not balance, it is solved again with finer steps.
+    fn any(
+        &self,
+        stage: &Stage,
+        engine: &mut Engine,
+        supply_v: f64,
+        drive: &Drive,
+        near: Option<(State, Scales)>,
+    ) -> Result<Solved, OrbitError> {
+        let usual = engine.tolerance;
+        let mut near = near;
+        let mut left = REFINEMENTS;
+        let solved = loop {
+            let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
+            let found = shooting::find(
+                engine,
+                effective_supply_v(stage, supply_v),
+                least_scale_v(stage, engine),
+                near.take(),
+                &mut gatherer,
+            );
+            let found = match found {
+                Ok(found) => found,
+                Err(error) => break Err(error),
+            };
+            let start = (found.state.clone(), found.scales);
+            match self.figures(stage, engine, supply_v, drive, found, gatherer.sums) {
+                Err(OrbitError::Unbalanced { .. }) if left > 0 => {
+                    left -= 1;
+                    engine.tolerance *= FINER;
+                    near = Some(start);
+                }
+                solved => break solved,
+            }
+        };
+        engine.tolerance = usual;
+        solved
+    }
+
+    /// Periodic states apart from `first` that other starts lead to.
+    fn further(
+        &self,
+        stage: &Stage,
+        engine: &mut Engine,
+        supply_v: f64,
+        drive: &Drive,
+        first: &Solved,
+    ) -> Vec<Solved> {
         let scales = first.found.scales;
         let nominal = first.found.state.clone();
-        let costly = engine.work > WORK_LIMIT / 10;
-        let mut all = vec![first];
-        if costly {
-            return Ok(all);
-        }
         let scaled = |factor: f64| State {
             v: nominal.v * factor,
             q: nominal.q * factor,
@@ -113,13 +205,14 @@ impl Curved {
             }
         }
         let supply = effective_supply_v(stage, supply_v);
+        let mut all: Vec<Solved> = Vec::new();
         for state in starts {
             let mut gatherer = Gatherer::new(&self.port, engine.device(), drive.closing_rad);
             let found = shooting::find_from(engine, supply, state, scales, &mut gatherer);
             let Ok(found) = found else {
                 continue;
             };
-            let known = all.iter().any(|solved| {
+            let known = std::iter::once(first).chain(&all).any(|solved| {
                 let (a, b) = (&solved.found.state, &found.state);
                 let apart =
                     a.x.iter()
@@ -135,7 +228,7 @@ impl Curved {
                 all.push(solved);
             }
         }
-        Ok(all)
+        all
     }
 
     fn figures(

@@ -74,6 +74,17 @@ pub enum OrbitError {
         /// The limit.
         work: u64,
     },
+    /// Periodic states were found, but a small deviation from each of them grows.
+    #[error(
+        "unstable: the stage would not stay in the periodic state that was found; a small deviation is multiplied by {re:.3}{im:+.3}j every period{}",
+        kind_of_growth(*.re, *.im)
+    )]
+    Unstable {
+        /// Real part of the largest multiplier of a period.
+        re: f64,
+        /// Its imaginary part.
+        im: f64,
+    },
     /// The gate's edges take longer than the switch stays in one position.
     #[error(
         "half the gate's rise and fall take {edges_s:.3e} s, but the switch stays closed or open for only {shortest_s:.3e} s"
@@ -94,6 +105,17 @@ pub enum OrbitError {
         /// The tolerance.
         allowed: f64,
     },
+}
+
+/// What the multiplier of a growing deviation tells: at -1 and beyond it changes sign every period.
+fn kind_of_growth(re: f64, im: f64) -> &'static str {
+    if re < 0.0 && im.abs() <= 1e-6 * re.abs() {
+        ", which leads to a period of two carrier cycles or longer"
+    } else if im != 0.0 {
+        ", which leads to a slow beat over the carrier"
+    } else {
+        ""
+    }
 }
 
 /// When the switch is closed, as angles of the carrier. Angle 0 is the middle of the closed interval at full width.
@@ -258,19 +280,28 @@ impl Network {
         Tracker::new(self).orbit(supply_v, drive)
     }
 
-    /// Every periodic steady state that a few different starts lead to: one where the stage is linear, and
-    /// nearly always elsewhere. The first is that of [`Network::orbit`].
+    /// Every periodic steady state that a few different starts lead to and that is stable: one where the stage is
+    /// linear, and nearly always elsewhere. The first is that of [`Network::orbit`]. With them the number of further
+    /// periodic states that are not stable, which no stage stays in.
     ///
     /// # Errors
-    /// [`OrbitError`].
-    pub fn orbits(&self, supply_v: f64, drive: &Drive) -> Result<Vec<Orbit>, OrbitError> {
+    /// [`OrbitError`]; [`OrbitError::Unstable`] where none is stable.
+    pub fn orbits(&self, supply_v: f64, drive: &Drive) -> Result<(Vec<Orbit>, usize), OrbitError> {
         match &self.model {
-            Model::Linear(_) => Ok(vec![self.orbit(supply_v, drive)?]),
+            Model::Linear(_) => Ok((vec![self.orbit(supply_v, drive)?], 0)),
             Model::Curved(curved) => {
                 check(supply_v, drive)?;
                 let mut engine = curved.engine(&self.stage, drive)?;
                 let all = curved.solve_all(&self.stage, &mut engine, supply_v, drive)?;
-                Ok(all.into_iter().map(|solved| solved.orbit).collect())
+                let (stable, unstable): (Vec<_>, Vec<_>) =
+                    all.into_iter().partition(|solved| solved.is_stable());
+                match unstable.first() {
+                    Some(first) if stable.is_empty() => Err(first.unstable()),
+                    _ => {
+                        let orbits = stable.into_iter().map(|solved| solved.orbit).collect();
+                        Ok((orbits, unstable.len()))
+                    }
+                }
             }
         }
     }

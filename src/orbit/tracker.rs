@@ -27,6 +27,17 @@ impl<'a> Tracker<'a> {
         }
     }
 
+    /// A tracker of `network` that starts from the last orbit of `other`, a network of the same elements with other
+    /// values. A start only: what it finds is an orbit of `network`.
+    pub fn beside(network: &'a Network, other: &Tracker<'_>) -> Self {
+        let same = network.states() == other.network.states();
+        let last = other.last.last().filter(|_| same);
+        Self {
+            last: last.cloned().into_iter().collect(),
+            ..Self::new(network)
+        }
+    }
+
     /// The periodic steady state at `supply_v` with `drive`. After a failure the next one starts afresh.
     ///
     /// # Errors

@@ -3,7 +3,7 @@
 use serde_json::{Value, json};
 
 use super::table::{Align, Table};
-use super::text::quantity;
+use super::text::{quantity, zeroed};
 use crate::design::{BestEffort, Design, HIGHEST_RATIO, Match, Parts, Series, Zero};
 use crate::orbit::Orbit;
 
@@ -68,9 +68,9 @@ fn column(orbit: &Orbit) -> [String; 8] {
         format!("{:.2} %", 100.0 * orbit.efficiency),
         quantity(orbit.supply_a, "A", 4),
         quantity(orbit.switch_peak_v, "V", 4),
-        quantity(orbit.switch_min_v, "V", 3),
+        quantity(zeroed(orbit.switch_min_v, orbit.supply_v), "V", 3),
         quantity(orbit.switch_peak_a, "A", 4),
-        quantity(orbit.closing_v, "V", 3),
+        quantity(zeroed(orbit.closing_v, orbit.supply_v), "V", 3),
         format!("{:.1} dBc", orbit.harmonics_dbc[0]),
     ]
 }

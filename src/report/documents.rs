@@ -147,12 +147,15 @@ pub fn check_document(result: &CheckResult) -> Value {
     json!({
         "study": result.study.title,
         "scheme": result.scheme().name(),
+        "scheme_settings": result.scheme(),
+        "seed": result.scheme().seed(),
         "signal": result.signal,
         "level": result.study.signal.level,
         "sampling": result.rate,
         "metrics": result.metrics,
         "symbols": result.symbols,
         "verdict": result.judgement.verdict,
+        "stress": result.stress,
         "predistort": result.table.as_ref().map(|table| json!({
             "size": table.lookup.size(),
             "rate": table.lookup.rate(),

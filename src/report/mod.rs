@@ -19,12 +19,14 @@ pub mod figures;
 mod held;
 pub mod limits;
 pub mod measure;
+pub mod mismatch;
 pub mod page;
 pub mod palette;
 pub mod picture;
 pub mod predistort;
 pub mod scheme;
 pub mod stage;
+pub mod stress;
 pub mod table;
 mod text;
 

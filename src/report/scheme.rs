@@ -1,7 +1,7 @@
 //! A scheme's settings in words.
 
 use super::text::quantity;
-use crate::drive::Scheme;
+use crate::drive::{Modulator, PowerModel, Rails, Scheme, WidthLaw};
 
 /// A scheme's settings, imperfections included.
 pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
@@ -26,8 +26,21 @@ pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
             .to_lowercase(),
         ),
         own(
-            "modulator's bandwidth",
-            band(modulator.bandwidth_hz, modulator.order),
+            "modulator's response",
+            match &modulator.response {
+                None => band(modulator.bandwidth_hz, modulator.order),
+                Some(response) => format!(
+                    "{} poles, {} zeros, the fastest at {}",
+                    response.poles.count(),
+                    response.zeros.count(),
+                    quantity(
+                        response.poles.fastest().max(response.zeros.fastest())
+                            / std::f64::consts::TAU,
+                        "Hz",
+                        4
+                    )
+                ),
+            },
         ),
         own("modulator's dead time", quantity(modulator.delay_s, "s", 4)),
         own(
@@ -56,13 +69,10 @@ pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
                 )
             }),
         ),
+        own("modulator's power", modulator_power(modulator)),
         own(
-            "modulator's efficiency",
-            format!(
-                "{:.1} %, {} idle",
-                100.0 * modulator.efficiency,
-                quantity(modulator.idle_w, "W", 3)
-            ),
+            "modulator's output resistance",
+            quantity(modulator.output_ohm, "ohm", 4),
         ),
         own("phase path's dead time", quantity(path.delay_s, "s", 4)),
         own(
@@ -70,6 +80,36 @@ pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
             band(path.bandwidth_hz, path.order),
         ),
     ]
+}
+
+/// How the modulator turns power.
+fn modulator_power(modulator: &Modulator) -> String {
+    let percent = 100.0 * modulator.efficiency;
+    let idle = quantity(modulator.idle_w, "W", 3);
+    match modulator.power {
+        PowerModel::Switching => format!("switching, {percent:.1} %, {idle} idle"),
+        PowerModel::Linear { input_v } => {
+            format!("linear from {}, {idle} idle", quantity(input_v, "V", 4))
+        }
+        PowerModel::SplitBand {
+            input_v,
+            crossover_hz,
+        } => format!(
+            "switching below {}, {percent:.1} %; linear above from {}; {idle} idle",
+            quantity(crossover_hz, "Hz", 4),
+            quantity(input_v, "V", 4)
+        ),
+    }
+}
+
+/// A law of widths in words.
+fn law(law: WidthLaw) -> String {
+    match law {
+        WidthLaw::Inverse => "inverse of the map, amplitude and phase",
+        WidthLaw::Amplitude => "inverse of the map, amplitude alone",
+        WidthLaw::Sine => "sine law of rectangular pulses",
+    }
+    .to_owned()
 }
 
 /// Settings of the schemes beside `supply`.
@@ -84,7 +124,7 @@ fn settings(scheme: &Scheme) -> Vec<(String, String)> {
     match scheme {
         Scheme::Supply(_) => {}
         Scheme::Width(width) => rows.extend([
-            own("law", format!("{:?}", width.law).to_lowercase()),
+            own("law", law(width.law)),
             own(
                 "grid of the edges",
                 width
@@ -113,14 +153,19 @@ fn settings(scheme: &Scheme) -> Vec<(String, String)> {
         Scheme::Levels(levels) => rows.extend([
             own(
                 "rails",
-                levels
-                    .rails
-                    .iter()
-                    .map(|rail| format!("{rail:.4}"))
-                    .collect::<Vec<_>>()
-                    .join(", ")
-                    + " of the full supply",
+                match &levels.rails {
+                    Rails::Parts(parts) => {
+                        let parts: Vec<_> = parts.iter().map(|rail| format!("{rail:.4}")).collect();
+                        format!("{} of the full supply", parts.join(", "))
+                    }
+                    Rails::Volts(volts) => {
+                        let volts: Vec<_> =
+                            volts.iter().map(|volt| quantity(*volt, "V", 4)).collect();
+                        volts.join(", ")
+                    }
+                },
             ),
+            own("law", law(levels.law)),
             own("hysteresis", format!("{} of a rail", levels.hysteresis)),
             own("settling to 1 %", quantity(levels.settling_s, "s", 4)),
             own(

@@ -3,7 +3,7 @@
 use super::figures::{MapFigure, Quantity, WaveformFigure};
 use super::picture::Figure;
 use super::table::{Align, Table};
-use super::text::quantity;
+use super::text::{quantity, zeroed};
 use crate::map::{Control, Map};
 use crate::orbit::{Orbit, Waveform};
 use crate::stage::Stage;
@@ -13,7 +13,14 @@ use crate::units;
 pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
     let row = |name: &str, value: String, remark: String| [name.to_owned(), value, remark];
     let percent = |watt: f64| format!("{:.2} % of the supply power", 100.0 * watt / orbit.supply_w);
-    let lost = |name: &str, watt: f64| row(name, quantity(watt, "W", 4), percent(watt));
+    let lost = |name: &str, watt: f64| {
+        let watt = zeroed(watt, orbit.supply_w + orbit.driver_w);
+        row(name, quantity(watt, "W", 4), percent(watt))
+    };
+    let slope_v = zeroed(
+        orbit.closing_slope_v_per_s * stage.period_s(),
+        orbit.supply_v,
+    );
     let mut rows = vec![
         row(
             "output power",
@@ -57,7 +64,7 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         ),
         row(
             "lowest drain voltage",
-            quantity(orbit.switch_min_v, "V", 4),
+            quantity(zeroed(orbit.switch_min_v, orbit.supply_v), "V", 4),
             match (stage.switch.diode, orbit.diode_conductions) {
                 (None, _) => "a diode would conduct below about -0.7 V".to_owned(),
                 (Some(_), 0) => "the diode never conducts".to_owned(),
@@ -75,11 +82,8 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         ),
         row(
             "drain at closing",
-            quantity(orbit.closing_v, "V", 4),
-            format!(
-                "slope {} a period",
-                quantity(orbit.closing_slope_v_per_s * stage.period_s(), "V", 3)
-            ),
+            quantity(zeroed(orbit.closing_v, orbit.supply_v), "V", 4),
+            format!("slope {} a period", quantity(slope_v, "V", 3)),
         ),
     ];
     for (index, level) in orbit.harmonics_dbc.iter().enumerate() {
@@ -205,7 +209,10 @@ pub fn map_text(title: &str, map: &Map) -> String {
                 .efficiency
                 .map_or("-".to_owned(), |e| format!("{:.2} %", 100.0 * e)),
             optional(point.switch_peak_v, "V"),
-            optional(point.closing_v, "V"),
+            optional(
+                point.closing_v.map(|volt| zeroed(volt, point.supply_v)),
+                "V",
+            ),
         ]);
     }
     let monotone = match map.turns_at() {

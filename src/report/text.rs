@@ -75,6 +75,18 @@ pub fn quantity(value: f64, unit: &str, digits: usize) -> String {
     units::show(value, unit, digits)
 }
 
+/// What rounding leaves of zero, relative to the size of what it is a difference of.
+const NUMERIC_ZERO: f64 = 1e-9;
+
+/// `value`, or zero where it is below 1e-9 of `scale`: a designed zero is left at rounding, not at a voltage.
+pub fn zeroed(value: f64, scale: f64) -> f64 {
+    if value.abs() < NUMERIC_ZERO * scale.abs() {
+        0.0
+    } else {
+        value
+    }
+}
+
 /// A quantity with its sign always written: `+12.5 kHz`.
 pub fn signed(value: f64, unit: &str, digits: usize) -> String {
     let text = quantity(value, unit, digits);

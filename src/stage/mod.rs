@@ -2,12 +2,14 @@
 
 mod device;
 mod ladder;
+mod load;
 mod read;
 mod read_device;
 mod write;
 
 pub use device::{Device, Diode, DrainCurve, Gate, Junction, Knee};
 pub use ladder::{Arm, Element, Part, Rung};
+pub use load::{Load, magnitude_of_vswr};
 pub use write::TABLE_NAME;
 
 /// Which edge of the closed interval stays when its width changes.
@@ -107,15 +109,6 @@ pub enum Feed {
     },
     /// Nothing: the upper switch of a pair stands at the supply.
     Direct,
-}
-
-/// The end of the ladder.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct Load {
-    /// ohm
-    pub ohm: f64,
-    /// What stands in series with it, if anything.
-    pub reactance: Option<Element>,
 }
 
 impl Stage {

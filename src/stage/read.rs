@@ -2,6 +2,9 @@
 
 use std::f64::consts::TAU;
 
+use num_complex::Complex64;
+
+use super::load::{magnitude_of_vswr, reactance_element};
 use super::read_device::{Drain, diode, drain, gate, knee};
 use super::{
     Anchor, Arm, Arrangement, Device, Driver, Element, Feed, Load, Part, Rung, Stage, Switch,
@@ -15,6 +18,9 @@ const ANCHORS: [(&str, Anchor); 3] = [
     ("centre", Anchor::Centre),
     ("trailing", Anchor::Trailing),
 ];
+
+/// The largest reflection coefficient of a load: a standing-wave ratio of 199.
+const MOST_REFLECTION: f64 = 0.99;
 
 /// Duties that leave both a closed and an open interval worth the name.
 const DUTY: Range = Range::Within(0.01, 0.99);
@@ -292,23 +298,46 @@ fn feed(section: &Section<'_>) -> Result<Feed, Problem> {
 
 fn load(section: &Section<'_>, frequency_hz: f64) -> Result<(Vec<Rung>, Load), Problem> {
     let ohm = section.quantity("resistance", Dimension::Resistance, Range::Positive)?;
-    let reactance = section
-        .maybe_quantity("reactance", Dimension::Resistance, Range::Any)?
-        .filter(|ohm| *ohm != 0.0)
-        .map(|ohm| {
-            let angular = TAU * frequency_hz;
-            if ohm > 0.0 {
-                Element::Inductor(ohm / angular)
-            } else {
-                Element::Capacitor(-1.0 / (angular * ohm))
-            }
-        });
+    let reactance_ohm = section.maybe_quantity("reactance", Dimension::Resistance, Range::Any)?;
+    let load = match section.maybe_section("reflection")? {
+        Some(_) if reactance_ohm.is_some() => {
+            return Err(section.problem("reflection", "either reactance or reflection, not both"));
+        }
+        Some(reflection) => Load::reflecting(gamma(&reflection)?, ohm, frequency_hz),
+        None => Load {
+            reactance: reactance_element(reactance_ohm.unwrap_or(0.0), frequency_hz),
+            ..Load::matched(ohm)
+        },
+    };
     let ladder = section
         .sections("ladder")?
         .iter()
         .map(|section| rung(section, TAU * frequency_hz))
         .collect::<Result<_, _>>()?;
-    Ok((ladder, Load { ohm, reactance }))
+    Ok((ladder, load))
+}
+
+/// A reflection coefficient: its magnitude or the standing-wave ratio, and its angle.
+fn gamma(section: &Section<'_>) -> Result<Complex64, Problem> {
+    let magnitude = section.maybe_quantity(
+        "magnitude",
+        Dimension::Ratio,
+        Range::Within(0.0, MOST_REFLECTION),
+    )?;
+    let most = (1.0 + MOST_REFLECTION) / (1.0 - MOST_REFLECTION);
+    let vswr =
+        section.maybe_quantity("vswr", Dimension::Ratio, Range::Within(1.0, most.round()))?;
+    let magnitude = match (magnitude, vswr) {
+        (Some(magnitude), None) => magnitude,
+        (None, Some(vswr)) => magnitude_of_vswr(vswr),
+        (Some(_), Some(_)) => {
+            return Err(section.problem("vswr", "either magnitude or vswr, not both"));
+        }
+        (None, None) => return Err(section.problem("magnitude", "magnitude or vswr")),
+    };
+    let angle_rad = section.quantity("angle", Dimension::Angle, Range::Any)?;
+    section.finish()?;
+    Ok(Complex64::from_polar(magnitude, angle_rad))
 }
 
 fn rung(section: &Section<'_>, angular_hz: f64) -> Result<Rung, Problem> {

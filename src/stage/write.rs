@@ -133,20 +133,18 @@ impl Stage {
         }
         line(format!(
             "\n[load]\nresistance = {}",
-            quoted(self.load.ohm, "ohm")
+            quoted(self.load.reference_ohm, "ohm")
         ));
         let angular_hz = TAU * self.frequency_hz;
-        match self.load.reactance {
-            Some(Element::Inductor(henry)) => {
-                line(format!("reactance = {}", quoted(angular_hz * henry, "ohm")));
-            }
-            Some(Element::Capacitor(farad)) => {
-                line(format!(
-                    "reactance = {}",
-                    quoted(-1.0 / (angular_hz * farad), "ohm")
-                ));
-            }
-            Some(Element::Resistor(_)) | None => {}
+        if self.load.ohm != self.load.reference_ohm {
+            let gamma = self.load.reflection(self.frequency_hz);
+            let (magnitude, angle_rad) = (gamma.norm(), gamma.arg());
+            line(format!(
+                "reflection = {{ magnitude = {magnitude}, angle = {angle_rad} }}"
+            ));
+        } else if self.load.reactance.is_some() {
+            let ohm = self.load.reactance_ohm(self.frequency_hz);
+            line(format!("reactance = {}", quoted(ohm, "ohm")));
         }
         for rung in &self.ladder {
             line(format!(
@@ -251,6 +249,17 @@ mod tests {
         assert_eq!(again.gate_coupling_f, stage.gate_coupling_f);
         assert!(near(stage.drain_f, again.drain_f));
         assert_eq!(stage.ladder.len(), again.ladder.len());
+        assert_eq!(stage.load.ohm, again.load.ohm);
+        let mut reflecting = stage.clone();
+        reflecting.load = super::super::Load::reflecting(
+            num_complex::Complex64::from_polar(0.4, -2.0),
+            50.0,
+            stage.frequency_hz,
+        );
+        let back = Stage::parse("c", &reflecting.to_toml(&[])).unwrap().load;
+        let expected = reflecting.load.impedance_ohm(stage.frequency_hz);
+        assert!((back.impedance_ohm(stage.frequency_hz) - expected).norm() < 1e-10);
+        assert_eq!(back.reference_ohm, 50.0);
         let parts = |stage: &Stage| -> Vec<Part> {
             stage
                 .ladder

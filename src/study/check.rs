@@ -4,13 +4,14 @@ use num_complex::Complex64;
 
 use super::error::StudyError;
 use super::load::{Hardware, Predistortion, Study};
+use super::parts::EfficiencyParts;
 use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
 use super::warning::Warning;
 use crate::drive::{
-    ClassBScheme, Correction, MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, WidthLaw,
-    oversampling,
+    ClassBScheme, Correction, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme, Polynomial,
+    RateReason, Scheme, WidthLaw, oversampling,
 };
 use crate::map::{Control, Map, Origin, Sweep};
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
@@ -23,6 +24,12 @@ use crate::verdict::{Judgement, Measured, Wanted, judge};
 
 /// Points of a map solved for a check.
 const MAP_POINTS: usize = 201;
+
+/// Points of the width maps of a curved stage at lower supplies.
+const PLANE_POINTS: usize = 101;
+
+/// Their distance while a rail settles, as a part of the full supply.
+const PLANE_DISTANCE: f64 = 0.1;
 
 /// How far a margin may move when the sampling is doubled, dB.
 const CONVERGED_DB: f64 = 0.1;
@@ -76,15 +83,7 @@ pub fn check_by(
     progress: &mut dyn FnMut(f64),
 ) -> Result<CheckResult, StudyError> {
     let bench = Bench::new(study, source)?;
-    let front = match &study.predistort {
-        None => Front::None,
-        Some(Predistortion::Table(table)) => Front::Table(table.clone()),
-        Some(Predistortion::Request(request)) => Front::Table(bench.table(request)?),
-    };
-    if by == By::Map {
-        return bench.check(front, source, progress);
-    }
-    replayed(&bench, &front, source, by, workers, progress)
+    bench.check_by(bench.front()?, source, by, workers, progress)
 }
 
 /// What stands in front of the scheme in one check.
@@ -92,6 +91,8 @@ pub fn check_by(
 pub(super) enum Front {
     None,
     Table(Table),
+    /// A table so fine, on the track's own clock, that nothing but the inverse itself is seen.
+    Inverse(Table),
     Polynomial(Polynomial),
 }
 
@@ -100,6 +101,7 @@ impl Front {
         match self {
             Self::None => None,
             Self::Table(table) => Some(Correction::Table(table.lookup.clone())),
+            Self::Inverse(table) => Some(Correction::Instant(table.lookup.clone())),
             Self::Polynomial(polynomial) => Some(Correction::Polynomial(polynomial.clone())),
         }
     }
@@ -113,18 +115,79 @@ pub(super) struct Bench<'a> {
     pub(super) stage: Option<StageFacts>,
     pub(super) signal: SignalFacts,
     wanted: Wanted,
+    /// What several checks side by side share.
+    pub(super) common: Option<Common>,
+}
+
+/// What schemes that are compared share, so that their margins are of the same readings.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Common {
+    /// None is sampled at less, Hz.
+    pub(super) rate_hz: f64,
+    /// Offsets past this are not judged, Hz.
+    pub(super) until_hz: f64,
 }
 
 impl<'a> Bench<'a> {
     pub(super) fn new(study: &'a Study, source: &mut dyn Source) -> Result<Self, StudyError> {
         let (map, stage) = hardware(study)?;
+        if let Scheme::Supply(supply) = &study.scheme
+            && let Some(supply_v) = supply.falls_at_v(&map)
+        {
+            return Err(StudyError::NoWorkingPoint {
+                supply_v,
+                ohm: supply.modulator.output_ohm,
+            });
+        }
         Ok(Self {
             study,
             map,
             stage,
             signal: signal_facts(study, source)?,
             wanted: Wanted::of(&study.limits),
+            common: None,
         })
+    }
+
+    /// The same hardware and signal for another study of the same stage, control and anchor.
+    pub(super) fn with_study<'b>(&self, study: &'b Study) -> Bench<'b> {
+        Bench {
+            study,
+            map: self.map.clone(),
+            stage: self.stage.clone(),
+            signal: self.signal.clone(),
+            wanted: self.wanted.clone(),
+            common: self.common,
+        }
+    }
+
+    /// The sample rate that a check behind `front` starts from, Hz.
+    pub(super) fn rate_hz(&self, front: &Front) -> f64 {
+        self.oversampling(front).0 as f64 * self.signal.rate_hz
+    }
+
+    /// What the study itself puts in front of its scheme.
+    pub(super) fn front(&self) -> Result<Front, StudyError> {
+        Ok(match &self.study.predistort {
+            None => Front::None,
+            Some(Predistortion::Table(table)) => Front::Table(table.clone()),
+            Some(Predistortion::Request(request)) => Front::Table(self.table(request)?),
+        })
+    }
+
+    /// The inverse of the map in front of the scheme, without a clock or words of its own.
+    pub(super) fn inverse(&self) -> Result<Front, StudyError> {
+        let depth = LookupSize::DEPTHS.1;
+        let request = TableRequest {
+            size: LookupSize {
+                depth,
+                address_bits: LookupSize::BITS.1,
+                amplitude_bits: LookupSize::BITS.1,
+                phase_bits: LookupSize::BITS.1,
+            },
+            ..TableRequest::default()
+        };
+        Ok(Front::Inverse(self.table(&request)?))
     }
 
     /// The table of `request` for this study.
@@ -146,15 +209,31 @@ impl<'a> Bench<'a> {
     }
 
     /// The factor of the oversampling that `correction` needs, and what asked for it.
-    fn oversampling(&self, correction: Option<&Correction>) -> (usize, RateReason) {
-        let own = oversampling(&self.study.scheme, self.signal.rate_hz, self.wanted.span_hz);
-        match correction.map(|correction| INSTANTS_PER_HOLD * correction.rate()) {
+    fn oversampling(&self, front: &Front) -> (usize, RateReason) {
+        let mut own = oversampling(&self.study.scheme, self.signal.rate_hz, self.wanted.span_hz);
+        if let Some(common) = self.common {
+            let factor = (common.rate_hz / self.signal.rate_hz * (1.0 - 1e-9)).ceil() as usize;
+            let factor = factor.next_power_of_two().min(MAX_FACTOR);
+            if factor > own.0 {
+                own = (factor, RateReason::Common);
+            }
+        }
+        let held = match front {
+            Front::None | Front::Inverse(_) => None,
+            Front::Table(table) => Some(table.lookup.rate()),
+            Front::Polynomial(polynomial) => Some(polynomial.rate),
+        };
+        match held.map(|rate| INSTANTS_PER_HOLD * rate) {
             Some(factor) if factor > own.0 => (factor, RateReason::Predistortion),
             _ => own,
         }
     }
 
-    pub(super) fn chain<'b>(&'b self, correction: Option<&'b Correction>) -> Chain<'b> {
+    pub(super) fn chain<'b>(
+        &'b self,
+        front: &Front,
+        correction: Option<&'b Correction>,
+    ) -> Chain<'b> {
         let study = self.study;
         let resolution_hz = [self.wanted.fine_resolution_hz, study.resolution_hz]
             .into_iter()
@@ -165,7 +244,7 @@ impl<'a> Bench<'a> {
             study,
             map: &self.map,
             correction,
-            factor: self.oversampling(correction).0,
+            factor: self.oversampling(front).0,
             wanted: &self.wanted,
             resolution_hz,
             evm_band_hz: study
@@ -185,10 +264,28 @@ impl<'a> Bench<'a> {
         source: &mut dyn Source,
     ) -> Result<Judgement, StudyError> {
         let correction = front.correction();
-        let run = self.chain(correction.as_ref()).run(source, &mut |_| {})?;
-        Ok(verdict_of(self.study, self.stage.as_ref(), &run))
+        let run = self
+            .chain(front, correction.as_ref())
+            .run(source, &mut |_| {})?;
+        Ok(self.verdict_of(&run))
     }
 
+    /// As [`Bench::check`], or by replay, with `workers` segments at a time.
+    pub(super) fn check_by(
+        &self,
+        front: Front,
+        source: &mut dyn Source,
+        by: By,
+        workers: usize,
+        progress: &mut dyn FnMut(f64),
+    ) -> Result<CheckResult, StudyError> {
+        match by {
+            By::Map => self.check(front, source, progress),
+            By::Replay | By::Both => replayed(self, &front, source, by, workers, progress),
+        }
+    }
+
+    /// The study by map, at the factor of oversampling at which its margins stand still.
     pub(super) fn check(
         &self,
         front: Front,
@@ -206,8 +303,8 @@ impl<'a> Bench<'a> {
             });
         }
         let correction = front.correction();
-        let (factor, reason) = self.oversampling(correction.as_ref());
-        let mut chain = self.chain(correction.as_ref());
+        let (factor, reason) = self.oversampling(&front);
+        let mut chain = self.chain(&front, correction.as_ref());
         let signal = &self.signal;
 
         // The chosen factor is held against half of it, and doubled while that moves the margins.
@@ -223,7 +320,7 @@ impl<'a> Bench<'a> {
         };
         chain.factor = (factor / 2).max(1);
         let mut run = chain.run(source, &mut tick)?;
-        let mut judgement = verdict_of(study, self.stage.as_ref(), &run);
+        let mut judgement = self.verdict_of(&run);
         for _ in 0..=MORE_DOUBLINGS {
             let instants = 2 * chain.factor as u64 * signal.samples;
             if 2 * chain.factor > MAX_FACTOR || (chain.factor >= factor && instants > MOST_INSTANTS)
@@ -232,7 +329,7 @@ impl<'a> Bench<'a> {
             }
             chain.factor *= 2;
             let finer = chain.run(source, &mut tick)?;
-            let finer_judgement = verdict_of(study, self.stage.as_ref(), &finer);
+            let finer_judgement = self.verdict_of(&finer);
             convergence = Convergence {
                 against_factor: run.factor,
                 moved_db: largest_move(&judgement, &finer_judgement),
@@ -255,9 +352,10 @@ impl<'a> Bench<'a> {
             signal: signal.clone(),
             map: self.map.clone(),
             stage: self.stage.clone(),
+            stress: run.stress,
             table: match front {
                 Front::Table(table) => Some(table),
-                Front::None | Front::Polynomial(_) => None,
+                Front::None | Front::Inverse(_) | Front::Polynomial(_) => None,
             },
             metrics,
             output_spectrum: run.output_spectrum,
@@ -274,6 +372,37 @@ impl<'a> Bench<'a> {
         };
         result.warnings = warnings(&result, run.held);
         Ok(result)
+    }
+
+    pub(super) fn verdict_of(&self, run: &Run) -> Judgement {
+        let until_hz = self.common.map_or(f64::INFINITY, |common| common.until_hz);
+        let fine = run.output_spectrum.within(until_hz);
+        let peak_hold: Vec<_> = run
+            .peak_spectra
+            .iter()
+            .map(|s| s.within(until_hz))
+            .collect();
+        let symbols = run.symbols.as_ref();
+        let measured = Measured {
+            fine: &fine,
+            peak_hold: &peak_hold,
+            mean_w: run.output_envelope.mean_w,
+            peak_w: run.output_envelope.peak_w,
+            evm_percent: Some(symbols.map_or(run.errors.evm_percent, |s| s.evm_percent)),
+            evm_peak_percent: Some(
+                symbols.map_or(run.errors.evm_peak_percent, |s| s.evm_peak_percent),
+            ),
+            evm_p95_percent: symbols.map(|s| s.evm_p95_percent),
+            evm_p99_percent: symbols.map(|s| s.evm_p99_percent),
+            modulation: None,
+            // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
+            harmonics_dbc: self
+                .stage
+                .as_ref()
+                .map(|facts| &facts.orbit.harmonics_dbc[..]),
+            stress: run.stress,
+        };
+        judge(&measured, &self.study.limits)
     }
 }
 
@@ -308,6 +437,20 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         }
     }
     .solve(&network)?;
+    let map = match scheme {
+        Scheme::Levels(levels) if stage.is_curved() => {
+            let planes = supply_planes(levels, stage.supply_v)
+                .into_iter()
+                .map(|supply_v| {
+                    let mut sweep = Sweep::full(&network, Control::Width, PLANE_POINTS)?;
+                    sweep.supply_v = supply_v;
+                    sweep.solve(&network)
+                })
+                .collect::<Result<_, _>>()?;
+            map.with_planes(planes)
+        }
+        _ => map,
+    };
     let map = straight(scheme, &map)?.unwrap_or(map);
     let drive = Drive::new(&stage.driver, stage.driver.duty);
     let facts = StageFacts {
@@ -316,6 +459,24 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         settling_s: network.settling_s(&drive),
     };
     Ok((map, Some(facts)))
+}
+
+/// The lower supplies at which the width map of a curved stage is solved, rising: the rails, and where these settle
+/// slowly or lie far apart, supplies between them.
+fn supply_planes(levels: &LevelsScheme, full_v: f64) -> Vec<f64> {
+    let rails = levels.rails.parts(full_v);
+    let mut planes = Vec::new();
+    for pair in rails.windows(2) {
+        let steps = if levels.settling_s > 0.0 {
+            ((pair[1] - pair[0]) / PLANE_DISTANCE).ceil().max(1.0)
+        } else {
+            1.0
+        };
+        for step in 0..steps as usize {
+            planes.push((pair[0] + (pair[1] - pair[0]) * step as f64 / steps) * full_v);
+        }
+    }
+    planes
 }
 
 /// The straight map of a scheme over the drive, from the last point of `map`.
@@ -331,12 +492,12 @@ fn straight(scheme: &Scheme, map: &Map) -> Result<Option<Map>, StudyError> {
             map.origin(),
             top,
         )?),
-        Scheme::Outphase(_) => Some(OutphaseScheme::map(
-            frequency_hz,
-            load_ohm,
-            map.origin(),
-            top,
-        )?),
+        Scheme::Outphase(_) => {
+            let made = OutphaseScheme::map(frequency_hz, load_ohm, map.origin(), top)?;
+            // Both stages deliver the same whatever of it the combiner passes on.
+            let full_w = made.full_amplitude_v().powi(2) / (2.0 * load_ohm);
+            Some(made.with_generated_w(full_w))
+        }
         _ => None,
     })
 }
@@ -371,25 +532,6 @@ fn signal_facts(study: &Study, source: &mut dyn Source) -> Result<SignalFacts, S
         peak: peak.sqrt(),
         rms: (square / samples as f64).sqrt(),
     })
-}
-
-pub(super) fn verdict_of(study: &Study, stage: Option<&StageFacts>, run: &Run) -> Judgement {
-    let symbols = run.symbols.as_ref();
-    let measured = Measured {
-        fine: &run.output_spectrum,
-        peak_hold: &run.peak_spectra,
-        mean_w: run.output_envelope.mean_w,
-        peak_w: run.output_envelope.peak_w,
-        evm_percent: Some(symbols.map_or(run.errors.evm_percent, |s| s.evm_percent)),
-        evm_peak_percent: Some(symbols.map_or(run.errors.evm_peak_percent, |s| s.evm_peak_percent)),
-        evm_p95_percent: symbols.map(|s| s.evm_p95_percent),
-        evm_p99_percent: symbols.map(|s| s.evm_p99_percent),
-        modulation: None,
-        // At full supply: a linear stage keeps their ratio at any supply, a curved one about.
-        harmonics_dbc: stage.map(|facts| &facts.orbit.harmonics_dbc[..]),
-        stress: run.stress,
-    };
-    judge(&measured, &study.limits)
 }
 
 /// The largest movement of any margin that counts between two verdicts on the same limits, dB. A check that is
@@ -446,6 +588,7 @@ pub(super) fn metrics(
         mask: judgement.mask.clone(),
         efficiency: known(run.energy.efficiency()),
         stage_efficiency: known(run.energy.stage_efficiency()),
+        efficiency_parts: EfficiencyParts::of(&run.energy),
     })
 }
 

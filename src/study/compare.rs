@@ -1,34 +1,110 @@
-//! Several studies side by side: the same limits, one table.
+//! Several schemes side by side: the same limits over the same span, without and with static predistortion.
+//!
+//! What is common is done once: a scheme's stage is solved and its signal read for both of its checks. Every scheme
+//! is sampled at the rate of the most demanding one, and none is judged farther out than all were sampled, so that
+//! margins are of the same readings.
 
 use std::sync::Mutex;
 use std::sync::atomic::{AtomicUsize, Ordering};
 
-use super::check::check_by;
+use super::check::{Bench, Common};
 use super::error::StudyError;
 use super::load::Study;
 use super::replay::By;
 use super::result::CheckResult;
 use super::warning::Warning;
-use crate::drive::Scheme;
+use crate::drive::{Inversion, Scheme};
 use crate::signal::Source;
-use crate::verdict::Outcome;
 
 /// Opens the signal of the study with this index.
 pub type OpenSignal<'a> = dyn Fn(usize) -> Result<Box<dyn Source>, StudyError> + Sync + 'a;
 
-/// Carries out every study, up to `threads` at a time. The results stand in the studies' order and are the same
-/// for any number of threads.
+/// The part of the common sample rate up to which open-ended segments are judged, to each side: near half of it
+/// steps of pulses and rails fold back.
+const JUDGED_PART: f64 = 0.45;
+
+/// Static predistortion from the inverse of the scheme's own map.
+#[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Inverted {
+    /// The scheme knows nothing of the stage's bends.
+    Without,
+    /// A table in front of it, or the law of its widths.
+    With,
+    /// Its map is straight: there is nothing to undo.
+    Straight,
+}
+
+impl Inverted {
+    /// In tables.
+    pub fn word(self) -> &'static str {
+        match self {
+            Self::Without => "no",
+            Self::With => "yes",
+            Self::Straight => "nothing to undo",
+        }
+    }
+}
+
+/// One scheme of a comparison, carried out.
+#[derive(Debug, Clone)]
+pub struct Compared {
+    /// Which of the schemes, from 0.
+    pub scheme: usize,
+    /// With or without predistortion.
+    pub inverted: Inverted,
+    /// What was found.
+    pub result: CheckResult,
+}
+
+/// A check to be made.
+struct Entry {
+    scheme: usize,
+    inverted: Inverted,
+    study: Study,
+}
+
+/// The checks that `study`, the one with index `scheme`, asks for.
+fn entries(scheme: usize, study: &Study) -> Vec<Entry> {
+    let entry = |inverted, study: Study| Entry {
+        scheme,
+        inverted,
+        study,
+    };
+    let plain = |scheme| Study {
+        scheme,
+        predistort: None,
+        ..study.clone()
+    };
+    match study.scheme.inversion() {
+        Inversion::Table => {
+            // With the study's own table where it has one, else with the inverse itself.
+            vec![
+                entry(Inverted::Without, plain(study.scheme.clone())),
+                entry(Inverted::With, study.clone()),
+            ]
+        }
+        Inversion::Law { without, with } => vec![
+            entry(Inverted::Without, plain(*without)),
+            entry(Inverted::With, plain(*with)),
+        ],
+        Inversion::Straight => vec![entry(Inverted::Straight, study.clone())],
+    }
+}
+
+/// Carries out every study without and with predistortion, up to `threads` checks at a time. The results stand in
+/// the studies' order, without before with, and are the same for any number of threads.
 ///
 /// `progress` is told now and then which part of the work is done, 0 to 1.
 ///
 /// # Errors
-/// The first study's, by index, that has no result; with its index.
+/// That of the first study, by index, that has no result; with its index.
 pub fn compare(
     studies: &[Study],
     threads: usize,
     open: &OpenSignal<'_>,
     progress: &(dyn Fn(f64) + Sync),
-) -> Result<Vec<CheckResult>, (usize, StudyError)> {
+) -> Result<Vec<Compared>, (usize, StudyError)> {
     compare_by(studies, By::Map, threads, open, progress)
 }
 
@@ -43,43 +119,99 @@ pub fn compare_by(
     threads: usize,
     open: &OpenSignal<'_>,
     progress: &(dyn Fn(f64) + Sync),
-) -> Result<Vec<CheckResult>, (usize, StudyError)> {
+) -> Result<Vec<Compared>, (usize, StudyError)> {
+    let entries: Vec<Entry> = studies
+        .iter()
+        .enumerate()
+        .flat_map(|(scheme, study)| entries(scheme, study))
+        .collect();
+    let firsts: Vec<&Entry> = (0..studies.len())
+        .filter_map(|scheme| entries.iter().find(|entry| entry.scheme == scheme))
+        .collect();
+    let solved = in_order(threads, &firsts, |entry| {
+        let mut source = open(entry.scheme)?;
+        Bench::new(&entry.study, &mut *source)
+    })
+    .map_err(|(at, error)| (firsts[at].scheme, error))?;
+    let mut jobs = Vec::with_capacity(entries.len());
+    for entry in &entries {
+        let bench = solved[entry.scheme].with_study(&entry.study);
+        let front = match (entry.inverted, &entry.study.predistort) {
+            (Inverted::With, None) if entry.study.scheme.inversion() == Inversion::Table => {
+                bench.inverse()
+            }
+            _ => bench.front(),
+        };
+        let front = front.map_err(|error| (entry.scheme, error))?;
+        jobs.push((entry, bench, front));
+    }
+    let rate_hz = jobs
+        .iter()
+        .map(|(_, bench, front)| bench.rate_hz(front))
+        .fold(0.0, f64::max);
+    for (_, bench, _) in &mut jobs {
+        bench.common = Some(Common {
+            rate_hz,
+            until_hz: JUDGED_PART * rate_hz,
+        });
+    }
+    let parts = Mutex::new(vec![0.0; jobs.len()]);
+    let told = |at: usize, part: f64| {
+        if let Ok(mut parts) = parts.lock() {
+            parts[at] = part;
+            progress(parts.iter().sum::<f64>() / parts.len() as f64);
+        }
+    };
+    let numbered: Vec<_> = jobs.iter().enumerate().collect();
+    let results = in_order(threads, &numbered, |(at, (entry, bench, front))| {
+        let mut source = open(entry.scheme)?;
+        let baseline = matches!(entry.study.scheme, Scheme::ClassB(_));
+        let own = if baseline { By::Map } else { by };
+        let mut tell = |part| told(*at, part);
+        let mut result = bench.check_by(front.clone(), &mut *source, own, 1, &mut tell)?;
+        if own != by {
+            result.warnings.push(Warning::OnlyByMap);
+        }
+        Ok(result)
+    })
+    .map_err(|(at, error)| (jobs[at].0.scheme, error))?;
+    let compared = jobs
+        .iter()
+        .zip(results)
+        .map(|((entry, _, _), result)| Compared {
+            scheme: entry.scheme,
+            inverted: entry.inverted,
+            result,
+        });
+    Ok(compared.collect())
+}
+
+/// `work` on every item, up to `threads` at a time; the results in the items' order.
+fn in_order<I: Sync, T: Send>(
+    threads: usize,
+    items: &[I],
+    work: impl Fn(&I) -> Result<T, StudyError> + Sync,
+) -> Result<Vec<T>, (usize, StudyError)> {
     let next = AtomicUsize::new(0);
-    let parts = Mutex::new(vec![0.0; studies.len()]);
-    let results: Mutex<Vec<Option<Result<CheckResult, StudyError>>>> =
-        Mutex::new(studies.iter().map(|_| None).collect());
-    let work = || {
+    let results: Mutex<Vec<Option<Result<T, StudyError>>>> =
+        Mutex::new(items.iter().map(|_| None).collect());
+    let take = || {
         loop {
             let index = next.fetch_add(1, Ordering::Relaxed);
-            let Some(study) = studies.get(index) else {
+            let Some(item) = items.get(index) else {
                 break;
             };
-            let baseline = matches!(study.scheme, Scheme::ClassB(_));
-            let own = if baseline { By::Map } else { by };
-            let result = open(index).and_then(|mut source| {
-                check_by(study, &mut *source, own, 1, &mut |part| {
-                    if let Ok(mut parts) = parts.lock() {
-                        parts[index] = part;
-                        progress(parts.iter().sum::<f64>() / studies.len() as f64);
-                    }
-                })
-            });
-            let result = result.map(|mut result| {
-                if own != by {
-                    result.warnings.push(Warning::OnlyByMap);
-                }
-                result
-            });
+            let result = work(item);
             if let Ok(mut results) = results.lock() {
                 results[index] = Some(result);
             }
         }
     };
     std::thread::scope(|scope| {
-        for _ in 1..threads.clamp(1, studies.len().max(1)) {
-            scope.spawn(work);
+        for _ in 1..threads.clamp(1, items.len().max(1)) {
+            scope.spawn(take);
         }
-        work();
+        take();
     });
     let results = results
         .into_inner()
@@ -90,81 +222,4 @@ pub fn compare_by(
         .enumerate()
         .map(|(index, result)| result.map_err(|error| (index, error)))
         .collect()
-}
-
-/// Why a scheme stands where it does.
-#[derive(Debug, Clone, PartialEq, serde::Serialize)]
-pub struct Rank {
-    /// Which result, from 0.
-    pub index: usize,
-    /// In words.
-    pub reason: String,
-}
-
-/// The order of preference: within limits before undecided before outside; schemes that can follow the signal
-/// before those that cannot; among those within, the more efficient first, among others the larger margin.
-pub fn ranked(results: &[CheckResult]) -> Vec<Rank> {
-    let class = |result: &CheckResult| match result.judgement.verdict.outcome {
-        Outcome::Within => 0,
-        Outcome::Undecided => 1,
-        Outcome::Outside => 2,
-    };
-    let margin = |result: &CheckResult| {
-        let tightest = result.judgement.verdict.tightest();
-        tightest
-            .and_then(|check| check.margin_db)
-            .unwrap_or(f64::NEG_INFINITY)
-    };
-    let mut order: Vec<usize> = (0..results.len()).collect();
-    order.sort_by(|&a, &b| {
-        let (a, b) = (&results[a], &results[b]);
-        let by_class = (class(a), follows(a)).cmp(&(class(b), follows(b)));
-        let by_margin = margin(b).total_cmp(&margin(a));
-        let efficiency = |result: &CheckResult| result.metrics.efficiency.unwrap_or(-1.0);
-        by_class.then(if class(a) == 0 {
-            efficiency(b).total_cmp(&efficiency(a)).then(by_margin)
-        } else {
-            by_margin
-        })
-    });
-    order
-        .into_iter()
-        .map(|index| Rank {
-            index,
-            reason: reason(&results[index]),
-        })
-        .collect()
-}
-
-/// 0 where the scheme follows the signal everywhere, 1 where it says that it cannot.
-fn follows(result: &CheckResult) -> u8 {
-    let coarse = |warning: &Warning| matches!(warning, Warning::GridTooCoarse { .. });
-    u8::from(result.warnings.iter().any(coarse))
-}
-
-fn reason(result: &CheckResult) -> String {
-    let verdict = &result.judgement.verdict;
-    let tightest = verdict.tightest();
-    let by = tightest.map_or(String::new(), |check| {
-        format!(
-            ", {} by {:+.2} dB",
-            check.name,
-            check.margin_db.unwrap_or(f64::NAN)
-        )
-    });
-    let efficiency = result
-        .metrics
-        .efficiency
-        .map_or("efficiency not known".to_owned(), |efficiency| {
-            format!("{:.1} % efficient", 100.0 * efficiency)
-        });
-    let coarse = match follows(result) {
-        0 => "",
-        _ => "; cannot follow the deepest notch",
-    };
-    match verdict.outcome {
-        Outcome::Within => format!("within all limits, {efficiency}{by}{coarse}"),
-        Outcome::Undecided => format!("undecided, {efficiency}{by}{coarse}"),
-        Outcome::Outside => format!("outside{by}, {efficiency}{coarse}"),
-    }
 }

@@ -50,6 +50,16 @@ pub enum StudyError {
         /// The study's.
         scheme: &'static str,
     },
+    /// The modulator's output resistance and the stage's current have no single working point.
+    #[error(
+        "the modulator's output resistance of {ohm} ohm has no single working point with this stage from a supply of {supply_v:.4} V on, where the stage's current falls as its supply rises: lower output_resistance"
+    )]
+    NoWorkingPoint {
+        /// V.
+        supply_v: f64,
+        /// ohm.
+        ohm: f64,
+    },
     /// No map can be made.
     #[error(transparent)]
     Map(#[from] crate::map::MapError),

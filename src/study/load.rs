@@ -1,6 +1,6 @@
 //! A study file and the files it names.
 
-use crate::drive::Scheme;
+use crate::drive::{Rails, Scheme};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::limits::{Limits, LimitsRequest};
 use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
@@ -9,7 +9,7 @@ use crate::metrics::SymbolFormat;
 use crate::predistort::{Table, TableRequest, read_table};
 use crate::signal::FormatOptions;
 use crate::stage::{Anchor, Stage};
-use crate::units::Dimension;
+use crate::units::{self, Dimension};
 
 /// One study, ready to be carried out; the signal is still a file.
 #[derive(Debug, Clone)]
@@ -217,18 +217,60 @@ impl Study {
                     ),
                 ));
             }
-            Hardware::Stage(stage)
-                if matches!(self.scheme, Scheme::Levels(_)) && stage.is_curved() =>
-            {
-                return Err(scheme.problem(
-                    "kind",
-                    "a scheme other than levels: this stage is curved, and its width map is known at one supply only",
-                ));
-            }
             _ => {}
         }
+        self.supplies_fit(scheme)?;
         if self.predistort.is_some() && wanted != Control::Supply {
             return Err(scheme.problem("kind", "\"supply\", the scheme that [predistort] works on"));
+        }
+        Ok(())
+    }
+}
+
+impl Study {
+    /// Whether rails and the modulator's input go with the full supply, and the map knows the current they need.
+    fn supplies_fit(&self, scheme: &Section<'_>) -> Result<(), Problem> {
+        let full_v = match &self.hardware {
+            Hardware::Stage(stage) => stage.supply_v,
+            Hardware::Map(map) => map.own_supply_v(),
+        };
+        let shown = units::show(full_v, "V", 6);
+        match &self.scheme {
+            Scheme::Levels(levels) => {
+                if let Rails::Volts(volts) = &levels.rails
+                    && volts
+                        .last()
+                        .is_none_or(|top| (top / full_v - 1.0).abs() > 1e-6)
+                {
+                    return Err(scheme.problem(
+                        "rail_voltages",
+                        format!("voltages that rise to the full supply of {shown}"),
+                    ));
+                }
+            }
+            Scheme::Supply(supply) => {
+                let modulator = &supply.modulator;
+                if modulator
+                    .power
+                    .input_v()
+                    .is_some_and(|input_v| input_v < full_v)
+                {
+                    return Err(scheme.problem(
+                        "modulator",
+                        format!("a power.input of the full supply, {shown}, or more"),
+                    ));
+                }
+                if let Hardware::Map(map) = &self.hardware
+                    && modulator.output_ohm > 0.0
+                    && map.supply_curve_a().is_none()
+                {
+                    return Err(scheme.problem(
+                        "modulator",
+                        "no output_resistance with a map that has no supply_a: the stage's current is not known",
+                    ));
+                }
+            }
+            _ => {}
         }
         Ok(())
     }

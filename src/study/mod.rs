@@ -1,15 +1,19 @@
 //! One study from file to verdict.
 
 mod average;
+mod backoff;
 mod built_in;
 mod check;
 mod collect;
 mod compare;
 mod error;
+mod kept;
 mod load;
 mod measure;
 mod parting;
+mod parts;
 mod predistort;
+mod rank;
 mod replay;
 mod result;
 mod run;
@@ -17,17 +21,20 @@ mod scale;
 mod warning;
 
 pub use average::Averaged;
+pub use backoff::{BackoffPoint, backoff};
 pub use built_in::{BuiltIn, DEFAULT_STUDY};
 pub use check::{check, check_by};
-pub use compare::{OpenSignal, Rank, compare, compare_by, ranked};
+pub use compare::{Compared, Inverted, OpenSignal, compare, compare_by};
 pub use error::StudyError;
 pub use load::{Hardware, Predistortion, SignalChoice, Study};
 pub use measure::{CaptureMetrics, MeasureRequest, MeasureResult, measure};
 pub use parting::{Band, Parting};
+pub use parts::EfficiencyParts;
 pub use predistort::{
     PolynomialResult, PredistortRequest, PredistortResult, Reserve, SearchEnd, SearchResult,
     SearchRow, Sweep, SweepQuantity, predistort,
 };
+pub use rank::{Rank, follows, ranked};
 pub use replay::{By, ByMap, MarginPair, ReplayFacts};
 pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
 pub use scale::Scale;

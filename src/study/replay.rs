@@ -1,6 +1,6 @@
 //! A study whose stage is replayed, and how far its map is from that.
 
-use super::check::{Bench, FAR_WITHIN_DB, Front, metrics, stage_of, verdict_of, warnings};
+use super::check::{Bench, FAR_WITHIN_DB, Front, metrics, stage_of, warnings};
 use super::error::StudyError;
 use super::parting::Parting;
 use super::result::{CheckResult, Metrics, RateFacts};
@@ -136,7 +136,7 @@ pub(super) fn replayed(
     }
     let by_map = bench.check(front.clone(), source, &mut |part| progress(MAP_PART * part))?;
     let correction = front.correction();
-    let mut chain = bench.chain(correction.as_ref());
+    let mut chain = bench.chain(front, correction.as_ref());
     chain.factor = by_map.rate.factor;
     chain.replay = Some(Replayed {
         network: &network,
@@ -149,7 +149,7 @@ pub(super) fn replayed(
         done += count as f64 / instants;
         progress((MAP_PART + (1.0 - MAP_PART) * done).min(1.0));
     })?;
-    let judgement = verdict_of(study, bench.stage.as_ref(), &run);
+    let judgement = bench.verdict_of(&run);
     let metrics = metrics(study, &run, &judgement)?;
     let against = run.against_map.ok_or(StudyError::NoStage)?;
     let facts = ReplayFacts {
@@ -188,6 +188,7 @@ pub(super) fn replayed(
         map: by_map.map,
         stage: by_map.stage,
         table: by_map.table,
+        stress: run.stress,
     };
     result.warnings = warnings(&result, run.held);
     if let Some(facts) = &result.replay {

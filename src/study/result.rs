@@ -5,9 +5,10 @@ use crate::map::Map;
 use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum, SymbolFigures};
 use crate::orbit::{Orbit, Waveform};
 use crate::predistort::Table;
-use crate::verdict::{Judgement, MaskMargin};
+use crate::verdict::{Judgement, MaskMargin, Stress};
 
 use super::load::Study;
+use super::parts::EfficiencyParts;
 use super::replay::ReplayFacts;
 use super::warning::Warning;
 
@@ -22,6 +23,8 @@ pub struct CheckResult {
     pub map: Map,
     /// How a stage behaves at full supply; absent for a map from a file.
     pub stage: Option<StageFacts>,
+    /// What the switch had to stand, where the map knows.
+    pub stress: Option<Stress>,
     /// The table that stood in front of the scheme.
     pub table: Option<Table>,
     /// How finely it was sampled.
@@ -143,6 +146,8 @@ pub struct Metrics {
     pub efficiency: Option<f64>,
     /// Output over what the stage draws.
     pub stage_efficiency: Option<f64>,
+    /// Its factors.
+    pub efficiency_parts: EfficiencyParts,
 }
 
 /// A stretch of time around the deepest notch of the magnitude.

@@ -1,13 +1,14 @@
 //! One signal through the whole chain at one oversampling factor, block by block, in two passes.
 //!
 //! The first pass takes spectra, powers and the alignment of output and wanted signal; the second runs
-//! the same chain again and holds the aligned output against the wanted signal. Memory does not grow with
-//! the signal.
+//! the same chain again, or what was kept of a short signal, and holds the aligned output against the wanted
+//! signal. Memory does not grow with a long one.
 
 use num_complex::Complex64;
 
 use super::collect::Collected;
 use super::error::StudyError;
+use super::kept::{Kept, MOST, NotchWindow};
 use super::load::Study;
 use super::result::Notch;
 use crate::drive::{Correction, Scheme, Track};
@@ -61,9 +62,6 @@ pub struct Replayed<'a> {
     pub workers: usize,
 }
 
-/// Instants of a replay that are kept for the second pass: 128 MB. Longer ones are replayed again.
-const MOST_KEPT: u64 = 1 << 23;
-
 /// A replay against the map on the same track.
 #[derive(Debug, Clone, Copy)]
 pub struct AgainstMap {
@@ -75,10 +73,8 @@ pub struct AgainstMap {
 
 /// What makes an output of a track.
 enum Transmitter<'a> {
-    Map(MapTransmitter<'a>),
+    Map(Box<MapTransmitter<'a>>),
     Replay(Box<ReplayTransmitter<'a>>),
-    /// Outputs of a replay before.
-    Kept(&'a [Complex64]),
 }
 
 /// What a pass leaves.
@@ -162,12 +158,10 @@ impl Chain<'_> {
         )
     }
 
-    /// Runs the chain once over the whole source and hands out what counts. Outputs in `kept` are used in place of a
-    /// replay.
+    /// Runs the chain once over the whole source and hands out what counts.
     fn pass(
         &self,
         source: &mut dyn Source,
-        kept: Option<&[Complex64]>,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
     ) -> Result<Passed, StudyError> {
@@ -185,20 +179,17 @@ impl Chain<'_> {
         if let Some(correction) = self.correction {
             drive = drive.corrected(correction, self.factor);
         }
-        let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator());
-        let mut transmitter = match (self.replay, kept) {
-            (None, _) => Transmitter::Map(by_map()),
-            (Some(_), Some(kept)) => Transmitter::Kept(kept),
-            (Some(replay), None) => {
-                Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
-                    network: replay.network,
-                    scheme: &study.scheme,
-                    map: self.map,
-                    rate_hz,
-                    counted: (start, end),
-                    workers: replay.workers,
-                })?))
-            }
+        let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
+        let mut transmitter = match self.replay {
+            None => Transmitter::Map(Box::new(by_map())),
+            Some(replay) => Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
+                network: replay.network,
+                scheme: &study.scheme,
+                map: self.map,
+                rate_hz,
+                counted: (start, end),
+                workers: replay.workers,
+            })?)),
         };
         let mut beside = self.replay.map(|_| by_map());
         let mut oversampled = Oversampled::new(source, self.factor)?;
@@ -216,7 +207,7 @@ impl Chain<'_> {
             by_map_v.clear();
             drive.push(&samples[..count], &mut fresh);
             match &mut transmitter {
-                Transmitter::Map(_) | Transmitter::Kept(_) => {
+                Transmitter::Map(_) => {
                     std::mem::swap(&mut fresh, &mut track);
                 }
                 Transmitter::Replay(replay) if ended => {
@@ -231,12 +222,6 @@ impl Chain<'_> {
             let range = inside(start)..inside(end);
             match &mut transmitter {
                 Transmitter::Map(map) => map.push(&track, range.clone(), &mut output_v),
-                Transmitter::Kept(kept) => {
-                    let from = (first as usize).min(kept.len());
-                    output_v.extend_from_slice(&kept[from..(from + length).min(kept.len())]);
-                    // Only the very end can be missing, and it does not count.
-                    output_v.resize(length, Complex64::ZERO);
-                }
                 Transmitter::Replay(_) => {}
             }
             if let Some(map) = &mut beside {
@@ -265,7 +250,6 @@ impl Chain<'_> {
                     replay.cycles(),
                 )
             }
-            Transmitter::Kept(_) => (Energy::default(), 0, 0.0, 0),
         };
         let stress = self.map.stress_up_to(highest);
         Ok(Passed {
@@ -315,7 +299,13 @@ impl Chain<'_> {
         let rate_hz = self.rate_hz(source);
         let load_ohm = self.map.load_ohm();
         let (mut output_meter, mut peak_meters) = self.meters(rate_hz)?;
-        let (mut wanted_meter, _) = self.meters(rate_hz)?;
+        let mut wanted_meter = output_meter.clone();
+        let (start, end) = self.span(rate_hz);
+        let keeps = end.saturating_sub(start) <= MOST;
+        let mut kept = Kept {
+            first: start,
+            ..Kept::default()
+        };
         let mut output_envelope = EnvelopeMeter::new(load_ohm);
         let mut wanted_envelope = EnvelopeMeter::new(load_ohm);
         let search_s = self.settling(rate_hz) as f64 / rate_hz;
@@ -327,15 +317,9 @@ impl Chain<'_> {
             Some(_) => Some(AlignmentMeter::new(rate_hz, search_s)?),
             None => None,
         };
-        let instants = self.signal_samples * self.factor as u64;
-        let mut kept = (self.replay.is_some() && instants <= MOST_KEPT).then(Vec::new);
-        let passed = self.pass(source, None, tick, |piece| {
+        let passed = self.pass(source, tick, |piece| {
             if let Some(meter) = &mut map_alignment {
                 meter.push(piece.by_map_v(), piece.output_v())?;
-            }
-            if let Some(kept) = &mut kept {
-                kept.resize(piece.first as usize, Complex64::ZERO);
-                kept.extend_from_slice(piece.output_v);
             }
             output_meter.push(piece.output_v());
             for meter in &mut peak_meters {
@@ -345,6 +329,15 @@ impl Chain<'_> {
             output_envelope.push(piece.output_v());
             wanted_envelope.push(piece.wanted());
             alignment.push(piece.wanted(), piece.output_v())?;
+            if keeps {
+                let range = piece.range.clone();
+                kept.wanted.extend_from_slice(piece.wanted());
+                kept.output_v.extend_from_slice(piece.output_v());
+                kept.by_map_v.extend_from_slice(piece.by_map_v());
+                kept.asked
+                    .extend_from_slice(&piece.track.asked[range.clone()]);
+                kept.control.extend_from_slice(&piece.track.control[range]);
+            }
             for at in piece.range.clone() {
                 let fraction = piece.track.control[at] / full;
                 let bin = (fraction * DENSITY_BINS as f64) as usize;
@@ -372,28 +365,55 @@ impl Chain<'_> {
             .format
             .map(|format| Collected::new(format, self.factor, alignment.delay_s * rate_hz));
         let mut notch = Notch::default();
-        let reach = (NOTCH_SAMPLES * self.factor) as u64;
-        let level = self.study.signal.level;
-        self.pass(source, kept.as_deref(), tick, |piece| {
+        let window = NotchWindow {
+            middle: deepest.1,
+            reach: (NOTCH_SAMPLES * self.factor) as u64,
+            rate_hz,
+            level: self.study.signal.level,
+            full,
+        };
+        let mut again = |first: u64,
+                         wanted: &[Complex64],
+                         output_v: &[Complex64],
+                         by_map_v: &[Complex64],
+                         asked: &[f64],
+                         control: &[f64]|
+         -> Result<(), StudyError> {
             if let Some(meter) = &mut map_errors {
-                meter.push(piece.by_map_v(), piece.output_v())?;
+                meter.push(by_map_v, output_v)?;
             }
-            errors.push(piece.wanted(), piece.output_v())?;
+            errors.push(wanted, output_v)?;
             if let Some(collected) = &mut collected {
-                collected.push(piece.wanted(), piece.output_v());
+                collected.push(wanted, output_v);
             }
-            for at in piece.range.clone() {
-                let instant = piece.first + at as u64;
-                if instant.abs_diff(deepest.1) <= reach {
-                    let offset = instant as f64 - deepest.1 as f64;
-                    notch.time_s.push(offset / rate_hz);
-                    notch.wanted.push(level * piece.track.wanted[at].norm());
-                    notch.asked.push(piece.track.asked[at] / full);
-                    notch.control.push(piece.track.control[at] / full);
-                }
-            }
+            window.take(first, wanted, asked, control, &mut notch);
             Ok(())
-        })?;
+        };
+        if keeps {
+            let Kept {
+                first,
+                wanted,
+                output_v,
+                by_map_v,
+                asked,
+                control,
+            } = &kept;
+            again(*first, wanted, output_v, by_map_v, asked, control)?;
+            tick(self.signal_samples * self.factor as u64);
+        } else {
+            self.pass(source, tick, |piece| {
+                let range = piece.range.clone();
+                again(
+                    piece.first + range.start as u64,
+                    piece.wanted(),
+                    piece.output_v(),
+                    piece.by_map_v(),
+                    &piece.track.asked[range.clone()],
+                    &piece.track.control[range],
+                )
+            })?;
+        }
+        drop(kept);
 
         let total: u64 = density.iter().sum();
         let mut wanted_spectrum = wanted_meter.finish()?;

@@ -120,7 +120,7 @@ impl fmt::Display for Warning {
                 signal_s,
             } => write!(
                 f,
-                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result",
+                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result; a linear stage has it with --by replay",
                 show(*settling_s, "s", 3),
                 show(*signal_s, "s", 3)
             ),

@@ -2,7 +2,7 @@
 
 use num_complex::Complex64;
 
-use crate::drive::{Modulator, Track};
+use crate::drive::{DrawnPower, Modulator, Track};
 use crate::map::{Control, Map};
 
 /// Where the energy went, summed over samples.
@@ -12,6 +12,8 @@ pub struct Energy {
     pub samples: u64,
     /// Sum of output powers, W.
     pub output_w: f64,
+    /// Sum of powers that stages deliver into a combiner, W; the output's own without one.
+    pub generated_w: f64,
     /// Sum of powers that the stage draws from its supply, W.
     pub stage_w: f64,
     /// Sum of powers that the modulator draws, W.
@@ -41,7 +43,7 @@ impl Energy {
 #[derive(Debug, Clone)]
 pub struct MapTransmitter<'a> {
     map: &'a Map,
-    modulator: Modulator,
+    drawn: DrawnPower,
     /// The supply while another control is moved, V.
     fixed_v: Option<f64>,
     energy: Energy,
@@ -49,17 +51,47 @@ pub struct MapTransmitter<'a> {
     highest_control: f64,
 }
 
+/// Output and supply current of an instant or a part of one.
+#[derive(Debug, Clone, Copy)]
+struct Working {
+    output_v: Complex64,
+    supply_v: f64,
+    supply_a: f64,
+    held: bool,
+}
+
 impl<'a> MapTransmitter<'a> {
-    /// `map` behind `modulator`.
-    pub fn new(map: &'a Map, modulator: &Modulator) -> Self {
+    /// `map` behind `modulator`, on tracks of `rate_hz`.
+    pub fn new(map: &'a Map, modulator: &Modulator, rate_hz: f64) -> Self {
         Self {
             map,
-            modulator: *modulator,
-            fixed_v: (map.control() != Control::Supply)
-                .then(|| map.points().last().map_or(f64::NAN, |point| point.supply_v)),
+            drawn: DrawnPower::new(modulator, rate_hz),
+            fixed_v: (map.control() != Control::Supply).then(|| map.own_supply_v()),
             energy: Energy::default(),
             held: 0,
             highest_control: 0.0,
+        }
+    }
+
+    /// At `control`, with the supply at `moved_v` where a scheme moves it beside the control.
+    fn working(&self, control: f64, phase: Complex64, moved_v: Option<f64>) -> Working {
+        let map = self.map;
+        let (gain_v, held, supply_v, supply_a) = match (self.fixed_v, moved_v) {
+            (Some(_), Some(supply_v)) => {
+                let (gain_v, held) = map.output_at_v(control, supply_v);
+                (gain_v, held, supply_v, map.supply_at_a(control, supply_v))
+            }
+            (fixed_v, _) => {
+                let (gain_v, held) = map.output_held_v(control);
+                let supply_v = fixed_v.unwrap_or(control);
+                (gain_v, held, supply_v, map.supply_held_a(control))
+            }
+        };
+        Working {
+            output_v: gain_v * phase,
+            supply_v,
+            supply_a: supply_a.unwrap_or(f64::NAN),
+            held,
         }
     }
 
@@ -71,31 +103,42 @@ impl<'a> MapTransmitter<'a> {
         counted: std::ops::Range<usize>,
         output_v: &mut Vec<Complex64>,
     ) {
-        let load_ohm = self.map.load_ohm();
         self.energy.samples += counted.len() as u64;
+        let mut parts = &track.parts[..];
         for (at, (&control, &phase)) in track.control.iter().zip(&track.phase).enumerate() {
-            let (gain_v, held) = self.map.output_held_v(control);
-            // A linear stage scales with its supply.
-            let scale = match (track.supply_v.get(at), self.fixed_v) {
-                (Some(supply_v), Some(fixed_v)) => supply_v / fixed_v,
-                _ => 1.0,
-            };
-            let output = gain_v * phase * scale;
-            output_v.push(output);
-            if !counted.contains(&at) {
+            let count = parts.iter().take_while(|part| part.at == at).count();
+            let (now, later) = parts.split_at(count);
+            parts = later;
+            if now.is_empty() {
+                let working = self.working(control, phase, track.supply_v.get(at).copied());
+                output_v.push(working.output_v);
+                self.count(control, &working, 1.0, counted.contains(&at));
                 continue;
             }
-            self.held += u64::from(held);
-            self.highest_control = self.highest_control.max(control);
-            self.energy.output_w += output.norm_sqr() / (2.0 * load_ohm);
-            let supply_v = self
-                .fixed_v
-                .map_or(control, |fixed_v| fixed_v * scale * scale);
-            let stage_w = supply_v * self.map.supply_held_a(control).unwrap_or(f64::NAN);
-            self.energy.stage_w += stage_w;
-            self.energy.driver_w += self.map.driver_held_w(control).unwrap_or(0.0);
-            self.energy.modulator_w += stage_w / self.modulator.efficiency + self.modulator.idle_w;
+            let mut mean_v = Complex64::ZERO;
+            for part in now {
+                let working = self.working(part.control, part.phase, Some(part.supply_v));
+                mean_v += working.output_v * part.weight;
+                self.count(part.control, &working, part.weight, counted.contains(&at));
+            }
+            output_v.push(mean_v);
         }
+    }
+
+    fn count(&mut self, control: f64, working: &Working, weight: f64, counted: bool) {
+        let modulator_w = self.drawn.push(working.supply_v, working.supply_a);
+        if !counted {
+            return;
+        }
+        self.held += u64::from(working.held);
+        self.highest_control = self.highest_control.max(control);
+        let output_w = working.output_v.norm_sqr() / (2.0 * self.map.load_ohm());
+        let energy = &mut self.energy;
+        energy.output_w += weight * output_w;
+        energy.generated_w += weight * self.map.generated_w().unwrap_or(output_w);
+        energy.stage_w += weight * working.supply_v * working.supply_a;
+        energy.driver_w += weight * self.map.driver_held_w(control).unwrap_or(0.0);
+        energy.modulator_w += weight * modulator_w;
     }
 
     /// The sums so far. Powers drawn are not a number where the map knows no supply current.

@@ -11,6 +11,7 @@ mod outcome;
 mod reading;
 mod reference;
 mod rows;
+mod stress;
 #[cfg(test)]
 mod tests;
 mod wanted;
@@ -18,4 +19,5 @@ mod wanted;
 pub use judge::{Judgement, Measured, Stress, judge};
 pub use line::{MaskLine, mask_polyline};
 pub use outcome::{Check, MaskMargin, Outcome, Side, Unit, Verdict};
+pub use stress::{Ratings, Stressed};
 pub use wanted::{Wanted, default_resolution_hz};

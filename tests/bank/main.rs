@@ -1,6 +1,8 @@
 //! A bank of model stages, and every way to an orbit run over all of it: the exact solver, its waveforms, and the
 //! naive twin that settles in time.
 
+mod curved;
+mod curved_twin;
 mod models;
 mod twin;
 

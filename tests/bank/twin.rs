@@ -31,10 +31,10 @@ const SETTLED: f64 = 3e-10;
 const MOST_PERIODS: usize = 2_000;
 
 #[derive(Debug, Clone)]
-struct Branch {
-    from: Node,
-    to: Node,
-    element: Element,
+pub(super) struct Branch {
+    pub(super) from: Node,
+    pub(super) to: Node,
+    pub(super) element: Element,
 }
 
 /// What the twin finds for one orbit. Fields as in `Orbit`; the loss is that in all resistors but the load.
@@ -52,16 +52,19 @@ pub struct Twin {
     pub balance: f64,
 }
 
-struct Network {
-    nodes: usize,
+/// Nodes and branches of a stage without its switch and load; branch 0 is the fixed drain capacitance at node 0.
+#[derive(Debug)]
+pub(super) struct Network {
+    pub(super) nodes: usize,
     drain: usize,
-    load: usize,
-    branches: Vec<Branch>,
-    supply: Option<(usize, usize)>,
+    pub(super) load: usize,
+    pub(super) branches: Vec<Branch>,
+    /// The node that is held at the supply, and the branch of the feed's inductor.
+    pub(super) supply: Option<(usize, usize)>,
 }
 
 impl Network {
-    fn new(stage: &Stage) -> Self {
+    pub(super) fn new(stage: &Stage) -> Self {
         let mut net = Self {
             nodes: 1,
             drain: 0,

@@ -145,7 +145,7 @@ def everything():
         "choke": [{"duty": d, **choke(d)} for d in duties],
         "no_excess_reactance": {"q": q, **finite_feed(q, 0.5)},
         "any_feed": [{"q": q, "duty": d, **finite_feed(q, d)}
-                     for q in (0.6, 0.8, 1.0, 1.2, 1.4, 1.412, 1.6, 1.8) for d in (0.3, 0.35, 0.4, 0.45, 0.5, 0.55, 0.6, 0.65, 0.7)],
+                     for q in (0.5, 0.6, 0.8, 1.0, 1.2, 1.4, 1.412, 1.6, 1.8) for d in (0.3, 0.35, 0.4, 0.45, 0.5, 0.55, 0.6, 0.65, 0.7)],
     }
 
 

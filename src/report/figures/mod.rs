@@ -11,6 +11,7 @@ mod lookup;
 mod map;
 mod margin;
 mod mask;
+mod mismatch;
 mod spectrum;
 mod waveform;
 
@@ -23,6 +24,7 @@ pub use lookup::{LookupCurve, LookupFigure};
 pub use map::MapFigure;
 pub use margin::{MarginCurve, MarginFigure};
 pub use mask::{MaskFigure, MaskLine};
+pub use mismatch::MismatchFigure;
 pub use spectrum::{SpectrumCurve, SpectrumFigure, WorstPoint};
 pub use waveform::WaveformFigure;
 

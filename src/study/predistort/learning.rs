@@ -43,7 +43,8 @@ impl Model<'_> {
             study.full_control(),
             self.rate_hz,
         );
-        let mut transmitter = MapTransmitter::new(&self.bench.map, &scheme.modulator());
+        let mut transmitter =
+            MapTransmitter::new(&self.bench.map, &scheme.modulator(), self.rate_hz);
         let reach = scheme.settling(self.rate_hz);
         // Zeros behind the end push the last samples out.
         let mut padded = signal.to_vec();

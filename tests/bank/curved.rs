@@ -1,0 +1,119 @@
+//! The bank of curved stages of `tests/reference/curved.json` against a twin that settles in time.
+
+use std::io::{self, Cursor};
+
+use quietedge::input::{Files, ReadSeek};
+use quietedge::orbit::{Drive, Network};
+use quietedge::stage::{Feed, Stage};
+use serde_json::Value;
+
+use super::curved_twin::curved_twin;
+
+/// What two step sizes, extrapolated, leave: the twin has order 2 and no events, so that the diode's corner and
+/// the charge dumped at closing fall between its steps. SciPy's shooting holds the same stages to 1e-6.
+const SETTLED: f64 = 1e-4;
+
+/// Of a period's charge, relative to what moves on and off the drain.
+const CHARGE: f64 = 1e-12;
+
+struct Tables(Value);
+
+impl Files for Tables {
+    fn open(&self, name: &str) -> io::Result<Box<dyn ReadSeek>> {
+        let text = self.0[name].as_str().ok_or(io::ErrorKind::NotFound)?;
+        Ok(Box::new(Cursor::new(text.to_owned())))
+    }
+}
+
+#[test]
+fn the_curved_twin_settles_to_the_orbit() {
+    let text = include_str!("../reference/curved.json");
+    let document: Value = serde_json::from_str(text).expect("curved.json");
+    let stages = document["stages"].as_array().expect("stages");
+    assert!(stages.len() >= 34);
+    let (mut worst, mut faults) = ((0.0, String::new()), Vec::new());
+    let mut worst_charge = 0.0f64;
+    for entry in stages {
+        let name = entry["name"].as_str().expect("a name");
+        let toml = entry["toml"].as_str().expect("a stage file");
+        let stage = Stage::read(name, toml, &Tables(entry["tables"].clone()))
+            .unwrap_or_else(|problem| panic!("{problem}"));
+        let network = Network::new(&stage).unwrap_or_else(|error| panic!("{name}: {error}"));
+        let drive = Drive::new(&stage.driver, stage.driver.duty);
+        let orbit = network
+            .orbit(stage.supply_v, &drive)
+            .unwrap_or_else(|error| panic!("{name}: {error}"));
+        worst_charge = worst_charge.max(orbit.charge_residual);
+        assert!(
+            orbit.charge_residual <= CHARGE,
+            "{name}: {}",
+            orbit.charge_residual
+        );
+        let Some(twin) = curved_twin(&stage, stage.supply_v, orbit.supply_a, &drive) else {
+            faults.push(format!("{name}: the twin does not settle"));
+            continue;
+        };
+        let amplitude = orbit.output_v.norm();
+        let power = orbit.supply_w.abs() + orbit.driver_w;
+        let losses = &orbit.losses;
+        let peak = orbit.switch_peak_v;
+        let mut pairs = vec![
+            ("output re", orbit.output_v.re, twin.output_v.re, amplitude),
+            ("output im", orbit.output_v.im, twin.output_v.im, amplitude),
+            (
+                "load power",
+                orbit.output_w + losses.harmonics,
+                twin.load_w,
+                power,
+            ),
+            (
+                "switch loss",
+                losses.closed_switch + losses.open_switch,
+                twin.switch_w,
+                power,
+            ),
+            ("diode loss", losses.diode, twin.diode_w, power),
+            ("peak voltage", peak, twin.switch_peak_v, peak),
+            (
+                "lowest voltage",
+                orbit.switch_min_v,
+                twin.switch_min_v,
+                peak,
+            ),
+            ("closing voltage", orbit.closing_v, twin.closing_v, peak),
+        ];
+        match stage.feed {
+            Feed::Inductor { .. } | Feed::Direct => {
+                pairs.push((
+                    "supply power",
+                    orbit.supply_w,
+                    twin.supply_a * stage.supply_v,
+                    power,
+                ));
+            }
+            // The twin was given the current: its mean drain voltage must be what the supply leaves.
+            Feed::Choke { ohm } => {
+                let left_v = stage.supply_v - ohm * orbit.supply_a;
+                pairs.push(("mean drain voltage", left_v, twin.drain_v, stage.supply_v));
+            }
+        }
+        for (what, given, expected, scale) in pairs {
+            let error = (given - expected).abs() / scale.abs();
+            if error.is_nan() || error > SETTLED {
+                faults.push(format!(
+                    "{name}: {what} {given} against {expected}: {error:.1e}"
+                ));
+            }
+            if error > worst.0 {
+                worst = (error, format!("{name}: {what}"));
+            }
+        }
+    }
+    println!(
+        "curved twin: {} stages settled, worst difference {:.1e} ({}); charge left over {worst_charge:.1e}",
+        stages.len(),
+        worst.0,
+        worst.1
+    );
+    assert!(faults.is_empty(), "{}", faults.join("\n"));
+}
