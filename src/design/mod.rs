@@ -1,14 +1,18 @@
 //! From targets to a stage: carrier, output power, supply, duty and one free choice to parts, solved on the exact
 //! orbit with losses and finite Q.
 
+mod best_effort;
+mod error;
 mod ideal;
 mod parts;
 mod solve;
 mod values;
+mod zero;
 
+pub use error::DesignError;
 pub use ideal::{HIGHEST_RATIO, Ideal, highest_frequency_hz};
 pub use parts::{Match, Parts};
-pub use solve::{BestEffort, Design, DesignError, Zero, design};
+pub use solve::{BestEffort, Design, Zero, design};
 pub use values::{Series, rounded};
 
 use crate::stage::Device;

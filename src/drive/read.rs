@@ -2,11 +2,13 @@
 
 use super::read_modulator::modulator;
 use super::{
-    ClassBScheme, LevelsScheme, OutphaseScheme, PhasePath, Rails, Scheme, Shape, Shaping,
-    SupplyScheme, WidthLaw, WidthScheme,
+    BandFilter, BandShape, BurstScheme, ClassBScheme, LevelsScheme, MovedEdges, OutphaseScheme,
+    PhasePath, Rails, Sampling, Scheme, Shape, Shaping, StopBand, SupplyScheme, Updates, WidthLaw,
+    WidthScheme,
 };
 use crate::input::{Problem, Range, Section};
 use crate::math::lowpass::MAX_ORDER;
+use crate::math::modal::MAX_POLES;
 use crate::stage::Anchor;
 use crate::units::Dimension;
 
@@ -20,19 +22,21 @@ impl Scheme {
             ("supply", Kind::Supply),
             ("width", Kind::Width),
             ("levels", Kind::Levels),
+            ("burst", Kind::Burst),
             ("outphase", Kind::Outphase),
             ("class_b", Kind::ClassB),
         ];
         let Some(kind) = section.maybe_choice("kind", &kinds)? else {
             return Err(section.problem(
                 "kind",
-                "\"supply\", \"width\", \"levels\", \"outphase\" or \"class_b\"",
+                "\"supply\", \"width\", \"levels\", \"burst\", \"outphase\" or \"class_b\"",
             ));
         };
         let scheme = match kind {
             Kind::Supply => Self::Supply(supply(section)?),
             Kind::Width => Self::Width(width(section)?),
             Kind::Levels => Self::Levels(levels(section)?),
+            Kind::Burst => Self::Burst(burst(section)?),
             Kind::Outphase => Self::Outphase(outphase(section)?),
             Kind::ClassB => Self::ClassB(ClassBScheme),
         };
@@ -46,6 +50,7 @@ enum Kind {
     Supply,
     Width,
     Levels,
+    Burst,
     Outphase,
     ClassB,
 }
@@ -151,6 +156,128 @@ fn levels(section: &Section<'_>) -> Result<LevelsScheme, Problem> {
             .unwrap_or(0.0),
         phase_path: maybe_phase_path(section)?,
     })
+}
+
+const SAMPLINGS: [(&str, Sampling); 3] = [
+    ("natural", Sampling::Natural),
+    ("uniform", Sampling::Uniform),
+    ("shaped", Sampling::Shaped),
+];
+
+const EDGES: [(&str, MovedEdges); 2] = [("one", MovedEdges::One), ("two", MovedEdges::Two)];
+
+const UPDATES: [(&str, Updates); 2] = [("once", Updates::Once), ("twice", Updates::Twice)];
+
+/// Gates past this number of levels are a converter.
+const MOST_LEVELS: u64 = 64;
+
+fn burst(section: &Section<'_>) -> Result<BurstScheme, Problem> {
+    let pulses = super::burst::read_pulses(section)?;
+    let sampling = match (section.maybe_choice("sampling", &SAMPLINGS)?, &pulses) {
+        (Some(_), Some(_)) => {
+            return Err(section.problem("sampling", "either sampling or pulses from a file"));
+        }
+        (None, Some(_)) => Sampling::File,
+        (sampling, None) => sampling.unwrap_or(Sampling::Natural),
+    };
+    // What makes no sense beside the sampling is left for `finish` to refuse.
+    let ramp = matches!(sampling, Sampling::Natural | Sampling::Uniform);
+    let made = sampling != Sampling::File;
+    let edges = match ramp {
+        true => section.maybe_choice("edges", &EDGES)?,
+        false => None,
+    };
+    let edges = edges.unwrap_or(MovedEdges::Two);
+    let updates = match sampling == Sampling::Uniform && edges == MovedEdges::Two {
+        true => section.maybe_choice("updates", &UPDATES)?,
+        false => None,
+    };
+    let time = |key| section.maybe_quantity(key, Dimension::Time, Range::Within(0.0, MAX_DELAY_S));
+    let transitions_s = match (time("rise")?, time("fall")?) {
+        (None, None) => None,
+        (Some(rise_s), Some(fall_s)) => Some((rise_s, fall_s)),
+        (Some(_), None) => return Err(section.problem("fall", "a time constant, beside rise")),
+        (None, Some(_)) => return Err(section.problem("rise", "a time constant, beside fall")),
+    };
+    let rate_hz = match made {
+        true => section.quantity("rate", Dimension::Frequency, Range::Positive)?,
+        false => 0.0,
+    };
+    let grid_s = section.maybe_quantity("grid", Dimension::Time, Range::Positive)?;
+    let shortest_s = match made {
+        true => time("shortest")?.unwrap_or(0.0),
+        false => 0.0,
+    };
+    // Edges that wait longer would wait for each other.
+    for (key, long_s) in [("grid", grid_s.unwrap_or(0.0)), ("shortest", shortest_s)] {
+        if long_s * rate_hz > 0.5 {
+            return Err(section.problem(key, "at most half of 1 / rate"));
+        }
+    }
+    Ok(BurstScheme {
+        sampling,
+        rate_hz,
+        edges,
+        updates: updates.unwrap_or(Updates::Once),
+        order: match sampling {
+            Sampling::Shaped => section.maybe_whole("order", 1, 2)?.unwrap_or(1) as u32,
+            _ => 1,
+        },
+        levels: match made {
+            true => section.maybe_whole("levels", 2, MOST_LEVELS)?.unwrap_or(2) as u32,
+            false => 2,
+        },
+        grid_s,
+        shortest_s,
+        delay_s: match made {
+            true => delay(section)?,
+            false => 0.0,
+        },
+        phase_path: maybe_phase_path(section)?,
+        transitions_s,
+        filter: section
+            .maybe_section("filter")?
+            .map(|s| band_filter(&s))
+            .transpose()?,
+        pulses,
+    })
+}
+
+fn band_filter(section: &Section<'_>) -> Result<BandFilter, Problem> {
+    let chebyshev = section
+        .maybe_choice("shape", &[("butterworth", false), ("chebyshev", true)])?
+        .unwrap_or(false);
+    let filter = BandFilter {
+        shape: if chebyshev {
+            BandShape::Chebyshev {
+                ripple_db: section.quantity(
+                    "ripple",
+                    Dimension::Decibel,
+                    Range::Within(0.001, 6.0),
+                )?,
+            }
+        } else {
+            BandShape::Butterworth
+        },
+        order: section
+            .maybe_whole("order", 1, u64::from(MAX_POLES))?
+            .unwrap_or(3) as u32,
+        bandwidth_hz: section.quantity("bandwidth", Dimension::Frequency, Range::Positive)?,
+        loss_db: section
+            .maybe_quantity("loss", Dimension::Decibel, Range::Within(0.0, 20.0))?
+            .unwrap_or(0.0),
+        stop_band: section
+            .maybe_choice(
+                "stop_band",
+                &[
+                    ("absorbed", StopBand::Absorbed),
+                    ("reflected", StopBand::Reflected),
+                ],
+            )?
+            .unwrap_or(StopBand::Absorbed),
+    };
+    section.finish()?;
+    Ok(filter)
 }
 
 fn outphase(section: &Section<'_>) -> Result<OutphaseScheme, Problem> {

@@ -4,160 +4,8 @@ use std::cell::RefCell;
 use std::fmt;
 use std::ops::Range as Span;
 
-use toml::de::{DeTable, DeValue};
-
+use super::document::{Document, Entry, Node, Value};
 use super::problem::{Complaint, Place, Problem};
-use crate::units::{self, Dimension};
-
-/// A settings file, parsed.
-#[derive(Debug)]
-pub struct Document {
-    file: String,
-    text: String,
-    root: Vec<Entry>,
-}
-
-#[derive(Debug)]
-struct Entry {
-    key: String,
-    key_span: Span<usize>,
-    node: Node,
-}
-
-#[derive(Debug)]
-struct Node {
-    span: Span<usize>,
-    value: Value,
-}
-
-#[derive(Debug)]
-enum Value {
-    Text(String),
-    Number(f64),
-    Whole(i64),
-    Flag(bool),
-    List(Vec<Node>),
-    Table(Vec<Entry>),
-    Other,
-}
-
-impl Document {
-    /// Parses TOML `text` that came from `file`.
-    ///
-    /// # Errors
-    /// A syntax error, with its place.
-    pub fn parse(file: &str, text: &str) -> Result<Self, Problem> {
-        let root = DeTable::parse(text).map_err(|error| {
-            Problem::from(Complaint {
-                file: file.to_owned(),
-                place: error.span().map(|span| Place::of(text, span)),
-                key: String::new(),
-                given: "text that is no TOML".to_owned(),
-                allowed: format!("TOML ({})", error.message().trim().replace('\n', ", ")),
-                hint: None,
-            })
-        })?;
-        Ok(Self {
-            file: file.to_owned(),
-            text: text.to_owned(),
-            root: entries(root.get_ref()),
-        })
-    }
-
-    /// The file's top table.
-    pub fn root(&self) -> Section<'_> {
-        Section::new(self, &self.root, String::new(), 0..0)
-    }
-}
-
-fn entries(table: &DeTable<'_>) -> Vec<Entry> {
-    table
-        .iter()
-        .map(|(key, value)| Entry {
-            key: key.get_ref().to_string(),
-            key_span: key.span(),
-            node: Node {
-                span: value.span(),
-                value: convert(value.get_ref()),
-            },
-        })
-        .collect()
-}
-
-fn convert(value: &DeValue<'_>) -> Value {
-    match value {
-        DeValue::String(text) => Value::Text(text.to_string()),
-        DeValue::Integer(number) => {
-            i64::from_str_radix(number.as_str(), number.radix()).map_or(Value::Other, Value::Whole)
-        }
-        DeValue::Float(number) => number.as_str().parse().map_or(Value::Other, Value::Number),
-        DeValue::Boolean(flag) => Value::Flag(*flag),
-        DeValue::Datetime(_) => Value::Other,
-        DeValue::Array(list) => Value::List(
-            list.iter()
-                .map(|item| Node {
-                    span: item.span(),
-                    value: convert(item.get_ref()),
-                })
-                .collect(),
-        ),
-        DeValue::Table(table) => Value::Table(entries(table)),
-    }
-}
-
-/// Which numbers are allowed.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub enum Range {
-    /// Any finite number.
-    Any,
-    /// Greater than zero.
-    Positive,
-    /// Zero or greater.
-    NotNegative,
-    /// From the first to the second, both included.
-    Within(f64, f64),
-    /// Between the first and the second, neither included.
-    Between(f64, f64),
-    /// Greater than the first, up to and including the second.
-    UpTo(f64, f64),
-}
-
-impl Range {
-    /// True where `value` is allowed.
-    pub fn holds(self, value: f64) -> bool {
-        value.is_finite()
-            && match self {
-                Self::Any => true,
-                Self::Positive => value > 0.0,
-                Self::NotNegative => value >= 0.0,
-                Self::Within(low, high) => (low..=high).contains(&value),
-                Self::Between(low, high) => low < value && value < high,
-                Self::UpTo(low, high) => low < value && value <= high,
-            }
-    }
-
-    fn describe(self, dimension: Dimension) -> String {
-        let unit = dimension.unit();
-        let show = |value: f64| units::show(value, unit, 6);
-        let limits = match self {
-            Self::Any => String::new(),
-            Self::Positive => format!(", greater than {}", show(0.0)),
-            Self::NotNegative => format!(", {} or more", show(0.0)),
-            Self::Within(low, high) => format!(", {} to {}", show(low), show(high)),
-            Self::Between(low, high) => {
-                format!(", more than {} and less than {}", show(low), show(high))
-            }
-            Self::UpTo(low, high) => {
-                format!(", more than {} and at most {}", show(low), show(high))
-            }
-        };
-        format!(
-            "{}{limits}, such as {}",
-            dimension.name(),
-            dimension.example()
-        )
-    }
-}
 
 /// One table of a settings file. Every key asked for is known; [`Section::finish`] refuses the rest.
 #[derive(Debug)]
@@ -170,7 +18,12 @@ pub struct Section<'a> {
 }
 
 impl<'a> Section<'a> {
-    fn new(document: &'a Document, entries: &'a [Entry], path: String, span: Span<usize>) -> Self {
+    pub(super) fn new(
+        document: &'a Document,
+        entries: &'a [Entry],
+        path: String,
+        span: Span<usize>,
+    ) -> Self {
         Self {
             document,
             entries,
@@ -200,7 +53,7 @@ impl<'a> Section<'a> {
         self.find(key).is_some()
     }
 
-    fn find(&self, key: &'static str) -> Option<&'a Node> {
+    pub(super) fn find(&self, key: &'static str) -> Option<&'a Node> {
         let mut known = self.known.borrow_mut();
         if !known.contains(&key) {
             known.push(key);
@@ -211,7 +64,7 @@ impl<'a> Section<'a> {
             .map(|entry| &entry.node)
     }
 
-    fn key_path(&self, key: &str) -> String {
+    pub(super) fn key_path(&self, key: &str) -> String {
         if self.path.is_empty() {
             key.to_owned()
         } else {
@@ -219,7 +72,7 @@ impl<'a> Section<'a> {
         }
     }
 
-    fn complain(
+    pub(super) fn complain(
         &self,
         span: Option<Span<usize>>,
         key: String,
@@ -256,7 +109,7 @@ impl<'a> Section<'a> {
         self.complain(span, self.path.clone(), given.into(), allowed.into())
     }
 
-    fn missing(&self, key: &'static str, allowed: impl Into<String>) -> Problem {
+    pub(super) fn missing(&self, key: &'static str, allowed: impl Into<String>) -> Problem {
         // A key that was probably meant to be this one is where the mending has to happen.
         let misspelt = self
             .entries
@@ -281,7 +134,7 @@ impl<'a> Section<'a> {
     }
 
     /// The text of the file at `node`, cut to one line of a bearable length.
-    fn source_of(&self, node: &Node) -> String {
+    pub(super) fn source_of(&self, node: &Node) -> String {
         if let Value::Table(_) = node.value {
             return "a table".to_owned();
         }
@@ -296,248 +149,6 @@ impl<'a> Section<'a> {
         } else {
             line.to_owned()
         }
-    }
-
-    fn number(
-        &self,
-        node: &Node,
-        key: String,
-        dimension: Dimension,
-        range: Range,
-    ) -> Result<f64, Problem> {
-        let complain = || {
-            self.complain(
-                Some(node.span.clone()),
-                key.clone(),
-                self.source_of(node),
-                range.describe(dimension),
-            )
-        };
-        let value = match &node.value {
-            Value::Number(number) => *number,
-            Value::Whole(number) => *number as f64,
-            Value::Text(text) => units::parse(text, dimension)
-                .map_err(|error| complain().with_hint(error.to_string()))?,
-            _ => return Err(complain()),
-        };
-        if !range.holds(value) {
-            return Err(complain());
-        }
-        if !dimension.is_plausible(value) {
-            return Err(self.complain(
-                Some(node.span.clone()),
-                key,
-                self.source_of(node),
-                format!(
-                    "{}, such as {}",
-                    dimension.plausible_text(),
-                    dimension.example()
-                ),
-            ));
-        }
-        Ok(value)
-    }
-
-    /// The quantity at `key` in SI, where it is given.
-    ///
-    /// # Errors
-    /// A value that is no quantity of this dimension, or out of range.
-    pub fn maybe_quantity(
-        &self,
-        key: &'static str,
-        dimension: Dimension,
-        range: Range,
-    ) -> Result<Option<f64>, Problem> {
-        self.find(key)
-            .map(|node| self.number(node, self.key_path(key), dimension, range))
-            .transpose()
-    }
-
-    /// The quantity at `key` in SI.
-    ///
-    /// # Errors
-    /// As [`Section::maybe_quantity`], and a missing key.
-    pub fn quantity(
-        &self,
-        key: &'static str,
-        dimension: Dimension,
-        range: Range,
-    ) -> Result<f64, Problem> {
-        self.maybe_quantity(key, dimension, range)?
-            .ok_or_else(|| self.missing(key, range.describe(dimension)))
-    }
-
-    /// A list of quantities in SI; empty where the key is absent. A single quantity counts as a list of one.
-    ///
-    /// # Errors
-    /// As [`Section::maybe_quantity`], for any item.
-    pub fn quantities(
-        &self,
-        key: &'static str,
-        dimension: Dimension,
-        range: Range,
-    ) -> Result<Vec<f64>, Problem> {
-        match self.find(key) {
-            None => Ok(Vec::new()),
-            Some(Node {
-                value: Value::List(items),
-                ..
-            }) => items
-                .iter()
-                .enumerate()
-                .map(|(at, item)| {
-                    self.number(
-                        item,
-                        format!("{}[{}]", self.key_path(key), at + 1),
-                        dimension,
-                        range,
-                    )
-                })
-                .collect(),
-            Some(node) => Ok(vec![self.number(
-                node,
-                self.key_path(key),
-                dimension,
-                range,
-            )?]),
-        }
-    }
-
-    /// The whole number at `key`, where it is given.
-    ///
-    /// # Errors
-    /// Anything else than a whole number from `low` to `high`.
-    pub fn maybe_whole(
-        &self,
-        key: &'static str,
-        low: u64,
-        high: u64,
-    ) -> Result<Option<u64>, Problem> {
-        match self.find(key) {
-            None => Ok(None),
-            Some(Node {
-                value: Value::Whole(number),
-                ..
-            }) if u64::try_from(*number).is_ok_and(|number| (low..=high).contains(&number)) => {
-                Ok(Some(*number as u64))
-            }
-            Some(_) => Err(self.problem(key, format!("a whole number, {low} to {high}"))),
-        }
-    }
-
-    /// The text at `key`, where it is given.
-    ///
-    /// # Errors
-    /// Anything else than a text.
-    pub fn maybe_text(&self, key: &'static str) -> Result<Option<&'a str>, Problem> {
-        match self.find(key) {
-            None => Ok(None),
-            Some(Node {
-                value: Value::Text(text),
-                ..
-            }) => Ok(Some(text)),
-            Some(_) => Err(self.problem(key, "a text in quotes")),
-        }
-    }
-
-    /// The text at `key`.
-    ///
-    /// # Errors
-    /// As [`Section::maybe_text`], and a missing key.
-    pub fn text(&self, key: &'static str) -> Result<&'a str, Problem> {
-        self.maybe_text(key)?
-            .ok_or_else(|| self.missing(key, "a text in quotes"))
-    }
-
-    /// A list of texts; empty where the key is absent.
-    ///
-    /// # Errors
-    /// Anything else than a list of texts.
-    pub fn texts(&self, key: &'static str) -> Result<Vec<&'a str>, Problem> {
-        let wrong = || self.problem(key, "a list of texts in quotes");
-        match self.find(key) {
-            None => Ok(Vec::new()),
-            Some(Node {
-                value: Value::List(items),
-                ..
-            }) => items
-                .iter()
-                .map(|item| match &item.value {
-                    Value::Text(text) => Ok(text.as_str()),
-                    _ => Err(wrong()),
-                })
-                .collect(),
-            Some(_) => Err(wrong()),
-        }
-    }
-
-    /// Rows of pure numbers, each of `width` numbers: `[[0, 1], [2, 3]]`; empty where the key is absent.
-    ///
-    /// # Errors
-    /// Anything else.
-    pub fn rows(&self, key: &'static str, width: usize) -> Result<Vec<Vec<f64>>, Problem> {
-        let wrong = || self.problem(key, format!("a list of rows of {width} numbers"));
-        let number = |node: &Node| match node.value {
-            Value::Number(number) if number.is_finite() => Some(number),
-            Value::Whole(number) => Some(number as f64),
-            _ => None,
-        };
-        match self.find(key) {
-            None => Ok(Vec::new()),
-            Some(Node {
-                value: Value::List(rows),
-                ..
-            }) => rows
-                .iter()
-                .map(|row| match &row.value {
-                    Value::List(items) if items.len() == width => items
-                        .iter()
-                        .map(|item| number(item).ok_or_else(wrong))
-                        .collect(),
-                    _ => Err(wrong()),
-                })
-                .collect(),
-            Some(_) => Err(wrong()),
-        }
-    }
-
-    /// True or false at `key`, where it is given.
-    ///
-    /// # Errors
-    /// Anything else than `true` or `false`.
-    pub fn maybe_flag(&self, key: &'static str) -> Result<Option<bool>, Problem> {
-        match self.find(key) {
-            None => Ok(None),
-            Some(Node {
-                value: Value::Flag(flag),
-                ..
-            }) => Ok(Some(*flag)),
-            Some(_) => Err(self.problem(key, "true or false")),
-        }
-    }
-
-    /// One of a few words at `key`, where it is given.
-    ///
-    /// # Errors
-    /// Any other word, with a suggestion.
-    pub fn maybe_choice<T: Copy>(
-        &self,
-        key: &'static str,
-        choices: &[(&str, T)],
-    ) -> Result<Option<T>, Problem> {
-        let Some(word) = self.maybe_text(key)? else {
-            return Ok(None);
-        };
-        if let Some((_, value)) = choices.iter().find(|(name, _)| *name == word) {
-            return Ok(Some(*value));
-        }
-        let names: Vec<&str> = choices.iter().map(|(name, _)| *name).collect();
-        let quoted: Vec<String> = names.iter().map(|name| format!("\"{name}\"")).collect();
-        let problem = self.problem(key, quoted.join(", "));
-        Err(match nearest(word, &names) {
-            Some(name) => problem.with_hint(format!("did you mean \"{name}\"?")),
-            None => problem,
-        })
     }
 
     /// The table at `key`, where it is given.

@@ -10,6 +10,7 @@ mod sweep;
 use num_complex::Complex64;
 
 use crate::math::monotone::{Curve, CurveError};
+use crate::orbit::Gating;
 use crate::units;
 
 pub use mismatch::{LoadMap, LoadPoint, LoadSweep, LoadSweepError};
@@ -108,6 +109,8 @@ pub struct Map {
     failures: Vec<Failure>,
     /// Between the points beside failed ones: nothing is known inside.
     gaps: Vec<(f64, f64)>,
+    /// How the stage answers its gate at full control, where it is gated.
+    gating: Option<Gating>,
     /// What the stages generate in front of a combiner, W, where that is not the output.
     generated_w: Option<f64>,
     /// A width map at lower supplies, rising; empty where it scales.
@@ -162,6 +165,7 @@ impl Map {
             driver_w: optional(|point| point.driver_w)?,
             failures: Vec::new(),
             gaps: Vec::new(),
+            gating: None,
             generated_w: None,
             planes: Vec::new(),
             points,
@@ -201,6 +205,18 @@ impl Map {
         self.failures = failures;
         self.gaps = gaps;
         self
+    }
+
+    /// The same map of a stage that answers its gate so.
+    #[must_use]
+    pub fn with_gating(mut self, gating: Gating) -> Self {
+        self.gating = Some(gating);
+        self
+    }
+
+    /// How the stage answers its gate at full control, where it is gated.
+    pub fn gating(&self) -> Option<&Gating> {
+        self.gating.as_ref()
     }
 
     /// Points that failed, by control.

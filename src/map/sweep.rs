@@ -110,10 +110,11 @@ impl Sweep {
             Control::Supply | Control::Drive => {
                 Self::even(network, control, 0.0, stage.supply_v, points)
             }
+            // The dead time of a pair takes the narrowest pulses.
             Control::Width => Self::even(
                 network,
                 control,
-                stage.driver.duty / 40.0,
+                (stage.driver.duty / 40.0).max(1.02 * stage.driver.dead_s * stage.frequency_hz),
                 stage.driver.duty,
                 points,
             ),

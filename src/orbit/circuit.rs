@@ -251,6 +251,39 @@ impl Builder {
         self.add(through, to, Element::Resistor(load.ohm), Owner::Load);
     }
 
+    /// Whether a switch stands at `node`.
+    pub fn is_leg(&self, node: usize) -> bool {
+        self.legs.contains(&node)
+    }
+
+    /// Makes `gone` the same node as `kept`; neither is a leg or a rail.
+    pub fn merge(&mut self, gone: usize, kept: usize) {
+        let moved = |node: usize| match node {
+            node if node == gone => kept,
+            node if node > gone => node - 1,
+            node => node,
+        };
+        for branch in &mut self.branches {
+            branch.from = moved(branch.from);
+            branch.to = moved(branch.to);
+        }
+        for leg in &mut self.legs {
+            *leg = moved(*leg);
+        }
+        for contact in &mut self.contacts {
+            if let End::Rail(rail) = &mut contact.end {
+                rail.node = moved(rail.node);
+            }
+        }
+        for rail in &mut self.rails {
+            rail.node = moved(rail.node);
+        }
+        for choke in &mut self.chokes {
+            choke.node = moved(choke.node);
+        }
+        self.nodes -= 1;
+    }
+
     fn node(&mut self) -> usize {
         self.nodes += 1;
         self.nodes - 1

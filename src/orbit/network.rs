@@ -330,14 +330,7 @@ impl Network {
                 }
             }
         };
-        let multipliers = period_map.complex_eigenvalues();
-        let largest = multipliers.iter().map(|m| m.norm()).fold(0.0, f64::max);
-        // A radius of zero settles at once; one of 1 or more never does.
-        if largest >= 1.0 {
-            f64::INFINITY
-        } else {
-            -self.stage.period_s() / largest.ln()
-        }
+        settling_s(&period_map, self.stage.period_s())
     }
 
     /// One period of waveforms in the periodic steady state, `points` instants in each switch position.
@@ -372,6 +365,18 @@ impl Network {
 
 fn linear_model(stage: &Stage) -> Result<Linear, NetworkError> {
     Linear::new(Circuit::new(stage))
+}
+
+/// The time in which the slowest deviation falls to 1/e under `period_map`, s.
+pub(super) fn settling_s(period_map: &nalgebra::DMatrix<f64>, period_s: f64) -> f64 {
+    let multipliers = period_map.complex_eigenvalues();
+    let largest = multipliers.iter().map(|m| m.norm()).fold(0.0, f64::max);
+    // A radius of zero settles at once; one of 1 or more never does.
+    if largest >= 1.0 {
+        f64::INFINITY
+    } else {
+        -period_s / largest.ln()
+    }
 }
 
 pub(super) fn check(supply_v: f64, drive: &Drive) -> Result<(), OrbitError> {

@@ -19,6 +19,9 @@ use super::schedule::Closed;
 /// one in magnitude, so rounding is near 1e-15.
 const RANK_TOLERANCE: f64 = 1e-12;
 
+/// Entries of a matrix below this part of its largest one may be rounding.
+const ROUNDING: f64 = 1e-14;
+
 /// Refinements of the solution of the network equations. Each one takes the error down by the ratio of rounding
 /// to the smallest singular value, which is 1e-4 or better within [`RANK_TOLERANCE`].
 const REFINEMENTS: usize = 2;
@@ -298,11 +301,20 @@ pub fn without_idle(positions: Vec<Reduced>) -> Option<Vec<Reduced>> {
     Some(positions.iter().map(project).collect())
 }
 
+/// What moves the states, column by column, each column scaled to one: rates of a closed switch may be 1e10 times
+/// those of the network, and rounding beside them would look like motion. Columns that are rounding themselves stay.
 fn joined(reduced: &Reduced) -> DMatrix<f64> {
     let (states, inputs) = reduced.b.shape();
     let mut all = DMatrix::zeros(states, states + inputs);
     all.columns_mut(0, states).copy_from(&reduced.a);
     all.columns_mut(states, inputs).copy_from(&reduced.b);
+    let noise = ROUNDING * all.amax();
+    for mut column in all.column_iter_mut() {
+        let largest = column.amax();
+        if largest > noise.max(1.0) {
+            column /= largest;
+        }
+    }
     all
 }
 

@@ -35,7 +35,8 @@ pub fn schedule(spans: &[Span]) -> Vec<Interval> {
             offset
         }
     };
-    let mut edges = vec![0.0];
+    let mut edges = Vec::with_capacity(1 + 2 * spans.len());
+    edges.push(0.0);
     for span in spans.iter().filter(|span| span.width_rad > 0.0) {
         edges.push(turned(span.closing_rad));
         edges.push(turned(span.closing_rad + span.width_rad));

@@ -206,16 +206,16 @@ impl<const N: usize> Sized_<N> {
     }
 
     pub(super) fn flows(&self, schedule: &[Interval]) -> Result<Flows<'_, N>, OrbitError> {
-        let span = |interval: &Interval| {
+        let mut spans = Vec::with_capacity(schedule.len());
+        for interval in schedule {
             let position = self.position(interval.closed)?;
             let flow = Flow::new(
                 &position.generator,
                 interval.length_rad,
                 position.grid_level,
             );
-            Ok::<_, OrbitError>((position, *interval, flow))
-        };
-        let spans = schedule.iter().map(span).collect::<Result<_, _>>()?;
+            spans.push((position, *interval, flow));
+        }
         Ok(Flows { spans })
     }
 

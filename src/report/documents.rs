@@ -22,7 +22,7 @@ pub fn solve_document(stage: &Stage, orbit: &Orbit, others: &[Orbit]) -> Value {
             })
         })
         .collect();
-    json!({
+    let mut document = json!({
         "stage": stage.title,
         "frequency_hz": stage.frequency_hz,
         "supply_v": orbit.supply_v,
@@ -48,7 +48,11 @@ pub fn solve_document(stage: &Stage, orbit: &Orbit, others: &[Orbit]) -> Value {
             "energy_residual": orbit.energy_residual,
         },
         "other_orbits": others,
-    })
+    });
+    if !orbit.switches.is_empty() {
+        document["orbit"]["switches"] = json!(orbit.switches);
+    }
+    document
 }
 
 #[derive(Serialize)]
@@ -161,6 +165,7 @@ pub fn check_document(result: &CheckResult) -> Value {
             "rate": table.lookup.rate(),
             "entries": table.counts(),
         })),
+        "gate": result.gate.as_ref().map(|train| train.figures),
         "by": result.replay.as_ref().map_or(By::Map, |facts| facts.by),
         "replay": result.replay.as_ref().map(|facts| replay_document(result, facts)),
         "warnings": result.warnings,

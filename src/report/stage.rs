@@ -1,6 +1,6 @@
 //! Orbits and maps as text and pictures.
 
-use super::figures::{MapFigure, Quantity, WaveformFigure};
+use super::figures::{MapFigure, OtherCurves, Quantity, WaveformFigure};
 use super::picture::Figure;
 use super::table::{Align, Table};
 use super::text::{quantity, zeroed};
@@ -9,9 +9,13 @@ use crate::orbit::{Orbit, Waveform};
 use crate::stage::Stage;
 use crate::units;
 
+/// From this voltage on a silicon body diode conducts, V (common practice).
+const BODY_DIODE_V: f64 = 0.7;
+
 /// What an engineer asks of one orbit, in rows of name, value and remark.
 pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
     let row = |name: &str, value: String, remark: String| [name.to_owned(), value, remark];
+    let several = !orbit.switches.is_empty();
     let percent = |watt: f64| format!("{:.2} % of the supply power", 100.0 * watt / orbit.supply_w);
     let lost = |name: &str, watt: f64| {
         let watt = zeroed(watt, orbit.supply_w + orbit.driver_w);
@@ -55,7 +59,11 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
         lost("lost in driver", orbit.losses.driver),
         lost("drawn by driver", orbit.driver_w),
         row(
-            "peak drain voltage",
+            if several {
+                "peak switch voltage"
+            } else {
+                "peak drain voltage"
+            },
             quantity(orbit.switch_peak_v, "V", 4),
             format!(
                 "{:.3} times the supply",
@@ -63,9 +71,18 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
             ),
         ),
         row(
-            "lowest drain voltage",
+            if several {
+                "lowest switch voltage"
+            } else {
+                "lowest drain voltage"
+            },
             quantity(zeroed(orbit.switch_min_v, orbit.supply_v), "V", 4),
             match (stage.switch.diode, orbit.diode_conductions) {
+                (None, _) if several && orbit.switch_min_v < -BODY_DIODE_V => {
+                    "beyond a rail: the body diodes, which the model leaves out, would conduct"
+                        .to_owned()
+                }
+                (None, _) if several => "no body diode would conduct".to_owned(),
                 (None, _) => "a diode would conduct below about -0.7 V".to_owned(),
                 (Some(_), 0) => "the diode never conducts".to_owned(),
                 (Some(_), 1) => "the diode conducts once a period".to_owned(),
@@ -81,11 +98,29 @@ pub fn orbit_rows(stage: &Stage, orbit: &Orbit) -> Vec<[String; 3]> {
             ),
         ),
         row(
-            "drain at closing",
+            if several {
+                "switch at closing"
+            } else {
+                "drain at closing"
+            },
             quantity(zeroed(orbit.closing_v, orbit.supply_v), "V", 4),
             format!("slope {} a period", quantity(slope_v, "V", 3)),
         ),
     ];
+    for switch in &orbit.switches {
+        rows.push(row(
+            &format!("{} switch", switch.name),
+            format!("loses {}", quantity(switch.lost_w, "W", 3)),
+            format!(
+                "{} to {}, {} to {}, closes at {}",
+                quantity(switch.min_v, "V", 3),
+                quantity(switch.peak_v, "V", 3),
+                quantity(switch.min_a, "A", 3),
+                quantity(switch.peak_a, "A", 3),
+                quantity(switch.closing_v, "V", 3)
+            ),
+        ));
+    }
     for (index, level) in orbit.harmonics_dbc.iter().enumerate() {
         rows.push(row(
             &format!("harmonic {}", index + 2),
@@ -108,9 +143,10 @@ pub fn orbit_text(stage: &Stage, orbit: &Orbit) -> String {
         table.row(row);
     }
     format!(
-        "{}: {}, closed {:.1} % of the period, into {}\n\n{}",
+        "{}: {}, {} {:.1} % of the period, into {}\n\n{}",
         stage.title,
         quantity(stage.frequency_hz, "Hz", 6),
+        if stage.is_pair() { "high" } else { "closed" },
         100.0 * orbit.drive.duty(),
         quantity(stage.load.ohm, "ohm", 4),
         table.text()
@@ -126,6 +162,15 @@ pub fn waveform_figure(stage: &Stage, waveform: &Waveform) -> Figure {
         switch_a: waveform.switch_a.clone(),
         load_v: waveform.load_v.clone(),
         closed_s: vec![waveform.closed_s],
+        others: waveform
+            .others
+            .iter()
+            .map(|other| OtherCurves {
+                name: other.name.clone(),
+                switch_a: other.switch_a.clone(),
+                drain_v: other.drain_v.clone(),
+            })
+            .collect(),
         peak_drain: None,
         peak_current: None,
     }

@@ -79,6 +79,7 @@ impl Stage {
         load_section.finish()?;
 
         let switch = switch(&root.section("switch")?)?;
+        let driver = driver(root.maybe_section("driver")?)?;
         let feed = match switch.arrangement {
             Arrangement::Single => feed(&root.section("feed")?)?,
             Arrangement::Pair { .. } if root.has("feed") => {
@@ -97,7 +98,7 @@ impl Stage {
             drain_f: drain.farad,
             drain_curve: drain.curve,
             gate_coupling_f: drain.gate_coupling_f,
-            driver: driver(root.maybe_section("driver")?)?,
+            driver,
             feed,
             ladder,
             load,

@@ -8,14 +8,16 @@ use super::parts::EfficiencyParts;
 use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
+use super::shapes::shapes;
 use super::warning::Warning;
 use crate::drive::{
-    ClassBScheme, Correction, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme, Polynomial,
-    RateReason, Scheme, WidthLaw, oversampling,
+    ClassBScheme, Correction, GateFigures, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme,
+    Polynomial, RateReason, Scheme, WidthLaw, oversampling,
 };
 use crate::map::{Control, Map, Origin, Sweep};
+use crate::math::edges::CLEAN_BAND;
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
-use crate::orbit::{Drive, Network};
+use crate::orbit::{Drive, Gating, Network, OrbitError};
 use crate::predistort::{Table, TableRequest};
 use crate::signal::Source;
 use crate::stage::Stage;
@@ -55,6 +57,12 @@ const FEW_SEGMENTS: u64 = 25;
 /// A stage that settles slower than this part of the signal's sample period has memory worth a warning:
 /// a lag of a hundredth of a sample period costs about -40 dB at the edge of the band.
 const SLOW: f64 = 0.01;
+
+/// Modes that leave more than this of a gate's transition stand for it poorly.
+const POOR_FIT: f64 = 0.1;
+
+/// A pulse sequence that ends this part of the signal's duration before or after it is worth a warning.
+const OTHER_LENGTH: f64 = 0.01;
 
 /// Carries out `study` on `source`, the signal that it names.
 ///
@@ -366,11 +374,13 @@ impl<'a> Bench<'a> {
             control_density: run.control_density,
             symbols: run.symbols,
             notch: run.notch,
+            gate: run.gate,
             replay: None,
             warnings: Vec::new(),
             judgement,
         };
         result.warnings = warnings(&result, run.held);
+        result.warnings.extend(gate_warnings(&result));
         Ok(result)
     }
 
@@ -453,12 +463,31 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
     };
     let map = straight(scheme, &map)?.unwrap_or(map);
     let drive = Drive::new(&stage.driver, stage.driver.duty);
+    let map = match scheme {
+        Scheme::Burst(_) => map.with_gating(gating(&network, stage.supply_v, &drive)?),
+        _ => map,
+    };
     let facts = StageFacts {
         orbit: network.orbit(stage.supply_v, &drive)?,
         waveform: network.waveform(stage.supply_v, &drive, 240)?,
         settling_s: network.settling_s(&drive),
+        shapes: shapes(&network, scheme, &map),
     };
     Ok((map, Some(facts)))
+}
+
+/// How a stage answers its gate: by its modes where it has them, else by its slowest time constant.
+fn gating(network: &Network, supply_v: f64, drive: &Drive) -> Result<Gating, StudyError> {
+    Ok(match network.gating(supply_v, drive)? {
+        Some(gating) => gating,
+        None => {
+            let settling_s = network.settling_s(drive);
+            if !settling_s.is_finite() {
+                return Err(OrbitError::NeverSettles.into());
+            }
+            Gating::of_time_constants(settling_s, settling_s)
+        }
+    })
 }
 
 /// The lower supplies at which the width map of a curved stage is solved, rising: the rails, and where these settle
@@ -627,6 +656,54 @@ fn coarse_grid(result: &CheckResult) -> Option<Warning> {
             shortest_s: scheme.shortest_s,
         },
     )
+}
+
+/// What the gate of bursts could not do well.
+fn gate_warnings(result: &CheckResult) -> Vec<Warning> {
+    let mut warnings = Vec::new();
+    let Some(train) = &result.gate else {
+        return warnings;
+    };
+    let GateFigures {
+        edges,
+        hurried,
+        overloads,
+        shortest_s,
+        transition_s,
+        fit,
+    } = train.figures;
+    if hurried > 0 {
+        warnings.push(Warning::HurriedGate {
+            fraction: hurried as f64 / edges as f64,
+            shortest_s,
+            transition_s,
+        });
+    }
+    if fit > POOR_FIT {
+        warnings.push(Warning::PoorTransition { left: fit });
+    }
+    if overloads > 0 {
+        warnings.push(Warning::OverloadedShaping { ticks: overloads });
+    }
+    if let Scheme::Burst(burst) = result.scheme()
+        && let Some(pulses) = &burst.pulses
+    {
+        let end_s = pulses.start_s + pulses.sequence.end_s;
+        let signal_s = result.signal.duration_s;
+        if (end_s - signal_s).abs() > OTHER_LENGTH * signal_s {
+            warnings.push(Warning::PulsesOfOtherLength { end_s, signal_s });
+        }
+    }
+    if let Scheme::Burst(burst) = result.scheme()
+        && burst.filter.is_none()
+        && burst.rate_hz > 0.0
+    {
+        warnings.push(Warning::BurstsOutOfSight {
+            rate_hz: burst.rate_hz,
+            seen_hz: CLEAN_BAND * result.rate.rate_hz,
+        });
+    }
+    warnings
 }
 
 pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {

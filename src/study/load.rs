@@ -195,7 +195,7 @@ impl Study {
         let mut studies = Vec::with_capacity(sections.len());
         for section in &sections {
             let study = Self {
-                scheme: Scheme::read(section)?,
+                scheme: Scheme::read(section)?.loaded(section, files)?,
                 ..study.clone()
             };
             study.fits(section)?;

@@ -18,6 +18,7 @@ mod replay;
 mod result;
 mod run;
 mod scale;
+mod shapes;
 mod warning;
 
 pub use average::Averaged;
@@ -36,6 +37,9 @@ pub use predistort::{
 };
 pub use rank::{Rank, follows, ranked};
 pub use replay::{By, ByMap, MarginPair, ReplayFacts};
-pub use result::{CheckResult, Convergence, Metrics, Notch, RateFacts, SignalFacts, StageFacts};
+pub use result::{
+    CheckResult, Convergence, GateTrain, Metrics, Notch, RateFacts, SignalFacts, StageFacts,
+};
 pub use scale::Scale;
+pub use shapes::Shape;
 pub use warning::Warning;

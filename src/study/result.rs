@@ -1,15 +1,17 @@
 //! What a check found.
 
-use crate::drive::{RateReason, Scheme};
+use crate::drive::{GateFigures, RateReason, Scheme};
 use crate::map::Map;
 use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum, SymbolFigures};
 use crate::orbit::{Orbit, Waveform};
 use crate::predistort::Table;
+use crate::signal::Edge;
 use crate::verdict::{Judgement, MaskMargin, Stress};
 
 use super::load::Study;
 use super::parts::EfficiencyParts;
 use super::replay::ReplayFacts;
+use super::shapes::Shape;
 use super::warning::Warning;
 
 /// A study carried out.
@@ -49,10 +51,26 @@ pub struct CheckResult {
     pub symbols: Option<SymbolFigures>,
     /// A stretch of time around the deepest notch.
     pub notch: Notch,
+    /// The gate's pulses, of a scheme that gates the stage.
+    pub gate: Option<GateTrain>,
     /// The replay that gave all numbers, and what the map says in its place; absent where the map gave them.
     pub replay: Option<Box<ReplayFacts>>,
     /// What limits how far this can be trusted.
     pub warnings: Vec<Warning>,
+}
+
+/// The pulses that gated the stage.
+#[derive(Debug, Clone, PartialEq)]
+pub struct GateTrain {
+    /// Figures of all of them.
+    pub figures: GateFigures,
+    /// The edges, times from the signal's first sample; only the first [`GateTrain::MOST`] of them.
+    pub edges: Vec<Edge>,
+}
+
+impl GateTrain {
+    /// Edges past this number are counted but not kept: 64 MB.
+    pub const MOST: usize = 4 << 20;
 }
 
 /// A stage at full supply and width.
@@ -64,6 +82,8 @@ pub struct StageFacts {
     pub waveform: Waveform,
     /// Time in which a deviation falls to 1/e, s.
     pub settling_s: f64,
+    /// The drain's waveform at full, half and lowest control.
+    pub shapes: Vec<Shape>,
 }
 
 /// The signal as it was found.

@@ -54,8 +54,11 @@ pub enum Warning {
     },
     /// A replayed stage whose choke is ideal.
     IdealChoke,
-    /// A scheme without a stage among replayed ones.
-    OnlyByMap,
+    /// A scheme that is not replayed among others that are.
+    OnlyByMap {
+        /// Its name.
+        scheme: &'static str,
+    },
     /// A map from a file knows neither stress nor memory.
     MapFromFile {
         /// What it cannot answer.
@@ -74,6 +77,39 @@ pub enum Warning {
     WidthTurns {
         /// From this width on it falls.
         width: f64,
+    },
+    /// Edges of the gate that the map cannot answer for.
+    HurriedGate {
+        /// Part of all edges.
+        fraction: f64,
+        /// Shortest time between two of them, s.
+        shortest_s: f64,
+        /// Until 1 % is left of a transition, s.
+        transition_s: f64,
+    },
+    /// The stage's transitions are more than one or two modes.
+    PoorTransition {
+        /// Part left, RMS.
+        left: f64,
+    },
+    /// The error of noise shaping ran away.
+    OverloadedShaping {
+        /// Ticks at which it was cut.
+        ticks: u64,
+    },
+    /// A pulse sequence does not last as long as the signal.
+    PulsesOfOtherLength {
+        /// When it ends, s.
+        end_s: f64,
+        /// When the signal ends, s.
+        signal_s: f64,
+    },
+    /// The lines of the bursts lie outside what is sampled.
+    BurstsOutOfSight {
+        /// Rate of the bursts, Hz.
+        rate_hz: f64,
+        /// Highest offset that is seen, Hz.
+        seen_hz: f64,
     },
     /// Few averages.
     FewAverages {
@@ -148,9 +184,10 @@ impl fmt::Display for Warning {
             Self::IdealChoke => f.write_str(
                 "the feed is an ideal choke: its current is taken to follow the supply at once, so that the memory of a real choke is missing. Give the feed an `inductance` to see it",
             ),
-            Self::OnlyByMap => {
-                f.write_str("an ideal linear stage has nothing to replay: its numbers are by map")
-            }
+            Self::OnlyByMap { scheme } => write!(
+                f,
+                "the scheme {scheme} is not replayed: its numbers are by map"
+            ),
             Self::MapFromFile { missing } => write!(
                 f,
                 "the map came from a file: {} cannot be answered from it",
@@ -170,6 +207,38 @@ impl fmt::Display for Warning {
             Self::WidthTurns { width } => write!(
                 f,
                 "the output falls past a width of {width:.4}: full output is taken there, wider pulses are not used"
+            ),
+            Self::HurriedGate {
+                fraction,
+                shortest_s,
+                transition_s,
+            } => write!(
+                f,
+                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate; gated stages are not replayed yet",
+                100.0 * fraction,
+                show(*transition_s, "s", 3),
+                show(*shortest_s, "s", 3)
+            ),
+            Self::PoorTransition { left } => write!(
+                f,
+                "one or two modes leave {} of the stage's rise or fall (RMS): its transitions are known to that only",
+                show(100.0 * left, "%", 2)
+            ),
+            Self::OverloadedShaping { ticks } => write!(
+                f,
+                "noise shaping was overloaded at {ticks} ticks, where its error was cut: lower the level, take more levels or the first order"
+            ),
+            Self::PulsesOfOtherLength { end_s, signal_s } => write!(
+                f,
+                "the pulse sequence ends at {}, the signal at {}: beyond its end the gate keeps its last level",
+                show(*end_s, "s", 5),
+                show(*signal_s, "s", 5)
+            ),
+            Self::BurstsOutOfSight { rate_hz, seen_hz } => write!(
+                f,
+                "no filter stands behind the stage, so that the lines of the bursts, multiples of {}, leave it: those up to {} are seen, and power and margins move with every line that finer sampling shows",
+                show(*rate_hz, "Hz", 4),
+                show(*seen_hz, "Hz", 4)
             ),
             Self::FewAverages { segments } => write!(
                 f,

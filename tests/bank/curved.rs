@@ -11,7 +11,10 @@ use super::curved_twin::curved_twin;
 
 /// What two step sizes, extrapolated, leave: the twin has order 2 and no events, so that the diode's corner and
 /// the charge dumped at closing fall between its steps. SciPy's shooting holds the same stages to 1e-6.
-const SETTLED: f64 = 1e-4;
+const SETTLED: f64 = 2e-4;
+
+/// The same for the lowest and highest drain voltage, which the twin reads at its steps only.
+const EXTREME: f64 = 1e-3;
 
 /// Of a period's charge, relative to what moves on and off the drain.
 const CHARGE: f64 = 1e-12;
@@ -49,10 +52,7 @@ fn the_curved_twin_settles_to_the_orbit() {
             "{name}: {}",
             orbit.charge_residual
         );
-        let Some(twin) = curved_twin(&stage, stage.supply_v, orbit.supply_a, &drive) else {
-            faults.push(format!("{name}: the twin does not settle"));
-            continue;
-        };
+        let twin = curved_twin(&stage, stage.supply_v, orbit.supply_a, &drive);
         let amplitude = orbit.output_v.norm();
         let power = orbit.supply_w.abs() + orbit.driver_w;
         let losses = &orbit.losses;
@@ -99,7 +99,11 @@ fn the_curved_twin_settles_to_the_orbit() {
         }
         for (what, given, expected, scale) in pairs {
             let error = (given - expected).abs() / scale.abs();
-            if error.is_nan() || error > SETTLED {
+            let allowed = match what {
+                "peak voltage" | "lowest voltage" => EXTREME,
+                _ => SETTLED,
+            };
+            if error.is_nan() || error > allowed {
                 faults.push(format!(
                     "{name}: {what} {given} against {expected}: {error:.1e}"
                 ));

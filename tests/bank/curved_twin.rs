@@ -6,16 +6,15 @@
 //! `v = v0 + z i` with the charge and the device's current in `i`: one equation in `v`, bisected after Newton's steps
 //! leave its bracket.
 //!
-//! It settles from rest with coarse steps, for as many periods as is worth it; what is left of a slow transient, and
-//! what finer steps change, is taken out by Newton's method on the map of one period, its derivatives by differences.
-//! Figures at two step sizes are extrapolated to steps of no length.
+//! It settles from rest with coarse steps, then with finer ones; figures at two step sizes are extrapolated to steps of
+//! no length.
 //!
 //! No state equations, no events, no normalisation: volts, amperes, coulombs, seconds. The first part of each segment
 //! is stepped finely, where the switch has just been thrown.
 
 use std::f64::consts::{FRAC_1_SQRT_2, TAU};
 
-use nalgebra::{DMatrix, DVector};
+use nalgebra::DMatrix;
 use num_complex::Complex64;
 use quietedge::orbit::Drive;
 use quietedge::stage::{DrainCurve, Element, Feed, Stage};
@@ -28,29 +27,13 @@ const GAMMA: f64 = 1.0 - FRAC_1_SQRT_2;
 const FINE_PART: f64 = 0.01;
 
 /// Steps in each part of each segment: the first to settle from rest, the others to be extrapolated.
-const COARSE: usize = 50;
-const STEPS: [usize; 2] = [250, 500];
+const STEPS: [usize; 3] = [50, 200, 400];
 
-/// Phasor, supply and power move by less than this part of themselves in a period.
-const SETTLED: f64 = 1e-6;
+/// Phasor, supply, power and closing voltage move by less than this part of themselves in a period.
+const SETTLED: f64 = 1e-8;
 
-/// Periods of settling from rest.
-const MOST_PERIODS: usize = 1000;
-
-/// The largest move of the state in one period, relative to its size, that counts as none.
-const PERIODIC: f64 = 1e-9;
-
-/// What it may be where Newton's method gains nothing more: the node equations at small steps leave so much.
-const ROUNDING: f64 = 3e-6;
-
-/// Periods of settling with finer steps before Newton's method.
-const FINE_PERIODS: usize = 60;
-
-/// The move of the state in one period that counts as settled.
-const STILL: f64 = 2e-8;
-
-/// Multipliers this near to one are charge that is trapped and never moves.
-const TRAPPED: f64 = 3e-4;
+/// The slowest stage of the bank takes about so many to settle.
+const MOST_PERIODS: usize = 1500;
 
 /// What the twin finds. Fields as in `Orbit`.
 #[derive(Debug, Clone, Copy, Default)]
@@ -160,32 +143,6 @@ impl<'a> Drain<'a> {
             }
         };
         (q + self.fixed_f * v, c + self.fixed_f)
-    }
-
-    /// The voltage with this charge, by bisection.
-    fn voltage(&self, charge: f64, guess: f64) -> f64 {
-        let (mut low, mut high, mut width) = (guess, guess, 1.0);
-        while self.charge(low).0 > charge {
-            low -= width;
-            width *= 2.0;
-        }
-        width = 1.0;
-        while self.charge(high).0 < charge {
-            high += width;
-            width *= 2.0;
-        }
-        for _ in 0..200 {
-            let middle = 0.5 * (low + high);
-            if middle <= low || middle >= high {
-                break;
-            }
-            if self.charge(middle).0 > charge {
-                high = middle;
-            } else {
-                low = middle;
-            }
-        }
-        0.5 * (low + high)
     }
 
     fn switch_a(&self, closed: bool, v: f64) -> f64 {
@@ -433,12 +390,7 @@ impl Run<'_> {
 }
 
 /// The orbit at `supply_v`, settled from rest; `choke_a` is the current of an ideal choke.
-pub fn curved_twin(
-    stage: &Stage,
-    supply_v: f64,
-    choke_a: f64,
-    drive: &Drive,
-) -> Option<CurvedTwin> {
+pub fn curved_twin(stage: &Stage, supply_v: f64, choke_a: f64, drive: &Drive) -> CurvedTwin {
     let period_s = 1.0 / stage.frequency_hz;
     let net = Network::new(stage);
     let branches = net.branches.len();
@@ -458,23 +410,12 @@ pub fn curved_twin(
         charge: run.drain.charge(0.0).0,
         drain_v: 0.0,
     };
-    let mut last = CurvedTwin::default();
-    let coarse = plan(&run, stage, drive, COARSE);
-    for _ in 0..MOST_PERIODS {
-        let twin = one_period(&mut run, &coarse, COARSE, drive, period_s, &mut state);
-        let change = (twin.output_v - last.output_v).norm() / twin.output_v.norm();
-        let power_change = (twin.load_w - last.load_w).abs() / twin.load_w;
-        let supply_change = (twin.supply_a - last.supply_a).abs() / twin.supply_a.abs();
-        last = twin;
-        if change.max(supply_change).max(power_change) < SETTLED {
-            break;
-        }
-    }
-    let [rough, fine] = STEPS.map(|steps| {
+    // Each run starts where the one before settled.
+    let [_, rough, fine] = STEPS.map(|steps| {
         let plan = plan(&run, stage, drive, steps);
-        periodic(&mut run, &plan, steps, drive, period_s, &mut state)
+        settled(&mut run, &plan, steps, drive, period_s, &mut state)
     });
-    Some(rough?.extrapolated(&fine?))
+    rough.extrapolated(&fine)
 }
 
 /// Every part of the period with its steps.
@@ -505,96 +446,30 @@ fn plan(run: &Run<'_>, stage: &Stage, drive: &Drive, steps: usize) -> Vec<(Segme
         .collect()
 }
 
-/// Newton's method on the period from `state`, which ends in the periodic state.
-fn periodic(
+/// The period that `state` settles to, or comes nearest to in as many periods as are worth it.
+fn settled(
     run: &mut Run<'_>,
     plan: &[(Segment, Stepping)],
     steps: usize,
     drive: &Drive,
     period_s: f64,
     state: &mut State,
-) -> Option<CurvedTwin> {
-    // In units in which energies compare: the square root of twice the energy.
-    let units: Vec<f64> = run
-        .net
-        .branches
-        .iter()
-        .enumerate()
-        .map(|(index, branch)| match branch.element {
-            _ if index == 0 => run.drain.charge(0.0).1.sqrt().recip(),
-            Element::Capacitor(farad) => farad.sqrt(),
-            Element::Inductor(henry) => henry.sqrt(),
-            Element::Resistor(_) => 0.0,
-        })
-        .collect();
-    // Branch 0 stands for the drain's charge; resistors hold nothing.
-    let places: Vec<usize> = (0..units.len()).filter(|&at| units[at] > 0.0).collect();
-    let vector = |state: &State| {
-        DVector::from_iterator(
-            places.len(),
-            places.iter().map(|&at| {
-                let held = if at == 0 {
-                    state.charge
-                } else {
-                    state.held[at]
-                };
-                held * units[at]
-            }),
-        )
-    };
-    let moved = |run: &Run<'_>, from: &State, change: &DVector<f64>| {
-        let mut state = from.clone();
-        for (&at, change) in places.iter().zip(change.iter()) {
-            if at == 0 {
-                state.charge += change / units[0];
-            } else {
-                state.held[at] += change / units[at];
-            }
-        }
-        state.drain_v = run.drain.voltage(state.charge, state.drain_v);
-        state
-    };
-    let advance = |run: &mut Run<'_>, from: &State| {
-        let mut to = from.clone();
-        let twin = one_period(run, plan, steps, drive, period_s, &mut to);
-        (twin, vector(&to))
-    };
-    for _ in 0..FINE_PERIODS {
-        let here = vector(state);
-        let mut to = state.clone();
-        let twin = one_period(run, plan, steps, drive, period_s, &mut to);
-        let miss = (vector(&to) - &here).amax() / here.amax();
-        *state = to;
-        if miss < STILL {
-            return Some(twin);
+) -> CurvedTwin {
+    let mut last = CurvedTwin::default();
+    for _ in 0..MOST_PERIODS {
+        let twin = one_period(run, plan, steps, drive, period_s, state);
+        let moved = [
+            (twin.output_v - last.output_v).norm() / twin.output_v.norm(),
+            (twin.load_w - last.load_w).abs() / twin.load_w,
+            (twin.supply_a - last.supply_a).abs() / twin.supply_a.abs(),
+            (twin.closing_v - last.closing_v).abs() / twin.switch_peak_v,
+        ];
+        last = twin;
+        if moved.iter().all(|moved| *moved < SETTLED) {
+            break;
         }
     }
-    let mut best = f64::INFINITY;
-    for _ in 0..12 {
-        let here = vector(state);
-        let (twin, there) = advance(run, state);
-        let size = here.amax();
-        let miss = (&there - &here).amax() / size;
-        if miss < PERIODIC || (miss >= 0.5 * best && miss < ROUNDING) {
-            return Some(twin);
-        }
-        best = best.min(miss);
-        let nudge = 1e-4 * size;
-        let count = places.len();
-        let mut matrix = DMatrix::identity(count, count);
-        for column in 0..count {
-            let mut change = DVector::zeros(count);
-            change[column] = nudge;
-            let (_, after) = advance(run, &moved(run, state, &change));
-            let slope = (after - &there) / nudge;
-            let mut target = matrix.column_mut(column);
-            target -= slope;
-        }
-        let svd = matrix.svd(true, true);
-        let change = svd.solve(&(there - here), TRAPPED).expect("a correction");
-        *state = moved(run, state, &change);
-    }
-    None
+    last
 }
 
 fn one_period(

@@ -158,6 +158,7 @@ fn odd_figures(title: &str, points: &[(f64, f64)]) -> Vec<Figure> {
             drain_v: up.clone(),
             switch_a: across.clone(),
             load_v: up.clone(),
+            others: Vec::new(),
             closed_s: points.to_vec(),
             peak_drain: Some(first),
             peak_current: None,

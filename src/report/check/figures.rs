@@ -4,11 +4,13 @@ use super::spectrum::spectrum_figure;
 use crate::map::Control;
 use crate::report::figures::{
     BendCurve, BendFigure, CcdfCurve, CcdfFigure, EnvelopeCurve, EnvelopeFigure, Quantity,
+    ShapeCurve, ShapesFigure,
 };
 use crate::report::page::CaptionedFigure;
 use crate::report::picture::Figure;
 use crate::report::stage::{control_quantity, phases_deg, waveform_figure};
-use crate::study::{CheckResult, Hardware};
+use crate::report::text::quantity;
+use crate::study::{CheckResult, Hardware, Shape};
 
 pub(super) fn figures(result: &CheckResult) -> Vec<CaptionedFigure> {
     let mut figures = vec![
@@ -23,8 +25,54 @@ pub(super) fn figures(result: &CheckResult) -> Vec<CaptionedFigure> {
             caption: "One period of the stage at full supply and width, from the instant its switch closes."
                 .to_owned(),
         });
+        figures.extend(shapes_figure(&facts.shapes));
     }
     figures
+}
+
+/// The drain's waveform where the signal takes the stage.
+fn shapes_figure(shapes: &[Shape]) -> Option<CaptionedFigure> {
+    let first = shapes.first()?;
+    let control = first.control;
+    let name_of = |shape: &Shape| match control {
+        Control::Supply => format!("{}, {}", shape.place, quantity(shape.value, "V", 3)),
+        Control::Width | Control::Drive => {
+            format!(
+                "{}, {:.2} % of the period",
+                shape.place,
+                100.0 * shape.value
+            )
+        }
+    };
+    let (mut curves, mut missing) = (Vec::new(), String::new());
+    for shape in shapes {
+        match &shape.waveform {
+            Ok(waveform) => curves.push(ShapeCurve {
+                name: name_of(shape),
+                time_s: waveform.time_s.clone(),
+                drain_v: waveform.drain_v.clone(),
+                supply_v: shape.supply_v,
+            }),
+            Err(reason) => missing.push_str(&format!(" None at {}: {reason}.", name_of(shape))),
+        }
+    }
+    let said = match control {
+        Control::Supply => {
+            "One period at full, half and lowest supply that the scheme asks for; below, each over its supply. A stage \
+             without curvature, coupling or diode shows one curve there."
+        }
+        Control::Width | Control::Drive => {
+            "One period at full, half and lowest pulse width; below, over the supply."
+        }
+    };
+    Some(CaptionedFigure {
+        figure: ShapesFigure {
+            title: format!("Drain voltage over the {}", control.name()),
+            curves,
+        }
+        .figure(),
+        caption: format!("{said}{missing}"),
+    })
 }
 
 /// AM-AM and AM-PM with the signal's density.

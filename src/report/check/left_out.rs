@@ -58,11 +58,16 @@ pub(super) fn model_limits(result: &CheckResult) -> Vec<String> {
     } else {
         limits.insert(
             1,
-            "The stage is linear between switching instants: fixed capacitances, a switch with one closed resistance \
-             that opens and closes at once, no diode, no gate coupling, no temperature. Its supply map is therefore \
-             straight; what bends the signal here are the floor, the modulator, the paths and, where it is replayed, \
-             the stage's memory."
-                .to_owned(),
+            format!(
+                "The stage is linear between switching instants: fixed capacitances, {}, no diode, no gate coupling, \
+                 no temperature. Its supply map is therefore straight; what bends a signal on the supply are the \
+                 floor, the modulator, the paths and, where it is replayed, the stage's memory.",
+                if stage.is_pair() {
+                    "two switches with one closed resistance each that open and close at once, with dead time between"
+                } else {
+                    "a switch with one closed resistance that opens and closes at once"
+                }
+            ),
         );
     }
     limits.insert(

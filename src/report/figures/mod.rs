@@ -12,6 +12,7 @@ mod map;
 mod margin;
 mod mask;
 mod mismatch;
+mod shapes;
 mod spectrum;
 mod waveform;
 
@@ -25,8 +26,9 @@ pub use map::MapFigure;
 pub use margin::{MarginCurve, MarginFigure};
 pub use mask::{MaskFigure, MaskLine};
 pub use mismatch::MismatchFigure;
+pub use shapes::{ShapeCurve, ShapesFigure};
 pub use spectrum::{SpectrumCurve, SpectrumFigure, WorstPoint};
-pub use waveform::WaveformFigure;
+pub use waveform::{OtherCurves, WaveformFigure};
 
 use crate::report::text::quantity;
 
