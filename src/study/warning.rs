@@ -54,8 +54,11 @@ pub enum Warning {
     },
     /// A replayed stage whose choke is ideal.
     IdealChoke,
-    /// A scheme without a stage among replayed ones.
-    OnlyByMap,
+    /// A scheme that is not replayed among others that are.
+    OnlyByMap {
+        /// Its name.
+        scheme: &'static str,
+    },
     /// A map from a file knows neither stress nor memory.
     MapFromFile {
         /// What it cannot answer.
@@ -205,7 +208,7 @@ impl fmt::Display for Warning {
                 signal_s,
             } => write!(
                 f,
-                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result",
+                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result; a linear stage has it with --by replay",
                 show(*settling_s, "s", 3),
                 show(*signal_s, "s", 3)
             ),
@@ -233,9 +236,10 @@ impl fmt::Display for Warning {
             Self::IdealChoke => f.write_str(
                 "the feed is an ideal choke: its current is taken to follow the supply at once, so that the memory of a real choke is missing. Give the feed an `inductance` to see it",
             ),
-            Self::OnlyByMap => {
-                f.write_str("an ideal linear stage has nothing to replay: its numbers are by map")
-            }
+            Self::OnlyByMap { scheme } => write!(
+                f,
+                "the scheme {scheme} is not replayed: its numbers are by map"
+            ),
             Self::MapFromFile { missing } => write!(
                 f,
                 "the map came from a file: {} cannot be answered from it",
