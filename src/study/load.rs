@@ -1,11 +1,12 @@
 //! A study file and the files it names.
 
-use crate::drive::{Polynomial, Rails, Scheme};
+use crate::drive::{Combining, Polynomial, Rails, Scheme};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::limits::{Limits, LimitsRequest};
 use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
 use crate::math::Window;
 use crate::metrics::SymbolFormat;
+use crate::orbit::Joined;
 use crate::predistort::{Table, TableRequest, read_polynomial, read_table};
 use crate::signal::FormatOptions;
 use crate::stage::{Anchor, Stage};
@@ -211,6 +212,15 @@ impl Study {
     fn fits(&self, scheme: &Section<'_>) -> Result<(), Problem> {
         let wanted = self.scheme.control();
         match &self.hardware {
+            Hardware::Stage(stage) => {
+                if let Scheme::Outphase(outphase) = &self.scheme
+                    && let Combining::Joined(joined) = &outphase.combining
+                    && let Err(error) = Joined::new(stage, &joined.joint)
+                {
+                    let allowed = format!("\"joined\" where two stages can be ({error})");
+                    return Err(scheme.problem("combining", allowed));
+                }
+            }
             Hardware::Map(_) if wanted == Control::Angle => {
                 return Err(scheme.problem(
                     "combining",
