@@ -6,7 +6,7 @@ use num_complex::Complex64;
 use quietedge::orbit::{Drive, Network};
 use quietedge::stage::Stage;
 use quietedge::transmit::{
-    Account, Cycle, CycleOutput, Form, Interval, Pulse, Replay, ReplayError, Segments, Setup,
+    Account, Cycle, CycleOutput, Form, Gate, Interval, Pulse, Replay, ReplayError, Segments, Setup,
     Timing, replay_all,
 };
 
@@ -466,6 +466,40 @@ fn intervals_of_any_order_are_replayed() {
         by_pulse.cycle_of([1.0; 2], &short),
         Err(ReplayError::Intervals { cycle: 400, .. })
     ));
+}
+
+/// A burst's gate: the pulses that lie inside it, cut where it starts and stops within one.
+#[test]
+fn a_gate_cuts_pulses_and_a_list_of_edges_says_the_same() {
+    let (network, drive) = network(TIDE_GAUGE);
+    let new = || Replay::new(&network, &drive, losses()).expect("a replay");
+    // On from within the pulse around angle 40 turns to within the one around 70 turns.
+    let (on, off) = (TAU * 40.0 + 0.3, TAU * 70.0 - 0.2);
+    let mut gate = Gate::new([(on, true), (off, false)].into_iter());
+    // The same by hand: high where pulse and gate are.
+    let mut edges = vec![(on, true)];
+    edges.push((TAU * 40.25, false));
+    for n in 41..70 {
+        edges.push((TAU * (f64::from(n) - 0.25), true));
+        edges.push((TAU * (f64::from(n) + 0.25), false));
+    }
+    edges.push((TAU * 69.75, true));
+    edges.push((off, false));
+    let mut list = Gate::new(edges.into_iter());
+    let (mut by_gate, mut by_list) = (new(), new());
+    let mut windows = Vec::new();
+    let (mut largest, mut last) = (0.0f64, 0.0);
+    for _ in 0..300 {
+        gate.cycle(&mut windows);
+        let cycle = constant(&drive, 5.0, 0.0);
+        let a = by_gate.cycle_gated(&cycle, &windows).expect("a cycle");
+        list.cycle(&mut windows);
+        let b = by_list.cycle_pulsed([5.0; 2], &windows).expect("a cycle");
+        assert!((a.output_v - b.output_v).norm() < 1e-10);
+        (largest, last) = (largest.max(a.output_v.norm()), a.output_v.norm());
+    }
+    // It worked, and rang out afterwards.
+    assert!(largest > 15.0 && last < 0.01 * largest, "{largest} {last}");
 }
 
 /// Equal resonators, resonances without loss, extreme parts: what is replayed equals the orbit. Traps at the carrier

@@ -7,6 +7,7 @@ use super::{Console, Disk, Ending, Failure, OutputFolder, OutputOptions};
 use crate::input::Files;
 use crate::report::check::{Request, page, spectrum_figure, text};
 use crate::report::documents::{check_document, map_csv};
+use crate::report::gate::{gate_csv, gate_vcd};
 use crate::signal;
 use crate::study::{BuiltIn, By, CheckResult, DEFAULT_STUDY, Study, StudyError, check_by};
 use crate::verdict::Outcome;
@@ -17,7 +18,8 @@ use crate::verdict::Outcome;
   quietedge check
       the built-in study; its report goes to quietedge-report/, made anew each time
   quietedge check my.study.toml --out report
-      writes report.html, result.json, spectrum.png and map.csv into report/
+      writes report.html, result.json, spectrum.png and map.csv into report/, and of a burst scheme
+      its gate as gate.csv and gate.vcd
   quietedge check my.study.toml --by both
       integrates the stage cycle by cycle and says whether its map may be trusted
   quietedge check my.study.toml --json | jq .verdict.outcome")]
@@ -40,7 +42,14 @@ pub struct Arguments {
 /// Where the report of the built-in study goes without `--out`; made anew each time.
 const BUILT_IN_FOLDER: &str = "quietedge-report";
 
-const NAMES: [&str; 4] = ["report.html", "result.json", "spectrum.png", "map.csv"];
+const NAMES: [&str; 6] = [
+    "report.html",
+    "result.json",
+    "spectrum.png",
+    "map.csv",
+    "gate.csv",
+    "gate.vcd",
+];
 
 /// Parts of the progress bar.
 const STEPS: u64 = 1000;
@@ -155,6 +164,10 @@ fn write(folder: &OutputFolder, result: &CheckResult, request: &Request) -> Resu
         NAMES[3],
         map_csv(&result.study.title, &result.map).as_bytes(),
     )?;
+    if let Some(train) = &result.gate {
+        folder.write(NAMES[4], gate_csv(train).as_bytes())?;
+        folder.write(NAMES[5], &gate_vcd(train)?)?;
+    }
     Ok(())
 }
 

@@ -1,5 +1,7 @@
 //! STEP 4: how a signal moves the stage's controls: schemes, imperfections included.
 
+mod angle;
+mod burst;
 mod class_b;
 mod correct;
 mod levels;
@@ -16,15 +18,21 @@ mod read_modulator;
 mod sag;
 mod scheme;
 mod shaping;
+mod staircase;
 mod supply;
 mod width;
 
+pub use angle::{AngleLaw, AngleReach, JoinedScheme};
+pub use burst::{
+    BandFilter, BandShape, BurstScheme, GateFigures, MovedEdges, PulseFile, PulseSequence,
+    Sampling, StopBand, Updates,
+};
 pub use class_b::{CLASS_B_PEAK_EFFICIENCY, ClassBScheme};
 pub use correct::Correction;
 pub use levels::{LevelsScheme, RestPoint};
 pub use lookup::{Between, Lookup, LookupError, LookupSize, MAX_TABLE_RATE, Spacing, Word};
 pub use modulator::{Converter, Modulator, PoleZero, Ripple, SupplyModulator};
-pub use outphase::OutphaseScheme;
+pub use outphase::{Combining, OutphaseScheme};
 pub use polynomial::{Polynomial, Term};
 pub use power::{DrawnPower, PowerModel};
 pub use rails::Rails;
@@ -47,11 +55,37 @@ pub struct Track {
     pub phase: Vec<num_complex::Complex64>,
     /// The supply, V, of schemes that move it beside the control; empty for all others.
     pub supply_v: Vec<f64>,
+    /// The output, peak volts, of schemes whose edges fall between instants: what a band-limited observer sees
+    /// (`math::edges`). Empty for all others, whose output follows from the control.
+    pub output_v: Vec<num_complex::Complex64>,
+    /// Powers drawn, of schemes that account for them themselves; empty for all others.
+    pub drawn: Vec<Drawn>,
+    /// The gate's edges that fell into this block, times from the signal's first sample; empty where none is gated.
+    pub gate: Vec<crate::signal::Edge>,
     /// The drive phasors of two branches, of schemes that have them; empty for all others.
     pub branches: Vec<[num_complex::Complex64; 2]>,
     /// Instants within which the controls change at once: their output is the mean over these parts in place of
     /// the rows' own values, which are those of the instant's middle. By instant; the weights of one add up to 1.
     pub parts: Vec<TrackPart>,
+}
+
+/// Mean powers drawn over an instant, W.
+#[derive(Debug, Clone, Copy, Default, PartialEq)]
+pub struct Drawn {
+    /// By the stage from its supply.
+    pub stage_w: f64,
+    /// By the driver.
+    pub driver_w: f64,
+    /// Not drawn, but delivered: what the stage's filter takes in, or the output itself without one.
+    pub delivered_w: f64,
+}
+
+impl Drawn {
+    /// Adds `power`, drawn for the part `share` of the instant.
+    pub(crate) fn add(&mut self, power: Self, share: f64) {
+        self.stage_w += power.stage_w * share;
+        self.driver_w += power.driver_w * share;
+    }
 }
 
 /// A part of an instant of a [`Track`].
@@ -77,6 +111,9 @@ impl Track {
         self.control.clear();
         self.phase.clear();
         self.supply_v.clear();
+        self.output_v.clear();
+        self.drawn.clear();
+        self.gate.clear();
         self.branches.clear();
         self.parts.clear();
     }

@@ -23,6 +23,10 @@ pub enum RateReason {
     Ripple,
     /// Pulses that are quantized or switched.
     Edges,
+    /// The rate of the bursts.
+    Bursts,
+    /// The band-pass behind the stage.
+    Filter,
     /// Two branches of constant magnitude are far wider than the signal.
     Branches,
     /// The rate of the schemes that it is compared with.
@@ -42,6 +46,8 @@ impl RateReason {
             Self::Converter => "the converter's rate",
             Self::Ripple => "the ripple's frequency",
             Self::Edges => "steps of the pulses or rails",
+            Self::Bursts => "the rate of the bursts",
+            Self::Filter => "the filter behind the stage",
             Self::Branches => "branches of constant magnitude are far wider than the signal",
             Self::Common => "the schemes that it is compared with",
             Self::Predistortion => "the rate of the predistortion",

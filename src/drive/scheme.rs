@@ -2,13 +2,15 @@
 
 use num_complex::Complex64;
 
+use super::burst::{BurstDrive, BurstScheme, GateFigures};
 use super::class_b::{ClassBDrive, ClassBScheme};
 use super::levels::{LevelsDrive, LevelsScheme};
-use super::outphase::{OutphaseDrive, OutphaseScheme};
+use super::outphase::{Combining, OutphaseDrive, OutphaseScheme};
 use super::rate::RateReason;
 use super::supply::{SupplyDrive, SupplyScheme};
 use super::width::{WidthDrive, WidthLaw, WidthScheme};
 use super::{Correction, Modulator, Track};
+use crate::input::{Files, Problem, Section};
 use crate::map::{Control, Map};
 use crate::stage::Anchor;
 
@@ -22,6 +24,8 @@ pub enum Scheme {
     Width(WidthScheme),
     /// Magnitude to a few rails and the width.
     Levels(LevelsScheme),
+    /// Magnitude to a train of pulses that gates the stage.
+    Burst(BurstScheme),
     /// Magnitude to the angle between two stages.
     Outphase(OutphaseScheme),
     /// An ideal linear stage, for comparison.
@@ -29,12 +33,29 @@ pub enum Scheme {
 }
 
 impl Scheme {
+    /// The same with the files read that it names; `section` is the table that it came from.
+    ///
+    /// # Errors
+    /// The first thing wrong in any of them.
+    pub fn loaded(self, section: &Section<'_>, files: &dyn Files) -> Result<Self, Problem> {
+        match self {
+            Self::Burst(mut burst) => {
+                if let Some(pulses) = &burst.pulses {
+                    burst.pulses = Some(pulses.load(files, section, burst.grid_s)?);
+                }
+                Ok(Self::Burst(burst))
+            }
+            other => Ok(other),
+        }
+    }
+
     /// Its name in studies.
     pub fn name(&self) -> &'static str {
         match self {
             Self::Supply(_) => "supply",
             Self::Width(_) => "width",
             Self::Levels(_) => "levels",
+            Self::Burst(_) => "burst",
             Self::Outphase(_) => "outphase",
             Self::ClassB(_) => "class_b",
         }
@@ -44,7 +65,10 @@ impl Scheme {
     pub fn control(&self) -> Control {
         match self {
             Self::Supply(_) => Control::Supply,
-            Self::Width(_) | Self::Levels(_) => Control::Width,
+            Self::Width(_) | Self::Levels(_) | Self::Burst(_) => Control::Width,
+            Self::Outphase(scheme) if matches!(scheme.combining, Combining::Joined(_)) => {
+                Control::Angle
+            }
             Self::Outphase(_) | Self::ClassB(_) => Control::Drive,
         }
     }
@@ -58,7 +82,9 @@ impl Scheme {
                 idle_w: scheme.idle_w,
                 ..Modulator::default()
             },
-            Self::Width(_) | Self::Outphase(_) | Self::ClassB(_) => Modulator::default(),
+            Self::Width(_) | Self::Burst(_) | Self::Outphase(_) | Self::ClassB(_) => {
+                Modulator::default()
+            }
         }
     }
 
@@ -90,7 +116,7 @@ impl Scheme {
                 changed.law = other(scheme.law);
                 pair(scheme.law, self.clone(), Self::Levels(changed))
             }
-            Self::Outphase(_) | Self::ClassB(_) => Inversion::Straight,
+            Self::Burst(_) | Self::Outphase(_) | Self::ClassB(_) => Inversion::Straight,
         }
     }
 
@@ -124,6 +150,7 @@ impl Scheme {
             Self::Supply(scheme) => SupplyDrive::settling(scheme, rate_hz),
             Self::Width(scheme) => scheme.settling(rate_hz),
             Self::Levels(scheme) => scheme.settling(rate_hz),
+            Self::Burst(scheme) => scheme.settling(rate_hz),
             Self::Outphase(scheme) => scheme.settling(rate_hz),
             Self::ClassB(_) => ClassBDrive::settling(),
         }
@@ -135,6 +162,7 @@ impl Scheme {
             Self::Supply(scheme) => scheme.rates(signal_rate_hz),
             Self::Width(scheme) => scheme.rates(signal_rate_hz),
             Self::Levels(scheme) => scheme.rates(signal_rate_hz),
+            Self::Burst(scheme) => scheme.rates(signal_rate_hz),
             Self::Outphase(scheme) => scheme.rates(signal_rate_hz),
             Self::ClassB(_) => Vec::new(),
         }
@@ -162,8 +190,11 @@ impl Scheme {
             Self::Levels(scheme) => {
                 Kind::Levels(Box::new(LevelsDrive::new(scheme, map, level, rate_hz)))
             }
+            Self::Burst(scheme) => {
+                Kind::Burst(Box::new(BurstDrive::new(scheme, map, level, rate_hz)))
+            }
             Self::Outphase(scheme) => {
-                Kind::Outphase(Box::new(OutphaseDrive::new(scheme, level, rate_hz)))
+                Kind::Outphase(Box::new(OutphaseDrive::new(scheme, map, level, rate_hz)))
             }
             Self::ClassB(_) => Kind::ClassB(Box::new(ClassBDrive::new(level))),
         })
@@ -195,6 +226,7 @@ enum Kind<'a> {
     Supply(Box<SupplyDrive>),
     Width(Box<WidthDrive<'a>>),
     Levels(Box<LevelsDrive<'a>>),
+    Burst(Box<BurstDrive<'a>>),
     Outphase(Box<OutphaseDrive>),
     ClassB(Box<ClassBDrive>),
 }
@@ -212,12 +244,21 @@ impl SchemeDrive<'_> {
         }
     }
 
+    /// What the gate has done so far, of a scheme that gates the stage.
+    pub fn gate_figures(&self) -> Option<GateFigures> {
+        match &self.0 {
+            Kind::Burst(drive) => Some(drive.figures()),
+            _ => None,
+        }
+    }
+
     /// Appends the controls for `samples` to `track`.
     pub fn push(&mut self, samples: &[Complex64], track: &mut Track) {
         match &mut self.0 {
             Kind::Supply(drive) => drive.push(samples, track),
             Kind::Width(drive) => drive.push(samples, track),
             Kind::Levels(drive) => drive.push(samples, track),
+            Kind::Burst(drive) => drive.push(samples, track),
             Kind::Outphase(drive) => drive.push(samples, track),
             Kind::ClassB(drive) => drive.push(samples, track),
         }

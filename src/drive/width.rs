@@ -1,7 +1,10 @@
 //! Scheme `width`: one pulse a carrier cycle, its width from the magnitude, its place from the phase.
 //!
-//! The time grid is locked to the carrier: edges fall on multiples of it counted from the start of each cycle. Jitter
-//! is independent from edge to edge; what an instant of the track sees is its mean over the cycles that fall into it.
+//! The time grid is locked to the carrier: edges fall on multiples of it counted from the start of each cycle, and every
+//! cycle counts ([`super::staircase`]). Jitter is independent from edge to edge; what an instant of the track sees is its
+//! mean over the cycles that fall into it.
+
+use std::collections::VecDeque;
 
 use num_complex::Complex64;
 use rand::SeedableRng;
@@ -12,6 +15,7 @@ use std::f64::consts::{PI, TAU};
 use super::Track;
 use super::phase::{PhaseLimiter, magnitude};
 use super::rate::{RateReason, band};
+use super::staircase::{Pulse, STAIRCASE_LATENCY, Staircase};
 use super::supply::{PhasePath, settling};
 use crate::map::Map;
 use crate::math::delay::Delay;
@@ -70,11 +74,12 @@ impl WidthScheme {
     }
 
     pub(super) fn settling(&self, rate_hz: f64) -> usize {
-        settling(
-            self.delay_s.max(self.phase_path.delay_s),
-            &[self.phase_path.bandwidth_hz],
-            rate_hz,
-        )
+        STAIRCASE_LATENCY
+            + settling(
+                self.delay_s.max(self.phase_path.delay_s),
+                &[self.phase_path.bandwidth_hz],
+                rate_hz,
+            )
     }
 
     pub(super) fn rates(&self, signal_rate_hz: f64) -> Vec<(f64, RateReason)> {
@@ -133,6 +138,24 @@ impl Inverse {
     }
 }
 
+/// The grid at work, and what waits for its output.
+#[derive(Debug, Clone)]
+struct Gridded<'a> {
+    staircase: Staircase<'a>,
+    waiting: VecDeque<Waiting>,
+}
+
+/// One instant of the other rows.
+#[derive(Debug, Clone, Copy, Default)]
+struct Waiting {
+    wanted: Complex64,
+    asked: f64,
+    control: f64,
+    phase: Complex64,
+    /// What jitter adds to the output, V.
+    jitter_v: Complex64,
+}
+
 /// The scheme at work at one sample rate.
 #[derive(Debug, Clone)]
 pub(super) struct WidthDrive<'a> {
@@ -148,8 +171,8 @@ pub(super) struct WidthDrive<'a> {
     phase: PhaseLimiter,
     /// Phase that the stage adds at full width, rad.
     full_rad: f64,
-    /// Grid and shortest pulse as parts of a cycle; jitter likewise, averaged over the cycles of an instant.
-    grid: Option<f64>,
+    grid: Option<Gridded<'a>>,
+    /// Shortest pulse as a part of a cycle; jitter likewise, averaged over the cycles of an instant.
     shortest: f64,
     jitter: f64,
     random: ChaCha8Rng,
@@ -182,7 +205,15 @@ impl<'a> WidthDrive<'a> {
                 rate_hz,
             ),
             full_rad: map.phase_at_rad(full).unwrap_or(0.0),
-            grid: scheme.grid_s.map(|grid_s| grid_s * carrier_hz),
+            grid: scheme.grid_s.map(|grid_s| Gridded {
+                staircase: Staircase::new(
+                    map,
+                    scheme.anchor.unwrap_or(anchor),
+                    grid_s * carrier_hz,
+                    carrier_hz / rate_hz,
+                ),
+                waiting: VecDeque::from(vec![Waiting::default(); STAIRCASE_LATENCY]),
+            }),
             shortest: scheme.shortest_s * carrier_hz,
             jitter: scheme.jitter_s * carrier_hz / cycles.sqrt(),
             random: ChaCha8Rng::seed_from_u64(scheme.seed),
@@ -194,29 +225,25 @@ impl<'a> WidthDrive<'a> {
         self.scheme.law.width(&self.inverse, self.full, m)
     }
 
-    /// Width and shift of the pulse once its edges are quantized and jittered, both parts of a cycle.
-    fn edges(&mut self, width: f64, shift: f64) -> (f64, f64) {
+    /// The pulse once its edges are jittered.
+    fn jittered(&mut self, pulse: Pulse) -> Pulse {
         let from = match self.anchor {
             Anchor::Leading => 0.0,
-            Anchor::Centre => -0.5 * width,
-            Anchor::Trailing => -width,
+            Anchor::Centre => -0.5 * pulse.width,
+            Anchor::Trailing => -pulse.width,
         };
-        let mut edges = [shift + from, shift + from + width];
-        if let Some(grid) = self.grid {
-            edges = edges.map(|edge| (edge / grid).round() * grid);
+        let mut edges = [pulse.place + from, pulse.place + from + pulse.width];
+        for edge in &mut edges {
+            let normal: f64 = StandardNormal.sample(&mut self.random);
+            *edge += self.jitter * normal;
         }
-        if self.jitter > 0.0 {
-            for edge in &mut edges {
-                let normal: f64 = StandardNormal.sample(&mut self.random);
-                *edge += self.jitter * normal;
-            }
-        }
-        let place = match self.anchor {
-            Anchor::Leading => edges[0],
-            Anchor::Centre => 0.5 * (edges[0] + edges[1]),
-            Anchor::Trailing => edges[1],
-        };
-        (edges[1] - edges[0], place)
+        Pulse::of_edges(edges, self.anchor)
+    }
+
+    /// Output of a pulse, V.
+    fn output_v(&self, pulse: Pulse) -> Complex64 {
+        let width = pulse.width.min(self.full);
+        self.map.output_held_v(width).0 * Complex64::cis(-TAU * pulse.place)
     }
 
     pub(super) fn push(&mut self, samples: &[Complex64], track: &mut Track) {
@@ -232,17 +259,49 @@ impl<'a> WidthDrive<'a> {
                 let added = self.map.phase_held_rad(width) - self.full_rad;
                 phase *= Complex64::from_polar(1.0, -added);
             }
-            let (control, phase) = if self.grid.is_some() || self.jitter > 0.0 {
-                // A phase that leads is a pulse that comes earlier.
-                let (width, place) = self.edges(width, -phase.arg() / TAU);
-                (width, Complex64::from_polar(1.0, -TAU * place))
-            } else {
-                (width, phase)
+            // A phase that leads is a pulse that comes earlier.
+            let pulse = Pulse {
+                width,
+                place: -phase.arg() / TAU,
             };
-            track.wanted.push(wanted);
-            track.asked.push(asked);
-            track.control.push(control.min(self.full));
-            track.phase.push(phase);
+            let moved = if self.jitter > 0.0 {
+                self.jittered(pulse)
+            } else {
+                pulse
+            };
+            let row = Waiting {
+                wanted,
+                asked,
+                control: moved.width.min(self.full),
+                phase: if self.jitter > 0.0 {
+                    Complex64::cis(-TAU * moved.place)
+                } else {
+                    phase
+                },
+                jitter_v: if self.jitter > 0.0 && self.grid.is_some() {
+                    self.output_v(moved) - self.output_v(pulse)
+                } else {
+                    Complex64::ZERO
+                },
+            };
+            let smooth_v = match self.grid {
+                Some(_) => self.output_v(pulse),
+                None => Complex64::ZERO,
+            };
+            let row = match &mut self.grid {
+                None => row,
+                Some(gridded) => {
+                    gridded.waiting.push_back(row);
+                    let row = gridded.waiting.pop_front().unwrap_or_default();
+                    let output_v = gridded.staircase.push(pulse, smooth_v);
+                    track.output_v.push(output_v + row.jitter_v);
+                    row
+                }
+            };
+            track.wanted.push(row.wanted);
+            track.asked.push(row.asked);
+            track.control.push(row.control);
+            track.phase.push(row.phase);
         }
     }
 }
@@ -327,7 +386,7 @@ mod tests {
     }
 
     #[test]
-    fn jitter_has_the_stated_variance_and_a_grid_has_its_steps() {
+    fn jitter_has_the_stated_variance() {
         let map = map();
         let mut jittered = scheme(WidthLaw::Sine);
         jittered.jitter_s = 20e-12;
@@ -341,14 +400,57 @@ mod tests {
         // 3000 instants: 1.3 % of the RMS to one standard deviation.
         assert!(((square / count).sqrt() / law - 1.0).abs() < 0.06);
         assert_eq!(noisy, run(&jittered, &map));
-
+    }
+    /// Cycle by cycle, the naive twin: edges between instants on the straight line, rounded one by one, and their mean
+    /// over each instant's own half to both sides.
+    #[test]
+    fn a_grid_counts_every_cycle() {
+        let map = map();
         let mut coarse = scheme(WidthLaw::Sine);
         coarse.grid_s = Some(50e-12);
-        for (at, width) in run(&coarse, &map).control.iter().enumerate().skip(LATENCY) {
-            let steps = width / 0.005;
-            assert!((steps - steps.round()).abs() < 1e-9);
-            // Two edges, each off by at most half a step.
-            assert!((width - clean.control[at]).abs() <= 0.005 + 1e-12);
+        // A slow signal: what lies far below the rate passes the observer and the mean alike.
+        let samples: Vec<_> = (0..60_000)
+            .map(|n| {
+                let t = 2e-4 * f64::from(n);
+                Complex64::from_polar(0.5 + 0.4 * t.sin(), 0.2 * (1.3 * t).sin())
+            })
+            .collect();
+        let mut track = Track::default();
+        WidthDrive::new(&coarse, &map, Anchor::Centre, 0.9, 1e6).push(&samples, &mut track);
+        let smooth = |n: usize| {
+            let w = track.control[n];
+            let place = -track.phase[n].arg() / TAU;
+            [place - 0.5 * w, place + 0.5 * w]
+        };
+        let (mut error, mut size, mut rough) = (0.0f64, 0.0f64, 0.0f64);
+        let block = 400;
+        for start in (2000..50_000).step_by(block) {
+            let (mut naive, mut got, mut asked) =
+                (Complex64::ZERO, Complex64::ZERO, Complex64::ZERO);
+            for n in start..start + block {
+                got += track.output_v[n] / block as f64;
+                let (a, b) = (smooth(n), smooth(n + 1));
+                asked += map.output_held_v(a[1] - a[0]).0
+                    * Complex64::cis(-TAU * 0.5 * (a[0] + a[1]))
+                    / block as f64;
+                // A hundred cycles an instant.
+                for cycle in 0..100 {
+                    let part = f64::from(cycle) / 100.0;
+                    let edges =
+                        [0, 1].map(|i| ((a[i] + (b[i] - a[i]) * part) / 0.005).round() * 0.005);
+                    naive += map.output_held_v(edges[1] - edges[0]).0
+                        * Complex64::cis(-TAU * 0.5 * (edges[0] + edges[1]))
+                        / (100 * block) as f64;
+                }
+            }
+            error = error.max((got - naive).norm());
+            rough = rough.max((asked - naive).norm());
+            size = size.max(naive.norm());
         }
+        // The blocks' own ends: one instant of 400 seen with a step to its side.
+        assert!(
+            error < 0.05 * rough && error < 2e-4 * size,
+            "{error:e} {rough:e} {size}"
+        );
     }
 }

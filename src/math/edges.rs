@@ -214,11 +214,67 @@ impl<T: Response> Responses<T> {
     }
 
     /// The next sample, from 0. Every edge up to [`EDGE_LATENCY`] samples past it must have been given.
-    pub fn next(&mut self) -> Complex64 {
+    pub fn advance(&mut self) -> Complex64 {
         let slot = self.sample as usize & (RING - 1);
         self.sample += 1;
         self.tail = self.tail * self.decay + std::mem::take(&mut self.far[slot]);
         self.tail + std::mem::take(&mut self.near[slot])
+    }
+}
+
+/// What the observer sees of straight lines between samples: late by [`EDGE_LATENCY`].
+#[derive(Debug, Clone)]
+pub struct Straight {
+    /// Symmetric: the middle first.
+    taps: [f64; HALF + 2],
+    /// The last inputs twice, so that the newest stand in a row.
+    history: [Complex64; 4 * (HALF + 1)],
+    at: usize,
+}
+
+impl Default for Straight {
+    fn default() -> Self {
+        let panels = 64;
+        let step = 1.0 / f64::from(panels);
+        let tap = |place: f64| -> f64 {
+            (0..panels)
+                .flat_map(|panel| {
+                    GAUSS.map(|(node, weight)| ((f64::from(panel) + node) * step, weight))
+                })
+                .map(|(u, weight)| {
+                    let hat = weight * step * (1.0 - u);
+                    hat * (observer(place - u) + observer(place + u))
+                })
+                .sum()
+        };
+        let mut taps = [0.0; HALF + 2];
+        for (place, entry) in taps.iter_mut().enumerate() {
+            *entry = tap(place as f64);
+        }
+        let sum = taps[0] + 2.0 * taps[1..].iter().sum::<f64>();
+        Self {
+            taps: taps.map(|tap| tap / sum),
+            history: [Complex64::ZERO; 4 * (HALF + 1)],
+            at: 0,
+        }
+    }
+}
+
+impl Straight {
+    /// The sample that stands [`EDGE_LATENCY`] before `input`.
+    pub fn push(&mut self, input: Complex64) -> Complex64 {
+        let width = 2 * (HALF + 1);
+        self.history[self.at] = input;
+        self.history[self.at + width] = input;
+        self.at = (self.at + 1) % width;
+        let window = &self.history[self.at..self.at + width];
+        // The newest stands at width - 1, the middle HALF before it; the tap beyond the newest is 1e-8 and left out.
+        let middle = width - 1 - HALF;
+        let mut sum = window[middle] * self.taps[0];
+        for place in 1..=HALF {
+            sum += (window[middle - place] + window[middle + place]) * self.taps[place];
+        }
+        sum
     }
 }
 
@@ -253,9 +309,9 @@ mod tests {
                 next += 1;
             }
             if now + 1 >= HALF as i64 {
-                let step = steps.next();
+                let step = steps.advance();
                 samples.push(match &mut decays {
-                    Some(decays) => step - decays.next(),
+                    Some(decays) => step - decays.advance(),
                     None => step,
                 });
             }
@@ -293,6 +349,22 @@ mod tests {
                 // observer's ripple.
                 assert!((got - law).abs() < 1e-5, "{period} {bin}: {got:e} {law:e}");
             }
+        }
+    }
+
+    #[test]
+    fn straight_lines_lose_what_their_spectrum_says() {
+        // A tone joined by straight lines: sinc^2 of its frequency, its images beyond 0.6 removed.
+        for cycles in [0.0, 0.05, 0.2, 0.39] {
+            let mut straight = Straight::default();
+            let tone = |n: f64| Complex64::cis(TAU * cycles * n);
+            let mut last = Complex64::ZERO;
+            for n in 0..200 {
+                last = straight.push(tone(f64::from(n)));
+            }
+            let got = last / tone(199.0 - EDGE_LATENCY as f64);
+            let law = sinc(cycles).powi(2);
+            assert!((got - law).norm() < 2e-5, "{cycles}: {got} {law}");
         }
     }
 

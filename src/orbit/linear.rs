@@ -16,6 +16,7 @@ use nalgebra::{DMatrix, DVector};
 use num_complex::Complex64;
 
 use super::circuit::{Circuit, Owner};
+use super::gating::GateRun;
 use super::network::{HARMONICS, OrbitError};
 use super::schedule::{Closed, Interval};
 use super::sized::Sized_;
@@ -100,6 +101,14 @@ pub trait LinearSolver: fmt::Debug + Send + Sync {
     /// What one period does to a deviation of the state from its orbit.
     fn period_map(&self, schedule: &[Interval]) -> Result<DMatrix<f64>, OrbitError>;
     fn solve(&self, schedule: &[Interval]) -> Result<UnitOrbit, OrbitError>;
+    /// What one period does to the state while every switch stays open; `None` where no such position is known.
+    fn open_map(&self) -> Option<DMatrix<f64>>;
+    /// From rest through `periods` of the schedule, and on with every switch open; `None` where that cannot be.
+    fn gate(
+        &self,
+        schedule: &[Interval],
+        periods: [usize; 2],
+    ) -> Result<Option<GateRun>, OrbitError>;
     fn samples(&self, schedule: &[Interval], points: usize) -> Result<Vec<UnitSample>, OrbitError>;
 }
 

@@ -13,7 +13,9 @@ mod engine;
 mod equations;
 mod factors;
 mod figures;
+mod gated;
 mod gather;
+mod gating;
 mod joined;
 mod linear;
 mod network;
@@ -31,6 +33,7 @@ mod waveform;
 
 pub use balance::{Losses, Orbit, SwitchFigures};
 pub(crate) use circuit::Owner;
+pub use gating::{Decay, Gating, TransitionArea};
 pub use joined::{Compensation, Joined, Joint, JointError, JointKind};
 pub use network::{Drive, Network, NetworkError, OrbitError};
 pub(crate) use reduce::Reduced;

@@ -6,6 +6,7 @@ use nalgebra::DMatrix;
 use num_complex::Complex64;
 
 use super::circuit::Owner;
+use super::gating::GateRun;
 use super::linear::{LinearSolver, UnitContact, UnitOrbit, UnitSample};
 use super::network::{HARMONICS, OrbitError};
 use super::schedule::{Closed, Interval};
@@ -29,6 +30,18 @@ impl<const N: usize> LinearSolver for Sized_<N> {
             column[j] = 1.0;
             flows.iter().fold(column, |state, flow| flow.end(&state))[i]
         }))
+    }
+
+    fn open_map(&self) -> Option<DMatrix<f64>> {
+        self.gate_open_map()
+    }
+
+    fn gate(
+        &self,
+        schedule: &[Interval],
+        periods: [usize; 2],
+    ) -> Result<Option<GateRun>, OrbitError> {
+        self.gate_run(schedule, periods)
     }
 
     fn solve(&self, schedule: &[Interval]) -> Result<UnitOrbit, OrbitError> {

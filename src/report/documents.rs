@@ -165,6 +165,7 @@ pub fn check_document(result: &CheckResult) -> Value {
             "rate": table.lookup.rate(),
             "entries": table.counts(),
         })),
+        "gate": result.gate.as_ref().map(|train| train.figures),
         "by": result.replay.as_ref().map_or(By::Map, |facts| facts.by),
         "replay": result.replay.as_ref().map(|facts| replay_document(result, facts)),
         "warnings": result.warnings,

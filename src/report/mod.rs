@@ -16,6 +16,7 @@ pub mod design;
 pub mod documents;
 mod error;
 pub mod figures;
+pub mod gate;
 mod held;
 pub mod limits;
 pub mod measure;

@@ -1,7 +1,11 @@
 //! A scheme's settings in words.
 
 use super::text::quantity;
-use crate::drive::{Modulator, PowerModel, Rails, Scheme, WidthLaw};
+use crate::drive::{
+    AngleLaw, BandShape, BurstScheme, Combining, Modulator, MovedEdges, PowerModel, Rails,
+    Sampling, Scheme, StopBand, Updates, WidthLaw,
+};
+use crate::orbit::JointKind;
 
 /// A scheme's settings, imperfections included.
 pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
@@ -177,8 +181,9 @@ fn settings(scheme: &Scheme) -> Vec<(String, String)> {
                 ),
             ),
         ]),
+        Scheme::Burst(burst) => rows.extend(burst_rows(burst)),
         Scheme::Outphase(branches) => rows.extend([
-            own("combining", "isolated: the difference is burnt".to_owned()),
+            own("combining", combining(&branches.combining)),
             own(
                 "second branch weaker by",
                 format!("{} dB", branches.gain_mismatch_db),
@@ -201,5 +206,110 @@ fn settings(scheme: &Scheme) -> Vec<(String, String)> {
             "efficiency pi/4 times output amplitude over full amplitude".to_owned(),
         )),
     }
+    rows
+}
+
+fn combining(combining: &Combining) -> String {
+    let Combining::Joined(joined) = combining else {
+        return "isolated: the difference is burnt".to_owned();
+    };
+    let joint = &joined.joint;
+    let mut text = match joint.kind {
+        JointKind::Floating => "joined: the load floats between the branches".to_owned(),
+        JointKind::Tee => "joined: the load stands at a tee".to_owned(),
+    };
+    if let Some(compensation) = joint.compensation {
+        text.push_str(&format!(
+            ", compensated by {} (capacitor first, inductor second)",
+            quantity(compensation.reactance_ohm, "ohm", 4)
+        ));
+    }
+    text.push_str(match joined.law {
+        AngleLaw::Inverse => "; angle and phase by the inverse map",
+        AngleLaw::Amplitude => "; angle by the inverse map",
+        AngleLaw::Cosine => "; angle by the cosine",
+    });
+    text
+}
+
+fn burst_rows(burst: &BurstScheme) -> Vec<(String, String)> {
+    let own = |name: &str, value: String| (name.to_owned(), value);
+    let rate = quantity(burst.rate_hz, "Hz", 4);
+    let edges = match burst.edges {
+        MovedEdges::One => "the second edge moves",
+        MovedEdges::Two => "both edges move",
+    };
+    let updates = match burst.updates {
+        Updates::Once => "once a period",
+        Updates::Twice => "twice a period",
+    };
+    let made = match (burst.sampling, &burst.pulses) {
+        (Sampling::Natural, _) => format!("natural sampling at {rate}, {edges}"),
+        (Sampling::Uniform, _) => format!("uniform sampling at {rate} {updates}, {edges}"),
+        (Sampling::Shaped, _) => {
+            format!("noise shaping of order {} at {rate}", burst.order)
+        }
+        (Sampling::File, Some(pulses)) => format!(
+            "from {}, {} edges, from {} on",
+            pulses.file,
+            pulses.sequence.edges.len(),
+            quantity(pulses.start_s, "s", 4)
+        ),
+        (Sampling::File, None) => "from a file".to_owned(),
+    };
+    let mut rows = vec![own("pulses", made)];
+    if burst.sampling != Sampling::File {
+        rows.extend([
+            own("levels of the gate", burst.levels.to_string()),
+            own(
+                "shortest time between edges",
+                quantity(burst.shortest_s, "s", 4),
+            ),
+            own("gate's dead time", quantity(burst.delay_s, "s", 4)),
+        ]);
+    }
+    rows.push(own(
+        "grid of the edges",
+        burst
+            .grid_s
+            .map_or("none".to_owned(), |grid_s| quantity(grid_s, "s", 4)),
+    ));
+    rows.push(own(
+        "rise and fall",
+        burst
+            .transitions_s
+            .map_or("the stage's own".to_owned(), |(rise_s, fall_s)| {
+                format!(
+                    "time constants {} and {}",
+                    quantity(rise_s, "s", 4),
+                    quantity(fall_s, "s", 4)
+                )
+            }),
+    ));
+    rows.push(own(
+        "filter behind the stage",
+        burst.filter.map_or("none".to_owned(), |filter| {
+            let shape = match filter.shape {
+                BandShape::Butterworth => "Butterworth".to_owned(),
+                BandShape::Chebyshev { ripple_db } => {
+                    format!("Chebyshev with {ripple_db} dB of ripple")
+                }
+            };
+            let rest = match filter.stop_band {
+                StopBand::Absorbed => "what does not pass is burnt",
+                StopBand::Reflected => "what does not pass returns and is not drawn",
+            };
+            format!(
+                "{shape}, order {}, {} wide, {} dB lost; {rest}",
+                filter.order,
+                quantity(filter.bandwidth_hz, "Hz", 4),
+                filter.loss_db
+            )
+        }),
+    ));
+    rows.push(own(
+        "phase path's dead time",
+        quantity(burst.phase_path.delay_s, "s", 4),
+    ));
     rows
 }

@@ -4,10 +4,10 @@ use std::io::{ErrorKind, Read, Seek, SeekFrom};
 
 use super::blocks::{Blocks, Encoding, Layout};
 use super::format::{Format, FormatOptions};
-use super::pulse::{PcmEdges, PulseSource, TextEdges};
+use super::pulse::{Edge, MOST_EDGES, PcmEdges, PulseList, PulseSource, TextEdges};
 use super::text::{Columns, TextSamples};
 use super::wav::Channels;
-use super::{SignalError, Source, npy, sigmf, wav};
+use super::{SignalError, Source, npy, sigmf, vcd, wav};
 use crate::input::{Document, Files, ReadSeek};
 
 /// Opens the I/Q signal `name`. Its header is read and checked now, its samples as they are asked for.
@@ -77,6 +77,114 @@ pub fn open_pulses(
             allowed: "a mono WAV file or a CSV file with time,level".to_owned(),
         }),
     }
+}
+
+/// How a pulse sequence is written.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub enum PulseFormat {
+    /// Mono WAV: the level at every sample.
+    Wav,
+    /// Text with the columns `time,level`.
+    Csv,
+    /// A value change dump (IEEE 1364).
+    Vcd,
+}
+
+/// What is stated about a pulse sequence outside of its file.
+#[derive(Debug, Clone, PartialEq, Default)]
+pub struct PulseOptions {
+    /// The format; by the file's extension where absent.
+    pub format: Option<PulseFormat>,
+    /// The signal of a value change dump: its path, or the end of it.
+    pub signal: Option<String>,
+    /// The number in the file that stands for 1.0.
+    pub full_scale: Option<f64>,
+    /// Levels from here on count as 1, all others as 0.
+    pub threshold: Option<f64>,
+}
+
+/// Reads the whole pulse sequence `name` and checks it: increasing times, levels from 0 to 1.
+///
+/// # Errors
+/// As [`open`]; a level out of range, more than [`MOST_EDGES`] edges.
+pub fn read_edges(
+    files: &dyn Files,
+    name: &str,
+    options: &PulseOptions,
+) -> Result<PulseList, SignalError> {
+    let file = files.display(name);
+    let named_vcd = name.to_lowercase().ends_with(".vcd");
+    let format = match options.format {
+        None if named_vcd => Some(PulseFormat::Vcd),
+        format => format,
+    };
+    let mut list = if format == Some(PulseFormat::Vcd) {
+        let reader = files.open(name).map_err(|cause| SignalError::Open {
+            file: file.clone(),
+            cause,
+        })?;
+        vcd::read(reader, &file, options.signal.as_deref(), options.full_scale)?
+    } else {
+        if let Some(signal) = &options.signal {
+            return Err(SignalError::Malformed {
+                file,
+                given: format!("signal \"{signal}\" of a file with one sequence"),
+                allowed: "a signal's name beside a .vcd file only".to_owned(),
+            });
+        }
+        let options = FormatOptions {
+            format: format.map(|format| match format {
+                PulseFormat::Wav => Format::Wav,
+                _ => Format::Csv,
+            }),
+            rate_hz: None,
+            full_scale: options.full_scale,
+        };
+        all_edges(&mut *open_pulses(files, name, &options)?, &file)?
+    };
+    if let Some(threshold) = options.threshold {
+        for edge in &mut list.edges {
+            edge.level = f64::from(u8::from(edge.level >= threshold));
+        }
+        list.edges
+            .dedup_by(|later, earlier| later.level == earlier.level);
+    }
+    let outside = |edge: &Edge| !(0.0..=1.0).contains(&edge.level);
+    if let Some(at) = list.edges.iter().position(outside) {
+        let Edge { time_s, level } = list.edges[at];
+        return Err(SignalError::Malformed {
+            file,
+            given: format!("a level of {level} at {time_s} s (edge {at}, counted from 0)"),
+            allowed: "levels from 0 (off) to 1 (full); state full_scale or threshold".to_owned(),
+        });
+    }
+    Ok(list)
+}
+
+fn all_edges(source: &mut dyn PulseSource, file: &str) -> Result<PulseList, SignalError> {
+    let mut edges = Vec::new();
+    let mut block = [Edge {
+        time_s: 0.0,
+        level: 0.0,
+    }; 1024];
+    loop {
+        let count = source.read(&mut block)?;
+        if count == 0 {
+            break;
+        }
+        if edges.len() + count > MOST_EDGES {
+            return Err(SignalError::Malformed {
+                file: file.to_owned(),
+                given: format!("more than {MOST_EDGES} edges"),
+                allowed: "a shorter sequence, or a coarser one".to_owned(),
+            });
+        }
+        edges.extend_from_slice(&block[..count]);
+    }
+    Ok(PulseList {
+        edges,
+        end_s: source.end_s(),
+    })
 }
 
 /// Rates beyond these are slips of a prefix.

@@ -13,6 +13,18 @@ pub struct Edge {
     pub level: f64,
 }
 
+/// Edges past this are not held in memory: 128 MB.
+pub const MOST_EDGES: usize = 1 << 23;
+
+/// A whole pulse sequence.
+#[derive(Debug, Clone, PartialEq)]
+pub struct PulseList {
+    /// Times increase strictly.
+    pub edges: Vec<Edge>,
+    /// When it ends, s, where the file says so.
+    pub end_s: Option<f64>,
+}
+
 /// A stream of edges that can be read again from its start. Times increase strictly.
 pub trait PulseSource: Send {
     /// Fills `block` from its front and returns how many edges were written; 0 only at the end.

@@ -1,7 +1,8 @@
 //! Efficiency of a scheme at constant output, from full output down.
 
 use super::result::CheckResult;
-use crate::drive::Scheme;
+use crate::drive::{BurstScheme, Scheme, StopBand};
+use crate::map::Map;
 use crate::units::db;
 
 /// Points of `levels`, which has steps.
@@ -39,6 +40,7 @@ pub fn backoff(result: &CheckResult) -> Vec<BackoffPoint> {
                 Some(point(output_v, rest.supply_v, supply_a, driver_w))
             })
             .collect(),
+        Scheme::Burst(burst) => bursts(burst, map),
         _ => map
             .points()
             .iter()
@@ -56,4 +58,35 @@ pub fn backoff(result: &CheckResult) -> Vec<BackoffPoint> {
     points.retain(|point| point.output_db.is_finite() && point.efficiency.is_finite());
     points.sort_by(|a, b| a.output_db.total_cmp(&b.output_db));
     points
+}
+/// Bursts at a constant magnitude: the carrier that they leave, over what the pulses draw. Transitions of ramps are
+/// counted, of all else not.
+fn bursts(burst: &BurstScheme, map: &Map) -> Vec<BackoffPoint> {
+    let end = map.turns_at().unwrap_or(map.domain().1);
+    let Some(supply_a) = map.supply_held_a(end) else {
+        return Vec::new();
+    };
+    let full_w = map.output_held_v(end).0.norm_sqr() / (2.0 * map.load_ohm());
+    let drawn_w = map.own_supply_v() * supply_a + map.driver_held_w(end).unwrap_or(0.0);
+    let gating = burst.gating(map.gating());
+    let passed = burst
+        .filter
+        .map_or(1.0, |filter| 10f64.powf(-filter.loss_db / 10.0));
+    let returned = burst
+        .filter
+        .is_some_and(|filter| filter.stop_band == StopBand::Reflected);
+    (1..=STEPS)
+        .map(|step| {
+            let part = step as f64 / STEPS as f64;
+            let turned_w = match part < 1.0 {
+                true => burst.rate_hz * (gating.rise_j + gating.fall_j),
+                false => 0.0,
+            };
+            let share = if returned { part * part } else { part };
+            BackoffPoint {
+                output_db: db(part * part),
+                efficiency: passed * part * part * full_w / (share * drawn_w + turned_w),
+            }
+        })
+        .collect()
 }

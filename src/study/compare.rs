@@ -108,8 +108,8 @@ pub fn compare(
     compare_by(studies, By::Map, threads, open, progress)
 }
 
-/// As [`compare`], with every stage replayed where `by` says so. The baseline `class_b` has no stage and stays by map,
-/// which its warnings say.
+/// As [`compare`], with every stage replayed where `by` says so. The baseline `class_b` has no stage, and bursts are
+/// not replayed: both stay by map, which their warnings say.
 ///
 /// # Errors
 /// As [`compare`].
@@ -165,12 +165,15 @@ pub fn compare_by(
     let numbered: Vec<_> = jobs.iter().enumerate().collect();
     let results = in_order(threads, &numbered, |(at, (entry, bench, front))| {
         let mut source = open(entry.scheme)?;
-        let baseline = matches!(entry.study.scheme, Scheme::ClassB(_));
-        let own = if baseline { By::Map } else { by };
+        let own = match entry.study.scheme {
+            Scheme::ClassB(_) | Scheme::Burst(_) => By::Map,
+            _ => by,
+        };
         let mut tell = |part| told(*at, part);
         let mut result = bench.check_by(front.clone(), &mut *source, own, 1, &mut tell)?;
         if own != by {
-            result.warnings.push(Warning::OnlyByMap);
+            let scheme = entry.study.scheme.name();
+            result.warnings.push(Warning::OnlyByMap { scheme });
         }
         Ok(result)
     })

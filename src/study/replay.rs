@@ -181,6 +181,7 @@ pub(super) fn replayed(
         control_density: run.control_density,
         symbols: run.symbols,
         notch: run.notch,
+        gate: run.gate,
         replay: Some(Box::new(facts)),
         warnings: Vec::new(),
         study: by_map.study,

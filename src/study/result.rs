@@ -1,10 +1,11 @@
 //! What a check found.
 
-use crate::drive::{RateReason, Scheme};
+use crate::drive::{GateFigures, RateReason, Scheme};
 use crate::map::Map;
 use crate::metrics::{AdjacentChannel, EnvelopeFigures, Spectrum, SymbolFigures};
 use crate::orbit::{Orbit, Waveform};
 use crate::predistort::Table;
+use crate::signal::Edge;
 use crate::verdict::{Judgement, MaskMargin, Stress};
 
 use super::load::Study;
@@ -50,10 +51,26 @@ pub struct CheckResult {
     pub symbols: Option<SymbolFigures>,
     /// A stretch of time around the deepest notch.
     pub notch: Notch,
+    /// The gate's pulses, of a scheme that gates the stage.
+    pub gate: Option<GateTrain>,
     /// The replay that gave all numbers, and what the map says in its place; absent where the map gave them.
     pub replay: Option<Box<ReplayFacts>>,
     /// What limits how far this can be trusted.
     pub warnings: Vec<Warning>,
+}
+
+/// The pulses that gated the stage.
+#[derive(Debug, Clone, PartialEq)]
+pub struct GateTrain {
+    /// Figures of all of them.
+    pub figures: GateFigures,
+    /// The edges, times from the signal's first sample; only the first [`GateTrain::MOST`] of them.
+    pub edges: Vec<Edge>,
+}
+
+impl GateTrain {
+    /// Edges past this number are counted but not kept: 64 MB.
+    pub const MOST: usize = 4 << 20;
 }
 
 /// A stage at full supply and width.

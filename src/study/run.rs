@@ -10,15 +10,15 @@ use super::collect::Collected;
 use super::error::StudyError;
 use super::kept::{Kept, MOST, NotchWindow};
 use super::load::Study;
-use super::result::Notch;
-use crate::drive::{Correction, Scheme, Track};
+use super::result::{GateTrain, Notch};
+use crate::drive::{Correction, GateFigures, Scheme, Track};
 use crate::map::Map;
 use crate::metrics::{
     Alignment, AlignmentMeter, EnvelopeFigures, EnvelopeMeter, ErrorFigures, ErrorMeter, Hold,
     Spectrum, SpectrumMeter, SpectrumPlan, SymbolFigures,
 };
 use crate::orbit::Network;
-use crate::signal::{Oversampled, Source};
+use crate::signal::{Edge, Oversampled, Source};
 use crate::transmit::{Energy, MapTransmitter, ReplayRequest, ReplayTransmitter};
 use crate::verdict::{Stress, Wanted};
 
@@ -83,6 +83,9 @@ struct Passed {
     held: u64,
     stress: Option<Stress>,
     cycles: u64,
+    gate: Option<GateFigures>,
+    /// The gate's edges from the signal's first sample to its last; only the first [`GateTrain::MOST`] of them.
+    edges: Vec<Edge>,
 }
 
 /// What came out.
@@ -104,6 +107,8 @@ pub struct Run {
     pub stress: Option<Stress>,
     pub control_density: Vec<f64>,
     pub notch: Notch,
+    /// The pulses, of a scheme that gates the stage.
+    pub gate: Option<GateTrain>,
     /// Errors of symbols, where the study states the signal's format.
     pub symbols: Option<SymbolFigures>,
     /// The replay against the map, where there was one.
@@ -197,8 +202,10 @@ impl Chain<'_> {
         let (mut fresh, mut track) = (Track::default(), Track::default());
         let (mut output_v, mut by_map_v) = (Vec::with_capacity(BLOCK), Vec::new());
         let mut first = 0u64;
+        let mut edges: Vec<Edge> = Vec::new();
         let mut ended = false;
-        while !ended && first < end {
+        // A gate is told to its end, though what it does there is not measured.
+        while !ended && (first < end || !edges.is_empty()) {
             let count = oversampled.read(&mut samples)?;
             ended = count == 0;
             fresh.clear();
@@ -206,6 +213,8 @@ impl Chain<'_> {
             output_v.clear();
             by_map_v.clear();
             drive.push(&samples[..count], &mut fresh);
+            let room = GateTrain::MOST - edges.len();
+            edges.extend(fresh.gate.iter().take(room));
             match &mut transmitter {
                 Transmitter::Map(_) => {
                     std::mem::swap(&mut fresh, &mut track);
@@ -257,6 +266,8 @@ impl Chain<'_> {
             held,
             stress: stress.map(|(peak_v, peak_a)| Stress { peak_v, peak_a }),
             cycles,
+            gate: drive.gate_figures(),
+            edges,
         })
     }
 
@@ -349,6 +360,14 @@ impl Chain<'_> {
             }
             Ok(())
         })?;
+        let Passed {
+            energy,
+            held,
+            stress,
+            cycles,
+            gate,
+            edges,
+        } = passed;
         let output_envelope = output_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let wanted_envelope = wanted_envelope.finish().ok_or(StudyError::SilentSignal)?;
         let alignment = alignment.finish()?;
@@ -434,19 +453,20 @@ impl Chain<'_> {
             wanted_envelope,
             alignment,
             errors: errors.finish()?,
-            energy: passed.energy,
-            held: passed.held as f64 / total.max(1) as f64,
-            stress: passed.stress,
+            energy,
+            held: held as f64 / total.max(1) as f64,
+            stress,
             control_density: density
                 .iter()
                 .map(|&n| n as f64 / total.max(1) as f64)
                 .collect(),
             notch,
+            gate: gate.map(|figures| GateTrain { figures, edges }),
             against_map: match (map_alignment, map_errors) {
                 (Some(alignment), Some(meter)) => Some(AgainstMap {
                     alignment,
                     errors: meter.finish()?,
-                    cycles: passed.cycles,
+                    cycles,
                 }),
                 _ => None,
             },

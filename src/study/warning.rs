@@ -54,8 +54,11 @@ pub enum Warning {
     },
     /// A replayed stage whose choke is ideal.
     IdealChoke,
-    /// A scheme without a stage among replayed ones.
-    OnlyByMap,
+    /// A scheme that is not replayed among others that are.
+    OnlyByMap {
+        /// Its name.
+        scheme: &'static str,
+    },
     /// A map from a file knows neither stress nor memory.
     MapFromFile {
         /// What it cannot answer.
@@ -74,6 +77,91 @@ pub enum Warning {
     WidthTurns {
         /// From this width on it falls.
         width: f64,
+    },
+    /// Several switches, one of which goes beyond a rail.
+    BeyondRails {
+        /// Lowest voltage across a switch, V.
+        lowest_v: f64,
+    },
+    /// Joined branches neither add up at angle 0 nor cancel at a quarter turn.
+    AngleReach {
+        /// The angle of full output, degrees.
+        full_deg: f64,
+        /// Output at a quarter turn, dB below full.
+        lowest_db: f64,
+    },
+    /// The sampled band reaches past the carrier.
+    WiderThanCarrier {
+        /// Farthest offset that is sampled, Hz.
+        span_hz: f64,
+        /// Hz
+        carrier_hz: f64,
+    },
+    /// The deepest notch lies below the narrowest pulse that the map knows.
+    NotchBelowMap {
+        /// The notch, as a part of full output.
+        notch: f64,
+        /// The lowest output of the map, likewise.
+        lowest: f64,
+    },
+    /// Ripple that the stage does not follow at once.
+    RippleFasterThanStage {
+        /// Of the ripple, Hz.
+        frequency_hz: f64,
+        /// Settling time of the stage, s.
+        settling_s: f64,
+    },
+    /// Rails that change faster than the stage settles.
+    RailsFasterThanStage {
+        /// Time to 1 % of a rail, s.
+        rail_s: f64,
+        /// Settling time of the stage, s.
+        settling_s: f64,
+    },
+    /// Branches whose phase moves faster than the stage follows at once.
+    BranchesFasterThanStage {
+        /// Settling time of the stage, s.
+        settling_s: f64,
+        /// Time in which the branches move, s.
+        branch_s: f64,
+    },
+    /// Branches too unequal to draw the same.
+    UnequalBranches {
+        /// dB
+        gain_db: f64,
+    },
+    /// Edges of the gate that the map cannot answer for.
+    HurriedGate {
+        /// Part of all edges.
+        fraction: f64,
+        /// Shortest time between two of them, s.
+        shortest_s: f64,
+        /// Until 1 % is left of a transition, s.
+        transition_s: f64,
+    },
+    /// The stage's transitions are more than one or two modes.
+    PoorTransition {
+        /// Part left, RMS.
+        left: f64,
+    },
+    /// The error of noise shaping ran away.
+    OverloadedShaping {
+        /// Ticks at which it was cut.
+        ticks: u64,
+    },
+    /// A pulse sequence does not last as long as the signal.
+    PulsesOfOtherLength {
+        /// When it ends, s.
+        end_s: f64,
+        /// When the signal ends, s.
+        signal_s: f64,
+    },
+    /// The lines of the bursts lie outside what is sampled.
+    BurstsOutOfSight {
+        /// Rate of the bursts, Hz.
+        rate_hz: f64,
+        /// Highest offset that is seen, Hz.
+        seen_hz: f64,
     },
     /// Few averages.
     FewAverages {
@@ -120,7 +208,7 @@ impl fmt::Display for Warning {
                 signal_s,
             } => write!(
                 f,
-                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result",
+                "the stage settles in {} while the signal changes every {}: the map assumes that it settles at once, so memory is missing from this result; a linear stage has it with --by replay",
                 show(*settling_s, "s", 3),
                 show(*signal_s, "s", 3)
             ),
@@ -148,9 +236,10 @@ impl fmt::Display for Warning {
             Self::IdealChoke => f.write_str(
                 "the feed is an ideal choke: its current is taken to follow the supply at once, so that the memory of a real choke is missing. Give the feed an `inductance` to see it",
             ),
-            Self::OnlyByMap => {
-                f.write_str("an ideal linear stage has nothing to replay: its numbers are by map")
-            }
+            Self::OnlyByMap { scheme } => write!(
+                f,
+                "the scheme {scheme} is not replayed: its numbers are by map"
+            ),
             Self::MapFromFile { missing } => write!(
                 f,
                 "the map came from a file: {} cannot be answered from it",
@@ -170,6 +259,90 @@ impl fmt::Display for Warning {
             Self::WidthTurns { width } => write!(
                 f,
                 "the output falls past a width of {width:.4}: full output is taken there, wider pulses are not used"
+            ),
+            Self::BeyondRails { lowest_v } => write!(
+                f,
+                "a switch sees down to {} across it: a real one's body diode would conduct and clamp it, which this model leaves out",
+                show(*lowest_v, "V", 3)
+            ),
+            Self::AngleReach { full_deg, lowest_db } => write!(
+                f,
+                "the joined branches give most at {full_deg:.1} deg, where full output is taken, and {lowest_db:.1} dB of it at 90 deg, the least that is asked of them: magnitudes below that are held there"
+            ),
+            Self::WiderThanCarrier {
+                span_hz,
+                carrier_hz,
+            } => write!(
+                f,
+                "sampled out to {} from a carrier of {}: a complex baseband is no model past half of the carrier; far segments are uncertain",
+                show(*span_hz, "Hz", 4),
+                show(*carrier_hz, "Hz", 4)
+            ),
+            Self::NotchBelowMap { notch, lowest } => write!(
+                f,
+                "the deepest notch lies {:.1} dB below full output, the narrowest pulse of the map {:.1} dB: below it the output is held",
+                -20.0 * notch.max(1e-30).log10(),
+                -20.0 * lowest.log10()
+            ),
+            Self::RippleFasterThanStage {
+                frequency_hz,
+                settling_s,
+            } => write!(
+                f,
+                "the stage settles in {}, too slowly to follow a ripple of {} at once: its sidebands are overstated by map; use --by replay",
+                show(*settling_s, "s", 3),
+                show(*frequency_hz, "Hz", 4)
+            ),
+            Self::RailsFasterThanStage { rail_s, settling_s } => write!(
+                f,
+                "a rail settles in {} and the stage itself in {}: by map the stage follows at once, so what its network does to the steps is missing; use --by replay",
+                show(*rail_s, "s", 3),
+                show(*settling_s, "s", 3)
+            ),
+            Self::BranchesFasterThanStage {
+                settling_s,
+                branch_s,
+            } => write!(
+                f,
+                "the branches move within about {} and a stage settles in {}: the map assumes that it follows at once; use --by replay",
+                show(*branch_s, "s", 3),
+                show(*settling_s, "s", 3)
+            ),
+            Self::UnequalBranches { gain_db } => write!(
+                f,
+                "branches that differ by {gain_db:.2} dB: the weaker one is taken to draw as much as the other, so that the efficiency is understated"
+            ),
+            Self::HurriedGate {
+                fraction,
+                shortest_s,
+                transition_s,
+            } => write!(
+                f,
+                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate; gated stages are not replayed yet",
+                100.0 * fraction,
+                show(*transition_s, "s", 3),
+                show(*shortest_s, "s", 3)
+            ),
+            Self::PoorTransition { left } => write!(
+                f,
+                "one or two modes leave {} of the stage's rise or fall (RMS): its transitions are known to that only",
+                show(100.0 * left, "%", 2)
+            ),
+            Self::OverloadedShaping { ticks } => write!(
+                f,
+                "noise shaping was overloaded at {ticks} ticks, where its error was cut: lower the level, take more levels or the first order"
+            ),
+            Self::PulsesOfOtherLength { end_s, signal_s } => write!(
+                f,
+                "the pulse sequence ends at {}, the signal at {}: beyond its end the gate keeps its last level",
+                show(*end_s, "s", 5),
+                show(*signal_s, "s", 5)
+            ),
+            Self::BurstsOutOfSight { rate_hz, seen_hz } => write!(
+                f,
+                "no filter stands behind the stage, so that the lines of the bursts, multiples of {}, leave it: those up to {} are seen, and power and margins move with every line that finer sampling shows",
+                show(*rate_hz, "Hz", 4),
+                show(*seen_hz, "Hz", 4)
             ),
             Self::FewAverages { segments } => write!(
                 f,

@@ -2,7 +2,7 @@
 
 use num_complex::Complex64;
 
-use crate::drive::{DrawnPower, Modulator, Track};
+use crate::drive::{Drawn, DrawnPower, Modulator, Track};
 use crate::map::{Control, Map};
 
 /// Where the energy went, summed over samples.
@@ -14,6 +14,8 @@ pub struct Energy {
     pub output_w: f64,
     /// Sum of powers that stages deliver into a combiner, W; the output's own without one.
     pub generated_w: f64,
+    /// Sum of powers that enter a filter behind the stage, W; the output's own without one.
+    pub filter_w: f64,
     /// Sum of powers that the stage draws from its supply, W.
     pub stage_w: f64,
     /// Sum of powers that the modulator draws, W.
@@ -106,6 +108,16 @@ impl<'a> MapTransmitter<'a> {
         self.energy.samples += counted.len() as u64;
         let mut parts = &track.parts[..];
         for (at, (&control, &phase)) in track.control.iter().zip(&track.phase).enumerate() {
+            if let Some(&seen_v) = track.output_v.get(at) {
+                let mut working = self.working(control, phase, track.supply_v.get(at).copied());
+                working.output_v = seen_v;
+                output_v.push(seen_v);
+                match track.drawn.get(at) {
+                    Some(drawn) => self.count_drawn(control, seen_v, drawn, counted.contains(&at)),
+                    None => self.count(control, &working, 1.0, counted.contains(&at)),
+                }
+                continue;
+            }
             let count = parts.iter().take_while(|part| part.at == at).count();
             let (now, later) = parts.split_at(count);
             parts = later;
@@ -125,6 +137,22 @@ impl<'a> MapTransmitter<'a> {
         }
     }
 
+    /// Of a scheme that accounts for the powers drawn itself.
+    fn count_drawn(&mut self, control: f64, output_v: Complex64, drawn: &Drawn, counted: bool) {
+        if !counted {
+            return;
+        }
+        self.highest_control = self.highest_control.max(control);
+        let output_w = output_v.norm_sqr() / (2.0 * self.map.load_ohm());
+        let energy = &mut self.energy;
+        energy.output_w += output_w;
+        energy.generated_w += drawn.delivered_w;
+        energy.filter_w += drawn.delivered_w;
+        energy.stage_w += drawn.stage_w;
+        energy.driver_w += drawn.driver_w;
+        energy.modulator_w += drawn.stage_w;
+    }
+
     fn count(&mut self, control: f64, working: &Working, weight: f64, counted: bool) {
         let modulator_w = self.drawn.push(working.supply_v, working.supply_a);
         if !counted {
@@ -136,6 +164,7 @@ impl<'a> MapTransmitter<'a> {
         let energy = &mut self.energy;
         energy.output_w += weight * output_w;
         energy.generated_w += weight * self.map.generated_w().unwrap_or(output_w);
+        energy.filter_w += weight * output_w;
         energy.stage_w += weight * working.supply_v * working.supply_a;
         energy.driver_w += weight * self.map.driver_held_w(control).unwrap_or(0.0);
         energy.modulator_w += weight * modulator_w;

@@ -1,5 +1,6 @@
 //! Speed of the replay of a four-state stage, supply and phase moving in every carrier cycle:
-//! `cargo bench --bench replay`. With python3 and SciPy at hand, the same stage by SciPy in the same run.
+//! `cargo bench --bench replay`. Times are those that the thread was on a core, where the system tells (Linux), so that
+//! other work on the machine counts little. With python3 and SciPy at hand, the same stage by SciPy in the same run.
 
 use std::hint::black_box;
 use std::process::Command;
@@ -60,7 +61,7 @@ fn main() {
     match scipy {
         Ok(output) if output.status.success() => {
             let text = String::from_utf8_lossy(&output.stdout);
-            println!("SciPy, envelope:");
+            println!("SciPy, envelope, time on a core:");
             for line in text.lines() {
                 let rate = line.split_whitespace().rev().nth(1);
                 let rate = rate.and_then(|rate| rate.parse::<f64>().ok());
@@ -75,7 +76,7 @@ fn main() {
 /// Seconds for all cycles, supply and phase moving in each.
 fn round(network: &Network, drive: &Drive, setup: Setup) -> f64 {
     let mut replay = Replay::new(network, drive, setup).expect("a replay");
-    let start = Instant::now();
+    let start = Clock::start();
     let (mut supply_v, mut phase_rad) = (1.0, 0.0);
     for n in 0..CYCLES {
         let step = f64::from(n % 1000) - 499.5;
@@ -88,5 +89,33 @@ fn round(network: &Network, drive: &Drive, setup: Setup) -> f64 {
         supply_v += rise;
         phase_rad += turn;
     }
-    start.elapsed().as_secs_f64()
+    start.seconds()
+}
+
+/// Time of this thread on a core, or of the wall.
+struct Clock {
+    wall: Instant,
+    core: Option<f64>,
+}
+
+impl Clock {
+    fn start() -> Self {
+        Self {
+            wall: Instant::now(),
+            core: core_seconds(),
+        }
+    }
+
+    fn seconds(&self) -> f64 {
+        let core = core_seconds()
+            .zip(self.core)
+            .map(|(end, start)| end - start);
+        core.unwrap_or(self.wall.elapsed().as_secs_f64())
+    }
+}
+
+fn core_seconds() -> Option<f64> {
+    let text = std::fs::read_to_string("/proc/thread-self/schedstat").ok()?;
+    let nanoseconds: f64 = text.split_whitespace().next()?.parse().ok()?;
+    Some(1e-9 * nanoseconds)
 }

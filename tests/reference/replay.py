@@ -84,9 +84,9 @@ def run(rtol, cycles, full=True):
 def main():
     if "--time" in sys.argv:
         for rtol in (1e-6, 1e-11):
-            start = time.perf_counter()
+            start = time.process_time()
             run(rtol, 40, full=False)
-            print(f"rtol {rtol:.0e}: {40 / (time.perf_counter() - start):.1f} cycles/s")
+            print(f"rtol {rtol:.0e}: {40 / (time.process_time() - start):.1f} cycles/s")
         return 0
     found = run(1e-11, CYCLES)
     if "--check" in sys.argv:

@@ -2,8 +2,7 @@
 //!
 //! The track is read between its instants through a sinc of 24 taps under Kaiser's window (80 dB, right up to 0.39 of
 //! the track's rate), at every border of a cycle, or, where many cycles fall into an instant, sixteen times an instant
-//! and on the straight line between. Rails that are switched are taken on the straight line from instant to instant:
-//! a sinc would ring at their steps.
+//! and on the straight line between.
 
 use std::collections::VecDeque;
 use std::f64::consts::TAU;
@@ -23,15 +22,6 @@ const ATTENUATION_DB: f64 = 80.0;
 
 /// Readings of the track to one of its instants.
 const READINGS: f64 = 16.0;
-
-/// How a track runs between its instants.
-#[derive(Debug, Clone, Copy, PartialEq, Eq)]
-pub enum Between {
-    /// Band-limited.
-    BandLimited,
-    /// On straight lines.
-    Straight,
-}
 
 /// Numbers at the border of a cycle.
 #[derive(Debug, Clone, Copy, PartialEq, Default)]
@@ -57,23 +47,18 @@ pub struct Controls {
 
 impl Controls {
     /// Of a track at `rate_hz` on a carrier at `carrier_hz`, the first border at the track's first instant.
-    pub fn new(carrier_hz: f64, rate_hz: f64, between: Between) -> Self {
+    pub fn new(carrier_hz: f64, rate_hz: f64) -> Self {
         let ratio = carrier_hz / rate_hz;
         let cycles = (ratio / READINGS).floor().max(1.0) as usize;
-        let kernel = Arc::new(match between {
-            Between::Straight => Kernel::new(1, 0.5, |t| (1.0 - t.abs()).max(0.0)),
-            Between::BandLimited => {
-                let beta = kaiser_beta(ATTENUATION_DB);
-                let (floor, half) = (bessel_i0(beta), HALF as f64);
-                Kernel::new(HALF, 0.5, move |t| {
-                    let part = t / half;
-                    if part.abs() >= 1.0 {
-                        return 0.0;
-                    }
-                    sinc(t) * bessel_i0(beta * (1.0 - part * part).sqrt()) / floor
-                })
+        let beta = kaiser_beta(ATTENUATION_DB);
+        let (floor, half) = (bessel_i0(beta), HALF as f64);
+        let kernel = Arc::new(Kernel::new(HALF, 0.5, move |t| {
+            let part = t / half;
+            if part.abs() >= 1.0 {
+                return 0.0;
             }
-        });
+            sinc(t) * bessel_i0(beta * (1.0 - part * part).sqrt()) / floor
+        }));
         let step = cycles as f64 / ratio;
         Self {
             controls: Sampler::new(kernel.clone(), 0.0, step),
@@ -160,7 +145,7 @@ mod tests {
         let phasors: Vec<_> = instants.iter().map(|&t| Complex64::cis(phase(t))).collect();
         for ratio in [0.61, 3.68, 51.7] {
             let mut borders = Vec::new();
-            let mut reader = Controls::new(ratio, 1.0, Between::BandLimited);
+            let mut reader = Controls::new(ratio, 1.0);
             for (a, b) in controls.chunks(77).zip(phasors.chunks(77)) {
                 reader.push(a, b, |start, end| borders.push((start, end)));
             }
@@ -181,18 +166,5 @@ mod tests {
                 assert!((off - off.round()).abs() < 2e-4, "{ratio} {n}");
             }
         }
-    }
-
-    #[test]
-    fn straight_lines_do_not_ring_at_a_step() {
-        let controls: Vec<_> = (0..100)
-            .map(|n| Complex64::new(if n < 50 { 1.0 } else { 2.0 }, 0.0))
-            .collect();
-        let phasors = vec![Complex64::ONE; 100];
-        let mut reader = Controls::new(7.0, 1.0, Between::Straight);
-        let mut all = Vec::new();
-        reader.push(&controls, &phasors, |start, _| all.push(start.control[0]));
-        assert!(all.iter().all(|x| (1.0 - 1e-9..=2.0 + 1e-9).contains(x)));
-        assert!((all[49 * 7 - 7] - 1.0).abs() < 1e-9 && (all[50 * 7 + 7] - 2.0).abs() < 1e-9);
     }
 }

@@ -3,6 +3,7 @@
 
 mod controls;
 mod envelope;
+mod rails;
 
 use std::collections::VecDeque;
 use std::f64::consts::TAU;
@@ -14,11 +15,12 @@ use super::by_map::Energy;
 use super::replay::{
     Account, Cycle, CycleOutput, Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all,
 };
-use crate::drive::{Scheme, Track};
+use crate::drive::{Combining, DrawnPower, Scheme, Track, TrackPart};
 use crate::map::Map;
 use crate::orbit::{Drive, Network};
-use controls::{Between, Border, Controls};
+use controls::{Border, Controls};
 use envelope::Envelope;
+use rails::Rails;
 
 /// Cycles that are replayed at a time: some MB.
 const STRETCH: usize = 1 << 16;
@@ -54,10 +56,17 @@ enum Moves {
     Branches,
 }
 
+/// How controls are read between the instants of the track.
+#[derive(Debug, Clone)]
+enum Reader {
+    BandLimited(Controls),
+    Rails(Rails),
+}
+
 /// One stage with its controls and what it gave.
 #[derive(Debug, Clone)]
 struct Branch {
-    controls: Controls,
+    controls: Reader,
     replay: Replay,
     cycles: Vec<Cycle>,
     outputs: Vec<CycleOutput>,
@@ -79,17 +88,35 @@ pub struct ReplayTransmitter<'a> {
     started: bool,
     /// Instants that wait for their output.
     waiting: VecDeque<Row>,
+    parts: VecDeque<TrackPart>,
     taken: u64,
     given: u64,
     energy: Energy,
-    /// From the supply in counted cycles, and how many those are.
-    supply_j: f64,
+    /// Sums of supply and output powers over counted cycles, and how many those are.
+    supply_w: f64,
+    generated_w: f64,
     counted_cycles: u64,
+    /// What the modulator draws: its model, the instant that is being summed up, the means of the one before.
+    drawn: DrawnPower,
+    drawn_at: u64,
+    instant: Instant,
+    working: (f64, f64),
+    modulator_w: f64,
+    drawn_instants: u64,
     highest_control: f64,
     scratch: [Vec<Complex64>; 3],
     values: Vec<Complex64>,
 }
 
+/// Sums over the cycles of one instant.
+#[derive(Debug, Clone, Copy, Default)]
+struct Instant {
+    cycles: f64,
+    supply_v: f64,
+    supply_w: f64,
+}
+
+/// An instant of the track that waits for its output.
 #[derive(Debug, Clone, Copy)]
 struct Row {
     wanted: Complex64,
@@ -97,6 +124,8 @@ struct Row {
     control: f64,
     phase: Complex64,
     supply_v: Option<f64>,
+    /// How many parts it has, which wait in a row of their own.
+    parts: usize,
 }
 
 impl<'a> ReplayTransmitter<'a> {
@@ -109,11 +138,16 @@ impl<'a> ReplayTransmitter<'a> {
         let carrier_hz = stage.frequency_hz;
         let full = Drive::new(&stage.driver, stage.driver.duty);
         let mut replay = Replay::new(request.network, &full, Setup::of(Account::Supply))?;
-        let (moves, between) = match request.scheme {
-            Scheme::Supply(_) => (Moves::Supply, Between::BandLimited),
-            Scheme::Width(_) => (Moves::Width, Between::BandLimited),
-            Scheme::Levels(_) => (Moves::Width, Between::Straight),
-            Scheme::Outphase(_) => (Moves::Branches, Between::BandLimited),
+        let moves = match request.scheme {
+            Scheme::Supply(_) => Moves::Supply,
+            Scheme::Width(_) | Scheme::Levels(_) => Moves::Width,
+            // Each branch is replayed by itself, which joined ones are not.
+            Scheme::Outphase(scheme) if matches!(scheme.combining, Combining::Joined(_)) => {
+                return Err(ReplayError::Scheme {
+                    scheme: "outphase, joined,",
+                });
+            }
+            Scheme::Outphase(_) => Moves::Branches,
             other => {
                 return Err(ReplayError::Scheme {
                     scheme: other.name(),
@@ -142,7 +176,10 @@ impl<'a> ReplayTransmitter<'a> {
             overlap = overlap.max(replay.memory_cycles(&rarely, FORGOTTEN)?);
         }
         let branch = Branch {
-            controls: Controls::new(carrier_hz, request.rate_hz, between),
+            controls: match request.scheme {
+                Scheme::Levels(_) => Reader::Rails(Rails::new(carrier_hz, request.rate_hz)),
+                _ => Reader::BandLimited(Controls::new(carrier_hz, request.rate_hz)),
+            },
             replay,
             cycles: Vec::new(),
             outputs: Vec::new(),
@@ -173,11 +210,19 @@ impl<'a> ReplayTransmitter<'a> {
             overlap,
             started: false,
             waiting: VecDeque::new(),
+            parts: VecDeque::new(),
             taken: 0,
             given: 0,
             energy: Energy::default(),
-            supply_j: 0.0,
+            supply_w: 0.0,
+            generated_w: 0.0,
             counted_cycles: 0,
+            drawn: DrawnPower::new(&request.scheme.modulator(), request.rate_hz),
+            drawn_at: 0,
+            instant: Instant::default(),
+            working: (0.0, 0.0),
+            modulator_w: 0.0,
+            drawn_instants: 0,
             highest_control: 0.0,
             scratch: Default::default(),
             values: Vec::new(),
@@ -195,8 +240,14 @@ impl<'a> ReplayTransmitter<'a> {
         ready: &mut Track,
         output_v: &mut Vec<Complex64>,
     ) -> Result<(), ReplayError> {
+        let mut parts = &track.parts[..];
         for at in 0..track.len() {
+            let count = parts.iter().take_while(|part| part.at == at).count();
+            let (own, later) = parts.split_at(count);
+            parts = later;
+            self.parts.extend(own);
             self.waiting.push_back(Row {
+                parts: count,
                 wanted: track.wanted[at],
                 asked: track.asked[at],
                 control: track.control[at],
@@ -230,7 +281,11 @@ impl<'a> ReplayTransmitter<'a> {
         let Some(last) = self.waiting.back().copied() else {
             return Ok(());
         };
-        let latency = self.branches[0].controls.latency() + self.envelope.latency();
+        let reader = match &self.branches[0].controls {
+            Reader::BandLimited(controls) => controls.latency(),
+            Reader::Rails(_) => 1,
+        };
+        let latency = reader + self.envelope.latency();
         let mut held = Track::default();
         let branch = [last.phase; 2];
         for _ in 0..latency {
@@ -265,12 +320,12 @@ impl<'a> ReplayTransmitter<'a> {
         }
         match moves {
             Moves::Branches => {
-                for pair in track.branches.get(range).unwrap_or(&[]) {
+                for pair in track.branches.get(range.clone()).unwrap_or(&[]) {
                     first.push(pair[0]);
                     second.push(pair[1]);
                 }
             }
-            _ => first.extend_from_slice(&track.phase[range]),
+            _ => first.extend_from_slice(&track.phase[range.clone()]),
         }
         // The controls between instants may pass what is there at them.
         let cycle_of = |start: Border, end: Border| {
@@ -303,9 +358,11 @@ impl<'a> ReplayTransmitter<'a> {
             let phasors = if index == 0 { &*first } else { &*second };
             branch.cycles.clear();
             let cycles = &mut branch.cycles;
-            branch.controls.push(controls, phasors, |start, end| {
-                cycles.push(cycle_of(start, end));
-            });
+            let mut each = |start, end| cycles.push(cycle_of(start, end));
+            match &mut branch.controls {
+                Reader::BandLimited(reader) => reader.push(controls, phasors, each),
+                Reader::Rails(rails) => rails.push(track, range.clone(), full_v, &mut each),
+            }
             if let (false, Some(cycle)) = (self.started, branch.cycles.first()) {
                 branch.replay.settle(cycle)?;
             }
@@ -345,26 +402,64 @@ impl<'a> ReplayTransmitter<'a> {
         Ok(())
     }
 
-    /// Adds the energies of the cycles that were just replayed, where they count.
+    /// Adds the energies of the cycles that were just replayed. A cycle belongs to the instant within which its middle
+    /// lies; the modulator sees the means over instants.
     fn account(&mut self) {
         let Some(first) = self.branches.first() else {
             return;
         };
-        let instants = self.request.rate_hz / self.request.network.stage().frequency_hz;
-        let begin = first.replay.cycles() - first.outputs.len() as u64;
-        let (from, to) = self.request.counted;
-        // Border cycles are those whose middle lies inside.
-        let border = |instant: u64| (instant as f64 / instants - 0.5).ceil().max(0.0) as u64;
-        let clip = |cycle: u64| (cycle.max(begin) - begin).min(first.outputs.len() as u64);
-        let range = clip(border(from)) as usize..clip(border(to)) as usize;
-        self.counted_cycles += range.len() as u64;
-        for branch in &self.branches {
-            let outputs = branch.outputs.get(range.clone()).unwrap_or(&[]);
-            self.supply_j += outputs
-                .iter()
-                .map(|output| output.energies.supply_j)
-                .sum::<f64>();
+        let load_ohm = self.request.map.load_ohm();
+        let carrier_hz = self.request.network.stage().frequency_hz;
+        let instants = self.request.rate_hz / carrier_hz;
+        let count = first.outputs.len();
+        let begin = first.replay.cycles() - count as u64;
+        for at in 0..count {
+            let instant = ((begin + at as u64) as f64 + 0.5) * instants;
+            let instant = instant as u64;
+            while self.drawn_at < instant {
+                self.draw();
+            }
+            let cycles = self.branches.first().and_then(|one| one.cycles.get(at));
+            let [start_v, end_v] = cycles.map_or([0.0; 2], |cycle| cycle.supply_v);
+            let outputs = self.branches.iter().filter_map(|one| one.outputs.get(at));
+            let (mut supply_j, mut square) = (0.0, 0.0);
+            for output in outputs {
+                supply_j += output.energies.supply_j;
+                square += output.output_v.norm_sqr();
+            }
+            self.instant.cycles += 1.0;
+            self.instant.supply_v += 0.5 * (start_v + end_v);
+            self.instant.supply_w += supply_j * carrier_hz;
+            let (from, to) = self.request.counted;
+            if (from..to).contains(&instant) {
+                self.counted_cycles += 1;
+                self.supply_w += supply_j * carrier_hz;
+                self.generated_w += square / (2.0 * load_ohm);
+            }
         }
+    }
+
+    /// Hands the means over an instant to the modulator; an instant without a cycle is as the one before.
+    fn draw(&mut self) {
+        let instant = self.instant;
+        if instant.cycles > 0.0 {
+            let supply_v = instant.supply_v / instant.cycles;
+            let supply_w = instant.supply_w / instant.cycles;
+            let supply_a = if supply_v > 0.0 {
+                supply_w / supply_v
+            } else {
+                0.0
+            };
+            self.working = (supply_v, supply_a);
+        }
+        self.instant = Instant::default();
+        let modulator_w = self.drawn.push(self.working.0, self.working.1);
+        let (from, to) = self.request.counted;
+        if (from..to).contains(&self.drawn_at) {
+            self.drawn_instants += 1;
+            self.modulator_w += modulator_w;
+        }
+        self.drawn_at += 1;
     }
 
     /// Hands out the instants whose output is complete.
@@ -378,6 +473,11 @@ impl<'a> ReplayTransmitter<'a> {
             ready.control.push(row.control);
             ready.phase.push(row.phase);
             ready.supply_v.extend(row.supply_v);
+            let at = ready.control.len() - 1;
+            let parts = self.parts.drain(..row.parts.min(self.parts.len()));
+            ready
+                .parts
+                .extend(parts.map(|part| TrackPart { at, ..part }));
             output_v.push(value);
             if (from..to).contains(&self.given) {
                 self.energy.samples += 1;
@@ -389,15 +489,18 @@ impl<'a> ReplayTransmitter<'a> {
         }
     }
 
-    /// The sums so far: the supply's from integrated energy, the driver's by the map.
+    /// The sums so far: the supply's from integrated energy, the modulator's by its model from the mean voltage and
+    /// current of each instant, the driver's by the map.
     pub fn energy(&self) -> Energy {
         let mut energy = self.energy;
-        let carrier_hz = self.request.network.stage().frequency_hz;
-        let modulator = self.request.scheme.modulator();
-        let mean_w = self.supply_j * carrier_hz / self.counted_cycles as f64;
         let samples = energy.samples as f64;
-        energy.stage_w = mean_w * samples;
-        energy.modulator_w = energy.stage_w / modulator.efficiency + modulator.idle_w * samples;
+        let cycles = self.counted_cycles as f64;
+        energy.stage_w = self.supply_w / cycles * samples;
+        energy.modulator_w = self.modulator_w / self.drawn_instants as f64 * samples;
+        energy.generated_w = match self.moves {
+            Moves::Branches => self.generated_w / cycles * samples,
+            _ => energy.output_w,
+        };
         energy
     }
 

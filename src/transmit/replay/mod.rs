@@ -9,6 +9,7 @@ mod choke;
 mod edges;
 mod error;
 mod forms;
+mod gate;
 mod modal;
 mod nested;
 mod propagator;
@@ -26,6 +27,7 @@ use choke::Choke;
 pub use edges::{Interval, Pulse, Timing};
 use edges::{Intervals, Switches};
 pub use error::ReplayError;
+pub use gate::Gate;
 pub use segments::{Segments, replay_all};
 use walk::{Walk, Walker};
 
@@ -141,6 +143,7 @@ pub struct Replay {
     switches: Switches,
     account: Account,
     intervals: Intervals,
+    pieces: Vec<Interval>,
     cycles: u64,
     /// From normalised energy to J.
     joule: f64,
@@ -152,6 +155,7 @@ impl Clone for Replay {
             walk: self.walk.clone_box(),
             choke: self.choke.clone(),
             intervals: self.intervals.clone(),
+            pieces: Vec::new(),
             ..*self
         }
     }
@@ -185,6 +189,7 @@ impl Replay {
             switches: Switches::of(stage),
             account: setup.account,
             intervals: Intervals::default(),
+            pieces: Vec::new(),
             cycles: 0,
             joule: 1.0 / (stage.load.ohm * TAU * stage.frequency_hz),
         };
@@ -286,6 +291,46 @@ impl Replay {
         let walked = self.walk.advance(supply_v, intervals);
         self.cycles += 1;
         Ok(self.output(&walked, supply_v, supply_v))
+    }
+
+    /// One carrier cycle whose pulse is cut by a gate: all switches are open outside `on`, rad from the cycle's start
+    /// (see [`Gate`]).
+    ///
+    /// # Errors
+    /// As [`Replay::cycle`] and [`Replay::cycle_of`].
+    pub fn cycle_gated(
+        &mut self,
+        cycle: &Cycle,
+        on: &[[f64; 2]],
+    ) -> Result<CycleOutput, ReplayError> {
+        self.intervals.plan(
+            &cycle.pulse,
+            &self.switches,
+            self.timing.as_ref(),
+            self.cycles,
+        )?;
+        let mut intervals = std::mem::take(&mut self.pieces);
+        gate::gated(self.intervals.as_slice(), on, &mut intervals);
+        let output = self.cycle_of(cycle.supply_v, &intervals);
+        self.pieces = intervals;
+        output
+    }
+
+    /// One carrier cycle of a list of edges: the pulse is high in `high`, rad from the cycle's start (see [`Gate`]).
+    /// Dead time of a pair is not added: the list has what it has.
+    ///
+    /// # Errors
+    /// As [`Replay::cycle_of`].
+    pub fn cycle_pulsed(
+        &mut self,
+        supply_v: [f64; 2],
+        high: &[[f64; 2]],
+    ) -> Result<CycleOutput, ReplayError> {
+        let mut intervals = std::mem::take(&mut self.pieces);
+        gate::pulsed(&self.switches, high, &mut intervals);
+        let output = self.cycle_of(supply_v, &intervals);
+        self.pieces = intervals;
+        output
     }
 
     /// The network's input at both ends of a cycle: the supply, or an ideal choke's current.

@@ -140,12 +140,13 @@ impl<const M: usize> Walk for Walker<M> {
             }
             if self.harmonics > 1 {
                 let (mut from, mut to) = (turn, end_turn);
-                for harmonic in 1..self.harmonics {
+                let higher = outputs.iter_mut().take(self.harmonics).skip(1);
+                for (above, output) in higher.enumerate() {
                     (from, to) = (from * turn, to * end_turn);
-                    let sum = topology.higher_at(harmonic - 1, &z) * from
-                        - topology.higher_at(harmonic - 1, &end) * to;
-                    outputs[harmonic].0 += sum.re;
-                    outputs[harmonic].1 += sum.im;
+                    let sum =
+                        topology.higher_at(above, &z) * from - topology.higher_at(above, &end) * to;
+                    output.0 += sum.re;
+                    output.1 += sum.im;
                 }
             }
             if self.account != Account::Envelope {
