@@ -145,7 +145,7 @@ impl<'a> Staircase<'a> {
         if self.instant < STAIRCASE_LATENCY as i64 {
             return smooth;
         }
-        smooth + self.steps.advance() - seen
+        smooth + self.steps.sample() - seen
     }
 
     /// The cycles of the stretch that ends at the present instant.

@@ -20,7 +20,7 @@ use num_complex::Complex64;
 use super::fir::kaiser_beta;
 use super::window::{bessel_i0, sinc};
 
-/// Samples by which [`Responses::next`] lags behind the edges that must be known: half the kernel.
+/// Samples by which [`Responses::sample`] lags behind the edges that must be known: half the kernel.
 pub const EDGE_LATENCY: usize = HALF;
 
 /// Up to this part of the sample rate the observer is flat and nothing folds.
@@ -143,8 +143,8 @@ pub struct Responses<T> {
     near: [Complex64; RING],
     far: [Complex64; RING],
     tail: Complex64,
-    /// The sample that [`Responses::next`] gives.
-    sample: i64,
+    /// The sample that [`Responses::sample`] gives.
+    index: i64,
 }
 
 impl Responses<f64> {
@@ -181,7 +181,7 @@ impl<T: Response> Responses<T> {
             near: [Complex64::ZERO; RING],
             far: [Complex64::ZERO; RING],
             tail: Complex64::ZERO,
-            sample: 0,
+            index: 0,
         }
     }
 
@@ -214,9 +214,9 @@ impl<T: Response> Responses<T> {
     }
 
     /// The next sample, from 0. Every edge up to [`EDGE_LATENCY`] samples past it must have been given.
-    pub fn advance(&mut self) -> Complex64 {
-        let slot = self.sample as usize & (RING - 1);
-        self.sample += 1;
+    pub fn sample(&mut self) -> Complex64 {
+        let slot = self.index as usize & (RING - 1);
+        self.index += 1;
         self.tail = self.tail * self.decay + std::mem::take(&mut self.far[slot]);
         self.tail + std::mem::take(&mut self.near[slot])
     }
@@ -309,9 +309,9 @@ mod tests {
                 next += 1;
             }
             if now + 1 >= HALF as i64 {
-                let step = steps.advance();
+                let step = steps.sample();
                 samples.push(match &mut decays {
-                    Some(decays) => step - decays.advance(),
+                    Some(decays) => step - decays.sample(),
                     None => step,
                 });
             }

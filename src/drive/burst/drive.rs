@@ -319,9 +319,9 @@ impl<'a> BurstDrive<'a> {
             }
             let mut output = Complex64::ZERO;
             if self.newest >= GATE_LATENCY as i64 {
-                let mut gate = self.steps.advance();
+                let mut gate = self.steps.sample();
                 for (_, responses) in self.rise.iter_mut().chain(&mut self.fall) {
-                    gate += responses.advance();
+                    gate += responses.sample();
                 }
                 output = self.full_v * phase * gate;
             }
