@@ -103,7 +103,7 @@ fn bessel(n: i32, x: f64) -> f64 {
 #[test]
 fn the_bessel_function_is_the_tabulated_one() {
     // scipy 1.17.1, scipy.special.jv: jv(0, 2.5) = -0.04838377646819792, jv(3, 4.2) = 0.4343942763872008.
-    assert!((bessel(0, 2.5) + 0.048_383_776_468_197_996).abs() < 1e-14);
+    assert!((bessel(0, 2.5) + 0.048_383_776_468_198).abs() < 1e-14);
     assert!((bessel(3, 4.2) - 0.434_394_276_387_200_7).abs() < 1e-12);
 }
 

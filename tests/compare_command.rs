@@ -173,7 +173,7 @@ fn the_document_has_settings_parts_and_one_span() {
         assert!(own >= rate, "{own} {rate}");
         let metrics = &scheme["metrics"];
         let parts = &metrics["efficiency_parts"];
-        let product: f64 = ["modulator", "stage", "driver", "combiner"]
+        let product: f64 = ["modulator", "stage", "driver", "combiner", "filter"]
             .iter()
             .map(|part| parts[part].as_f64().unwrap())
             .product();
@@ -276,4 +276,21 @@ fn several_studies_are_one_comparison_and_wrong_ones_are_named() {
         let message = text(&output.stderr);
         assert!(message.contains(part), "{arguments:?}: {message}");
     }
+}
+
+#[test]
+fn the_readmes_table_is_what_is_printed() {
+    let root = Path::new(env!("CARGO_MANIFEST_DIR"));
+    let output = run(root, &["compare", "signals/tide-gauge-compare.study.toml"]);
+    let readme = std::fs::read_to_string(root.join("README.md")).unwrap();
+    let block = readme
+        .split("<!-- output of `quietedge compare signals/tide-gauge-compare.study.toml` -->\n```text\n")
+        .nth(1)
+        .and_then(|rest| rest.split("\n```\n").next())
+        .expect("the marked block of README.md");
+    assert_eq!(
+        block.trim_end(),
+        text(&output.stdout).trim_end(),
+        "README.md is out of date: run .ci/readme"
+    );
 }

@@ -175,3 +175,39 @@ fn a_pair_is_aligned_and_its_symbols_are_read() {
     let message = String::from_utf8_lossy(&refused.stderr).into_owned();
     assert!(message.contains("not found in the capture"), "{message}");
 }
+
+#[test]
+fn a_study_gives_format_and_limits() {
+    let folder = tempfile::tempdir().unwrap();
+    let at = folder.path();
+    signal(at, "sent.wav");
+    let map = "# control = supply\n# frequency = 100 MHz\n# load_resistance = 50 ohm\ncontrol,amplitude_v,phase_deg\n0,0,0\n3,10,0\n6,20,0\n";
+    std::fs::write(at.join("map.csv"), map).unwrap();
+    let study = "map = \"map.csv\"\n[signal]\nfile = \"sent.wav\"\nlevel = 0.9\n[signal.format]\nkind = \"single_carrier\"\nmodulation = \"qam16\"\n\
+                 symbol_rate = \"10 kHz\"\nrolloff = 0.3\n[scheme]\nkind = \"supply\"\n[limits]\nchannel = \"13 kHz\"\nevm_percent = 0.01\n";
+    std::fs::write(at.join("a.study.toml"), study).unwrap();
+    let arguments = [
+        "measure",
+        "sent.wav",
+        "--reference",
+        "sent.wav",
+        "--study",
+        "a.study.toml",
+        "--json",
+    ];
+    let output = run(at, &arguments);
+    // The generator's own error is above 0.01 %.
+    assert_eq!(output.status.code(), Some(1), "{output:?}");
+    let document = json(&output);
+    assert_eq!(document["metrics"]["evm_of"], "symbols");
+    assert_eq!(document["verdict"]["outcome"], "outside");
+    let mut stated = arguments.to_vec();
+    stated.extend(["--evm-limit", "2 %"]);
+    assert_eq!(run(at, &stated).status.code(), Some(0));
+    // Models of the pair: nothing but rounding is left of a signal against itself.
+    let memory = &document["memory"];
+    assert!(
+        memory["linear"]["held_out_nmse_db"].as_f64().unwrap() < -80.0,
+        "{memory}"
+    );
+}

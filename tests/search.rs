@@ -243,7 +243,7 @@ fn try_stage(text: &str, counts: &mut Counts) -> Result<(), String> {
         Err(error) => note(counts, "orbit", &error.to_string())?,
     }
     counts.maps += 1;
-    if counts.maps % 8 == 0 {
+    if counts.maps.is_multiple_of(8) {
         if let Ok(sweep) = Sweep::full(&network, Control::Supply, 3) {
             let _ = sweep.solve(&network);
         }

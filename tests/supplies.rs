@@ -402,3 +402,74 @@ fn a_curved_stage_has_a_width_map_for_every_rail() {
     );
     assert!(settling.metrics.evm_percent > result.metrics.evm_percent);
 }
+
+fn warned(result: &CheckResult, part: &str) -> bool {
+    let warnings = result.warnings.iter();
+    warnings
+        .map(ToString::to_string)
+        .any(|warning| warning.contains(part))
+}
+
+#[test]
+fn each_scheme_says_where_its_model_ends() {
+    let samples = tones(2, RATE_HZ / 64.0);
+    let supply = |ripple_hz: f64| {
+        carried_out(
+            Memory::default().with("stage.toml", STAGE),
+            "stage = \"stage.toml\"",
+            &samples,
+            &format!(
+                "level = 0.9\n[scheme]\nkind = \"supply\"\nmodulator = {{ ripple = {{ amplitude = \"3 mV\", frequency = {ripple_hz} }} }}\n[metrics]\nresolution = 2000\n"
+            ),
+        )
+    };
+    let settling_s = supply(1e5).stage.unwrap().settling_s;
+    // A tenth of a radian while the stage settles.
+    let limit_hz = 0.1 / (TAU * settling_s);
+    let ripple = "too slowly to follow a ripple";
+    assert!(warned(&supply(1.1 * limit_hz), ripple) && !warned(&supply(0.9 * limit_hz), ripple));
+
+    let levels = |settling: f64| {
+        on_stage(
+            STAGE,
+            &samples,
+            0.9,
+            &format!("count = 2\nsettling = {settling:e}"),
+        )
+    };
+    let rails = "a rail settles in";
+    assert!(warned(&levels(0.0), rails) && warned(&levels(9.0 * settling_s), rails));
+    assert!(!warned(&levels(11.0 * settling_s), rails));
+    // Two tones go through zero, a width map does not.
+    assert!(warned(&levels(0.0), "the narrowest pulse of the map"));
+    let shallow = on_stage(STAGE, &tones(1, 1.0), 0.9, "count = 2");
+    assert!(!warned(&shallow, "the narrowest pulse of the map"));
+
+    let outphase = |gain: f64| {
+        carried_out(
+            Memory::default().with("stage.toml", STAGE),
+            "stage = \"stage.toml\"",
+            &samples,
+            &format!(
+                "level = 0.9\n[scheme]\nkind = \"outphase\"\ncombining = \"isolated\"\nmismatch = {{ gain = \"{gain} dB\" }}\n[metrics]\nresolution = 2000\n"
+            ),
+        )
+    };
+    let unequal = "the weaker one is taken to draw as much";
+    assert!(warned(&outphase(0.6), unequal) && !warned(&outphase(0.4), unequal));
+    println!("the demo's stage settles in {settling_s:e} s");
+    let slow = "the branches move within about";
+    assert_eq!(
+        warned(&outphase(0.0), slow),
+        settling_s > 0.0025 / RATE_HZ && settling_s <= 0.01 / RATE_HZ
+    );
+
+    // A carrier of 2 MHz with a signal sampled at 8 MHz.
+    let low = carried_out(
+        Memory::default().with("straight.csv", STRAIGHT.replace("100 MHz", "2 MHz")),
+        "map = \"straight.csv\"",
+        &samples,
+        "level = 0.9\n[scheme]\nkind = \"supply\"\n[metrics]\nresolution = 2000\n",
+    );
+    assert!(warned(&low, "no model past half of the carrier"));
+}

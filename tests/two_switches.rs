@@ -3,6 +3,7 @@
 use std::f64::consts::{PI, TAU};
 
 use num_complex::Complex64;
+use quietedge::map::AngleSweep;
 use quietedge::orbit::{Compensation, Drive, Joined, Joint, JointKind, Network, Orbit};
 use quietedge::stage::Stage;
 use serde_json::Value;
@@ -395,4 +396,80 @@ fn energy_is_kept_at_every_angle() {
             );
         }
     }
+}
+
+#[test]
+fn the_map_between_its_angles_is_the_orbit() {
+    let stage = stage(include_str!("../signals/tide-gauge.stage.toml"));
+    let joined = Joined::new(&stage, &Joint::new(JointKind::Floating)).unwrap();
+    let map = AngleSweep::full(&joined, 721)
+        .unwrap()
+        .solve(&joined)
+        .unwrap();
+    for step in 0..40 {
+        let angle = (-89.9 + 4.47 * f64::from(step)).to_radians();
+        let orbit = joined.orbit(stage.supply_v, 0.5, angle).unwrap();
+        // A quarter of a degree apart, the monotone cubic bends by at most h^2 / 8 = 2e-6 at a summit.
+        let (found, held) = map.output_held_v(angle);
+        assert!(!held);
+        assert!(
+            (found - orbit.output_v).norm() < 3e-6 * map.full_amplitude_v(),
+            "{angle}: {found} {}",
+            orbit.output_v
+        );
+    }
+}
+
+/// `quietedge check` of the joined demo with `change` made to its text.
+fn check(name: &str, change: impl Fn(&str) -> String, more: &[&str]) -> std::process::Output {
+    let signals = concat!(env!("CARGO_MANIFEST_DIR"), "/signals");
+    let text = include_str!("../signals/buoy-joined.study.toml")
+        .replace("buoy.stage.toml", &format!("{signals}/buoy.stage.toml"))
+        .replace("tide-gauge.wav", &format!("{signals}/tide-gauge.wav"));
+    let path = format!("{}/{name}.study.toml", env!("CARGO_TARGET_TMPDIR"));
+    std::fs::write(&path, change(&text)).unwrap();
+    std::process::Command::new(env!("CARGO_BIN_EXE_quietedge"))
+        .args(["check", &path, "--json"])
+        .args(more)
+        .output()
+        .unwrap()
+}
+
+fn document(output: &std::process::Output) -> Value {
+    serde_json::from_slice(&output.stdout)
+        .unwrap_or_else(|error| panic!("{error}: {}", String::from_utf8_lossy(&output.stderr)))
+}
+
+#[test]
+fn a_joined_study_is_checked() {
+    let like = |text: &str| -> String {
+        let keep = |line: &&str| !line.starts_with("mismatch") && !line.starts_with("branch_band");
+        text.lines()
+            .filter(keep)
+            .map(|line| format!("{line}\n"))
+            .collect()
+    };
+    let evm = |output: &std::process::Output| {
+        document(output)["metrics"]["evm_percent"]
+            .as_f64()
+            .expect("an EVM")
+    };
+    // Like branches by the inverse map give the signal; by the cosine what bends the map is left.
+    let inverse = check("joined-inverse", like, &[]);
+    assert!(evm(&inverse) < 1e-3, "{}", evm(&inverse));
+    let cosine = |text: &str| like(text).replace("joint =", "law = \"cosine\"\njoint =");
+    let cosine = evm(&check("joined-cosine", cosine, &[]));
+    assert!((0.3..0.7).contains(&cosine), "{cosine}");
+    // As the demo stands: unlike branches of limited bandwidth.
+    let demo = check("joined-demo", str::to_owned, &[]);
+    assert_eq!(demo.status.code(), Some(0));
+    let found = evm(&demo);
+    assert!(found > 0.02 && found < cosine, "{found}");
+    let warnings = document(&demo)["warnings"].to_string();
+    assert!(warnings.contains("body diode"), "{warnings}");
+    // Joined stages are not replayed, and say so.
+    let replay = check("joined-replay", str::to_owned, &["--by", "replay"]);
+    assert_eq!(replay.status.code(), Some(2));
+    let message = String::from_utf8_lossy(&replay.stderr);
+    assert!(message.contains("joined"), "{message}");
 }

@@ -1,14 +1,14 @@
 //! `quietedge map`: the stage over a control.
 
-use std::f64::consts::TAU;
+use std::f64::consts::{FRAC_PI_2, TAU};
 use std::path::PathBuf;
 
 use super::arguments::quantity;
 use super::ratings::{RatingOptions, ending};
 use super::solve::Changes;
 use super::{Console, Ending, Failure, OutputFolder, OutputOptions};
-use crate::map::{Control, LoadSweep, Sweep};
-use crate::orbit::Network;
+use crate::map::{AngleSweep, Control, LoadSweep, Map, Sweep};
+use crate::orbit::{Compensation, Joined, Joint, JointKind, Network};
 use crate::report::documents::{map_csv, map_document};
 use crate::report::mismatch::{load_map_csv, load_map_document, load_map_figure, load_map_text};
 use crate::report::stage::{map_figure, map_text};
@@ -23,6 +23,8 @@ use crate::verdict::{Ratings, Stressed};
   quietedge map my.stage.toml --control width --from 0.1 --to 0.5 --points 81
   quietedge map my.stage.toml --control load --vswr 2 --peak-voltage 30V --peak-current 2A
       a whole turn of the load's reflection coefficient; exit code 1 where the switch is beyond a rating
+  quietedge map my.stage.toml --control angle --joint floating --compensation 60ohm
+      two of the stage on one floating load, the first ahead by the angle and the second behind
   quietedge map my.stage.toml --control supply --out map
       writes map.csv, map.json, map.svg and map.png into map/; a study can name the
       first two in place of a stage: map = \"map/map.csv\"")]
@@ -50,6 +52,9 @@ pub struct Arguments {
     changes: Changes,
 
     #[command(flatten)]
+    joint: JointOptions,
+
+    #[command(flatten)]
     ratings: RatingOptions,
 
     #[command(flatten)]
@@ -64,6 +69,65 @@ enum ControlWord {
     Width,
     /// Angle of the load's reflection coefficient at the standing-wave ratio --vswr
     Load,
+    /// Angle of two of the stage on one load, from 0 to 90deg: the first ahead, the second behind
+    Angle,
+}
+
+/// How two of the stage meet on one load.
+#[derive(Debug, Clone, clap::Args)]
+#[command(next_help_heading = "Two of the stage on one load, for --control angle")]
+struct JointOptions {
+    /// The load floats between the branches, or stands at their common end
+    #[arg(long, value_enum, default_value_t = JointWord::Floating)]
+    joint: JointWord,
+
+    /// The common load; twice the stage's own where it floats, half of it at a tee, where absent
+    #[arg(long, value_name = "OHM", value_parser = quantity(Dimension::Resistance))]
+    joint_resistance: Option<f64>,
+
+    /// Rungs of the ladder in each branch; the others stand once, behind the joint. All where absent
+    #[arg(long, value_name = "N")]
+    branch_rungs: Option<usize>,
+
+    /// Compensating reactance of each branch to ground: a capacitor in the first, an inductor in the second
+    #[arg(long, value_name = "OHM", value_parser = quantity(Dimension::Resistance))]
+    compensation: Option<f64>,
+
+    /// After how many rungs of each branch the compensation stands; at its end where absent
+    #[arg(long, value_name = "N", requires = "compensation")]
+    compensation_after: Option<usize>,
+}
+
+#[derive(Debug, Clone, Copy, PartialEq, Eq, clap::ValueEnum)]
+enum JointWord {
+    Floating,
+    Tee,
+}
+
+impl JointOptions {
+    fn joint(&self) -> Result<Joint, Failure> {
+        let positive = |option: &str, given: Option<f64>| match given {
+            Some(value) if value <= 0.0 => {
+                let text = format!("{option}: given {value}; allowed: more than 0");
+                Err(Failure::new(text))
+            }
+            given => Ok(given),
+        };
+        let compensation = positive("--compensation", self.compensation)?;
+        Ok(Joint {
+            load_ohm: positive("--joint-resistance", self.joint_resistance)?,
+            branch_rungs: self.branch_rungs,
+            compensation: compensation.map(|reactance_ohm| Compensation {
+                reactance_ohm,
+                q: None,
+                after_rungs: self.compensation_after,
+            }),
+            ..Joint::new(match self.joint {
+                JointWord::Floating => JointKind::Floating,
+                JointWord::Tee => JointKind::Tee,
+            })
+        })
+    }
 }
 
 /// Runs the command.
@@ -75,6 +139,7 @@ pub fn run(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> 
         ControlWord::Supply => by_control(arguments, Control::Supply, Dimension::Voltage, console),
         ControlWord::Width => by_control(arguments, Control::Width, Dimension::Ratio, console),
         ControlWord::Load => by_load(arguments, console),
+        ControlWord::Angle => by_angle(arguments, console),
     }
 }
 
@@ -111,23 +176,55 @@ fn by_control(
     let map = Sweep::even(&network, control, from, to, points)?
         .solve(&network)
         .map_err(|error| about(&error))?;
-    let mut document = map_document(&stage.title, &map);
-    console.print(&map_text(&stage.title, &map))?;
+    written(&stage.title, &map, &ratings, folder, &names, console)
+}
+
+fn by_angle(arguments: &Arguments, console: &Console) -> Result<Ending, Failure> {
+    let names = ["map.csv", "map.json", "map.svg", "map.png"];
+    let folder = OutputFolder::claim_option(&arguments.output, &names)?;
+    let ratings = arguments.ratings.ratings()?;
+    let joint = arguments.joint.joint()?;
+    let stage = arguments.changes.stage(&arguments.stage)?;
+    let about = |error: &dyn std::fmt::Display| {
+        Failure::new(format!("{}: {error}", arguments.stage.display()))
+    };
+    let joined = Joined::new(&stage, &joint).map_err(|error| about(&error))?;
+    let points = arguments.points.unwrap_or(181) as usize;
+    let from = end(&arguments.from, "--from", Dimension::Angle)?.unwrap_or(0.0);
+    let to = end(&arguments.to, "--to", Dimension::Angle)?.unwrap_or(FRAC_PI_2);
+    let map = AngleSweep::even(&joined, from, to, points)?
+        .solve(&joined)
+        .map_err(|error| about(&error))?;
+    let title = format!("Two of: {}", stage.title);
+    written(&title, &map, &ratings, folder, &names, console)
+}
+
+/// Prints a map and writes its files.
+fn written(
+    title: &str,
+    map: &Map,
+    ratings: &Ratings,
+    folder: Option<OutputFolder>,
+    names: &[&str; 4],
+    console: &Console,
+) -> Result<Ending, Failure> {
+    let mut document = map_document(title, map);
+    console.print(&map_text(title, map))?;
     let ending = stress(
-        &ratings,
-        &stressed_map(&map),
+        ratings,
+        &stressed_map(map),
         map.failures().len(),
         &mut document,
         console,
     )?;
     console.print_json(&document)?;
     if let Some(folder) = folder {
-        let figure = map_figure(&stage.title, &map);
-        folder.write(names[0], map_csv(&stage.title, &map).as_bytes())?;
+        let figure = map_figure(title, map);
+        folder.write(names[0], map_csv(title, map).as_bytes())?;
         folder.write(names[1], &serde_json::to_vec_pretty(&document)?)?;
         folder.write(names[2], figure.svg()?.as_bytes())?;
         folder.write(names[3], &figure.png()?)?;
-        wrote(&names, &folder, console);
+        wrote(names, &folder, console);
     }
     Ok(ending)
 }

@@ -3,10 +3,11 @@
 use std::f64::consts::TAU;
 
 use super::Targets;
+use super::budget::Budget;
 use super::error::DesignError;
 use super::ideal::Ideal;
 use super::parts::{Match, Parts};
-use super::solve::{BestEffort, Design, Zero, finish, orbit_of};
+use super::solve::{BestEffort, Design, Zero, finish};
 use super::zero::ideal_parts;
 use crate::math::simplex::lowest;
 
@@ -18,6 +19,7 @@ pub(super) fn best_effort(
     targets: &Targets,
     ideal: Option<Ideal>,
     nominal: Option<Parts>,
+    budget: &Budget,
 ) -> Result<Design, DesignError> {
     let device_f = targets.device.drain_f;
     let start = match (nominal, Ideal::no_excess(targets.duty)) {
@@ -68,7 +70,7 @@ pub(super) fn best_effort(
     // The weight of the power grows: efficiency first finds its valley, then the power is met.
     for weight in [1.0, 100.0, 1e4] {
         x = lowest(&x, 0.2, 1e-7, 4000, |x| {
-            match orbit_of(&with(x).stage(targets)) {
+            match budget.orbit_of(&with(x).stage(targets)) {
                 Some(orbit) => {
                     let power = (orbit.output_w / targets.output_w).ln();
                     (1.0 - orbit.efficiency) + weight * power * power
@@ -79,7 +81,7 @@ pub(super) fn best_effort(
     }
     let needed_f = nominal.map(|parts| parts.drain_f);
     let reason = BestEffort::TooMuchCapacitance { needed_f, device_f };
-    let design = finish(targets, ideal, with(&x), Zero::BestEffort(reason))?;
+    let design = finish(targets, ideal, with(&x), Zero::BestEffort(reason), budget)?;
     let (found_w, wanted_w) = (design.orbit.output_w, targets.output_w);
     if (found_w / wanted_w - 1.0).abs() > POWER_MET {
         return Err(DesignError::PowerMissed { wanted_w, found_w });

@@ -47,4 +47,9 @@ pub enum DesignError {
         /// W
         found_w: f64,
     },
+    /// The search was given up: most of what it tried has no orbit, or takes very long.
+    #[error(
+        "no design was found within the work limit of the search: a curved device far from what the power and the supply ask for, or an extreme loaded Q"
+    )]
+    RanOut,
 }

@@ -2,6 +2,7 @@
 //! orbit with losses and finite Q.
 
 mod best_effort;
+mod budget;
 mod error;
 mod ideal;
 mod parts;

@@ -2,10 +2,10 @@
 
 use std::f64::consts::TAU;
 
+use super::budget::Budget;
 use super::error::DesignError;
 use super::ideal::Ideal;
 use super::parts::{Match, Parts};
-use super::solve::orbit_of;
 use super::{Choice, Targets};
 use crate::math::newton::{Search, Stop, search};
 
@@ -121,11 +121,11 @@ pub(super) fn curved_f(targets: &Targets) -> f64 {
         + curve.map_or(0.0, |curve| curve.capacitance_f(targets.supply_v))
 }
 
-pub(super) fn residuals(targets: &Targets, parts: &Parts) -> Option<Vec<f64>> {
+pub(super) fn residuals(targets: &Targets, parts: &Parts, budget: &Budget) -> Option<Vec<f64>> {
     if parts.drain_f < 0.0 {
         return None;
     }
-    let orbit = orbit_of(&parts.stage(targets))?;
+    let orbit = budget.orbit_of(&parts.stage(targets))?;
     let volt = targets.supply_v;
     let mut values = vec![
         orbit.closing_v / volt,
@@ -139,7 +139,11 @@ pub(super) fn residuals(targets: &Targets, parts: &Parts) -> Option<Vec<f64>> {
 
 /// The parts at which voltage, slope and power are right: from the ideal stage at once, or along a path on
 /// which the losses grow and the loaded Q falls to their values.
-pub(super) fn zero(targets: &Targets, ideal: &Ideal) -> Result<(Parts, usize), DesignError> {
+pub(super) fn zero(
+    targets: &Targets,
+    ideal: &Ideal,
+    budget: &Budget,
+) -> Result<(Parts, usize), DesignError> {
     let stop = Stop {
         residual: ZERO,
         steps: 60,
@@ -148,7 +152,7 @@ pub(super) fn zero(targets: &Targets, ideal: &Ideal) -> Result<(Parts, usize), D
     let mut attempt = |targets: &Targets, start: &Parts| {
         let scale_f = start.drain_f + curved_f(targets);
         let found = search(&unknowns(targets, start, scale_f), stop, |x| {
-            residuals(targets, &with_unknowns(targets, start, scale_f, x))
+            residuals(targets, &with_unknowns(targets, start, scale_f, x), budget)
         });
         match found {
             Search::Converged { at, evaluations } => {

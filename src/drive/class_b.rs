@@ -10,6 +10,7 @@
 use num_complex::Complex64;
 
 use super::Track;
+use super::phase::magnitude;
 use crate::map::{Control, Map, MapError, MapPoint, Origin};
 use crate::math::delay::{Delay, LATENCY};
 
@@ -83,11 +84,15 @@ impl ClassBDrive {
     pub(super) fn push(&mut self, samples: &[Complex64], track: &mut Track) {
         for &sample in samples {
             let wanted = self.wanted.push(sample);
-            let (magnitude, phase) = (wanted.norm(), wanted.arg());
+            let magnitude = magnitude(wanted);
             track.wanted.push(wanted);
             track.asked.push(self.level * magnitude);
             track.control.push(self.level * magnitude);
-            track.phase.push(Complex64::from_polar(1.0, phase));
+            track.phase.push(if magnitude > 0.0 {
+                wanted / magnitude
+            } else {
+                Complex64::ONE
+            });
         }
     }
 }

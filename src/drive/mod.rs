@@ -1,5 +1,6 @@
 //! STEP 4: how a signal moves the stage's controls: schemes, imperfections included.
 
+mod angle;
 mod burst;
 mod class_b;
 mod correct;
@@ -21,6 +22,7 @@ mod staircase;
 mod supply;
 mod width;
 
+pub use angle::{AngleLaw, AngleReach, JoinedScheme};
 pub use burst::{
     BandFilter, BandShape, BurstScheme, GateFigures, MovedEdges, PulseFile, PulseSequence,
     Sampling, StopBand, Updates,
@@ -30,7 +32,7 @@ pub use correct::Correction;
 pub use levels::{LevelsScheme, RestPoint};
 pub use lookup::{Between, Lookup, LookupError, LookupSize, MAX_TABLE_RATE, Spacing, Word};
 pub use modulator::{Converter, Modulator, PoleZero, Ripple, SupplyModulator};
-pub use outphase::OutphaseScheme;
+pub use outphase::{Combining, OutphaseScheme};
 pub use polynomial::{Polynomial, Term};
 pub use power::{DrawnPower, PowerModel};
 pub use rails::Rails;
@@ -74,6 +76,8 @@ pub struct Drawn {
     pub stage_w: f64,
     /// By the driver.
     pub driver_w: f64,
+    /// Not drawn, but delivered: what the stage's filter takes in, or the output itself without one.
+    pub delivered_w: f64,
 }
 
 impl Drawn {

@@ -1,4 +1,6 @@
-//! Scheme `outphase`, isolated: two stages of constant magnitude at +/- an angle, summed by a combiner that shows
+//! Scheme `outphase`: two stages of constant magnitude at +/- an angle. Joined, they share a load and their map over
+//! the angle is solved as one circuit; the second branch's lower gain is part of that map, its phase and delay are
+//! part of the angle. Isolated: two stages of constant magnitude at +/- an angle, summed by a combiner that shows
 //! each of them its own load and burns the difference.
 //!
 //! ```text
@@ -11,6 +13,7 @@
 use num_complex::Complex64;
 
 use super::Track;
+use super::angle::{AngleLaw, AngleTable, JoinedScheme};
 use super::class_b::straight;
 use super::phase::{PhaseLimiter, magnitude};
 use super::rate::{RateReason, band};
@@ -18,9 +21,22 @@ use super::supply::settling;
 use crate::map::{Control, Map, MapError, MapPoint, Origin};
 use crate::math::delay::Delay;
 
+/// What becomes of the two outputs.
+#[derive(Debug, Clone, Copy, PartialEq, Default, serde::Serialize)]
+#[serde(rename_all = "snake_case")]
+pub enum Combining {
+    /// Summed by a combiner that burns the difference.
+    #[default]
+    Isolated,
+    /// Both on one load.
+    Joined(JoinedScheme),
+}
+
 /// The scheme as the study describes it. The second branch is the weaker and the later one.
 #[derive(Debug, Clone, Copy, PartialEq, Default, serde::Serialize)]
 pub struct OutphaseScheme {
+    /// How the branches meet.
+    pub combining: Combining,
     /// How much weaker the second branch is, dB, 0 or more.
     pub gain_mismatch_db: f64,
     /// How far the second branch's phase is off, rad.
@@ -80,11 +96,23 @@ pub(super) struct OutphaseDrive {
     later: Delay,
     branches: [PhaseLimiter; 2],
     last: Complex64,
+    /// For joined branches.
+    table: Option<(AngleLaw, AngleTable)>,
 }
 
 impl OutphaseDrive {
-    pub(super) fn new(scheme: &OutphaseScheme, level: f64, rate_hz: f64) -> Self {
-        let gain = 10f64.powf(-scheme.gain_mismatch_db / 20.0);
+    pub(super) fn new(scheme: &OutphaseScheme, map: &Map, level: f64, rate_hz: f64) -> Self {
+        let table = match scheme.combining {
+            Combining::Isolated => None,
+            Combining::Joined(joined) => {
+                Some((joined.law, AngleTable::new(map.known(), joined.law)))
+            }
+        };
+        // Joined, the lower gain is in the map.
+        let gain = match table {
+            None => 10f64.powf(-scheme.gain_mismatch_db / 20.0),
+            Some(_) => 1.0,
+        };
         let limiter = PhaseLimiter::new(scheme.order.max(1), scheme.bandwidth_hz, rate_hz);
         Self {
             level,
@@ -93,6 +121,16 @@ impl OutphaseDrive {
             later: Delay::new(scheme.delay_mismatch_s * rate_hz),
             branches: [limiter.clone(), limiter],
             last: Complex64::ONE,
+            table,
+        }
+    }
+
+    /// The angle that is asked for, rad, and what both branches are turned by to undo the turn of the map.
+    fn asked(&self, size: f64) -> (f64, f64) {
+        let m = (self.level * size).min(1.0);
+        match &self.table {
+            None => (m.acos(), 0.0),
+            Some((law, table)) => table.at(m, *law),
         }
     }
 
@@ -104,6 +142,10 @@ impl OutphaseDrive {
         } else {
             self.last
         };
+        if self.table.is_some() {
+            let (angle, turn) = self.asked(size);
+            return direction * Complex64::cis(sign * angle - turn);
+        }
         let cosine = (self.level * size).min(1.0);
         direction * Complex64::new(cosine, sign * (1.0 - cosine * cosine).sqrt())
     }
@@ -115,6 +157,18 @@ impl OutphaseDrive {
             let (first, second) = (self.phasor(wanted, 1.0), self.phasor(later, -1.0));
             let first = self.branches[0].push(first);
             let second = self.branches[1].push(second) * self.mismatch;
+            track.branches.push([first, second]);
+            if self.table.is_some() {
+                // Any two phases are an angle of at most a quarter turn and a common turn.
+                let angle = 0.5 * (first * second.conj()).arg();
+                let common = first * Complex64::cis(-angle);
+                self.last = common;
+                track.wanted.push(wanted);
+                track.asked.push(self.asked(magnitude(wanted)).0);
+                track.control.push(angle);
+                track.phase.push(common);
+                continue;
+            }
             let sum = 0.5 * (first + second);
             let drive = magnitude(sum);
             if drive > 1e-12 {
@@ -124,7 +178,6 @@ impl OutphaseDrive {
             track.asked.push((self.level * magnitude(wanted)).min(1.0));
             track.control.push(drive.min(1.0));
             track.phase.push(self.last);
-            track.branches.push([first, second]);
         }
     }
 }
@@ -145,9 +198,59 @@ mod tests {
 
     fn output(scheme: OutphaseScheme) -> Vec<Complex64> {
         let mut track = Track::default();
-        OutphaseDrive::new(&scheme, 0.9, 1e6).push(&signal(), &mut track);
+        OutphaseDrive::new(&scheme, &cosine_map(), 0.9, 1e6).push(&signal(), &mut track);
         let pairs = track.control.iter().zip(&track.phase);
         pairs.map(|(control, phase)| control * phase).collect()
+    }
+
+    /// Stiff branches: the output goes with the cosine of the angle.
+    fn cosine_map() -> Map {
+        let points = (-90..=90).map(|degrees: i32| {
+            let angle = f64::from(degrees).to_radians();
+            MapPoint {
+                control: angle,
+                output_v: Complex64::new(8.0, 6.0) * angle.cos(),
+                supply_v: 6.0,
+                supply_a: Some(0.1),
+                efficiency: None,
+                switch_peak_v: None,
+                switch_peak_a: None,
+                switch_min_v: None,
+                closing_v: None,
+                driver_w: None,
+            }
+        });
+        Map::new(Control::Angle, Origin::Stage, 1e6, 50.0, points.collect()).unwrap()
+    }
+
+    #[test]
+    fn joined_branches_give_the_signal_by_every_law() {
+        let map = cosine_map();
+        for (law, tolerance) in [
+            // The curve through points a degree apart bends by 1e-5 of full output near its top.
+            (AngleLaw::Inverse, 3e-5),
+            (AngleLaw::Amplitude, 3e-5),
+            (AngleLaw::Cosine, 3e-5),
+        ] {
+            let scheme = OutphaseScheme {
+                combining: Combining::Joined(JoinedScheme {
+                    joint: crate::orbit::Joint::new(crate::orbit::JointKind::Floating),
+                    law,
+                }),
+                ..OutphaseScheme::default()
+            };
+            let mut track = Track::default();
+            OutphaseDrive::new(&scheme, &map, 0.9, 1e6).push(&signal(), &mut track);
+            for (n, sample) in signal().iter().enumerate().take(4000 - LATENCY) {
+                let at = n + LATENCY;
+                let output = map.output_held_v(track.control[at]).0 * track.phase[at];
+                let wanted = 0.9 * sample * Complex64::new(8.0, 6.0);
+                assert!(
+                    (output - wanted).norm() < 10.0 * tolerance,
+                    "{law:?} {n}: {output} {wanted}"
+                );
+            }
+        }
     }
 
     #[test]

@@ -2,13 +2,14 @@
 
 use super::read_modulator::modulator;
 use super::{
-    BandFilter, BandShape, BurstScheme, ClassBScheme, LevelsScheme, MovedEdges, OutphaseScheme,
-    PhasePath, Rails, Sampling, Scheme, Shape, Shaping, StopBand, SupplyScheme, Updates, WidthLaw,
-    WidthScheme,
+    AngleLaw, BandFilter, BandShape, BurstScheme, ClassBScheme, Combining, JoinedScheme,
+    LevelsScheme, MovedEdges, OutphaseScheme, PhasePath, Rails, Sampling, Scheme, Shape, Shaping,
+    StopBand, SupplyScheme, Updates, WidthLaw, WidthScheme,
 };
 use crate::input::{Problem, Range, Section};
 use crate::math::lowpass::MAX_ORDER;
 use crate::math::modal::MAX_POLES;
+use crate::orbit::{Compensation, Joint, JointKind};
 use crate::stage::Anchor;
 use crate::units::Dimension;
 
@@ -158,6 +159,53 @@ fn levels(section: &Section<'_>) -> Result<LevelsScheme, Problem> {
     })
 }
 
+const ANGLE_LAWS: [(&str, AngleLaw); 3] = [
+    ("inverse", AngleLaw::Inverse),
+    ("amplitude", AngleLaw::Amplitude),
+    ("cosine", AngleLaw::Cosine),
+];
+
+/// What joins two stages; the mismatch is told elsewhere.
+fn joint(section: &Section<'_>) -> Result<Joint, Problem> {
+    let kinds = [("floating", JointKind::Floating), ("tee", JointKind::Tee)];
+    let kind = section
+        .maybe_choice("joint", &kinds)?
+        .unwrap_or(JointKind::Floating);
+    let compensation = match section.maybe_section("compensation")? {
+        None => None,
+        Some(section) => {
+            let compensation = Compensation {
+                reactance_ohm: section.quantity(
+                    "reactance",
+                    Dimension::Resistance,
+                    Range::Positive,
+                )?,
+                q: section.maybe_quantity("q", Dimension::Ratio, Range::Positive)?,
+                after_rungs: section
+                    .maybe_whole("after_rungs", 0, MAX_RUNGS)?
+                    .map(|count| count as usize),
+            };
+            section.finish()?;
+            Some(compensation)
+        }
+    };
+    Ok(Joint {
+        load_ohm: section.maybe_quantity(
+            "joint_resistance",
+            Dimension::Resistance,
+            Range::Positive,
+        )?,
+        branch_rungs: section
+            .maybe_whole("branch_rungs", 0, MAX_RUNGS)?
+            .map(|count| count as usize),
+        compensation,
+        ..Joint::new(kind)
+    })
+}
+
+/// More rungs than any ladder that can be solved has.
+const MAX_RUNGS: u64 = 1000;
+
 const SAMPLINGS: [(&str, Sampling); 3] = [
     ("natural", Sampling::Natural),
     ("uniform", Sampling::Uniform),
@@ -281,14 +329,24 @@ fn band_filter(section: &Section<'_>) -> Result<BandFilter, Problem> {
 }
 
 fn outphase(section: &Section<'_>) -> Result<OutphaseScheme, Problem> {
-    if section
-        .maybe_choice("combining", &[("isolated", ())])?
-        .is_none()
-    {
-        return Err(section.problem("combining", "\"isolated\""));
-    }
+    let Some(joined) =
+        section.maybe_choice("combining", &[("isolated", false), ("joined", true)])?
+    else {
+        return Err(section.problem("combining", "\"isolated\" or \"joined\""));
+    };
+    let combining = if joined {
+        Combining::Joined(JoinedScheme {
+            joint: joint(section)?,
+            law: section
+                .maybe_choice("law", &ANGLE_LAWS)?
+                .unwrap_or(AngleLaw::Inverse),
+        })
+    } else {
+        Combining::Isolated
+    };
     let mismatch = section.maybe_section("mismatch")?;
     let mut scheme = OutphaseScheme {
+        combining,
         bandwidth_hz: section.maybe_quantity(
             "branch_bandwidth",
             Dimension::Frequency,

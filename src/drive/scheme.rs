@@ -5,7 +5,7 @@ use num_complex::Complex64;
 use super::burst::{BurstDrive, BurstScheme, GateFigures};
 use super::class_b::{ClassBDrive, ClassBScheme};
 use super::levels::{LevelsDrive, LevelsScheme};
-use super::outphase::{OutphaseDrive, OutphaseScheme};
+use super::outphase::{Combining, OutphaseDrive, OutphaseScheme};
 use super::rate::RateReason;
 use super::supply::{SupplyDrive, SupplyScheme};
 use super::width::{WidthDrive, WidthLaw, WidthScheme};
@@ -66,6 +66,9 @@ impl Scheme {
         match self {
             Self::Supply(_) => Control::Supply,
             Self::Width(_) | Self::Levels(_) | Self::Burst(_) => Control::Width,
+            Self::Outphase(scheme) if matches!(scheme.combining, Combining::Joined(_)) => {
+                Control::Angle
+            }
             Self::Outphase(_) | Self::ClassB(_) => Control::Drive,
         }
     }
@@ -191,7 +194,7 @@ impl Scheme {
                 Kind::Burst(Box::new(BurstDrive::new(scheme, map, level, rate_hz)))
             }
             Self::Outphase(scheme) => {
-                Kind::Outphase(Box::new(OutphaseDrive::new(scheme, level, rate_hz)))
+                Kind::Outphase(Box::new(OutphaseDrive::new(scheme, map, level, rate_hz)))
             }
             Self::ClassB(_) => Kind::ClassB(Box::new(ClassBDrive::new(level))),
         })

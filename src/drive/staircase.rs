@@ -145,7 +145,7 @@ impl<'a> Staircase<'a> {
         if self.instant < STAIRCASE_LATENCY as i64 {
             return smooth;
         }
-        smooth + self.steps.next() - seen
+        smooth + self.steps.advance() - seen
     }
 
     /// The cycles of the stretch that ends at the present instant.

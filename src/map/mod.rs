@@ -1,5 +1,6 @@
 //! STEP 3: from a control to the output, forward and inverse: AM-AM and AM-PM.
 
+mod angle;
 mod mismatch;
 mod planes;
 mod read;
@@ -13,6 +14,7 @@ use crate::math::monotone::{Curve, CurveError};
 use crate::orbit::Gating;
 use crate::units;
 
+pub use angle::AngleSweep;
 pub use mismatch::{LoadMap, LoadPoint, LoadSweep, LoadSweepError};
 pub use read::{MapFacts, MapFormat, read_map};
 pub use sweep::{Sweep, SweepError};
@@ -27,6 +29,8 @@ pub enum Control {
     Width,
     /// Wanted amplitude over the full one: the control of stages whose output is a straight line of it.
     Drive,
+    /// Half the angle between two joined stages, rad: the first ahead, the second behind.
+    Angle,
 }
 
 impl Control {
@@ -35,6 +39,23 @@ impl Control {
         match self {
             Self::Supply => "V",
             Self::Width | Self::Drive => "",
+            Self::Angle => "deg",
+        }
+    }
+
+    /// `value` in that unit.
+    pub fn shown(self, value: f64) -> f64 {
+        match self {
+            Self::Angle => value.to_degrees(),
+            Self::Supply | Self::Width | Self::Drive => value,
+        }
+    }
+
+    /// `value` in words, to `digits` figures; angles to a hundredth of a degree.
+    pub fn show(self, value: f64, digits: usize) -> String {
+        match self {
+            Self::Angle => format!("{:.2} deg", value.to_degrees()),
+            Self::Supply | Self::Width | Self::Drive => units::show(value, self.unit(), digits),
         }
     }
 
@@ -44,6 +65,7 @@ impl Control {
             Self::Supply => "supply",
             Self::Width => "width",
             Self::Drive => "drive",
+            Self::Angle => "angle",
         }
     }
 }
@@ -51,7 +73,7 @@ impl Control {
 /// The stage at one value of the control. What a measured map does not know is absent.
 #[derive(Debug, Clone, PartialEq, serde::Serialize)]
 pub struct MapPoint {
-    /// V for supply, a fraction for width.
+    /// V for supply, a fraction for width, rad for angle.
     pub control: f64,
     /// Phasor of the output, peak volts across the load resistance.
     pub output_v: Complex64,
@@ -102,6 +124,8 @@ pub struct Map {
     points: Vec<MapPoint>,
     amplitude_v: Curve,
     phase_rad: Curve,
+    /// Real and imaginary part of the output where it passes near zero, as it does over an angle.
+    parts_v: Option<[Curve; 2]>,
     supply_a: Option<Curve>,
     switch_peak_v: Option<Curve>,
     switch_peak_a: Option<Curve>,
@@ -115,6 +139,8 @@ pub struct Map {
     generated_w: Option<f64>,
     /// A width map at lower supplies, rising; empty where it scales.
     planes: Vec<Map>,
+    /// What a front end knows of the hardware, where the hardware is another.
+    nominal: Option<Box<Map>>,
 }
 
 /// Why points make no map.
@@ -159,6 +185,18 @@ impl Map {
             load_ohm,
             amplitude_v: Curve::new(x.clone(), amplitude)?,
             phase_rad: Curve::new(x.clone(), phase)?,
+            parts_v: match control {
+                Control::Angle => {
+                    let part = |value: fn(&MapPoint) -> f64| {
+                        Curve::new(x.clone(), points.iter().map(value).collect())
+                    };
+                    Some([
+                        part(|point| point.output_v.re)?,
+                        part(|point| point.output_v.im)?,
+                    ])
+                }
+                _ => None,
+            },
             supply_a: optional(|point| point.supply_a)?,
             switch_peak_v: optional(|point| point.switch_peak_v)?,
             switch_peak_a: optional(|point| point.switch_peak_a)?,
@@ -168,6 +206,7 @@ impl Map {
             gating: None,
             generated_w: None,
             planes: Vec::new(),
+            nominal: None,
             points,
         })
     }
@@ -177,6 +216,18 @@ impl Map {
     pub fn with_generated_w(mut self, watt: f64) -> Self {
         self.generated_w = Some(watt);
         self
+    }
+
+    /// The same map of hardware with mismatch, for a front end that knows only `nominal`.
+    #[must_use]
+    pub fn with_nominal(mut self, nominal: Self) -> Self {
+        self.nominal = Some(Box::new(nominal));
+        self
+    }
+
+    /// The map that the front end knows.
+    pub fn known(&self) -> &Self {
+        self.nominal.as_deref().unwrap_or(self)
     }
 
     /// What the stages deliver into a combiner, W; none where they deliver the output itself.
@@ -309,6 +360,10 @@ impl Map {
         if let Some(edge) = self.gap_edge(control) {
             return (self.output_held_v(edge).0, true);
         }
+        if let Some([re, im]) = &self.parts_v {
+            let (re, held) = re.at_held(control);
+            return (Complex64::new(re, im.at_held(control).0), held);
+        }
         let (amplitude_v, held) = self.amplitude_v.at_held(control);
         let (phase_rad, _) = self.phase_rad.at_held(control);
         (Complex64::from_polar(amplitude_v, phase_rad), held)
@@ -369,12 +424,11 @@ impl Map {
     /// Amplitudes that are reached, and the phase's range over them, for messages: `0 V to 11.2 V`.
     pub fn describe(&self) -> String {
         let (low, high) = self.domain();
-        let unit = self.control.unit();
         format!(
             "{} {} to {}",
             self.control.name(),
-            units::show(low, unit, 4),
-            units::show(high, unit, 4)
+            self.control.show(low, 4),
+            self.control.show(high, 4)
         )
     }
 }

@@ -89,6 +89,7 @@ pub fn read_map(
     let allowed_controls = match control {
         Control::Supply => 0.0..=MOST,
         Control::Width | Control::Drive => 0.0..=1.0,
+        Control::Angle => -std::f64::consts::PI..=std::f64::consts::PI,
     };
     let mut map_points = Vec::with_capacity(points.len());
     for (index, point) in points.into_iter().enumerate() {
@@ -98,6 +99,7 @@ pub fn read_map(
                 match control {
                     Control::Supply => "a supply of 0 V or more",
                     Control::Drive => "a fraction of full drive from 0 to 1",
+                    Control::Angle => "an angle of at most half a turn, in radians",
                     Control::Width => "a width from 0 to 1, a fraction of the period",
                 },
             ));
@@ -108,7 +110,9 @@ pub fn read_map(
         }
         let supply_v = match control {
             Control::Supply => point.control,
-            Control::Width | Control::Drive => needed("supply", point.supply_v.or(supply_v))?,
+            Control::Width | Control::Drive | Control::Angle => {
+                needed("supply", point.supply_v.or(supply_v))?
+            }
         };
         map_points.push(point.finish(supply_v, load_ohm));
     }

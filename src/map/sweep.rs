@@ -1,7 +1,7 @@
 //! Maps solved from a stage, point by point.
 
 use super::{Control, Failure, Map, MapError, MapPoint, Origin};
-use crate::orbit::{Drive, Network, OrbitError, Tracker};
+use crate::orbit::{Drive, Network, Orbit, OrbitError, Tracker};
 
 /// Which points of a map to solve: plain data, made before anything is solved.
 #[derive(Debug, Clone, PartialEq)]
@@ -65,7 +65,7 @@ impl Sweep {
         let (lowest, highest, allowed) = match control {
             Control::Supply => (0.0, f64::MAX, "0 V or more"),
             Control::Width => (1e-3, 1.0 - 1e-3, "0.001 to 0.999"),
-            Control::Drive => (
+            Control::Drive | Control::Angle => (
                 0.0,
                 0.0,
                 "nothing: a stage is solved over its supply or width",
@@ -107,7 +107,7 @@ impl Sweep {
     pub fn full(network: &Network, control: Control, points: usize) -> Result<Self, SweepError> {
         let stage = network.stage();
         match control {
-            Control::Supply | Control::Drive => {
+            Control::Supply | Control::Drive | Control::Angle => {
                 Self::even(network, control, 0.0, stage.supply_v, points)
             }
             // The dead time of a pair takes the narrowest pulses.
@@ -134,22 +134,11 @@ impl Sweep {
         let mut first_cause = None;
         for &value in self.values.iter().rev() {
             let (supply_v, duty) = match self.control {
-                Control::Supply | Control::Drive => (value, self.duty),
+                Control::Supply | Control::Drive | Control::Angle => (value, self.duty),
                 Control::Width => (self.supply_v, value),
             };
             match tracker.orbit(supply_v, &Drive::new(&stage.driver, duty)) {
-                Ok(orbit) => points.push(MapPoint {
-                    control: value,
-                    output_v: orbit.output_v,
-                    supply_v,
-                    supply_a: Some(orbit.supply_a),
-                    efficiency: Some(orbit.efficiency),
-                    switch_peak_v: Some(orbit.switch_peak_v),
-                    switch_peak_a: Some(orbit.switch_peak_a),
-                    switch_min_v: Some(orbit.switch_min_v),
-                    closing_v: Some(orbit.closing_v),
-                    driver_w: Some(orbit.driver_w),
-                }),
+                Ok(orbit) => points.push(point(value, supply_v, &orbit)),
                 Err(cause) => {
                     failures.push(Failure {
                         control: value,
@@ -175,5 +164,21 @@ impl Sweep {
             points,
         )?;
         Ok(map.with_failures(failures))
+    }
+}
+
+/// The point of a map that `orbit` is at `control`.
+pub(super) fn point(control: f64, supply_v: f64, orbit: &Orbit) -> MapPoint {
+    MapPoint {
+        control,
+        output_v: orbit.output_v,
+        supply_v,
+        supply_a: Some(orbit.supply_a),
+        efficiency: Some(orbit.efficiency),
+        switch_peak_v: Some(orbit.switch_peak_v),
+        switch_peak_a: Some(orbit.switch_peak_a),
+        switch_min_v: Some(orbit.switch_min_v),
+        closing_v: Some(orbit.closing_v),
+        driver_w: Some(orbit.driver_w),
     }
 }

@@ -214,7 +214,7 @@ impl<T: Response> Responses<T> {
     }
 
     /// The next sample, from 0. Every edge up to [`EDGE_LATENCY`] samples past it must have been given.
-    pub fn next(&mut self) -> Complex64 {
+    pub fn advance(&mut self) -> Complex64 {
         let slot = self.sample as usize & (RING - 1);
         self.sample += 1;
         self.tail = self.tail * self.decay + std::mem::take(&mut self.far[slot]);
@@ -309,9 +309,9 @@ mod tests {
                 next += 1;
             }
             if now + 1 >= HALF as i64 {
-                let step = steps.next();
+                let step = steps.advance();
                 samples.push(match &mut decays {
-                    Some(decays) => step - decays.next(),
+                    Some(decays) => step - decays.advance(),
                     None => step,
                 });
             }

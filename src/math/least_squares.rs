@@ -107,6 +107,21 @@ impl LeastSquares {
         self.rows = self.rows - side as u64 - (other.pending.len() / side) as u64 + other.rows;
     }
 
+    /// The same rows with only the unknowns of `columns`, in their order.
+    #[must_use]
+    pub fn select(&self, columns: &[usize]) -> Self {
+        let mut whole = self.clone();
+        whole.fold();
+        let mut selected = Self::new(columns.len());
+        for row in whole.triangle.row_iter() {
+            let target = row[self.columns];
+            selected.push(columns.iter().map(|&column| row[column]), target);
+        }
+        selected.fold();
+        selected.rows = self.rows;
+        selected
+    }
+
     fn fold(&mut self) {
         let side = self.columns + 1;
         let fresh = self.pending.len() / side;

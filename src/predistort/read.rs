@@ -2,9 +2,10 @@
 
 use std::io::Read;
 
-use super::Table;
+use super::{Pass, Table};
 use crate::drive::{Between, Lookup, LookupSize, Spacing, Word};
 use crate::input::{Complaint, MAX_TEXT_BYTES, Place, Problem};
+use crate::map::Control;
 
 #[derive(serde::Deserialize)]
 struct Document {
@@ -14,6 +15,10 @@ struct Document {
     title: String,
     full_control: f64,
     full_output_v: Option<f64>,
+    #[serde(default)]
+    control: ControlWord,
+    #[serde(default)]
+    passes: Vec<Pass>,
     depth: usize,
     address_bits: u32,
     amplitude_bits: u32,
@@ -23,6 +28,15 @@ struct Document {
     rate: usize,
     control_words: Vec<u32>,
     phase_words: Vec<i32>,
+}
+
+#[derive(Default, serde::Deserialize)]
+#[serde(rename_all = "snake_case")]
+enum ControlWord {
+    #[default]
+    Supply,
+    Width,
+    Drive,
 }
 
 #[derive(serde::Deserialize)]
@@ -130,6 +144,12 @@ pub fn read_table(file: &str, reader: impl Read) -> Result<Table, Problem> {
         lookup,
         entries: Vec::new(),
         full_control: document.full_control,
+        control: match document.control {
+            ControlWord::Supply => Control::Supply,
+            ControlWord::Width => Control::Width,
+            ControlWord::Drive => Control::Drive,
+        },
+        passes: document.passes,
         full_output_v: document.full_output_v,
         title: document.title,
     })

@@ -10,9 +10,10 @@
 //! ```
 
 use super::branch::{Branch, BranchError};
+use super::capture::{FEWEST, Pass};
 use super::request::{BelowFloor, TableRequest};
 use crate::drive::{Lookup, LookupError, Shaping, Word};
-use crate::map::Map;
+use crate::map::{Control, Map};
 
 /// Whether an entry could be inverted, and what was done where not.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
@@ -30,6 +31,8 @@ pub enum EntryState {
     HeldAtTop,
     /// The inverse, in a stretch without map points: as good as the interpolation there.
     InGap,
+    /// Of a capture that never had this magnitude: the entry before it, moved to join what was seen.
+    NotSeen,
 }
 
 impl EntryState {
@@ -44,6 +47,9 @@ impl EntryState {
             }
             Self::HeldAtTop => "held at the top of the map's rising branch (more output is wanted)",
             Self::InGap => "inverted across a gap of the map (interpolated)",
+            Self::NotSeen => {
+                "not seen in the capture (as before, moved to join the nearest magnitude seen)"
+            }
         }
     }
 }
@@ -76,6 +82,8 @@ pub struct EntryCounts {
     pub held_at_top: usize,
     /// [`EntryState::InGap`]
     pub in_gap: usize,
+    /// [`EntryState::NotSeen`]
+    pub not_seen: usize,
 }
 
 impl EntryCounts {
@@ -88,6 +96,7 @@ impl EntryCounts {
             (self.held_at_bottom, EntryState::HeldAtBottom),
             (self.held_at_top, EntryState::HeldAtTop),
             (self.in_gap, EntryState::InGap),
+            (self.not_seen, EntryState::NotSeen),
         ]
         .into_iter()
         .filter(|(count, _)| *count > 0)
@@ -104,6 +113,11 @@ pub enum TableError {
     /// The sizes make no table.
     #[error(transparent)]
     Lookup(#[from] LookupError),
+    /// A capture that shows no stage.
+    #[error(
+        "the capture shows no amplitude that rises with the control: two different magnitudes at least must be held for {FEWEST} samples each"
+    )]
+    NothingSeen,
 }
 
 /// A table and where it came from.
@@ -115,6 +129,10 @@ pub struct Table {
     pub entries: Vec<Entry>,
     /// Full range of the control: V for a supply.
     pub full_control: f64,
+    /// What the control is.
+    pub control: Control,
+    /// What captures showed of this table's forerunners, the first one first; empty for a table from a map.
+    pub passes: Vec<Pass>,
     /// Output amplitude at address 1, V, where it is known.
     pub full_output_v: Option<f64>,
     /// What it says about itself.
@@ -179,6 +197,8 @@ impl Table {
             )?,
             entries,
             full_control,
+            control: map.control(),
+            passes: Vec::new(),
             full_output_v: Some(maker.full_output_v),
             title: title.to_owned(),
         })
@@ -199,6 +219,7 @@ impl Table {
             held_at_bottom: count(EntryState::HeldAtBottom),
             held_at_top: count(EntryState::HeldAtTop),
             in_gap: count(EntryState::InGap),
+            not_seen: count(EntryState::NotSeen),
         }
     }
 }

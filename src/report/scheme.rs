@@ -2,9 +2,10 @@
 
 use super::text::quantity;
 use crate::drive::{
-    BandShape, BurstScheme, Modulator, MovedEdges, PowerModel, Rails, Sampling, Scheme, StopBand,
-    Updates, WidthLaw,
+    AngleLaw, BandShape, BurstScheme, Combining, Modulator, MovedEdges, PowerModel, Rails,
+    Sampling, Scheme, StopBand, Updates, WidthLaw,
 };
+use crate::orbit::JointKind;
 
 /// A scheme's settings, imperfections included.
 pub fn scheme_rows(scheme: &Scheme) -> Vec<(String, String)> {
@@ -182,7 +183,7 @@ fn settings(scheme: &Scheme) -> Vec<(String, String)> {
         ]),
         Scheme::Burst(burst) => rows.extend(burst_rows(burst)),
         Scheme::Outphase(branches) => rows.extend([
-            own("combining", "isolated: the difference is burnt".to_owned()),
+            own("combining", combining(&branches.combining)),
             own(
                 "second branch weaker by",
                 format!("{} dB", branches.gain_mismatch_db),
@@ -206,6 +207,29 @@ fn settings(scheme: &Scheme) -> Vec<(String, String)> {
         )),
     }
     rows
+}
+
+fn combining(combining: &Combining) -> String {
+    let Combining::Joined(joined) = combining else {
+        return "isolated: the difference is burnt".to_owned();
+    };
+    let joint = &joined.joint;
+    let mut text = match joint.kind {
+        JointKind::Floating => "joined: the load floats between the branches".to_owned(),
+        JointKind::Tee => "joined: the load stands at a tee".to_owned(),
+    };
+    if let Some(compensation) = joint.compensation {
+        text.push_str(&format!(
+            ", compensated by {} (capacitor first, inductor second)",
+            quantity(compensation.reactance_ohm, "ohm", 4)
+        ));
+    }
+    text.push_str(match joined.law {
+        AngleLaw::Inverse => "; angle and phase by the inverse map",
+        AngleLaw::Amplitude => "; angle by the inverse map",
+        AngleLaw::Cosine => "; angle by the cosine",
+    });
+    text
 }
 
 fn burst_rows(burst: &BurstScheme) -> Vec<(String, String)> {

@@ -183,6 +183,7 @@ pub fn control_quantity(control: Control) -> Quantity {
         Control::Supply => Quantity::new("supply", "V"),
         Control::Width => Quantity::new("closed part of the period", ""),
         Control::Drive => Quantity::new("wanted part of full output", ""),
+        Control::Angle => Quantity::new("angle of each branch", "deg"),
     }
 }
 
@@ -210,7 +211,10 @@ pub fn map_figure(title: &str, map: &Map) -> Figure {
     MapFigure {
         title: title.to_owned(),
         control: control_quantity(map.control()),
-        control_values: points.iter().map(|point| point.control).collect(),
+        control_values: points
+            .iter()
+            .map(|point| map.control().shown(point.control))
+            .collect(),
         amplitude_v: points.iter().map(|point| point.output_v.norm()).collect(),
         phase_deg: phases_deg(map),
         efficiency: known(|point| point.efficiency),
@@ -245,7 +249,7 @@ pub fn map_text(title: &str, map: &Map) -> String {
             value.map_or("-".to_owned(), |value| quantity(value, unit, 4))
         };
         table.row([
-            quantity(point.control, map.control().unit(), 4),
+            map.control().show(point.control, 4),
             quantity(point.output_v.norm(), "V", 4),
             format!("{:.2} deg", phases[index]),
             quantity(point.output_v.norm_sqr() / (2.0 * map.load_ohm()), "W", 4),
@@ -260,19 +264,35 @@ pub fn map_text(title: &str, map: &Map) -> String {
             ),
         ]);
     }
-    let monotone = match map.turns_at() {
-        None => "the amplitude rises all the way: the map has an inverse".to_owned(),
-        Some(control) => format!(
-            "the amplitude stops rising at {}: no inverse from there on",
-            quantity(control, map.control().unit(), 4)
-        ),
+    let monotone = if map.control() == Control::Angle {
+        let lowest_v = points.iter().filter_map(|point| point.switch_min_v);
+        let lowest_v = lowest_v.fold(0.0, f64::min);
+        let turned = points.windows(2).find(|pair| {
+            pair[0].control >= 0.0 && pair[1].output_v.norm() >= pair[0].output_v.norm()
+        });
+        let mut text = match turned {
+            None => "the amplitude falls with the angle: the map has an inverse".to_owned(),
+            Some(pair) => format!(
+                "the amplitude rises with the angle at {}",
+                map.control().show(pair[0].control, 4)
+            ),
+        };
+        if lowest_v < -BODY_DIODE_V {
+            text.push_str(&format!(
+                "\na switch sees down to {}: body diodes, which the model leaves out, would conduct",
+                quantity(lowest_v, "V", 3)
+            ));
+        }
+        text
+    } else {
+        rising(map)
     };
     let mut failed = String::new();
     if let Some(first) = map.failures().first() {
         failed = format!(
             "\npoints without an orbit, left out and not interpolated over: {}; the first at {}: {}",
             map.failures().len(),
-            quantity(first.control, map.control().unit(), 4),
+            map.control().show(first.control, 4),
             first.reason
         );
     }
@@ -283,4 +303,14 @@ pub fn map_text(title: &str, map: &Map) -> String {
         map.describe(),
         table.text()
     )
+}
+
+fn rising(map: &Map) -> String {
+    match map.turns_at() {
+        None => "the amplitude rises all the way: the map has an inverse".to_owned(),
+        Some(control) => format!(
+            "the amplitude stops rising at {}: no inverse from there on",
+            map.control().show(control, 4)
+        ),
+    }
 }

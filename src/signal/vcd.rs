@@ -239,11 +239,10 @@ fn header<R: BufRead>(dump: &mut Dump<R>) -> Result<(f64, Vec<Variable>), Signal
                     format!("at most {DEEPEST} within each other"),
                 ));
             }
-            Command::Upscope => {
-                if scopes.pop().is_none() {
-                    return Err(dump.wrong("$upscope".to_owned(), "a $scope before it"));
-                }
+            Command::Upscope if scopes.pop().is_none() => {
+                return Err(dump.wrong("$upscope".to_owned(), "a $scope before it"));
             }
+            Command::Upscope => {}
             Command::VarDef(kind, bits, code, reference, _) => {
                 if variables.len() >= MOST_SIGNALS {
                     return Err(dump.wrong(

@@ -8,16 +8,17 @@ use super::parts::EfficiencyParts;
 use super::replay::{By, replayed};
 use super::result::{CheckResult, Convergence, Metrics, RateFacts, SignalFacts, StageFacts};
 use super::run::{Chain, Run};
-use super::shapes::shapes;
+use super::shapes::{joined_shapes, shapes};
+use super::validity::of_scheme;
 use super::warning::Warning;
 use crate::drive::{
-    ClassBScheme, Correction, GateFigures, LevelsScheme, LookupSize, MAX_FACTOR, OutphaseScheme,
-    Polynomial, RateReason, Scheme, WidthLaw, oversampling,
+    AngleReach, ClassBScheme, Combining, Correction, GateFigures, LevelsScheme, LookupSize,
+    MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, WidthLaw, oversampling,
 };
-use crate::map::{Control, Map, Origin, Sweep};
+use crate::map::{AngleSweep, Control, Map, Origin, Sweep};
 use crate::math::edges::CLEAN_BAND;
 use crate::metrics::{ChannelFilter, adjacent_channels, occupied_bandwidth};
-use crate::orbit::{Drive, Gating, Network, OrbitError};
+use crate::orbit::{Drive, Gating, Joined, Joint, Network, OrbitError};
 use crate::predistort::{Table, TableRequest};
 use crate::signal::Source;
 use crate::stage::Stage;
@@ -26,6 +27,9 @@ use crate::verdict::{Judgement, Measured, Wanted, judge};
 
 /// Points of a map solved for a check.
 const MAP_POINTS: usize = 201;
+
+/// Points of a map over the angle of two joined stages: a quarter of a degree apart.
+const ANGLE_POINTS: usize = 721;
 
 /// Points of the width maps of a curved stage at lower supplies.
 const PLANE_POINTS: usize = 101;
@@ -50,6 +54,9 @@ const INSTANTS_PER_HOLD: usize = 4;
 
 /// Resolution of the spectrum where neither limits nor the study ask for one, as a part of the signal's rate.
 const DEFAULT_RESOLUTION: f64 = 1.0 / 512.0;
+
+/// Joined branches that do not cancel below this part of full output fill the deepest notches.
+const FILLED_NOTCH: f64 = 0.01;
 
 /// Fewer segments than this are worth a warning.
 const FEW_SEGMENTS: u64 = 25;
@@ -180,6 +187,7 @@ impl<'a> Bench<'a> {
             None => Front::None,
             Some(Predistortion::Table(table)) => Front::Table(table.clone()),
             Some(Predistortion::Request(request)) => Front::Table(self.table(request)?),
+            Some(Predistortion::Polynomial(polynomial)) => Front::Polynomial(polynomial.clone()),
         })
     }
 
@@ -436,12 +444,20 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         return Ok((own.unwrap_or_else(|| Map::clone(map)), None));
     }
     let stage = &stage_of(study).ok_or(StudyError::NoStage)?;
+    if let Scheme::Outphase(OutphaseScheme {
+        combining: Combining::Joined(joined),
+        gain_mismatch_db,
+        ..
+    }) = scheme
+    {
+        return joined_hardware(stage, &joined.joint, *gain_mismatch_db);
+    }
     let network = Network::new(stage)?;
     let map = match scheme.control() {
         Control::Supply => Sweep::full(&network, Control::Supply, MAP_POINTS)?,
         Control::Width => Sweep::full(&network, Control::Width, MAP_POINTS)?,
         // Only full output is needed.
-        Control::Drive => {
+        Control::Drive | Control::Angle => {
             let full_v = stage.supply_v;
             Sweep::even(&network, Control::Supply, 0.5 * full_v, full_v, 2)?
         }
@@ -472,6 +488,36 @@ fn hardware(study: &Study) -> Result<(Map, Option<StageFacts>), StudyError> {
         waveform: network.waveform(stage.supply_v, &drive, 240)?,
         settling_s: network.settling_s(&drive),
         shapes: shapes(&network, scheme, &map),
+    };
+    Ok((map, Some(facts)))
+}
+
+/// The map of two of `stage` over their angle, and what they do at full output. The front end knows nothing of the
+/// second branch's lower gain.
+fn joined_hardware(
+    stage: &Stage,
+    joint: &Joint,
+    gain_mismatch_db: f64,
+) -> Result<(Map, Option<StageFacts>), StudyError> {
+    let actual = Joined::new(
+        stage,
+        &Joint {
+            gain_mismatch_db,
+            ..*joint
+        },
+    )?;
+    let mut map = AngleSweep::full(&actual, ANGLE_POINTS)?.solve(&actual)?;
+    if gain_mismatch_db != 0.0 {
+        let nominal = Joined::new(stage, joint)?;
+        map = map.with_nominal(AngleSweep::full(&nominal, ANGLE_POINTS)?.solve(&nominal)?);
+    }
+    let angle_rad = AngleReach::of(map.known()).full_rad;
+    let (supply_v, duty) = (stage.supply_v, stage.driver.duty);
+    let facts = StageFacts {
+        orbit: actual.orbit(supply_v, duty, angle_rad)?,
+        waveform: actual.waveform(supply_v, duty, angle_rad, 120)?,
+        settling_s: actual.settling_s(angle_rad),
+        shapes: joined_shapes(&actual, angle_rad),
     };
     Ok((map, Some(facts)))
 }
@@ -736,9 +782,19 @@ pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
     {
         warnings.push(Warning::WidthTurns { width: turn });
     }
+    if result.map.control() == Control::Angle {
+        let reach = AngleReach::of(result.map.known());
+        if reach.lowest > FILLED_NOTCH || reach.full_rad > 0.0 {
+            warnings.push(Warning::AngleReach {
+                full_deg: reach.full_rad.to_degrees(),
+                lowest_db: crate::units::db(reach.lowest * reach.lowest),
+            });
+        }
+    }
     if let Some(coarse) = coarse_grid(result) {
         warnings.push(coarse);
     }
+    warnings.extend(of_scheme(result));
     if let Some(first) = result.map.failures().first() {
         warnings.push(Warning::PointsFailed {
             count: result.map.failures().len(),
@@ -751,9 +807,24 @@ pub(super) fn warnings(result: &CheckResult, held: f64) -> Vec<Warning> {
             Hardware::Stage(stage) => stage.switch.diode.is_some(),
             Hardware::Map(_) => true,
         };
-        if !modelled && stage.orbit.switch_min_v < -0.7 {
-            warnings.push(Warning::DiodeWouldConduct {
-                lowest_v: stage.orbit.switch_min_v,
+        // Joined and paired switches go beyond their rails away from full output.
+        let lowest_v = match &result.study.hardware {
+            Hardware::Stage(hardware)
+                if hardware.is_pair() || result.map.control() == Control::Angle =>
+            {
+                result
+                    .map
+                    .points()
+                    .iter()
+                    .filter_map(|point| point.switch_min_v)
+                    .fold(stage.orbit.switch_min_v, f64::min)
+            }
+            _ => stage.orbit.switch_min_v,
+        };
+        if !modelled && lowest_v < -0.7 {
+            warnings.push(match stage.orbit.switches.is_empty() {
+                true => Warning::DiodeWouldConduct { lowest_v },
+                false => Warning::BeyondRails { lowest_v },
             });
         }
         let signal_s = 1.0 / result.signal.rate_hz;

@@ -20,6 +20,9 @@ pub enum StudyError {
     /// The stage has no state equations.
     #[error("the stage: {0}")]
     Network(#[from] NetworkError),
+    /// Two stages cannot be joined.
+    #[error("two of the stage on one load: {0}")]
+    Joint(#[from] crate::orbit::JointError),
     /// The stage has no orbit.
     #[error("the stage: {0}")]
     Orbit(#[from] OrbitError),

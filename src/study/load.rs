@@ -1,12 +1,12 @@
 //! A study file and the files it names.
 
-use crate::drive::{Rails, Scheme};
+use crate::drive::{Polynomial, Rails, Scheme};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::limits::{Limits, LimitsRequest};
 use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
 use crate::math::Window;
 use crate::metrics::SymbolFormat;
-use crate::predistort::{Table, TableRequest, read_table};
+use crate::predistort::{Table, TableRequest, read_polynomial, read_table};
 use crate::signal::FormatOptions;
 use crate::stage::{Anchor, Stage};
 use crate::units::{self, Dimension};
@@ -88,6 +88,8 @@ pub enum Predistortion {
     Table(Table),
     /// A table to be made from the map.
     Request(TableRequest),
+    /// A polynomial from a file.
+    Polynomial(Polynomial),
 }
 
 /// What is transmitted.
@@ -118,6 +120,7 @@ impl Study {
             (Control::Width, Hardware::Stage(stage)) => stage.driver.duty,
             (Control::Width, Hardware::Map(map)) => map.domain().1,
             (Control::Drive, _) => 1.0,
+            (Control::Angle, _) => std::f64::consts::FRAC_PI_2,
         }
     }
 
@@ -208,6 +211,12 @@ impl Study {
     fn fits(&self, scheme: &Section<'_>) -> Result<(), Problem> {
         let wanted = self.scheme.control();
         match &self.hardware {
+            Hardware::Map(_) if wanted == Control::Angle => {
+                return Err(scheme.problem(
+                    "combining",
+                    "\"isolated\" with a map from a file: joined stages are solved together, from a stage",
+                ));
+            }
             Hardware::Map(map) if wanted != Control::Drive && map.control() != wanted => {
                 return Err(scheme.problem(
                     "kind",
@@ -304,16 +313,24 @@ fn signal_choice(section: &Section<'_>) -> Result<SignalChoice, Problem> {
 }
 
 fn predistortion(section: &Section<'_>, files: &dyn Files) -> Result<Predistortion, Problem> {
+    let opened = |key: &'static str, name: &str| {
+        let shown = files.display(name);
+        files.open(name).map_err(|error| {
+            section.problem(key, format!("a file that can be read ({shown}: {error})"))
+        })
+    };
+    if let Some(name) = section.maybe_text("polynomial")? {
+        let reader = opened("polynomial", name)?;
+        let polynomial = read_polynomial(&files.display(name), reader)?;
+        // Keys of a table beside it are refused.
+        section.finish()?;
+        return Ok(Predistortion::Polynomial(polynomial));
+    }
     let choice = match section.maybe_text("table")? {
         None => Predistortion::Request(TableRequest::read(section)?),
         Some(name) => {
             let shown = files.display(name);
-            let reader = files.open(name).map_err(|error| {
-                section.problem(
-                    "table",
-                    format!("a file that can be read ({shown}: {error})"),
-                )
-            })?;
+            let reader = opened("table", name)?;
             Predistortion::Table(read_table(&shown, reader)?)
         }
     };

@@ -5,7 +5,7 @@ use crate::transmit::Energy;
 /// Factors whose product is the efficiency. Absent where the map knows no current.
 ///
 /// ```text
-/// efficiency = modulator * stage * driver * combiner
+/// efficiency = modulator * stage * driver * combiner * filter
 /// ```
 #[derive(Debug, Clone, Copy, PartialEq, serde::Serialize)]
 pub struct EfficiencyParts {
@@ -17,6 +17,8 @@ pub struct EfficiencyParts {
     pub driver: Option<f64>,
     /// What leaves the combiner over what the stages deliver into it; 1 without one.
     pub combiner: f64,
+    /// What leaves a filter behind the stage over what enters it; 1 without one.
+    pub filter: f64,
 }
 
 impl EfficiencyParts {
@@ -28,7 +30,8 @@ impl EfficiencyParts {
             modulator: known(energy.stage_w / energy.modulator_w),
             stage: known(energy.generated_w / energy.stage_w),
             driver: known(energy.modulator_w / drawn_w),
-            combiner: energy.output_w / energy.generated_w,
+            combiner: energy.filter_w / energy.generated_w,
+            filter: energy.output_w / energy.filter_w,
         }
     }
 }
@@ -43,6 +46,7 @@ mod tests {
             samples: 10,
             output_w: 3.0,
             generated_w: 4.0,
+            filter_w: 3.2,
             stage_w: 5.0,
             modulator_w: 6.5,
             driver_w: 0.5,
@@ -51,9 +55,11 @@ mod tests {
         let product = parts.modulator.unwrap()
             * parts.stage.unwrap()
             * parts.driver.unwrap()
-            * parts.combiner;
+            * parts.combiner
+            * parts.filter;
         assert!((product - energy.efficiency()).abs() < 1e-15);
-        assert_eq!((parts.combiner, parts.stage), (0.75, Some(0.8)));
+        assert_eq!((parts.combiner, parts.stage), (0.8, Some(0.8)));
+        assert_eq!(parts.filter, 3.0 / 3.2);
         let unknown = Energy {
             stage_w: f64::NAN,
             modulator_w: f64::NAN,

@@ -1,8 +1,10 @@
 //! The drain's waveform where the signal takes the stage: at the full, half and lowest value of its control.
 
+use std::f64::consts::{FRAC_PI_2, FRAC_PI_4};
+
 use crate::drive::Scheme;
 use crate::map::{Control, Map};
-use crate::orbit::{Drive, Network, Waveform};
+use crate::orbit::{Drive, Joined, Network, Waveform};
 
 /// Instants in each position of the switch.
 const POINTS: usize = 240;
@@ -31,7 +33,7 @@ pub(super) fn shapes(network: &Network, scheme: &Scheme, map: &Map) -> Vec<Shape
         Control::Supply => stage.supply_v,
         Control::Width => stage.driver.duty,
         // The stage itself always works at full supply and width.
-        Control::Drive => return Vec::new(),
+        Control::Drive | Control::Angle => return Vec::new(),
     };
     let mut lowest = map
         .points()
@@ -49,7 +51,7 @@ pub(super) fn shapes(network: &Network, scheme: &Scheme, map: &Map) -> Vec<Shape
         .filter(|(place, _)| *place == "full" || !matches!(scheme, Scheme::Burst(_)))
         .map(|(place, value)| {
             let (supply_v, duty) = match control {
-                Control::Supply | Control::Drive => (value, stage.driver.duty),
+                Control::Supply | Control::Drive | Control::Angle => (value, stage.driver.duty),
                 Control::Width => (stage.supply_v, value),
             };
             let drive = Drive::new(&stage.driver, duty);
@@ -64,4 +66,25 @@ pub(super) fn shapes(network: &Network, scheme: &Scheme, map: &Map) -> Vec<Shape
             }
         })
         .collect()
+}
+
+/// The waveforms of the first of two joined stages at full output, at 45 degrees and at a quarter turn.
+pub(super) fn joined_shapes(joined: &Joined, full_rad: f64) -> Vec<Shape> {
+    let (supply_v, duty) = (joined.stage().supply_v, joined.stage().driver.duty);
+    [
+        ("full", full_rad),
+        ("between", FRAC_PI_4),
+        ("lowest", FRAC_PI_2),
+    ]
+    .into_iter()
+    .map(|(place, value)| Shape {
+        place,
+        control: Control::Angle,
+        value,
+        supply_v,
+        waveform: joined
+            .waveform(supply_v, duty, value, POINTS)
+            .map_err(|error| error.to_string()),
+    })
+    .collect()
 }

@@ -78,6 +78,58 @@ pub enum Warning {
         /// From this width on it falls.
         width: f64,
     },
+    /// Several switches, one of which goes beyond a rail.
+    BeyondRails {
+        /// Lowest voltage across a switch, V.
+        lowest_v: f64,
+    },
+    /// Joined branches neither add up at angle 0 nor cancel at a quarter turn.
+    AngleReach {
+        /// The angle of full output, degrees.
+        full_deg: f64,
+        /// Output at a quarter turn, dB below full.
+        lowest_db: f64,
+    },
+    /// The sampled band reaches past the carrier.
+    WiderThanCarrier {
+        /// Farthest offset that is sampled, Hz.
+        span_hz: f64,
+        /// Hz
+        carrier_hz: f64,
+    },
+    /// The deepest notch lies below the narrowest pulse that the map knows.
+    NotchBelowMap {
+        /// The notch, as a part of full output.
+        notch: f64,
+        /// The lowest output of the map, likewise.
+        lowest: f64,
+    },
+    /// Ripple that the stage does not follow at once.
+    RippleFasterThanStage {
+        /// Of the ripple, Hz.
+        frequency_hz: f64,
+        /// Settling time of the stage, s.
+        settling_s: f64,
+    },
+    /// Rails that change faster than the stage settles.
+    RailsFasterThanStage {
+        /// Time to 1 % of a rail, s.
+        rail_s: f64,
+        /// Settling time of the stage, s.
+        settling_s: f64,
+    },
+    /// Branches whose phase moves faster than the stage follows at once.
+    BranchesFasterThanStage {
+        /// Settling time of the stage, s.
+        settling_s: f64,
+        /// Time in which the branches move, s.
+        branch_s: f64,
+    },
+    /// Branches too unequal to draw the same.
+    UnequalBranches {
+        /// dB
+        gain_db: f64,
+    },
     /// Edges of the gate that the map cannot answer for.
     HurriedGate {
         /// Part of all edges.
@@ -207,6 +259,58 @@ impl fmt::Display for Warning {
             Self::WidthTurns { width } => write!(
                 f,
                 "the output falls past a width of {width:.4}: full output is taken there, wider pulses are not used"
+            ),
+            Self::BeyondRails { lowest_v } => write!(
+                f,
+                "a switch sees down to {} across it: a real one's body diode would conduct and clamp it, which this model leaves out",
+                show(*lowest_v, "V", 3)
+            ),
+            Self::AngleReach { full_deg, lowest_db } => write!(
+                f,
+                "the joined branches give most at {full_deg:.1} deg, where full output is taken, and {lowest_db:.1} dB of it at 90 deg, the least that is asked of them: magnitudes below that are held there"
+            ),
+            Self::WiderThanCarrier {
+                span_hz,
+                carrier_hz,
+            } => write!(
+                f,
+                "sampled out to {} from a carrier of {}: a complex baseband is no model past half of the carrier; far segments are uncertain",
+                show(*span_hz, "Hz", 4),
+                show(*carrier_hz, "Hz", 4)
+            ),
+            Self::NotchBelowMap { notch, lowest } => write!(
+                f,
+                "the deepest notch lies {:.1} dB below full output, the narrowest pulse of the map {:.1} dB: below it the output is held",
+                -20.0 * notch.max(1e-30).log10(),
+                -20.0 * lowest.log10()
+            ),
+            Self::RippleFasterThanStage {
+                frequency_hz,
+                settling_s,
+            } => write!(
+                f,
+                "the stage settles in {}, too slowly to follow a ripple of {} at once: its sidebands are overstated by map; use --by replay",
+                show(*settling_s, "s", 3),
+                show(*frequency_hz, "Hz", 4)
+            ),
+            Self::RailsFasterThanStage { rail_s, settling_s } => write!(
+                f,
+                "a rail settles in {} and the stage itself in {}: by map the stage follows at once, so what its network does to the steps is missing; use --by replay",
+                show(*rail_s, "s", 3),
+                show(*settling_s, "s", 3)
+            ),
+            Self::BranchesFasterThanStage {
+                settling_s,
+                branch_s,
+            } => write!(
+                f,
+                "the branches move within about {} and a stage settles in {}: the map assumes that it follows at once; use --by replay",
+                show(*branch_s, "s", 3),
+                show(*settling_s, "s", 3)
+            ),
+            Self::UnequalBranches { gain_db } => write!(
+                f,
+                "branches that differ by {gain_db:.2} dB: the weaker one is taken to draw as much as the other, so that the efficiency is understated"
             ),
             Self::HurriedGate {
                 fraction,

@@ -14,6 +14,8 @@ pub struct Energy {
     pub output_w: f64,
     /// Sum of powers that stages deliver into a combiner, W; the output's own without one.
     pub generated_w: f64,
+    /// Sum of powers that enter a filter behind the stage, W; the output's own without one.
+    pub filter_w: f64,
     /// Sum of powers that the stage draws from its supply, W.
     pub stage_w: f64,
     /// Sum of powers that the modulator draws, W.
@@ -144,7 +146,8 @@ impl<'a> MapTransmitter<'a> {
         let output_w = output_v.norm_sqr() / (2.0 * self.map.load_ohm());
         let energy = &mut self.energy;
         energy.output_w += output_w;
-        energy.generated_w += output_w;
+        energy.generated_w += drawn.delivered_w;
+        energy.filter_w += drawn.delivered_w;
         energy.stage_w += drawn.stage_w;
         energy.driver_w += drawn.driver_w;
         energy.modulator_w += drawn.stage_w;
@@ -161,6 +164,7 @@ impl<'a> MapTransmitter<'a> {
         let energy = &mut self.energy;
         energy.output_w += weight * output_w;
         energy.generated_w += weight * self.map.generated_w().unwrap_or(output_w);
+        energy.filter_w += weight * output_w;
         energy.stage_w += weight * working.supply_v * working.supply_a;
         energy.driver_w += weight * self.map.driver_held_w(control).unwrap_or(0.0);
         energy.modulator_w += weight * modulator_w;

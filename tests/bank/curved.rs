@@ -3,11 +3,11 @@
 use std::io::{self, Cursor};
 
 use quietedge::input::{Files, ReadSeek};
-use quietedge::orbit::{Drive, Network};
+use quietedge::orbit::{Drive, Network, OrbitError};
 use quietedge::stage::{Feed, Stage};
 use serde_json::Value;
 
-use super::curved_twin::curved_twin;
+use super::curved_twin::{closings, curved_twin};
 
 /// What two step sizes, extrapolated, leave: the twin has order 2 and no events, so that the diode's corner and
 /// the charge dumped at closing fall between its steps. SciPy's shooting holds the same stages to 1e-6.
@@ -120,4 +120,47 @@ fn the_curved_twin_settles_to_the_orbit() {
         worst.1
     );
     assert!(faults.is_empty(), "{}", faults.join("\n"));
+}
+
+/// A large junction on a small coil: from 2 to 3 V of supply on, its orbit of one period is no longer stable.
+const SUBHARMONIC: &str = r#"
+frequency = "169.4 MHz"
+supply = { voltage = 4 }
+switch = { closed_resistance = 0.005595631578712327, diode = { drop = 4.093879833365655, resistance = 0.3 } }
+driver = { duty = 0.29659521403892947, swing = 3, rise = 0.0000000009300159548361479, fall = 0.0000000002 }
+feed = { inductance = 0.00000001, resistance = 0.05 }
+[drain]
+capacitance = 0.00000000002
+junction = { zero_bias = 0.0000003784997262944971, potential = 0.2766678912017115, grading = 2.129449934311377 }
+gate_coupling = 0.000000000002
+[load]
+resistance = 6.925869994737929
+[[load.ladder]]
+series = { inductance = 0.00000003, q = 143.88517413495987 }
+[[load.ladder]]
+series = { inductance = 0.0000015994435491668928 }
+"#;
+
+#[test]
+fn an_orbit_that_the_twin_never_settles_to_is_called_unstable() {
+    let stage = Stage::parse("subharmonic", SUBHARMONIC).expect("a stage");
+    let network = Network::new(&stage).expect("a network");
+    let drive = Drive::new(&stage.driver, stage.driver.duty);
+    match network.orbit(4.0, &drive) {
+        Err(error @ OrbitError::Unstable { re, im }) => {
+            assert!(re < -1.5 && im == 0.0, "{re} {im}");
+            assert!(error.to_string().contains("two carrier cycles"), "{error}");
+        }
+        other => panic!("{other:?}"),
+    }
+    let moved = |supply_v: f64| {
+        let last = closings(&stage, supply_v, &drive, 3000);
+        let size = last.iter().fold(1e-3f64, |size, volt| size.max(volt.abs()));
+        (last[3] - last[2]).abs() / size
+    };
+    // Where it is stable, the twin comes to the same closing voltage each period; here it does not.
+    let (stable, unstable) = (moved(1.0), moved(4.0));
+    println!("closing voltage from period to period: {stable:.1e} at 1 V, {unstable:.1e} at 4 V");
+    assert!(network.orbit(1.0, &drive).is_ok());
+    assert!(stable < 1e-4 && unstable > 1e-2, "{stable} {unstable}");
 }

@@ -392,9 +392,20 @@ impl Run<'_> {
 /// The orbit at `supply_v`, settled from rest; `choke_a` is the current of an ideal choke.
 pub fn curved_twin(stage: &Stage, supply_v: f64, choke_a: f64, drive: &Drive) -> CurvedTwin {
     let period_s = 1.0 / stage.frequency_hz;
+    let (mut run, mut state) = at_rest(stage, supply_v, choke_a);
+    // Each run starts where the one before settled.
+    let [_, rough, fine] = STEPS.map(|steps| {
+        let plan = plan(&run, stage, drive, steps);
+        settled(&mut run, &plan, steps, drive, period_s, &mut state)
+    });
+    rough.extrapolated(&fine)
+}
+
+/// A stage before anything happens.
+fn at_rest(stage: &Stage, supply_v: f64, choke_a: f64) -> (Run<'_>, State) {
     let net = Network::new(stage);
     let branches = net.branches.len();
-    let mut run = Run {
+    let run = Run {
         node_v: vec![0.0; net.nodes],
         injected: vec![0.0; net.nodes],
         drain: Drain::new(stage),
@@ -405,17 +416,22 @@ pub fn curved_twin(stage: &Stage, supply_v: f64, choke_a: f64, drive: &Drive) ->
         },
         net,
     };
-    let mut state = State {
+    let state = State {
         held: vec![0.0; branches],
         charge: run.drain.charge(0.0).0,
         drain_v: 0.0,
     };
-    // Each run starts where the one before settled.
-    let [_, rough, fine] = STEPS.map(|steps| {
-        let plan = plan(&run, stage, drive, steps);
-        settled(&mut run, &plan, steps, drive, period_s, &mut state)
-    });
-    rough.extrapolated(&fine)
+    (run, state)
+}
+
+/// The closing voltages of the last of `periods` periods from rest.
+pub fn closings(stage: &Stage, supply_v: f64, drive: &Drive, periods: usize) -> Vec<f64> {
+    let steps = STEPS[1];
+    let (mut run, mut state) = at_rest(stage, supply_v, 0.0);
+    let plan = plan(&run, stage, drive, steps);
+    let period_s = 1.0 / stage.frequency_hz;
+    let mut one = || one_period(&mut run, &plan, steps, drive, period_s, &mut state).closing_v;
+    (0..periods).map(|_| one()).skip(periods - 4).collect()
 }
 
 /// Every part of the period with its steps.

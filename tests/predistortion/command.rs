@@ -152,7 +152,7 @@ fn the_smallest_table_is_searched() {
     let document: Value = serde_json::from_slice(&made.stdout).expect("one document");
     let search = &document["search"];
     assert_eq!(search["end"], "found");
-    assert_eq!(search["sweeps"].as_array().expect("sweeps").len(), 3);
+    assert_eq!(search["sweeps"].as_array().expect("sweeps").len(), 6);
     let combined = search["combined"].as_array().expect("combinations");
     let margin = |row: &Value| row["margin_db"].as_f64().expect("a margin");
     let (last, before) = combined.split_last().expect("some were tried");
@@ -196,4 +196,62 @@ fn options_that_make_no_table_are_refused() {
         assert_eq!(output.status.code(), Some(2), "{given:?}: {text}");
         assert!(text.contains(said), "{given:?}: {text}");
     }
+}
+
+#[test]
+fn a_polynomial_is_read_back_and_does_the_same() {
+    let folder = folder();
+    let arguments = [
+        "predistort",
+        "a.study.toml",
+        "--rate",
+        "4",
+        "--polynomial",
+        "memory",
+        "--power",
+        "4",
+        "--lags",
+        "1",
+        "--out",
+        "made",
+        "--json",
+    ];
+    let made = run(folder.path(), &arguments);
+    let document: Value = serde_json::from_slice(&made.stdout).expect("one document");
+    let text = std::fs::read(folder.path().join("made/polynomial.json")).expect("a polynomial");
+    let file: Value = serde_json::from_slice(&text).expect("JSON");
+    let bits = file["words"]["bits"].as_i64().expect("bits") as i32;
+    let exponent = file["words"]["exponent"].as_i64().expect("an exponent") as i32;
+    assert!((6..=24).contains(&bits), "{bits}");
+    for term in file["terms"].as_array().expect("terms") {
+        for (word, value) in [("re_word", "re"), ("im_word", "im")] {
+            let word = term[word].as_i64().expect("a word");
+            assert!(word.unsigned_abs() <= 1 << (bits - 1));
+            assert_eq!(
+                word as f64 * 2f64.powi(exponent - bits + 1),
+                term[value].as_f64().expect("a part")
+            );
+        }
+    }
+    let study = std::fs::read_to_string(folder.path().join("a.study.toml")).expect("a study");
+    let write = |keys: &str| {
+        let text = format!("{study}[predistort]\n{keys}\n");
+        std::fs::write(folder.path().join("b.study.toml"), text).expect("written");
+    };
+    write("polynomial = \"made/polynomial.json\"");
+    let again = run(folder.path(), &["check", "b.study.toml", "--json"]);
+    let checked: Value = serde_json::from_slice(&again.stdout).expect("one document");
+    assert_eq!(
+        checked["metrics"],
+        document["polynomial"]["after"]["metrics"]
+    );
+    write("polynomial = \"made/polynomial.json\"\ndepth = 16");
+    let refused = run(folder.path(), &["check", "b.study.toml"]);
+    assert_eq!(refused.status.code(), Some(2));
+    assert!(String::from_utf8_lossy(&refused.stderr).contains("depth"));
+    write("polynomial = \"made/table.json\"");
+    assert_eq!(
+        run(folder.path(), &["check", "b.study.toml"]).status.code(),
+        Some(2)
+    );
 }

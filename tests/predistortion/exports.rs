@@ -49,6 +49,8 @@ fn tables() -> Vec<Table> {
                     lookup: Lookup::new(size, spacing, between, 16, words).expect("a table"),
                     entries: Vec::new(),
                     full_control: 6.0,
+                    control: quietedge::map::Control::Supply,
+                    passes: Vec::new(),
                     full_output_v: Some(0.1 + 0.2),
                     title: "odd */ title\nwith a break".to_owned(),
                 }

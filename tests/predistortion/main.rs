@@ -1,5 +1,6 @@
 //! Predistortion from the outside: tables against closed forms, files read back, polynomials against NumPy.
 
+mod closed;
 mod command;
 mod exports;
 mod polynomials;

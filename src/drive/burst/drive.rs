@@ -203,6 +203,7 @@ impl<'a> BurstDrive<'a> {
             return Drawn {
                 stage_w: self.gating.off_w,
                 driver_w: 0.0,
+                ..Drawn::default()
             };
         }
         let width = self.inverse.width(gate);
@@ -214,6 +215,7 @@ impl<'a> BurstDrive<'a> {
         Drawn {
             stage_w: supply_v * self.map.supply_held_a(width).unwrap_or(f64::NAN),
             driver_w: self.map.driver_held_w(width).unwrap_or(0.0),
+            ..Drawn::default()
         }
     }
 
@@ -317,9 +319,9 @@ impl<'a> BurstDrive<'a> {
             }
             let mut output = Complex64::ZERO;
             if self.newest >= GATE_LATENCY as i64 {
-                let mut gate = self.steps.next();
+                let mut gate = self.steps.advance();
                 for (_, responses) in self.rise.iter_mut().chain(&mut self.fall) {
-                    gate += responses.next();
+                    gate += responses.advance();
                 }
                 output = self.full_v * phase * gate;
             }
@@ -338,6 +340,12 @@ impl<'a> BurstDrive<'a> {
                 self.waiting.pop_front().unwrap_or_default()
             } else {
                 Instant::default()
+            };
+            drawn.delivered_w = match (filtered, self.returned > 0.0) {
+                (false, _) => output.norm_sqr() / (2.0 * load_ohm),
+                // What the filter turns away is not taken in, or is taken in and burnt.
+                (true, true) => through_w,
+                (true, false) => square * full_w,
             };
             if filtered {
                 drawn.stage_w -= self.returned * (square * full_w - through_w);

@@ -11,6 +11,8 @@ mod error;
 mod pair;
 mod track;
 
+use std::f64::consts::TAU;
+
 use num_complex::Complex64;
 use serde::Serialize;
 
@@ -51,6 +53,44 @@ pub struct Sync {
     pub slow_phase_deg: f64,
     #[serde(skip)]
     pub(crate) grid: Grid,
+}
+
+impl Sync {
+    /// The same with the frequency and phase that `blocks` still show: (middle in samples of the capture, sum of
+    /// `y p*` over the block), `p` a better prediction of the capture than one gain of the reference.
+    ///
+    /// An output whose phase bends with its amplitude turns back and forth against its reference: the line through
+    /// the phases of the one gain is off by that. Against the static map it is not.
+    #[must_use]
+    pub fn refined(&self, blocks: &[(f64, Complex64)], rate_hz: f64) -> Self {
+        let (mut w, mut wt, mut wtt, mut wp, mut wtp) = (0.0, 0.0, 0.0, 0.0, 0.0);
+        let mut last = 0.0;
+        for &(middle, sum) in blocks {
+            let weight = sum.norm();
+            if !(weight > 0.0 && weight.is_finite()) {
+                continue;
+            }
+            let here = sum.arg();
+            last = here - TAU * ((here - last) / TAU).round();
+            let t = middle - self.grid.centre;
+            w += weight;
+            wt += weight * t;
+            wtt += weight * t * t;
+            wp += weight * last;
+            wtp += weight * t * last;
+        }
+        let across = wtt * w - wt * wt;
+        if across.is_nan() || across <= 0.0 {
+            return *self;
+        }
+        let slope = (wtp * w - wt * wp) / across;
+        let phase = (wp - slope * wt) / w;
+        let mut refined = *self;
+        refined.grid.cycles += slope / TAU;
+        refined.frequency_hz += slope / TAU * rate_hz;
+        refined.gain *= Complex64::cis(phase);
+        refined
+    }
 }
 
 /// The numbers behind [`Sync`], in samples.

@@ -32,7 +32,10 @@ fn facts(table: &Table) -> Vec<(&'static str, String)> {
         ("amplitude bits", size.amplitude_bits.to_string()),
         ("phase bits", size.phase_bits.to_string()),
         ("rate", format!("{} times the signal's", lookup.rate())),
-        ("full control", format!("{} V", table.full_control)),
+        ("full control", {
+            let (full, unit) = (table.full_control, table.control.unit());
+            format!("{full} {unit}").trim_end().to_owned()
+        }),
     ];
     if let Some(full_output_v) = table.full_output_v {
         facts.push(("full output", format!("{full_output_v} V peak")));

@@ -57,6 +57,7 @@ pub fn json(table: &Table) -> Value {
         "kind": "static table",
         "version": 1,
         "title": table.title,
+        "control": table.control.name(),
         "full_control": table.full_control,
         "full_output_v": table.full_output_v,
         "depth": size.depth,
@@ -67,6 +68,7 @@ pub fn json(table: &Table) -> Value {
         "between": lookup.between(),
         "rate": lookup.rate(),
         "entries": table.counts(),
+        "passes": table.passes,
         "control_words": words.iter().map(|word| word.control).collect::<Vec<_>>(),
         "phase_words": words.iter().map(|word| word.phase).collect::<Vec<_>>(),
     })

@@ -191,6 +191,7 @@ mod tests {
                 passes: 6,
                 ridge: 0.0,
                 rate: 8,
+                coefficient_bits: None,
             };
             let learned = learn(&request, 10, &wanted, transmit).unwrap();
             let (first, last) = (learned.passes[0], learned.passes[learned.passes.len() - 1]);
@@ -220,6 +221,7 @@ mod tests {
             passes: 4,
             ridge: 0.0,
             rate: 8,
+            coefficient_bits: None,
         };
         let noisy = |u: &[Complex64]| -> Result<Vec<Complex64>, FitError> {
             Ok(u.iter()

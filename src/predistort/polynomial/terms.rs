@@ -85,6 +85,8 @@ pub struct PolynomialRequest {
     pub ridge: f64,
     /// How often it is applied, in times the signal's rate: a power of two.
     pub rate: usize,
+    /// Bits of each part of a coefficient; the fewest that do no harm where absent.
+    pub coefficient_bits: Option<u32>,
 }
 
 #[cfg(test)]

@@ -1,8 +1,10 @@
 //! Stage, signal, scheme and sampling in words.
 
+use crate::map::Control;
 use crate::report::page::FactGroup;
 use crate::report::stage::orbit_rows;
 use crate::report::text::quantity;
+use crate::stage::Arrangement;
 use crate::study::{CheckResult, Hardware};
 
 pub(super) fn facts(result: &CheckResult) -> Vec<FactGroup> {
@@ -24,6 +26,23 @@ pub(super) fn facts(result: &CheckResult) -> Vec<FactGroup> {
                 )
             })
             .collect();
+        let one = match stage.switch.arrangement {
+            Arrangement::Single => "one switch to ground (class E)".to_owned(),
+            Arrangement::Pair { .. } => format!(
+                "a switch to each rail, {} dead time (class D)",
+                quantity(stage.driver.dead_s, "s", 3)
+            ),
+        };
+        rows.insert(
+            0,
+            own(
+                "arrangement",
+                match result.map.control() {
+                    Control::Angle => format!("two stages on one load, each with {one}"),
+                    _ => one,
+                },
+            ),
+        );
         rows.push(own("settling time", quantity(facts.settling_s, "s", 3)));
         groups.push(FactGroup {
             title: "Stage at full supply".to_owned(),

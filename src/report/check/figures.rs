@@ -36,6 +36,7 @@ fn shapes_figure(shapes: &[Shape]) -> Option<CaptionedFigure> {
     let control = first.control;
     let name_of = |shape: &Shape| match control {
         Control::Supply => format!("{}, {}", shape.place, quantity(shape.value, "V", 3)),
+        Control::Angle => format!("{}, {:.1} deg", shape.place, shape.value.to_degrees()),
         Control::Width | Control::Drive => {
             format!(
                 "{}, {:.2} % of the period",
@@ -60,6 +61,9 @@ fn shapes_figure(shapes: &[Shape]) -> Option<CaptionedFigure> {
         Control::Supply => {
             "One period at full, half and lowest supply that the scheme asks for; below, each over its supply. A stage \
              without curvature, coupling or diode shows one curve there."
+        }
+        Control::Angle => {
+            "One period of the first branch at full output, at 45 degrees and at a quarter turn; below, over the supply."
         }
         Control::Width | Control::Drive => {
             "One period at full, half and lowest pulse width; below, over the supply."
@@ -88,7 +92,10 @@ pub fn bend_figure(result: &CheckResult) -> CaptionedFigure {
         control: control_quantity(map.control()),
         curves: vec![BendCurve {
             name: "map".to_owned(),
-            control: points.iter().map(|point| point.control).collect(),
+            control: points
+                .iter()
+                .map(|point| map.control().shown(point.control))
+                .collect(),
             amplitude_v: points.iter().map(|point| point.output_v.norm()).collect(),
             phase_deg: phases_deg(map),
         }],
@@ -96,7 +103,10 @@ pub fn bend_figure(result: &CheckResult) -> CaptionedFigure {
             .control_density
             .iter()
             .enumerate()
-            .map(|(bin, &part)| ((bin as f64 + 0.5) / bins * full, part))
+            .map(|(bin, &part)| {
+                let control = (bin as f64 + 0.5) / bins * full;
+                (map.control().shown(control), part)
+            })
             .collect(),
         floor: (floor > 0.0).then_some(floor * full),
     }

@@ -19,7 +19,7 @@ const RESULTS: [(&str, Align); 9] = [
     ("verdict", Align::Left),
 ];
 
-const PARTS: [(&str, Align); 9] = [
+const PARTS: [(&str, Align); 10] = [
     ("", Align::Right),
     ("scheme", Align::Left),
     ("efficiency", Align::Right),
@@ -27,6 +27,7 @@ const PARTS: [(&str, Align); 9] = [
     ("stage", Align::Right),
     ("driver", Align::Right),
     ("combiner", Align::Right),
+    ("filter", Align::Right),
     ("drain peak", Align::Right),
     ("switch peak", Align::Right),
 ];
@@ -87,6 +88,7 @@ fn parts_row(place: usize, one: &Compared) -> Vec<String> {
         percent(parts.stage),
         percent(parts.driver),
         percent(Some(parts.combiner)),
+        percent(Some(parts.filter)),
         stress(result.stress.map(|stress| stress.peak_v), "V"),
         stress(result.stress.map(|stress| stress.peak_a), "A"),
     ]
@@ -103,16 +105,17 @@ fn rows(row: Row, compared: &[Compared], ranks: &[Rank]) -> Vec<Vec<String>> {
 
 /// Both tables, best first.
 pub(super) fn tables(compared: &[Compared], ranks: &[Rank]) -> Vec<DataTable> {
-    let table = |title: &str, columns: [(&str, Align); 9], row: Row| DataTable {
+    let table = |title: &str, columns: &[(&str, Align)], row: Row| DataTable {
         title: title.to_owned(),
         columns: columns
-            .map(|(name, align)| (name.to_owned(), align))
-            .to_vec(),
+            .iter()
+            .map(|(name, align)| ((*name).to_owned(), *align))
+            .collect(),
         rows: rows(row, compared, ranks),
     };
     vec![
-        table("Schemes", RESULTS, result_row),
-        table("Efficiency by its factors, and stress", PARTS, parts_row),
+        table("Schemes", &RESULTS, result_row),
+        table("Efficiency by its factors, and stress", &PARTS, parts_row),
     ]
 }
 
@@ -157,19 +160,16 @@ pub(super) fn warnings(compared: &[Compared]) -> Vec<String> {
 /// The comparison for the terminal.
 pub fn text(compared: &[Compared], ranks: &[Rank]) -> String {
     let mut text = String::new();
-    for (title, columns, row) in [
-        ("", RESULTS, result_row as Row),
-        (
-            "\nEfficiency by its factors, and stress\n",
-            PARTS,
-            parts_row,
-        ),
-    ] {
-        let mut table = Table::new(columns);
-        for cells in rows(row, compared, ranks) {
-            table.row(cells);
+    for table in tables(compared, ranks) {
+        if !text.is_empty() {
+            text.push_str(&format!("\n{}\n", table.title));
         }
-        text.push_str(&format!("{title}{}\n", table.text()));
+        let columns = table.columns.iter();
+        let mut lines = Table::new(columns.map(|(name, align)| (name.as_str(), *align)));
+        for cells in table.rows {
+            lines.row(cells);
+        }
+        text.push_str(&format!("{}\n", lines.text()));
     }
     text.push_str("\nRanking\n");
     for (name, reason) in reasons(compared, ranks) {

@@ -8,6 +8,8 @@ use crate::report::picture::{AxisSpec, Chart, Curve, Figure, Panel};
 pub struct LookupFigure {
     /// What is shown.
     pub title: String,
+    /// Unit of the control without a prefix; empty for a part.
+    pub control_unit: &'static str,
     /// Curves, the quantized table first.
     pub curves: Vec<LookupCurve>,
 }
@@ -19,7 +21,7 @@ pub struct LookupCurve {
     pub name: String,
     /// Wanted magnitude, 0 to 1, rising.
     pub magnitude: Vec<f64>,
-    /// Control, V.
+    /// Control, in the figure's unit: V for a supply.
     pub control_v: Vec<f64>,
     /// Correction of the phase, degrees.
     pub phase_deg: Vec<f64>,
@@ -38,10 +40,12 @@ impl LookupFigure {
             }
             panel
         };
+        let control = match self.control_unit {
+            "" => AxisSpec::plain("control, part", ""),
+            unit => AxisSpec::engineering("control", unit),
+        };
         let panels = vec![
-            panel(AxisSpec::engineering("control", "V"), |curve| {
-                &curve.control_v
-            }),
+            panel(control, |curve| &curve.control_v),
             panel(AxisSpec::plain("correction of the phase", "deg"), |curve| {
                 &curve.phase_deg
             }),

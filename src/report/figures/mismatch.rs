@@ -28,6 +28,9 @@ pub struct MismatchFigure {
     pub rating_a: Option<f64>,
 }
 
+/// Picks the point that a panel marks.
+type Extreme = fn(&[(f64, f64)]) -> Option<(f64, f64)>;
+
 fn lowest(points: &[(f64, f64)]) -> Option<(f64, f64)> {
     let turned: Vec<(f64, f64)> = points.iter().map(|&(x, y)| (x, -y)).collect();
     highest(&turned).map(|(x, y)| (x, -y))
@@ -44,7 +47,7 @@ impl MismatchFigure {
                      values: &[f64],
                      matched: f64,
                      rating: Option<f64>,
-                     worst: fn(&[(f64, f64)]) -> Option<(f64, f64)>,
+                     worst: Extreme,
                      words: (&str, &str)| {
             let mut panel = Panel::new(up, 118.0);
             let points = pairs(&self.angle_deg, values);

@@ -14,7 +14,7 @@ use crate::study::MeasureResult;
 pub use figures::measured_spectrum_figure;
 
 use facts::facts;
-use numbers::{check_rows, judged, key_rows, margin, reason, tables};
+use numbers::{check_rows, judged, key_rows, margin, memory_rows, reason, tables};
 
 /// What a measurement leaves out.
 const MODEL_LIMITS: [&str; 4] = [
@@ -99,6 +99,20 @@ pub fn measure_text(result: &MeasureResult) -> String {
         numbers.row(row);
     }
     text.push_str(&format!("\nNumbers\n{}\n", numbers.text()));
+    let memory = memory_rows(result);
+    if !memory.is_empty() {
+        let mut table = Table::new([
+            ("model", Align::Left),
+            ("leaves", Align::Right),
+            ("terms", Align::Right),
+            ("condition", Align::Right),
+            ("largest", Align::Right),
+        ]);
+        for row in memory {
+            table.row(row);
+        }
+        text.push_str(&format!("\nModels of the pair\n{}\n", table.text()));
+    }
     for group in facts(result)
         .iter()
         .filter(|group| group.title.starts_with("Taken"))
@@ -127,6 +141,7 @@ pub fn measure_document(result: &MeasureResult) -> Value {
         "alignment": result.sync,
         "metrics": result.metrics,
         "bend": result.bend,
+        "memory": result.memory,
         "averaged": result.averaged,
         "format": result.request.format,
         "symbols": result.symbols,

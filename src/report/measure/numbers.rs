@@ -1,6 +1,7 @@
 //! Checks, numbers and mask segments in rows.
 
 use crate::limits::Obtained;
+use crate::metrics::MemoryCandidate;
 use crate::report::check::outcome;
 use crate::report::page::{CheckRow, DataTable};
 use crate::report::table::Align;
@@ -128,6 +129,16 @@ pub(super) fn key_rows(result: &MeasureResult) -> Vec<[String; 3]> {
             ),
         ));
     }
+    if let Some(memory) = &result.memory {
+        rows.push(row(
+            "taken by memory",
+            format!("{:.2} dB", memory.memory_gain_db()),
+            format!(
+                "polynomial without memory leaves {:.2} dB, with it {:.2} dB",
+                memory.memoryless.held_out_nmse_db, memory.memory.held_out_nmse_db
+            ),
+        ));
+    }
     if let Some(averaged) = &result.averaged {
         rows.push(row(
             "EVM of the mean period",
@@ -148,12 +159,72 @@ pub(super) fn key_rows(result: &MeasureResult) -> Vec<[String; 3]> {
     rows
 }
 
-pub(super) fn tables(result: &MeasureResult) -> Vec<DataTable> {
-    if result.metrics.mask.is_empty() {
+/// What each model leaves: its name, NMSE held out, terms, condition number, largest coefficient.
+pub(super) fn memory_rows(result: &MeasureResult) -> Vec<Vec<String>> {
+    let Some(fit) = &result.memory else {
         return Vec::new();
-    }
+    };
+    let lags = |candidate: &MemoryCandidate| {
+        let apart = fit.lag_samples;
+        let far = |lags: usize| lags * apart;
+        match (candidate.size.ahead, candidate.size.behind) {
+            (0, 0) => String::new(),
+            (ahead, behind) => format!(", lags -{} to {} samples", far(ahead), far(behind)),
+        }
+    };
+    [
+        ("one gain".to_owned(), &fit.linear),
+        (
+            format!(
+                "polynomial without memory, powers to {}",
+                fit.memoryless.size.power
+            ),
+            &fit.memoryless,
+        ),
+        (format!("filter{}", lags(&fit.filter)), &fit.filter),
+        (
+            format!(
+                "best of all: powers to {}{}",
+                fit.memory.size.power,
+                lags(&fit.memory)
+            ),
+            &fit.memory,
+        ),
+    ]
+    .into_iter()
+    .map(|(name, candidate)| {
+        vec![
+            name,
+            format!("{:.2} dB", candidate.held_out_nmse_db),
+            candidate.terms.to_string(),
+            format!("{:.1e}", candidate.condition),
+            format!("{:.3}", candidate.largest_coefficient),
+        ]
+    })
+    .collect()
+}
+
+pub(super) fn tables(result: &MeasureResult) -> Vec<DataTable> {
     let right = |name: &str| (name.to_owned(), Align::Right);
-    vec![DataTable {
+    let mut tables = Vec::new();
+    let memory = memory_rows(result);
+    if !memory.is_empty() {
+        tables.push(DataTable {
+            title: "Models of the pair, fitted on one half and held against the other".to_owned(),
+            columns: vec![
+                ("model".to_owned(), Align::Left),
+                right("leaves of the power"),
+                right("terms"),
+                right("condition number"),
+                right("largest coefficient"),
+            ],
+            rows: memory,
+        });
+    }
+    if result.metrics.mask.is_empty() {
+        return tables;
+    }
+    tables.push(DataTable {
         title: "Mask segments".to_owned(),
         columns: vec![
             ("set and side".to_owned(), Align::Left),
@@ -180,5 +251,6 @@ pub(super) fn tables(result: &MeasureResult) -> Vec<DataTable> {
                 ]
             })
             .collect(),
-    }]
+    });
+    tables
 }

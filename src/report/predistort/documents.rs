@@ -44,6 +44,7 @@ pub fn predistort_document(result: &PredistortResult) -> Value {
         "polynomial": result.polynomial.as_ref().map(|polynomial| json!({
             "learned": learned_document(&polynomial.learned),
             "instants": polynomial.instants,
+            "words": polynomial.words,
             "after": polynomial.after.as_ref().map(side),
         })),
     })
@@ -79,7 +80,10 @@ pub fn polynomial_document(result: &PolynomialResult) -> Option<Value> {
         .iter()
         .zip(&polynomial.coefficients)
         .map(|(term, c)| {
+            let words = result.words.map(|words| words.words(*c));
             json!({
+                "re_word": words.map(|words| words.0),
+                "im_word": words.map(|words| words.1),
                 "signal_lag": term.signal_lag,
                 "envelope_lag": term.envelope_lag,
                 "power": term.power,
@@ -97,6 +101,7 @@ pub fn polynomial_document(result: &PolynomialResult) -> Option<Value> {
         "lead": polynomial.lead,
         "condition": fit.condition,
         "largest_coefficient": fit.largest_coefficient,
+        "words": result.words,
         "terms": terms,
     }))
 }

@@ -1,11 +1,11 @@
 //! The report's page, its figures and the text for the terminal.
 
+use super::lookup::lookup_figure;
 use super::tables::{
-    choice_rows, comparison, polynomial_rows, quantity_name, search_rows, search_sentence,
-    table_rows,
+    choice_rows, comparison, polynomial_rows, search_rows, search_sentence, sweep_name, table_rows,
 };
 use crate::report::check::{Request, headline, page as check_page, spectrum_view};
-use crate::report::figures::{LookupCurve, LookupFigure, MarginCurve, MarginFigure, SpectrumCurve};
+use crate::report::figures::{MarginCurve, MarginFigure, SpectrumCurve};
 use crate::report::page::{CaptionedFigure, DataTable, FactGroup, Page};
 use crate::report::table::{Align, Table};
 use crate::study::{PredistortResult, SweepQuantity};
@@ -59,6 +59,7 @@ pub fn page(result: &PredistortResult, request: &Request) -> Page {
                 right("entries"),
                 right("amplitude bits"),
                 right("phase bits"),
+                right("address bits"),
                 right("bits stored"),
                 right("smallest margin"),
             ],
@@ -127,55 +128,7 @@ pub fn spectra_figure(result: &PredistortResult) -> CaptionedFigure {
 
 /// The table's words beside the exact inverse.
 pub fn table_figure(result: &PredistortResult) -> CaptionedFigure {
-    let table = &result.table;
-    let lookup = &table.lookup;
-    let words = lookup.words();
-    let magnitude: Vec<f64> = (0..words.len())
-        .map(|index| lookup.magnitude(index))
-        .collect();
-    let exact = &table.entries;
-    let figure = LookupFigure {
-        title: "Table".to_owned(),
-        curves: vec![
-            LookupCurve {
-                name: "table".to_owned(),
-                magnitude: magnitude.clone(),
-                control_v: words
-                    .iter()
-                    .map(|&word| lookup.control(word) * table.full_control)
-                    .collect(),
-                phase_deg: words
-                    .iter()
-                    .map(|&word| lookup.phase_rad(word).to_degrees())
-                    .collect(),
-            },
-            LookupCurve {
-                name: "before rounding".to_owned(),
-                magnitude: exact.iter().map(|entry| entry.magnitude).collect(),
-                control_v: exact
-                    .iter()
-                    .map(|entry| entry.control * table.full_control)
-                    .collect(),
-                phase_deg: exact
-                    .iter()
-                    .map(|entry| entry.phase_rad.to_degrees())
-                    .collect(),
-            },
-            LookupCurve {
-                name: "without predistortion".to_owned(),
-                magnitude: vec![0.0, 1.0],
-                control_v: vec![0.0, table.full_control],
-                phase_deg: vec![0.0, 0.0],
-            },
-        ],
-    }
-    .figure();
-    CaptionedFigure {
-        figure,
-        caption:
-            "What the table asks of the supply and adds to the phase for each wanted magnitude."
-                .to_owned(),
-    }
+    lookup_figure(&result.table)
 }
 
 /// Margin over depth and bits, where they were searched.
@@ -185,7 +138,7 @@ pub fn margin_figure(result: &PredistortResult) -> Option<CaptionedFigure> {
         .sweeps
         .iter()
         .map(|sweep| MarginCurve {
-            name: quantity_name(sweep.quantity).to_owned(),
+            name: sweep_name(sweep),
             points: sweep
                 .rows
                 .iter()
@@ -194,6 +147,7 @@ pub fn margin_figure(result: &PredistortResult) -> Option<CaptionedFigure> {
                         SweepQuantity::Depth => (row.size.depth as f64).log2(),
                         SweepQuantity::AmplitudeBits => f64::from(row.size.amplitude_bits),
                         SweepQuantity::PhaseBits => f64::from(row.size.phase_bits),
+                        SweepQuantity::AddressBits => f64::from(row.size.address_bits),
                     };
                     Some((bits, row.margin_db?))
                 })
@@ -246,6 +200,7 @@ pub fn text(result: &PredistortResult) -> String {
             ("entries", Align::Right),
             ("amplitude", Align::Right),
             ("phase", Align::Right),
+            ("address", Align::Right),
             ("bits stored", Align::Right),
             ("margin", Align::Right),
         ]);

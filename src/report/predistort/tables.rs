@@ -3,7 +3,7 @@
 use crate::drive::{Between, Spacing};
 use crate::predistort::{LearningEnd, Table};
 use crate::study::{
-    CheckResult, PolynomialResult, PredistortResult, SearchEnd, SearchRow, SweepQuantity,
+    CheckResult, PolynomialResult, PredistortResult, SearchEnd, SearchRow, Sweep, SweepQuantity,
 };
 
 /// Number, then what it is without, behind the table, behind the polynomial.
@@ -156,21 +156,31 @@ fn search_row(name: &str, row: &SearchRow) -> Vec<String> {
         row.size.depth.to_string(),
         row.size.amplitude_bits.to_string(),
         row.size.phase_bits.to_string(),
+        row.size.address_bits.to_string(),
         row.size.stored_bits().to_string(),
         row.margin_db
             .map_or("undecided".to_owned(), |margin| format!("{margin:+.2} dB")),
     ]
 }
 
-pub(super) fn quantity_name(quantity: SweepQuantity) -> &'static str {
-    match quantity {
-        SweepQuantity::Depth => "entries",
-        SweepQuantity::AmplitudeBits => "amplitude bits",
-        SweepQuantity::PhaseBits => "phase bits",
+fn spacing_word(spacing: Spacing) -> &'static str {
+    match spacing {
+        Spacing::Magnitude => "magnitude",
+        Spacing::Power => "power",
+        Spacing::Companded { .. } => "companded",
     }
 }
 
-/// Every table that was tried: what was varied, entries, amplitude bits, phase bits, bits stored, margin.
+pub(super) fn sweep_name(sweep: &Sweep) -> String {
+    match sweep.quantity {
+        SweepQuantity::Depth => format!("entries, {}", spacing_word(sweep.spacing)),
+        SweepQuantity::AmplitudeBits => "amplitude bits".to_owned(),
+        SweepQuantity::PhaseBits => "phase bits".to_owned(),
+        SweepQuantity::AddressBits => "address bits".to_owned(),
+    }
+}
+
+/// Every table that was tried: what was varied, entries, amplitude bits, phase bits, address bits, bits stored, margin.
 pub(super) fn search_rows(result: &PredistortResult) -> Vec<Vec<String>> {
     let Some(search) = &result.search else {
         return Vec::new();
@@ -179,7 +189,7 @@ pub(super) fn search_rows(result: &PredistortResult) -> Vec<Vec<String>> {
         sweep
             .rows
             .iter()
-            .map(|row| search_row(quantity_name(sweep.quantity), row))
+            .map(|row| search_row(&sweep_name(sweep), row))
     });
     alone
         .chain(
@@ -196,8 +206,15 @@ pub(super) fn search_sentence(result: &PredistortResult) -> Option<String> {
     let search = result.search.as_ref()?;
     let size = search.table.size;
     let sizes = format!(
-        "{} entries, {} amplitude and {} phase bits",
-        size.depth, size.amplitude_bits, size.phase_bits
+        "{} entries even in {}, {} amplitude, {} phase and {} address bits",
+        size.depth,
+        match search.table.spacing {
+            Spacing::Companded { .. } => "the companded magnitude",
+            spacing => spacing_word(spacing),
+        },
+        size.amplitude_bits,
+        size.phase_bits,
+        size.address_bits
     );
     let verified = result.after.judgement.verdict.tightest();
     let verified = verified
@@ -239,6 +256,16 @@ pub(super) fn polynomial_rows(result: &PolynomialResult) -> Vec<(String, String)
             },
         ),
     ];
+    if let Some(words) = result.words {
+        rows.push(own(
+            "coefficients",
+            format!(
+                "{} bits each part, steps of 2^{}",
+                words.bits,
+                words.exponent - words.bits as i32 + 1
+            ),
+        ));
+    }
     for pass in &learned.passes {
         let fit = match (pass.condition, pass.largest_coefficient) {
             (Some(condition), Some(largest)) => {

@@ -9,7 +9,7 @@ use super::PolynomialResult;
 use crate::drive::Track;
 use crate::math::delay::{Delay, LATENCY};
 use crate::metrics::{Alignment, AlignmentMeter};
-use crate::predistort::{PolynomialRequest, learn};
+use crate::predistort::{CoefficientWords, PolynomialRequest, fewest_bits, learn};
 use crate::signal::{Oversampled, Source};
 use crate::study::check::{Bench, Front};
 use crate::study::error::StudyError;
@@ -92,7 +92,23 @@ pub(super) fn learn_and_check(
         alignment: None,
     };
     let edge = bench.study.scheme.settling(rate_hz) + EDGE * request.rate;
-    let learned = learn(request, edge, &wanted, |signal| model.transmit(signal))?;
+    let mut learned = learn(request, edge, &wanted, |signal| model.transmit(signal))?;
+    // What is verified and written is what the words hold.
+    let mut words = None;
+    if let Some(fit) = &mut learned.fit {
+        let left_db = learned
+            .passes
+            .iter()
+            .map(|pass| pass.output_nmse_db)
+            .fold(0.0, f64::min);
+        let some = &wanted[..wanted.len().min(1 << 14)];
+        let bits = request
+            .coefficient_bits
+            .unwrap_or_else(|| fewest_bits(&fit.polynomial, some, left_db));
+        let held = CoefficientWords::for_all(bits, &fit.polynomial.coefficients);
+        fit.polynomial = held.rounded(&fit.polynomial);
+        words = Some(held);
+    }
     progress(0.5);
     let after = match &learned.fit {
         None => None,
@@ -103,6 +119,7 @@ pub(super) fn learn_and_check(
     };
     Ok(PolynomialResult {
         learned,
+        words,
         after,
         instants: wanted.len(),
     })

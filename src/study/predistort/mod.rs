@@ -9,7 +9,7 @@ use super::check::{Bench, Front};
 use super::error::StudyError;
 use super::load::Study;
 use super::result::CheckResult;
-use crate::predistort::{Learned, PolynomialRequest, Table, TableRequest};
+use crate::predistort::{CoefficientWords, Learned, PolynomialRequest, Table, TableRequest};
 use crate::signal::Source;
 
 /// What is wanted of a study.
@@ -43,8 +43,10 @@ pub struct PredistortResult {
 /// A polynomial and what it does.
 #[derive(Debug, Clone)]
 pub struct PolynomialResult {
-    /// How it was learned.
+    /// How it was learned; its coefficients are those that the words stand for.
     pub learned: Learned,
+    /// How the coefficients are held; absent where no polynomial helps.
+    pub words: Option<CoefficientWords>,
     /// The study behind it; absent where learning never bettered the plain signal.
     pub after: Option<CheckResult>,
     /// Instants that it was learned from.
@@ -77,9 +79,14 @@ pub fn predistort(
     let (table, search) = match request.search {
         None => (bench.table(&request.table)?, None),
         Some(reserve) => {
-            let found = search::search(&bench, &request.table, reserve, source, &mut |part| {
-                step(part, 10.0);
-            })?;
+            let found = search::search(
+                &bench,
+                &request.table,
+                reserve,
+                source,
+                threads(),
+                &mut |part| step(part, 10.0),
+            )?;
             step(f64::NAN, 10.0);
             (bench.table(&found.table)?, Some(found))
         }
@@ -102,6 +109,11 @@ pub fn predistort(
         search,
         polynomial,
     })
+}
+
+/// As many as the machine runs at once; what is found does not depend on it.
+fn threads() -> usize {
+    std::thread::available_parallelism().map_or(1, usize::from)
 }
 
 /// What is done in all, `part` of a piece of size `of` included; a part that is no number ends the piece.

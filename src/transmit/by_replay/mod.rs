@@ -15,7 +15,7 @@ use super::by_map::Energy;
 use super::replay::{
     Account, Cycle, CycleOutput, Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all,
 };
-use crate::drive::{DrawnPower, Scheme, Track, TrackPart};
+use crate::drive::{Combining, DrawnPower, Scheme, Track, TrackPart};
 use crate::map::Map;
 use crate::orbit::{Drive, Network};
 use controls::{Border, Controls};
@@ -141,6 +141,12 @@ impl<'a> ReplayTransmitter<'a> {
         let moves = match request.scheme {
             Scheme::Supply(_) => Moves::Supply,
             Scheme::Width(_) | Scheme::Levels(_) => Moves::Width,
+            // Each branch is replayed by itself, which joined ones are not.
+            Scheme::Outphase(scheme) if matches!(scheme.combining, Combining::Joined(_)) => {
+                return Err(ReplayError::Scheme {
+                    scheme: "outphase, joined,",
+                });
+            }
             Scheme::Outphase(_) => Moves::Branches,
             other => {
                 return Err(ReplayError::Scheme {

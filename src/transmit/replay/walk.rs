@@ -140,11 +140,11 @@ impl<const M: usize> Walk for Walker<M> {
             }
             if self.harmonics > 1 {
                 let (mut from, mut to) = (turn, end_turn);
-                let higher = outputs.iter_mut().skip(1).take(self.harmonics - 1);
-                for (index, output) in higher.enumerate() {
+                let higher = outputs.iter_mut().take(self.harmonics).skip(1);
+                for (above, output) in higher.enumerate() {
                     (from, to) = (from * turn, to * end_turn);
                     let sum =
-                        topology.higher_at(index, &z) * from - topology.higher_at(index, &end) * to;
+                        topology.higher_at(above, &z) * from - topology.higher_at(above, &end) * to;
                     output.0 += sum.re;
                     output.1 += sum.im;
                 }

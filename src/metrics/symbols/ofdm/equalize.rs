@@ -1,24 +1,19 @@
-//! Points of OFDM with a cyclic prefix: symbols found by the prefix, carriers equalized one by one.
+//! Each carrier over its own gain, and the sent points decided, in rounds.
 
 use std::f64::consts::{PI, TAU};
-use std::sync::Arc;
 
 use num_complex::Complex64;
 
-use super::decide::{nearest_point, stripped, symmetry};
-use super::figures::{Recovered, SymbolError, SymbolFigures};
+use super::windows::Windows;
 use crate::math::Transform;
-use crate::math::kernel::{Kernel, Sampler};
 use crate::math::small::Square;
-use crate::signal::{Ofdm, Source};
-use crate::units::db;
+use crate::metrics::symbols::decide::{nearest_point, stripped, symmetry};
+use crate::metrics::symbols::figures::SymbolError;
+use crate::signal::Ofdm;
 
 /// Samples of the useful symbol for one of the format's: what a stage adds beside the carriers does not
 /// fold onto them.
-const OVER: usize = 2;
-
-/// Samples read, at most, at that rate.
-const MOST: usize = 1 << 22;
+pub(super) const OVER: usize = 2;
 
 /// Symbols folded for the blind start.
 const FOLDED: usize = 256;
@@ -27,227 +22,18 @@ const FOLDED: usize = 256;
 const FEWEST: usize = 4;
 
 /// Rounds of equalizing and deciding.
-const ROUNDS: usize = 4;
-
-/// Transforms of a stream's symbols, and where they stand.
-struct Windows {
-    /// First sample of the first prefix.
-    first: usize,
-    /// Turns a sample that were taken off.
-    cycles: f64,
-    /// Symbol after symbol, carrier by carrier.
-    points: Vec<Complex64>,
-}
-
-/// Errors of the points of `capture`. Sent points are decided on `reference` at the same instants where there
-/// is one.
-///
-/// The prefix gives start and frequency (J. J. van de Beek, M. Sandell, P. O. Börjesson, "ML estimation of
-/// time and frequency offset in OFDM systems", IEEE Trans. Signal Process., July 1997): offsets up to half
-/// the carriers' spacing. The transform's window starts in the middle of what is left of the prefix after its
-/// faded edge. Frequency and clock are refined by lines through the phases of the decided points over symbols and
-/// carriers; no phase is taken off symbol by symbol. Each carrier is divided by its own least-squares gain over
-/// all symbols.
-///
-/// # Errors
-/// [`SymbolError`].
-pub fn ofdm_symbols(
-    shape: &Ofdm,
-    capture: &mut dyn Source,
-    reference: Option<&mut dyn Source>,
-) -> Result<SymbolFigures, SymbolError> {
-    let carriers = shape.offsets().len();
-    let mut samples = at_symbol_rate(shape, capture)?;
-    let (sent, first) = match reference {
-        Some(reference) => {
-            let mut clean = at_symbol_rate(shape, reference)?;
-            clean.truncate(samples.len());
-            samples.truncate(clean.len());
-            let windows = found(shape, &mut clean)?;
-            (Some(decide(shape, &windows)?.sent), Some(windows.first))
-        }
-        None => (None, None),
-    };
-    let windows = match first {
-        // The capture is on the reference's grid already.
-        Some(first) => transformed(shape, &samples, first, 0.0),
-        None => found(shape, &mut samples)?,
-    };
-    let fitted = match &sent {
-        Some(sent) => refine(shape, &windows.points, sent).ok_or(SymbolError::Lost)?,
-        None => decide(shape, &windows)?,
-    };
-    let sent_from = if sent.is_some() {
-        "reference"
-    } else {
-        "decided"
-    };
-    let (mut points, mut sent, mut gains) =
-        (fitted.points, sent.unwrap_or(fitted.sent), Vec::new());
-    for _ in 0..ROUNDS {
-        gains = carrier_gains(&points, &sent, carriers);
-        if sent_from == "reference" {
-            break;
-        }
-        for (row, decided) in points
-            .chunks_exact(carriers)
-            .zip(sent.chunks_exact_mut(carriers))
-        {
-            for ((y, s), gain) in row.iter().zip(decided).zip(&gains) {
-                *s = nearest_point(shape.modulation, 0, y / gain);
-            }
-        }
-    }
-    for row in points.chunks_exact_mut(carriers) {
-        row.iter_mut().zip(&gains).for_each(|(y, gain)| *y /= gain);
-    }
-    let rate_hz = shape.spacing_hz * (OVER * shape.fft_size) as f64;
-    let mut figures = SymbolFigures::of(
-        &points,
-        &sent,
-        carriers,
-        Recovered {
-            frequency_hz: (windows.cycles + fitted.cycles) * rate_hz,
-            clock_error: fitted.clock,
-            first_s: (windows.first + OVER * shape.prefix) as f64 / rate_hz,
-            sent_from,
-        },
-    );
-    let mean = gains.iter().map(|gain| gain.norm_sqr()).sum::<f64>() / carriers as f64;
-    figures.carrier_gain_db = (carriers <= 4096).then(|| {
-        gains
-            .iter()
-            .map(|gain| db(gain.norm_sqr() / mean))
-            .collect()
-    });
-    Ok(figures)
-}
-
-/// The stream at [`OVER`] times the format's own rate.
-fn at_symbol_rate(shape: &Ofdm, source: &mut dyn Source) -> Result<Vec<Complex64>, SymbolError> {
-    let wanted_hz = shape.spacing_hz * (OVER * shape.fft_size) as f64;
-    let rate_hz = source.rate_hz();
-    let step = rate_hz / wanted_hz;
-    let occupied_hz = shape.spacing_hz * shape.carriers as f64;
-    if rate_hz < occupied_hz || step > 256.0 {
-        return Err(SymbolError::Format(format!(
-            "{rate_hz} samples a second; {occupied_hz} to {} are possible",
-            256.0 * wanted_hz
-        )));
-    }
-    let cutoff = 0.5 * (1.0 / step).min(1.0);
-    let mut sampler = Sampler::new(Arc::new(Kernel::interpolator(cutoff)), 0.0, step);
-    let mut out = Vec::new();
-    let mut block = vec![Complex64::ZERO; 1 << 14];
-    source.rewind()?;
-    let mut read = 0u64;
-    while out.len() < MOST {
-        let count = source.read(&mut block)?;
-        if count == 0 {
-            sampler.finish(|value, _| out.push(value));
-            break;
-        }
-        read += count as u64;
-        sampler.push(&block[..count], |value, _| out.push(value));
-    }
-    // No value past the last sample.
-    let inside = ((read as f64 - 1.0) / step).floor() as usize + 1;
-    out.truncate(inside.min(MOST));
-    Ok(out)
-}
-
-/// Symbols found by their prefix.
-fn found(shape: &Ofdm, samples: &mut [Complex64]) -> Result<Windows, SymbolError> {
-    let useful = OVER * shape.fft_size;
-    let prefix = OVER * shape.prefix;
-    let symbol = useful + prefix;
-    let symbols = samples.len() / symbol;
-    if symbols < FEWEST + 1 {
-        return Err(SymbolError::TooFew {
-            given: symbols.saturating_sub(1) as u64,
-            needed: FEWEST as u64,
-        });
-    }
-    // Products and powers, folded by the symbol.
-    let mut products = vec![Complex64::ZERO; symbol];
-    let mut powers = vec![0.0; symbol];
-    let reach = (samples.len() - useful).min(FOLDED * symbol);
-    for n in 0..reach {
-        let (a, b) = (samples[n], samples[n + useful]);
-        products[n % symbol] += a.conj() * b;
-        powers[n % symbol] += (a.norm_sqr() + b.norm_sqr()) / 2.0;
-    }
-    let total: f64 = powers.iter().sum();
-    if !(total > 0.0 && total.is_finite()) {
-        return Err(SymbolError::Lost);
-    }
-    // The faded edge is no copy.
-    let edge = OVER * shape.edge;
-    let (mut sum, mut power) = (Complex64::ZERO, 0.0);
-    for n in edge..prefix.max(edge + 1) {
-        sum += products[n % symbol];
-        power += powers[n % symbol];
-    }
-    let width = prefix.max(edge + 1) - edge;
-    let mut best = (f64::NEG_INFINITY, 0usize, Complex64::ZERO);
-    for start in 0..symbol {
-        let score = sum.norm() - power;
-        if score > best.0 {
-            best = (score, start, sum);
-        }
-        let (out, next) = ((start + edge) % symbol, (start + edge + width) % symbol);
-        sum += products[next] - products[out];
-        power += powers[next] - powers[out];
-    }
-    let (_, first, product) = best;
-    let cycles = product.arg() / TAU / useful as f64;
-    crate::math::kernel::Rotation {
-        cycles,
-        change: 0.0,
-    }
-    .turn(0.0, samples);
-    Ok(transformed(shape, samples, first, cycles))
-}
-
-/// The transform of every whole symbol from `first` on.
-fn transformed(shape: &Ofdm, samples: &[Complex64], first: usize, cycles: f64) -> Windows {
-    let useful = OVER * shape.fft_size;
-    let prefix = OVER * shape.prefix;
-    let symbol = useful + prefix;
-    // From the middle of what is a copy, and the turn that this gives each carrier.
-    let early = (prefix - OVER * shape.edge.min(shape.prefix)) / 2;
-    let mut transform = Transform::new(useful);
-    let mut work = vec![Complex64::ZERO; useful];
-    let offsets = shape.offsets();
-    let mut points = Vec::new();
-    let mut at = first + prefix - early;
-    while at + useful <= samples.len() {
-        work.copy_from_slice(&samples[at..at + useful]);
-        transform.forward(&mut work);
-        for &offset in &offsets {
-            let bin = offset.rem_euclid(useful as i64) as usize;
-            let turn = TAU * (offset as f64) * early as f64 / useful as f64;
-            points.push(work[bin] * Complex64::cis(turn) / useful as f64);
-        }
-        at += symbol;
-    }
-    Windows {
-        first,
-        cycles,
-        points,
-    }
-}
+pub(super) const ROUNDS: usize = 4;
 
 /// Points with frequency and clock taken off.
-struct Fitted {
-    points: Vec<Complex64>,
-    sent: Vec<Complex64>,
-    cycles: f64,
-    clock: f64,
+pub(super) struct Fitted {
+    pub(super) points: Vec<Complex64>,
+    pub(super) sent: Vec<Complex64>,
+    pub(super) cycles: f64,
+    pub(super) clock: f64,
 }
 
 /// Decides the points of a stream whose carriers differ little but for a delay.
-fn decide(shape: &Ofdm, windows: &Windows) -> Result<Fitted, SymbolError> {
+pub(super) fn decide(shape: &Ofdm, windows: &Windows) -> Result<Fitted, SymbolError> {
     let offsets = shape.offsets();
     let carriers = offsets.len();
     let modulation = shape.modulation;
@@ -348,7 +134,7 @@ fn decide(shape: &Ofdm, windows: &Windows) -> Result<Fitted, SymbolError> {
 
 /// Takes off the line of phases over the symbols, and over symbols times carriers, that the points have against
 /// the sent ones: frequency and clock.
-fn refine(shape: &Ofdm, points: &[Complex64], sent: &[Complex64]) -> Option<Fitted> {
+pub(super) fn refine(shape: &Ofdm, points: &[Complex64], sent: &[Complex64]) -> Option<Fitted> {
     let offsets = shape.offsets();
     let carriers = offsets.len();
     let count = points.len().min(sent.len()) / carriers * carriers;
@@ -422,7 +208,11 @@ fn refine(shape: &Ofdm, points: &[Complex64], sent: &[Complex64]) -> Option<Fitt
 }
 
 /// Least-squares gain of each carrier over all symbols.
-fn carrier_gains(points: &[Complex64], sent: &[Complex64], carriers: usize) -> Vec<Complex64> {
+pub(super) fn carrier_gains(
+    points: &[Complex64],
+    sent: &[Complex64],
+    carriers: usize,
+) -> Vec<Complex64> {
     let mut products = vec![Complex64::ZERO; carriers];
     let mut squares = vec![0.0; carriers];
     for (row, s) in points
@@ -442,7 +232,11 @@ fn carrier_gains(points: &[Complex64], sent: &[Complex64], carriers: usize) -> V
 }
 
 /// The same with every symbol turned to the phase of the first.
-fn turned_gains(points: &[Complex64], sent: &[Complex64], carriers: usize) -> Vec<Complex64> {
+pub(super) fn turned_gains(
+    points: &[Complex64],
+    sent: &[Complex64],
+    carriers: usize,
+) -> Vec<Complex64> {
     let symbols = points.len() / carriers;
     let mut turned = Vec::with_capacity(points.len());
     let first = carrier_gains(&points[..carriers], &sent[..carriers], carriers);

@@ -1,22 +1,24 @@
 //! `quietedge measure`: a captured signal, with or without the one that was sent.
 
+mod format;
+mod limits;
+
 use std::path::{Path, PathBuf};
 
 use super::arguments::quantity;
 use super::{Console, Disk, Ending, Failure, OutputFolder, OutputOptions};
-use crate::input::Files;
-use crate::limits::{Library, LimitSet, Limits};
 use crate::math::Window;
-use crate::metrics::symbols::MODULATIONS;
-use crate::metrics::{Repeat, SymbolFormat};
+use crate::metrics::Repeat;
 use crate::report::check::Request;
 use crate::report::measure::{
     measure_document, measure_page, measure_text, measured_spectrum_figure,
 };
-use crate::signal::{self, Centre, Ends, Format, FormatOptions, Modulation, Ofdm, Source};
-use crate::study::{MeasureRequest, MeasureResult, Scale, measure};
+use crate::signal::{self, Format, FormatOptions, Source};
+use crate::study::{MeasureRequest, MeasureResult, Scale, Study, measure};
 use crate::units::{Dimension, watt_from_dbm};
 use crate::verdict::Outcome;
+
+use format::SymbolOptions;
 
 /// Measure a captured signal; against the sent one, and against limits. Exit code 0 without limits or within,
 /// 1 outside, 2 undecided
@@ -24,6 +26,7 @@ use crate::verdict::Outcome;
 #[command(after_help = "Examples:
   quietedge measure capture.cf32 --rate \"2 MHz\"                   spectrum, PAPR, CCDF, occupied bandwidth
   quietedge measure capture.sigmf-meta --reference sent.wav       and delay, rate, frequency, EVM, AM-AM, AM-PM
+  quietedge measure capture.wav --reference sent.wav --study my.study.toml    held against the study's limits
   quietedge measure c.wav --limits fcc_90_210_mask_d --authorized-bandwidth \"20 kHz\" --full-scale \"37 dBm\"")]
 pub struct Arguments {
     /// The capture: .wav, .csv, .cf32, .ci16, .npy or .sigmf-meta
@@ -32,6 +35,10 @@ pub struct Arguments {
     /// The signal that was sent, in any of these formats and at any rate
     #[arg(long, value_name = "FILE")]
     reference: Option<PathBuf>,
+
+    /// A study whose limits and [signal.format] count where no option says otherwise
+    #[arg(long, value_name = "STUDY")]
+    study: Option<PathBuf>,
 
     /// Sample rate of the capture, where its file does not hold it
     #[arg(long, value_name = "HZ", value_parser = quantity(Dimension::Frequency))]
@@ -94,100 +101,6 @@ pub struct Arguments {
 
     #[command(flatten)]
     output: OutputOptions,
-}
-
-/// The signal's format, where it is known.
-#[derive(Debug, clap::Args)]
-#[command(next_help_heading = "Known format (EVM of symbols)")]
-struct SymbolOptions {
-    /// Modulation: with --symbol-rate a single carrier, with --spacing OFDM
-    #[arg(long, value_name = "NAME", value_parser = modulation)]
-    modulation: Option<Modulation>,
-
-    /// Symbols a second of a single carrier
-    #[arg(long, value_name = "HZ", value_parser = quantity(Dimension::Frequency), requires = "modulation")]
-    symbol_rate: Option<f64>,
-
-    /// Roll-off of its root-raised-cosine filter
-    #[arg(long, value_parser = quantity(Dimension::Ratio), requires = "symbol_rate")]
-    rolloff: Option<f64>,
-
-    /// Distance between carriers of OFDM
-    #[arg(long, value_name = "HZ", value_parser = quantity(Dimension::Frequency), requires_all = ["modulation", "fft", "carriers", "prefix"], conflicts_with = "symbol_rate")]
-    spacing: Option<f64>,
-
-    /// FFT size of OFDM
-    #[arg(long, requires = "spacing")]
-    fft: Option<usize>,
-
-    /// Carriers with data
-    #[arg(long, requires = "spacing")]
-    carriers: Option<usize>,
-
-    /// Samples of the cyclic prefix, at the rate spacing x FFT size
-    #[arg(long, value_name = "SAMPLES", requires = "spacing")]
-    prefix: Option<usize>,
-
-    /// Samples over which a symbol fades into the next
-    #[arg(long, value_name = "SAMPLES", requires = "spacing")]
-    edge: Option<usize>,
-
-    /// The carrier at offset 0 carries data
-    #[arg(long, requires = "spacing")]
-    centre_used: bool,
-}
-
-impl SymbolOptions {
-    fn format(&self) -> Result<Option<SymbolFormat>, Failure> {
-        let Some(modulation) = self.modulation else {
-            return Ok(None);
-        };
-        let format = match (self.symbol_rate, self.spacing) {
-            (Some(symbol_rate_hz), None) => SymbolFormat::SingleCarrier {
-                modulation,
-                symbol_rate_hz,
-                rolloff: self.rolloff.ok_or_else(|| {
-                    Failure::new("--rolloff: not given; it is needed with --symbol-rate")
-                })?,
-            },
-            (None, Some(spacing_hz)) => SymbolFormat::Ofdm(Ofdm {
-                modulation,
-                spacing_hz,
-                fft_size: self.fft.unwrap_or(0),
-                carriers: self.carriers.unwrap_or(0),
-                centre: if self.centre_used {
-                    Centre::Used
-                } else {
-                    Centre::Empty
-                },
-                prefix: self.prefix.unwrap_or(0),
-                edge: self.edge.unwrap_or(0),
-                oversampling: 1,
-                symbols: 1,
-                ends: Ends::Open,
-            }),
-            _ => {
-                return Err(Failure::new(
-                    "--modulation: with it --symbol-rate (single carrier) or --spacing (OFDM) is needed",
-                ));
-            }
-        };
-        format
-            .check()
-            .map_err(|problem| Failure::new(format!("the known format: {problem}")))?;
-        Ok(Some(format))
-    }
-}
-
-fn modulation(text: &str) -> Result<Modulation, String> {
-    MODULATIONS
-        .iter()
-        .find(|(name, _)| *name == text)
-        .map(|(_, modulation)| *modulation)
-        .ok_or_else(|| {
-            let words: Vec<&str> = MODULATIONS.iter().map(|(name, _)| *name).collect();
-            format!("allowed: {}", words.join(", "))
-        })
 }
 
 #[derive(Debug, Clone, Copy, clap::ValueEnum)]
@@ -301,6 +214,17 @@ fn request(arguments: &Arguments) -> Result<MeasureRequest, Failure> {
             )));
         }
     }
+    let study = match &arguments.study {
+        None => None,
+        Some(path) => {
+            let name = path.file_name().unwrap_or_default().to_string_lossy();
+            Some(Study::read(&name, &Disk::beside(path))?)
+        }
+    };
+    let format = match (arguments.symbols.format()?, &study) {
+        (None, Some(study)) => study.signal.format,
+        (given, _) => given,
+    };
     let shown = |path: &PathBuf| path.display().to_string();
     Ok(MeasureRequest {
         file: shown(&arguments.file),
@@ -310,7 +234,7 @@ fn request(arguments: &Arguments) -> Result<MeasureRequest, Failure> {
             RepeatChoice::Yes => Repeat::Yes,
             RepeatChoice::No => Repeat::No,
         },
-        limits: limits(arguments)?,
+        limits: limits::limits(arguments, study.as_ref())?,
         scale: match (arguments.full_scale, arguments.load_resistance) {
             (Some(dbm), _) => Scale::FullScale {
                 full_scale_w: watt_from_dbm(dbm),
@@ -318,48 +242,15 @@ fn request(arguments: &Arguments) -> Result<MeasureRequest, Failure> {
             (None, Some(load_ohm)) => Scale::Volts { load_ohm },
             (None, None) => Scale::Unknown,
         },
-        window: Window::BlackmanHarris,
-        resolution_hz: arguments.resolution,
+        window: study
+            .as_ref()
+            .map_or(Window::BlackmanHarris, |study| study.window),
+        resolution_hz: arguments
+            .resolution
+            .or(study.as_ref().and_then(|study| study.resolution_hz)),
         band_hz: arguments.band,
-        format: arguments.symbols.format()?,
+        format,
     })
-}
-
-/// The sets that are named, with what was stated beside them.
-fn limits(arguments: &Arguments) -> Result<Limits, Failure> {
-    let mut library = Library::published()?;
-    let mut names = Vec::new();
-    for word in &arguments.limits {
-        if word.ends_with(".toml") {
-            let text = Disk::here()
-                .text(word)
-                .map_err(|error| Failure::new(format!("cannot read {word}: {error}")))?;
-            names.extend(library.add(word, &text)?);
-        } else {
-            names.push(word.clone());
-        }
-    }
-    let sets: Vec<LimitSet> = names
-        .iter()
-        .map(|name| library.find(name).cloned())
-        .collect::<Result<_, _>>()?;
-    let limits = Limits {
-        sets,
-        evm_percent: arguments.evm_limit,
-        channel_hz: arguments.channel,
-        authorized_bandwidth_hz: arguments.authorized_bandwidth,
-        classes: arguments.class.clone(),
-        modulation: arguments.limit_modulation.clone(),
-        ..Limits::default()
-    };
-    limits.complete().map_err(|unmet| {
-        let option = match unmet.key {
-            "modulation" => "limit-modulation".to_owned(),
-            key => key.replace('_', "-"),
-        };
-        Failure::new(format!("--{option}: {unmet}"))
-    })?;
-    Ok(limits)
 }
 
 fn write(
@@ -396,6 +287,13 @@ fn command_line(arguments: &Arguments) -> String {
         "reference",
         arguments
             .reference
+            .as_ref()
+            .map(|path| path.display().to_string()),
+    );
+    add(
+        "study",
+        arguments
+            .study
             .as_ref()
             .map(|path| path.display().to_string()),
     );
