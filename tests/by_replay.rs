@@ -187,7 +187,7 @@ fn every_scheme_is_replayed() {
     let schemes = "[[scheme]]\nkind = \"supply\"\nfloor = 0.05\n\
          [[scheme]]\nkind = \"width\"\ngrid = \"10 ps\"\njitter = \"3 ps\"\n\
          [[scheme]]\nkind = \"levels\"\ncount = 3\nsettling = \"200 ns\"\n\
-         [[scheme]]\nkind = \"outphase\"\nmismatch = { gain = \"0.1 dB\", phase = \"0.5 deg\" }\n\
+         [[scheme]]\nkind = \"outphase\"\ncombining = \"isolated\"\nmismatch = { gain = \"0.1 dB\", phase = \"0.5 deg\" }\n\
          [[scheme]]\nkind = \"class_b\"\n";
     study(folder.path(), STAGE, schemes);
     let compare = |by: &str| {
