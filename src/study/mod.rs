@@ -11,6 +11,7 @@ mod error;
 mod kept;
 mod load;
 mod measure;
+mod notch;
 mod parting;
 mod parts;
 mod predistort;

@@ -8,8 +8,9 @@ use num_complex::Complex64;
 
 use super::collect::Collected;
 use super::error::StudyError;
-use super::kept::{Kept, MOST, MOST_REPLAYED, NotchWindow};
+use super::kept::{Kept, MOST};
 use super::load::Study;
+use super::notch::{NotchFinder, NotchInstant};
 use super::result::{GateTrain, Notch};
 use crate::drive::{Correction, GateFigures, Scheme, Track};
 use crate::map::Map;
@@ -75,8 +76,6 @@ pub struct AgainstMap {
 enum Transmitter<'a> {
     Map(Box<MapTransmitter<'a>>),
     Replay(Box<ReplayTransmitter<'a>>),
-    /// Outputs of a replay before, from the first instant on.
-    Replayed(&'a [Complex64]),
 }
 
 /// What a pass leaves.
@@ -119,8 +118,6 @@ pub struct Run {
 
 /// The instants of a block that count: start and end of the signal are left out.
 struct Piece<'a> {
-    /// Index of the first instant since the start of the chain.
-    first: u64,
     track: &'a Track,
     output_v: &'a [Complex64],
     /// What the map makes of the same track, beside a replay; else empty.
@@ -165,11 +162,10 @@ impl Chain<'_> {
         )
     }
 
-    /// Runs the chain once over the whole source and hands out what counts. Outputs in `replayed` stand for a replay.
+    /// Runs the chain once over the whole source and hands out what counts.
     fn pass(
         &self,
         source: &mut dyn Source,
-        replayed: Option<&[Complex64]>,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
     ) -> Result<Passed, StudyError> {
@@ -188,19 +184,16 @@ impl Chain<'_> {
             drive = drive.corrected(correction, self.factor);
         }
         let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
-        let mut transmitter = match (self.replay, replayed) {
-            (None, _) => Transmitter::Map(Box::new(by_map())),
-            (Some(_), Some(replayed)) => Transmitter::Replayed(replayed),
-            (Some(replay), None) => {
-                Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
-                    network: replay.network,
-                    scheme: &study.scheme,
-                    map: self.map,
-                    rate_hz,
-                    counted: (start, end),
-                    workers: replay.workers,
-                })?))
-            }
+        let mut transmitter = match self.replay {
+            None => Transmitter::Map(Box::new(by_map())),
+            Some(replay) => Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
+                network: replay.network,
+                scheme: &study.scheme,
+                map: self.map,
+                rate_hz,
+                counted: (start, end),
+                workers: replay.workers,
+            })?)),
         };
         let mut beside = self.replay.map(|_| by_map());
         let mut oversampled = Oversampled::new(source, self.factor)?;
@@ -222,7 +215,7 @@ impl Chain<'_> {
             let room = GateTrain::MOST - edges.len();
             edges.extend(fresh.gate.iter().take(room));
             match &mut transmitter {
-                Transmitter::Map(_) | Transmitter::Replayed(_) => {
+                Transmitter::Map(_) => {
                     std::mem::swap(&mut fresh, &mut track);
                 }
                 Transmitter::Replay(replay) if ended => {
@@ -237,13 +230,6 @@ impl Chain<'_> {
             let range = inside(start)..inside(end);
             match &mut transmitter {
                 Transmitter::Map(map) => map.push(&track, range.clone(), &mut output_v),
-                Transmitter::Replayed(replayed) => {
-                    let from = (first as usize).min(replayed.len());
-                    output_v
-                        .extend_from_slice(&replayed[from..(from + length).min(replayed.len())]);
-                    // Only the very end can be missing, and it does not count.
-                    output_v.resize(length, Complex64::ZERO);
-                }
                 Transmitter::Replay(_) => {}
             }
             if let Some(map) = &mut beside {
@@ -251,7 +237,6 @@ impl Chain<'_> {
             }
             if !range.is_empty() {
                 take(&Piece {
-                    first,
                     track: &track,
                     output_v: &output_v,
                     by_map_v: &by_map_v,
@@ -262,7 +247,6 @@ impl Chain<'_> {
             tick(count as u64);
         }
         let (energy, held, highest, cycles) = match &transmitter {
-            Transmitter::Replayed(_) => (Energy::default(), 0, 0.0, 0),
             Transmitter::Map(map) => (map.energy(), map.held(), map.highest_control(), 0),
             Transmitter::Replay(replay) => {
                 let held = beside.as_ref().map_or(0, MapTransmitter::held);
@@ -327,29 +311,19 @@ impl Chain<'_> {
         let mut wanted_meter = output_meter.clone();
         let (start, end) = self.span(rate_hz);
         let keeps = end.saturating_sub(start) <= MOST;
-        let mut kept = Kept {
-            first: start,
-            ..Kept::default()
-        };
+        let mut kept = Kept::default();
         let mut output_envelope = EnvelopeMeter::new(load_ohm);
         let mut wanted_envelope = EnvelopeMeter::new(load_ohm);
         let search_s = self.settling(rate_hz) as f64 / rate_hz;
         let mut alignment = AlignmentMeter::new(rate_hz, search_s)?;
         let mut density = vec![0u64; DENSITY_BINS];
         let full = self.study.full_control();
-        let mut deepest = (f64::INFINITY, 0u64);
+        let mut notch = NotchFinder::new(NOTCH_SAMPLES * self.factor);
         let mut map_alignment = match self.replay {
             Some(_) => Some(AlignmentMeter::new(rate_hz, search_s)?),
             None => None,
         };
-        let instants = self.signal_samples * self.factor as u64;
-        let mut replayed =
-            (self.replay.is_some() && !keeps && instants <= MOST_REPLAYED).then(Vec::new);
-        let passed = self.pass(source, None, tick, |piece| {
-            if let Some(replayed) = &mut replayed {
-                replayed.resize(piece.first as usize, Complex64::ZERO);
-                replayed.extend_from_slice(piece.output_v);
-            }
+        let passed = self.pass(source, tick, |piece| {
             if let Some(meter) = &mut map_alignment {
                 meter.push(piece.by_map_v(), piece.output_v())?;
             }
@@ -362,22 +336,19 @@ impl Chain<'_> {
             wanted_envelope.push(piece.wanted());
             alignment.push(piece.wanted(), piece.output_v())?;
             if keeps {
-                let range = piece.range.clone();
                 kept.wanted.extend_from_slice(piece.wanted());
                 kept.output_v.extend_from_slice(piece.output_v());
                 kept.by_map_v.extend_from_slice(piece.by_map_v());
-                kept.asked
-                    .extend_from_slice(&piece.track.asked[range.clone()]);
-                kept.control.extend_from_slice(&piece.track.control[range]);
             }
             for at in piece.range.clone() {
                 let fraction = piece.track.control[at] / full;
                 let bin = (fraction * DENSITY_BINS as f64) as usize;
                 density[bin.min(DENSITY_BINS - 1)] += 1;
-                let magnitude = piece.track.wanted[at].norm_sqr();
-                if magnitude < deepest.0 {
-                    deepest = (magnitude, piece.first + at as u64);
-                }
+                notch.push(NotchInstant {
+                    wanted_square: piece.track.wanted[at].norm_sqr(),
+                    asked: piece.track.asked[at],
+                    control: piece.track.control[at],
+                });
             }
             Ok(())
         })?;
@@ -404,20 +375,9 @@ impl Chain<'_> {
             .signal
             .format
             .map(|format| Collected::new(format, self.factor, alignment.delay_s * rate_hz));
-        let mut notch = Notch::default();
-        let window = NotchWindow {
-            middle: deepest.1,
-            reach: (NOTCH_SAMPLES * self.factor) as u64,
-            rate_hz,
-            level: self.study.signal.level,
-            full,
-        };
-        let mut again = |first: u64,
-                         wanted: &[Complex64],
+        let mut again = |wanted: &[Complex64],
                          output_v: &[Complex64],
-                         by_map_v: &[Complex64],
-                         asked: &[f64],
-                         control: &[f64]|
+                         by_map_v: &[Complex64]|
          -> Result<(), StudyError> {
             if let Some(meter) = &mut map_errors {
                 meter.push(by_map_v, output_v)?;
@@ -426,31 +386,14 @@ impl Chain<'_> {
             if let Some(collected) = &mut collected {
                 collected.push(wanted, output_v);
             }
-            window.take(first, wanted, asked, control, &mut notch);
             Ok(())
         };
         if keeps {
-            let Kept {
-                first,
-                wanted,
-                output_v,
-                by_map_v,
-                asked,
-                control,
-            } = &kept;
-            again(*first, wanted, output_v, by_map_v, asked, control)?;
+            again(&kept.wanted, &kept.output_v, &kept.by_map_v)?;
             tick(self.signal_samples * self.factor as u64);
         } else {
-            self.pass(source, replayed.as_deref(), tick, |piece| {
-                let range = piece.range.clone();
-                again(
-                    piece.first + range.start as u64,
-                    piece.wanted(),
-                    piece.output_v(),
-                    piece.by_map_v(),
-                    &piece.track.asked[range.clone()],
-                    &piece.track.control[range],
-                )
+            self.pass(source, tick, |piece| {
+                again(piece.wanted(), piece.output_v(), piece.by_map_v())
             })?;
         }
         drop(kept);
@@ -481,7 +424,7 @@ impl Chain<'_> {
                 .iter()
                 .map(|&n| n as f64 / total.max(1) as f64)
                 .collect(),
-            notch,
+            notch: notch.finish(rate_hz, self.study.signal.level, full),
             gate: gate.map(|figures| GateTrain { figures, edges }),
             against_map: match (map_alignment, map_errors) {
                 (Some(alignment), Some(meter)) => Some(AgainstMap {
