@@ -364,9 +364,9 @@ impl serde::Serialize for Warning {
     }
 }
 
-/// A part in percent.
+/// A part of a whole in percent.
 fn percent(part: f64) -> String {
-    if part < 1e-4 {
+    if part > 0.0 && part < 5e-5 {
         "less than 0.01 %".to_owned()
     } else {
         format!("{:.2} %", 100.0 * part)
