@@ -3,6 +3,7 @@
 use num_complex::Complex64;
 
 use super::lookup::Lookup;
+use super::phase::magnitude;
 use super::polynomial::{Polynomial, PolynomialStream};
 use super::rate::MAX_FACTOR;
 
@@ -96,5 +97,49 @@ impl Corrector {
         }
         self.clock = (self.clock + 1) % self.every;
         self.held
+    }
+}
+
+/// The correction on both paths of a scheme with a law of its own: the table hands on the magnitude that the law is given.
+#[derive(Debug, Clone)]
+pub(super) struct Correctors([Corrector; 2]);
+
+impl Correctors {
+    /// `correction` for streams of `factor` times the signal's rate.
+    pub(super) fn new(correction: &Correction, factor: usize) -> Self {
+        let corrector = Corrector::new(correction, factor);
+        Self([corrector.clone(), corrector])
+    }
+
+    /// The magnitude for the law, a part of full output, and the signal whose phase goes to the drive.
+    pub(super) fn push(
+        &mut self,
+        for_magnitude: Complex64,
+        for_angle: Complex64,
+        level: f64,
+    ) -> (f64, Complex64) {
+        let [first, second] = &mut self.0;
+        let part = one(first, for_magnitude, level).0;
+        (part, one(second, for_angle, level).1)
+    }
+
+    /// The same for two streams that each need both.
+    pub(super) fn push_branches(
+        &mut self,
+        samples: [Complex64; 2],
+        level: f64,
+    ) -> [(f64, Complex64); 2] {
+        let [first, second] = &mut self.0;
+        [
+            one(first, samples[0], level),
+            one(second, samples[1], level),
+        ]
+    }
+}
+
+fn one(corrector: &mut Corrector, sample: Complex64, level: f64) -> (f64, Complex64) {
+    match corrector.push(sample, level) {
+        Corrected::Direct { control, signal } => (control, signal),
+        Corrected::Signal(signal) => (level * magnitude(signal), signal),
     }
 }

@@ -4,6 +4,7 @@ mod angle;
 mod burst;
 mod class_b;
 mod correct;
+mod forward;
 mod levels;
 mod lookup;
 mod modulator;
@@ -29,6 +30,7 @@ pub use burst::{
 };
 pub use class_b::{CLASS_B_PEAK_EFFICIENCY, ClassBScheme};
 pub use correct::Correction;
+pub use forward::{NoCorrection, NoInverse, TablePlace};
 pub use levels::{LevelsScheme, RestPoint};
 pub use lookup::{Between, Lookup, LookupError, LookupSize, MAX_TABLE_RATE, Spacing, Word};
 pub use modulator::{Converter, Modulator, PoleZero, Ripple, SupplyModulator};

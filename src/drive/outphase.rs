@@ -15,6 +15,7 @@ use num_complex::Complex64;
 use super::Track;
 use super::angle::{AngleLaw, AngleTable, JoinedScheme};
 use super::class_b::straight;
+use super::correct::{Correction, Correctors};
 use super::phase::{PhaseLimiter, magnitude};
 use super::rate::{RateReason, band};
 use super::supply::settling;
@@ -98,6 +99,7 @@ pub(super) struct OutphaseDrive {
     last: Complex64,
     /// For joined branches.
     table: Option<(AngleLaw, AngleTable)>,
+    correctors: Option<Correctors>,
 }
 
 impl OutphaseDrive {
@@ -122,20 +124,30 @@ impl OutphaseDrive {
             branches: [limiter.clone(), limiter],
             last: Complex64::ONE,
             table,
+            correctors: None,
         }
     }
 
-    /// The angle that is asked for, rad, and what both branches are turned by to undo the turn of the map.
-    fn asked(&self, size: f64) -> (f64, f64) {
-        let m = (self.level * size).min(1.0);
+    /// The same with `correction` in front of both branches, at `factor` times the signal's rate: it hands the law
+    /// another magnitude.
+    #[must_use]
+    pub(super) fn corrected(mut self, correction: &Correction, factor: usize) -> Self {
+        self.correctors = Some(Correctors::new(correction, factor));
+        self
+    }
+
+    /// The angle that is asked for at the part `m` of full output, rad, and what both branches are turned by to undo
+    /// the turn of the map.
+    fn asked(&self, m: f64) -> (f64, f64) {
+        let m = m.min(1.0);
         match &self.table {
             None => (m.acos(), 0.0),
             Some((law, table)) => table.at(m, *law),
         }
     }
 
-    /// The phasor of one branch at `sign` times the angle.
-    fn phasor(&self, sample: Complex64, sign: f64) -> Complex64 {
+    /// The phasor of one branch for the part `m` of full output and the phase of `sample`, at `sign` times the angle.
+    fn phasor(&self, m: f64, sample: Complex64, sign: f64) -> Complex64 {
         let size = magnitude(sample);
         let direction = if size > 1e-9 {
             sample / size
@@ -143,10 +155,10 @@ impl OutphaseDrive {
             self.last
         };
         if self.table.is_some() {
-            let (angle, turn) = self.asked(size);
+            let (angle, turn) = self.asked(m);
             return direction * Complex64::cis(sign * angle - turn);
         }
-        let cosine = (self.level * size).min(1.0);
+        let cosine = m.min(1.0);
         direction * Complex64::new(cosine, sign * (1.0 - cosine * cosine).sqrt())
     }
 
@@ -154,7 +166,14 @@ impl OutphaseDrive {
         for &sample in samples {
             let wanted = self.wanted.push(sample);
             let later = self.later.push(sample);
-            let (first, second) = (self.phasor(wanted, 1.0), self.phasor(later, -1.0));
+            let own = |sample| (self.level * magnitude(sample), sample);
+            let [first, second] = match &mut self.correctors {
+                None => [own(wanted), own(later)],
+                Some(correctors) => correctors.push_branches([wanted, later], self.level),
+            };
+            let asked = first.0;
+            let first = self.phasor(first.0, first.1, 1.0);
+            let second = self.phasor(second.0, second.1, -1.0);
             let first = self.branches[0].push(first);
             let second = self.branches[1].push(second) * self.mismatch;
             track.branches.push([first, second]);
@@ -164,7 +183,7 @@ impl OutphaseDrive {
                 let common = first * Complex64::cis(-angle);
                 self.last = common;
                 track.wanted.push(wanted);
-                track.asked.push(self.asked(magnitude(wanted)).0);
+                track.asked.push(self.asked(asked).0);
                 track.control.push(angle);
                 track.phase.push(common);
                 continue;
@@ -175,7 +194,7 @@ impl OutphaseDrive {
                 self.last = sum / drive;
             }
             track.wanted.push(wanted);
-            track.asked.push((self.level * magnitude(wanted)).min(1.0));
+            track.asked.push(asked.min(1.0));
             track.control.push(drive.min(1.0));
             track.phase.push(self.last);
         }

@@ -232,14 +232,18 @@ enum Kind<'a> {
 }
 
 impl SchemeDrive<'_> {
-    /// The same with `correction` in front. Only the scheme `supply` takes one; a study with another is refused
-    /// when it is read.
+    /// The same with `correction` in front. Those that take none ([`Scheme::table_place`]) are left as they are; a
+    /// study with one of them is refused when it is read.
     #[must_use]
     pub fn corrected(self, correction: &Correction, factor: usize) -> Self {
         match self.0 {
             Kind::Supply(drive) => {
                 Self(Kind::Supply(Box::new(drive.corrected(correction, factor))))
             }
+            Kind::Width(drive) => Self(Kind::Width(Box::new(drive.corrected(correction, factor)))),
+            Kind::Outphase(drive) => Self(Kind::Outphase(Box::new(
+                drive.corrected(correction, factor),
+            ))),
             other => Self(other),
         }
     }

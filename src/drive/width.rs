@@ -13,6 +13,7 @@ use rand_distr::{Distribution, StandardNormal};
 use std::f64::consts::{PI, TAU};
 
 use super::Track;
+use super::correct::{Correction, Correctors};
 use super::phase::{PhaseLimiter, magnitude};
 use super::rate::{RateReason, band};
 use super::staircase::{Pulse, STAIRCASE_LATENCY, Staircase};
@@ -176,6 +177,7 @@ pub(super) struct WidthDrive<'a> {
     shortest: f64,
     jitter: f64,
     random: ChaCha8Rng,
+    correctors: Option<Correctors>,
 }
 
 impl<'a> WidthDrive<'a> {
@@ -217,7 +219,15 @@ impl<'a> WidthDrive<'a> {
             shortest: scheme.shortest_s * carrier_hz,
             jitter: scheme.jitter_s * carrier_hz / cycles.sqrt(),
             random: ChaCha8Rng::seed_from_u64(scheme.seed),
+            correctors: None,
         }
+    }
+
+    /// The same with `correction` in front, at `factor` times the signal's rate: it hands the law another magnitude.
+    #[must_use]
+    pub(super) fn corrected(mut self, correction: &Correction, factor: usize) -> Self {
+        self.correctors = Some(Correctors::new(correction, factor));
+        self
     }
 
     /// The width for the wanted part `m` of full output.
@@ -251,8 +261,17 @@ impl<'a> WidthDrive<'a> {
             let wanted = self.wanted.push(sample);
             let delayed = self.magnitude.push(sample);
             let angle = self.angle.push(sample);
-            let asked = self.width(self.level * magnitude(wanted));
-            let width = self.width(self.level * magnitude(delayed));
+            let plain = self.width(self.level * magnitude(wanted));
+            let (part, angle) = match &mut self.correctors {
+                None => (self.level * magnitude(delayed), angle),
+                Some(correctors) => correctors.push(delayed, angle, self.level),
+            };
+            let width = self.width(part);
+            let (asked, width) = match self.correctors {
+                None => (plain, width),
+                // Words of its lowest entries are rounded to both sides of the map's end.
+                Some(_) => (width, width.max(self.map.domain().0)),
+            };
             let width = width.max(self.shortest).min(self.full);
             let mut phase = self.phase.push(angle);
             if self.scheme.law == WidthLaw::Inverse {

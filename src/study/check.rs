@@ -13,7 +13,8 @@ use super::validity::of_scheme;
 use super::warning::Warning;
 use crate::drive::{
     AngleReach, ClassBScheme, Combining, Correction, GateFigures, LevelsScheme, LookupSize,
-    MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, WidthLaw, oversampling,
+    MAX_FACTOR, OutphaseScheme, Polynomial, RateReason, Scheme, Shape, Shaping, WidthLaw,
+    oversampling,
 };
 use crate::map::{AngleSweep, Control, Map, Origin, Sweep};
 use crate::math::edges::CLEAN_BAND;
@@ -208,20 +209,19 @@ impl<'a> Bench<'a> {
 
     /// The table of `request` for this study.
     pub(super) fn table(&self, request: &TableRequest) -> Result<Table, StudyError> {
-        let Scheme::Supply(scheme) = &self.study.scheme else {
-            return Err(StudyError::NoTable {
-                scheme: self.study.scheme.name(),
-            });
+        let scheme = &self.study.scheme;
+        let shaping = match scheme {
+            Scheme::Supply(supply) => supply.shaping,
+            // A law of its own has no floor to be followed.
+            _ => Shaping {
+                shape: Shape::Corner,
+                floor: 0.0,
+            },
         };
-        let full_v = self.study.hardware.full_supply_v();
+        let behind = scheme.forward(&self.map)?;
+        let (_, full) = self.study.table_range();
         let title = &self.study.title;
-        Ok(Table::from_map(
-            title,
-            &self.map,
-            full_v,
-            &scheme.shaping,
-            request,
-        )?)
+        Ok(Table::from_map(title, &behind, full, &shaping, request)?)
     }
 
     /// The factor of the oversampling that `correction` needs, and what asked for it.
@@ -309,14 +309,21 @@ impl<'a> Bench<'a> {
         progress: &mut dyn FnMut(f64),
     ) -> Result<CheckResult, StudyError> {
         let study = self.study;
-        let full_v = study.full_control();
-        if let Front::Table(table) = &front
-            && (table.full_control / full_v - 1.0).abs() > 1e-9
-        {
-            return Err(StudyError::OtherRange {
-                table_v: table.full_control,
-                given_v: full_v,
-            });
+        if let Front::Table(table) = &front {
+            let (control, full) = study.table_range();
+            if table.control != control {
+                return Err(StudyError::OtherControl {
+                    table: table.control.name(),
+                    given: control.name(),
+                    scheme: study.scheme.name(),
+                });
+            }
+            if (table.full_control / full - 1.0).abs() > 1e-9 {
+                return Err(StudyError::OtherRange {
+                    table_v: table.full_control,
+                    given_v: full,
+                });
+            }
         }
         let correction = front.correction();
         let (factor, reason) = self.oversampling(&front);

@@ -76,9 +76,16 @@ fn entries(scheme: usize, study: &Study) -> Vec<Entry> {
         predistort: None,
         ..study.clone()
     };
+    if study.predistort.is_some() {
+        // A study's own predistortion counts as it stands.
+        return vec![
+            entry(Inverted::Without, plain(study.scheme.clone())),
+            entry(Inverted::With, study.clone()),
+        ];
+    }
     match study.scheme.inversion() {
         Inversion::Table => {
-            // With the study's own table where it has one, else with the inverse itself.
+            // With the inverse itself.
             vec![
                 entry(Inverted::Without, plain(study.scheme.clone())),
                 entry(Inverted::With, study.clone()),

@@ -1,5 +1,6 @@
 //! Why a study could not be carried out.
 
+use crate::drive::NoInverse;
 use crate::input::Problem;
 use crate::map::SweepError;
 use crate::metrics::{PairError, SpectrumError, SymbolError, SyncError};
@@ -47,10 +48,19 @@ pub enum StudyError {
     /// No polynomial can be fitted.
     #[error(transparent)]
     Polynomial(#[from] FitError),
-    /// Tables and polynomials work on one scheme.
-    #[error("predistortion is made for the scheme supply, the study's is {scheme}")]
-    NoTable {
+    /// The scheme takes no predistortion, or leaves it nothing to do.
+    #[error("no predistortion: {0}")]
+    NoTable(#[from] NoInverse),
+    /// A table for another control.
+    #[error(
+        "the words of the table are of the control \"{table}\", in front of the scheme {scheme} they are of \"{given}\": make the table again for this study"
+    )]
+    OtherControl {
+        /// The table's.
+        table: &'static str,
         /// The study's.
+        given: &'static str,
+        /// The study's scheme.
         scheme: &'static str,
     },
     /// The modulator's output resistance and the stage's current have no single working point.

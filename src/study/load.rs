@@ -1,6 +1,6 @@
 //! A study file and the files it names.
 
-use crate::drive::{Combining, Polynomial, Rails, Scheme};
+use crate::drive::{Combining, NoInverse, Polynomial, Rails, Scheme};
 use crate::input::{Document, Files, Problem, Range, Section};
 use crate::limits::{Limits, LimitsRequest};
 use crate::map::{Control, Map, MapFacts, MapFormat, read_map};
@@ -125,6 +125,15 @@ impl Study {
         }
     }
 
+    /// What the words of a table in front of the scheme stand for, and their full range: the supply, V, or the
+    /// magnitude that the scheme's own law is given, 1.
+    pub fn table_range(&self) -> (Control, f64) {
+        match &self.scheme {
+            Scheme::Supply(_) => (Control::Supply, self.full_control()),
+            _ => (Control::Drive, 1.0),
+        }
+    }
+
     /// Reads the study `name` and the stage or map and limits that it names.
     ///
     /// # Errors
@@ -239,8 +248,21 @@ impl Study {
             _ => {}
         }
         self.supplies_fit(scheme)?;
-        if self.predistort.is_some() && wanted != Control::Supply {
-            return Err(scheme.problem("kind", "\"supply\", the scheme that [predistort] works on"));
+        let refused = match &self.predistort {
+            None => None,
+            Some(Predistortion::Request(_)) => self.scheme.invertible().err(),
+            // From captures or learned: they may mend what the inverse of the map leaves.
+            Some(Predistortion::Table(_) | Predistortion::Polynomial(_)) => {
+                self.scheme.table_place().err().map(NoInverse::from)
+            }
+        };
+        if let Some(reason) = refused {
+            let key = match reason {
+                NoInverse::AlreadyInverse { .. } if scheme.has("law") => "law",
+                _ => "kind",
+            };
+            let allowed = format!("a scheme that [predistort] works on ({reason})");
+            return Err(scheme.problem(key, allowed));
         }
         Ok(())
     }

@@ -3,6 +3,7 @@
 mod closed;
 mod command;
 mod exports;
+mod laws;
 mod polynomials;
 mod tables;
 mod verified;

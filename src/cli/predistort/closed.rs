@@ -173,8 +173,8 @@ fn request(
         (None, _) => TableRequest::default(),
     };
     let (control, full_control) = match (study, previous, options.full_control) {
-        (Some(study), _, None) => (study.scheme.control(), study.full_control()),
-        (Some(study), _, Some(full)) => (study.scheme.control(), full),
+        (Some(study), _, None) => study.table_range(),
+        (Some(study), _, Some(full)) => (study.table_range().0, full),
         (None, _, Some(full)) => (Control::Supply, full),
         (None, Some(table), None) => (table.control, table.full_control),
         (None, None, None) => (Control::Drive, 1.0),

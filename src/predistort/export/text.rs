@@ -6,24 +6,31 @@ use npyz::WriterBuilder;
 use serde_json::{Value, json};
 
 use super::facts;
+use crate::map::Control;
 use crate::predistort::Table;
 
 /// Lines `# key = value`, then one row an entry: the words, and what they mean.
 ///
-/// Columns: `index`, `magnitude` (of the control's range), `control_word`, `phase_word`, `control_v`, `phase_deg`;
-/// then, for a table made here, `exact_control_v`, `exact_phase_deg` (before rounding) and `state`.
+/// Columns: `index`, `magnitude` (of the control's range), `control_word`, `phase_word`, `control_v` (V of a supply; else
+/// `control`, a part), `phase_deg`; then, for a table made here, `exact_control_v`, `exact_phase_deg` (before rounding) and `state`.
 pub fn csv(table: &Table) -> String {
     let mut text = String::new();
     for (key, value) in facts(table) {
         let _ = writeln!(text, "# {key} = {value}");
     }
     let exact = !table.entries.is_empty();
-    text.push_str("index,magnitude,control_word,phase_word,control_v,phase_deg");
-    text.push_str(if exact {
-        ",exact_control_v,exact_phase_deg,state\n"
-    } else {
-        "\n"
-    });
+    let unit = match table.control {
+        Control::Supply => "_v",
+        Control::Width | Control::Drive | Control::Angle => "",
+    };
+    let _ = write!(
+        text,
+        "index,magnitude,control_word,phase_word,control{unit},phase_deg"
+    );
+    if exact {
+        let _ = write!(text, ",exact_control{unit},exact_phase_deg,state");
+    }
+    text.push('\n');
     for (index, &word) in table.lookup.words().iter().enumerate() {
         let _ = write!(
             text,

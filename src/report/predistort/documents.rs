@@ -4,6 +4,7 @@ use std::fmt::Write;
 
 use serde_json::{Value, json};
 
+use crate::map::Control;
 use crate::predistort::{Fit, Learned};
 use crate::study::{CheckResult, PolynomialResult, PredistortResult};
 
@@ -36,7 +37,10 @@ pub fn predistort_document(result: &PredistortResult) -> Value {
             "rate": lookup.rate(),
             "below_floor": result.request.table.below_floor,
             "stored_bits": size.stored_bits(),
-            "full_control_v": result.table.full_control,
+            "control": result.table.control.name(),
+            "full_control": result.table.full_control,
+            "full_control_v": (result.table.control == Control::Supply)
+                .then_some(result.table.full_control),
             "full_output_v": result.table.full_output_v,
             "entries": result.table.counts(),
         },

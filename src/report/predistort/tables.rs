@@ -1,6 +1,7 @@
 //! Before and after in rows.
 
 use crate::drive::{Between, Spacing};
+use crate::map::Control;
 use crate::predistort::{LearningEnd, Table};
 use crate::study::{
     CheckResult, PolynomialResult, PredistortResult, SearchEnd, SearchRow, Sweep, SweepQuantity,
@@ -138,6 +139,12 @@ pub(in crate::report) fn table_rows(table: &Table) -> Vec<(String, String)> {
             ),
         ),
     ];
+    if table.control == Control::Drive {
+        rows.push(own(
+            "its words are",
+            "magnitudes for the law that follows it, 0 to 1".to_owned(),
+        ));
+    }
     if let Some(full_output_v) = table.full_output_v {
         rows.push(own(
             "output at the last entry",

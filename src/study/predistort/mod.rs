@@ -68,6 +68,7 @@ pub fn predistort(
 ) -> Result<PredistortResult, StudyError> {
     let mut plain = study.clone();
     plain.predistort = None;
+    plain.scheme.invertible()?;
     let bench = Bench::new(&plain, source)?;
     // Parts of the work, roughly: a check is 1, a search some 10, a polynomial 3.
     let parts =
