@@ -27,6 +27,8 @@ pub enum Role {
     Third,
     /// Fourth curve.
     Fourth,
+    /// Fifth curve.
+    Fifth,
     /// A limit, and what breaks it.
     Limit,
     /// What keeps a limit.
@@ -35,7 +37,7 @@ pub enum Role {
 
 impl Role {
     /// All roles, in the order of their codes.
-    pub const ALL: [Self; 12] = [
+    pub const ALL: [Self; 13] = [
         Self::Paper,
         Self::Ink,
         Self::Muted,
@@ -46,13 +48,21 @@ impl Role {
         Self::Second,
         Self::Third,
         Self::Fourth,
+        Self::Fifth,
         Self::Limit,
         Self::Within,
     ];
 
     /// The colour of curve number `index`, round and round.
     pub fn curve(index: usize) -> Self {
-        [Self::First, Self::Second, Self::Third, Self::Fourth][index % 4]
+        const CURVES: [Role; 5] = [
+            Role::First,
+            Role::Second,
+            Role::Third,
+            Role::Fourth,
+            Role::Fifth,
+        ];
+        CURVES[index % CURVES.len()]
     }
 
     /// Name of the CSS variable, without the dashes in front.
@@ -68,6 +78,7 @@ impl Role {
             Self::Second => "second",
             Self::Third => "third",
             Self::Fourth => "fourth",
+            Self::Fifth => "fifth",
             Self::Limit => "limit",
             Self::Within => "within",
         }
@@ -86,6 +97,7 @@ impl Role {
             Self::Second => [0x8f, 0x52, 0x00],
             Self::Third => [0x7d, 0x3c, 0x98],
             Self::Fourth => [0x0d, 0x6b, 0x62],
+            Self::Fifth => [0x5f, 0x64, 0x00],
             Self::Limit => [0xb0, 0x12, 0x3c],
             Self::Within => [0x17, 0x63, 0x48],
         }
@@ -104,6 +116,7 @@ impl Role {
             Self::Second => [0xe6, 0xad, 0x4e],
             Self::Third => [0xcb, 0xa2, 0xe6],
             Self::Fourth => [0x5f, 0xcb, 0xba],
+            Self::Fifth => [0xc6, 0xcf, 0x63],
             Self::Limit => [0xff, 0x86, 0x9c],
             Self::Within => [0x74, 0xd1, 0xa5],
         }
@@ -156,7 +169,9 @@ mod tests {
     #[test]
     fn text_stands_out_in_both_themes_and_on_shaded_ground() {
         use Role::*;
-        for role in [Ink, Muted, First, Second, Third, Fourth, Limit, Within] {
+        for role in [
+            Ink, Muted, First, Second, Third, Fourth, Fifth, Limit, Within,
+        ] {
             for colour in [Role::light, Role::dark] {
                 for ground in [Paper, Wash] {
                     let reached = contrast(colour(role), colour(ground));

@@ -97,6 +97,16 @@ pub fn signed(value: f64, unit: &str, digits: usize) -> String {
     }
 }
 
+/// A number with `decimals` and its sign; `0.00` where nothing of it is left.
+pub fn signed_decimals(value: f64, decimals: usize) -> String {
+    let text = format!("{value:+.decimals$}");
+    if !value.is_finite() || text.bytes().any(|byte| matches!(byte, b'1'..=b'9')) {
+        text
+    } else {
+        text.trim_start_matches(['+', '-']).to_owned()
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
@@ -123,5 +133,8 @@ mod tests {
         assert_eq!(signed(12_500.0, "Hz", 4), "+12.5 kHz");
         assert_eq!(signed(-12_500.0, "Hz", 4), "-12.5 kHz");
         assert_eq!(signed(0.0, "Hz", 4), "0 Hz");
+        assert_eq!(signed_decimals(0.126, 2), "+0.13");
+        assert_eq!(signed_decimals(-0.004, 2), "0.00");
+        assert_eq!(signed_decimals(f64::NEG_INFINITY, 2), "-inf");
     }
 }

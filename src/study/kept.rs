@@ -7,6 +7,9 @@ use super::result::Notch;
 /// Instants kept at most: 128 MB.
 pub(super) const MOST: u64 = 1 << 21;
 
+/// Outputs of a replay kept at most, where not everything is: 128 MB. Longer ones are replayed again.
+pub(super) const MOST_REPLAYED: u64 = 1 << 23;
+
 /// What the second pass needs of every instant that counts.
 #[derive(Debug, Default)]
 pub(super) struct Kept {

@@ -8,7 +8,7 @@ use num_complex::Complex64;
 
 use super::collect::Collected;
 use super::error::StudyError;
-use super::kept::{Kept, MOST, NotchWindow};
+use super::kept::{Kept, MOST, MOST_REPLAYED, NotchWindow};
 use super::load::Study;
 use super::result::{GateTrain, Notch};
 use crate::drive::{Correction, GateFigures, Scheme, Track};
@@ -75,6 +75,8 @@ pub struct AgainstMap {
 enum Transmitter<'a> {
     Map(Box<MapTransmitter<'a>>),
     Replay(Box<ReplayTransmitter<'a>>),
+    /// Outputs of a replay before, from the first instant on.
+    Replayed(&'a [Complex64]),
 }
 
 /// What a pass leaves.
@@ -163,10 +165,11 @@ impl Chain<'_> {
         )
     }
 
-    /// Runs the chain once over the whole source and hands out what counts.
+    /// Runs the chain once over the whole source and hands out what counts. Outputs in `replayed` stand for a replay.
     fn pass(
         &self,
         source: &mut dyn Source,
+        replayed: Option<&[Complex64]>,
         tick: &mut dyn FnMut(u64),
         mut take: impl FnMut(&Piece<'_>) -> Result<(), StudyError>,
     ) -> Result<Passed, StudyError> {
@@ -185,16 +188,19 @@ impl Chain<'_> {
             drive = drive.corrected(correction, self.factor);
         }
         let by_map = || MapTransmitter::new(self.map, &study.scheme.modulator(), rate_hz);
-        let mut transmitter = match self.replay {
-            None => Transmitter::Map(Box::new(by_map())),
-            Some(replay) => Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
-                network: replay.network,
-                scheme: &study.scheme,
-                map: self.map,
-                rate_hz,
-                counted: (start, end),
-                workers: replay.workers,
-            })?)),
+        let mut transmitter = match (self.replay, replayed) {
+            (None, _) => Transmitter::Map(Box::new(by_map())),
+            (Some(_), Some(replayed)) => Transmitter::Replayed(replayed),
+            (Some(replay), None) => {
+                Transmitter::Replay(Box::new(ReplayTransmitter::new(ReplayRequest {
+                    network: replay.network,
+                    scheme: &study.scheme,
+                    map: self.map,
+                    rate_hz,
+                    counted: (start, end),
+                    workers: replay.workers,
+                })?))
+            }
         };
         let mut beside = self.replay.map(|_| by_map());
         let mut oversampled = Oversampled::new(source, self.factor)?;
@@ -216,7 +222,7 @@ impl Chain<'_> {
             let room = GateTrain::MOST - edges.len();
             edges.extend(fresh.gate.iter().take(room));
             match &mut transmitter {
-                Transmitter::Map(_) => {
+                Transmitter::Map(_) | Transmitter::Replayed(_) => {
                     std::mem::swap(&mut fresh, &mut track);
                 }
                 Transmitter::Replay(replay) if ended => {
@@ -231,6 +237,13 @@ impl Chain<'_> {
             let range = inside(start)..inside(end);
             match &mut transmitter {
                 Transmitter::Map(map) => map.push(&track, range.clone(), &mut output_v),
+                Transmitter::Replayed(replayed) => {
+                    let from = (first as usize).min(replayed.len());
+                    output_v
+                        .extend_from_slice(&replayed[from..(from + length).min(replayed.len())]);
+                    // Only the very end can be missing, and it does not count.
+                    output_v.resize(length, Complex64::ZERO);
+                }
                 Transmitter::Replay(_) => {}
             }
             if let Some(map) = &mut beside {
@@ -249,6 +262,7 @@ impl Chain<'_> {
             tick(count as u64);
         }
         let (energy, held, highest, cycles) = match &transmitter {
+            Transmitter::Replayed(_) => (Energy::default(), 0, 0.0, 0),
             Transmitter::Map(map) => (map.energy(), map.held(), map.highest_control(), 0),
             Transmitter::Replay(replay) => {
                 let held = beside.as_ref().map_or(0, MapTransmitter::held);
@@ -328,7 +342,14 @@ impl Chain<'_> {
             Some(_) => Some(AlignmentMeter::new(rate_hz, search_s)?),
             None => None,
         };
-        let passed = self.pass(source, tick, |piece| {
+        let instants = self.signal_samples * self.factor as u64;
+        let mut replayed =
+            (self.replay.is_some() && !keeps && instants <= MOST_REPLAYED).then(Vec::new);
+        let passed = self.pass(source, None, tick, |piece| {
+            if let Some(replayed) = &mut replayed {
+                replayed.resize(piece.first as usize, Complex64::ZERO);
+                replayed.extend_from_slice(piece.output_v);
+            }
             if let Some(meter) = &mut map_alignment {
                 meter.push(piece.by_map_v(), piece.output_v())?;
             }
@@ -420,7 +441,7 @@ impl Chain<'_> {
             again(*first, wanted, output_v, by_map_v, asked, control)?;
             tick(self.signal_samples * self.factor as u64);
         } else {
-            self.pass(source, tick, |piece| {
+            self.pass(source, replayed.as_deref(), tick, |piece| {
                 let range = piece.range.clone();
                 again(
                     piece.first + range.start as u64,

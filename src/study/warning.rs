@@ -196,7 +196,7 @@ impl fmt::Display for Warning {
             Self::HeldAtEdge { fraction } => write!(
                 f,
                 "the control left the map at {} of all instants and was held at its edge: lower the level or extend the map",
-                show(100.0 * fraction, "%", 3)
+                percent(*fraction)
             ),
             Self::DiodeWouldConduct { lowest_v } => write!(
                 f,
@@ -333,7 +333,7 @@ impl fmt::Display for Warning {
             Self::PoorTransition { left } => write!(
                 f,
                 "one or two modes leave {} of the stage's rise or fall (RMS): its transitions are known to that only",
-                show(100.0 * left, "%", 2)
+                percent(*left)
             ),
             Self::OverloadedShaping { ticks } => write!(
                 f,
@@ -368,5 +368,14 @@ impl fmt::Display for Warning {
 impl serde::Serialize for Warning {
     fn serialize<S: serde::Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
         serializer.collect_str(self)
+    }
+}
+
+/// A part of a whole in percent.
+fn percent(part: f64) -> String {
+    if part > 0.0 && part < 5e-5 {
+        "less than 0.01 %".to_owned()
+    } else {
+        format!("{:.2} %", 100.0 * part)
     }
 }

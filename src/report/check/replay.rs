@@ -3,7 +3,7 @@
 use super::outcome;
 use crate::report::page::{DataTable, FactGroup};
 use crate::report::table::{Align, Table};
-use crate::report::text::quantity;
+use crate::report::text::{quantity, signed_decimals};
 use crate::study::{Band, By, CheckResult, Metrics, ReplayFacts};
 
 /// Headers of the numbers in both.
@@ -33,10 +33,10 @@ fn rows(result: &CheckResult, facts: &ReplayFacts) -> Vec<(String, String)> {
         own(
             "difference of their outputs",
             format!(
-                "NMSE {:.1} dB; the replay {} later and {:+.3} dB stronger, which were taken off",
+                "NMSE {:.1} dB; the replay {} later and {} dB stronger, which were taken off",
                 facts.nmse_db,
                 quantity(facts.delay_s, "s", 3),
-                facts.gain_db
+                signed_decimals(facts.gain_db, 3)
             ),
         ),
         own("spectra", parting(facts)),
@@ -47,9 +47,9 @@ fn rows(result: &CheckResult, facts: &ReplayFacts) -> Vec<(String, String)> {
 fn parting(facts: &ReplayFacts) -> String {
     let widest = facts.parting.widest.map_or(String::new(), |band| {
         format!(
-            "; they differ most from {}: {:+.2} dB",
+            "; they differ most from {}: {} dB",
             offsets(&band),
-            band.difference_db()
+            signed_decimals(band.difference_db(), 2)
         )
     });
     match facts.parting.from_hz {
@@ -88,7 +88,9 @@ fn number_rows(result: &CheckResult, facts: &ReplayFacts) -> Vec<[String; 4]> {
             name,
             shown(map, unit, digits),
             shown(replay, unit, digits),
-            difference.map_or("-".to_owned(), |value| format!("{value:+.digits$} {unit}")),
+            difference.map_or("-".to_owned(), |value| {
+                format!("{} {unit}", signed_decimals(value, digits))
+            }),
         ]);
     };
     for pair in &facts.margins {
@@ -132,7 +134,7 @@ fn band_rows(facts: &ReplayFacts) -> Vec<[String; 4]> {
                 offsets(band),
                 format!("{:.2} dBm", band.map_dbm),
                 format!("{:.2} dBm", band.replay_dbm),
-                format!("{:+.2} dB", band.difference_db()),
+                format!("{} dB", signed_decimals(band.difference_db(), 2)),
             ]
         })
         .collect()
