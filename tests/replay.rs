@@ -6,8 +6,8 @@ use num_complex::Complex64;
 use quietedge::orbit::{Drive, Network};
 use quietedge::stage::Stage;
 use quietedge::transmit::{
-    Account, Cycle, CycleOutput, Form, Gate, Interval, Pulse, Replay, ReplayError, Segments, Setup,
-    Timing, replay_all,
+    Account, Cut, Cycle, CycleOutput, Form, Gate, Interval, Pulse, Replay, ReplayError, Segments,
+    Setup, Timing, replay_all, replay_cut,
 };
 
 /// The stage of `tests/reference/replay.py`.
@@ -500,6 +500,114 @@ fn a_gate_cuts_pulses_and_a_list_of_edges_says_the_same() {
     }
     // It worked, and rang out afterwards.
     assert!(largest > 15.0 && last < 0.01 * largest, "{largest} {last}");
+}
+
+/// Bursts of some cycles' length between three widths, off included, phase and edges anywhere.
+fn bursts(drives: &[Drive; 2], count: usize) -> (Vec<Cycle>, Vec<Cut>) {
+    let phase = |n: usize| 0.9 * (0.07 * n as f64).sin();
+    let pulse = |level: usize, n: usize| match level.checked_sub(1) {
+        Some(at) => Pulse::phased(&drives[at], phase(n), phase(n + 1) - phase(n)),
+        None => Pulse::Off,
+    };
+    let (mut level, mut next) = (0, 3.7);
+    let (mut cycles, mut cuts) = (Vec::new(), Vec::new());
+    for cycle in 0..count {
+        cycles.push(Cycle {
+            supply_v: [5.0; 2],
+            pulse: pulse(level, cycle),
+        });
+        let mut number = 0;
+        while next < (cycle + 1) as f64 {
+            level = (level + 1 + (cycle + number) % 2) % 3;
+            number += 1;
+            cuts.push(Cut {
+                cycle,
+                from_rad: TAU * (next - cycle as f64),
+                pulse: pulse(level, cycle),
+            });
+            next += 0.31 + 17.0 * (next * 12.9898).sin().powi(2);
+        }
+    }
+    (cycles, cuts)
+}
+
+#[test]
+fn bursts_keep_their_energy_and_segments_are_the_serial_run() {
+    // No gate stops an ideal choke.
+    let fed = ROBOT_LINK.replace("choke = true", "inductance = \"40 nH\"");
+    for text in [STAGE, TIDE_GAUGE, &fed] {
+        let (network, drive) = network(text);
+        let narrow = Drive::new(&network.stage().driver, 0.4 * network.stage().driver.duty);
+        let (cycles, cuts) = bursts(&[narrow, drive], 40_000);
+        let run = |workers| {
+            let mut replay = Replay::new(&network, &drive, losses()).expect("a replay");
+            replay.settle(&cycles[0]).expect("an orbit");
+            let before_j = replay.stored_j();
+            let open = replay.memory_cycles(&cycles[0], 1e-13).expect("it settles");
+            let closed = constant(&drive, 5.0, 0.0);
+            let overlap = replay.memory_cycles(&closed, 1e-13).expect("it settles");
+            let overlap = overlap.max(open);
+            assert!(4 * overlap < 10_000, "{overlap}");
+            let mut outputs = Vec::new();
+            let segments = Segments { workers, overlap };
+            replay_cut(&mut replay, &cycles, &cuts, segments, &mut outputs).expect("a run");
+            (outputs, replay.stored_j() - before_j)
+        };
+        let (serial, stored_j) = run(1);
+        let sum = |part: fn(&CycleOutput) -> f64| serial.iter().map(part).sum::<f64>();
+        let supply_j = sum(|one| one.energies.supply_j);
+        let left_j = supply_j - sum(|one| one.energies.load_j + one.energies.losses_j()) - stored_j;
+        // Rounding of 40,000 cycles of some ten terms each.
+        assert!(
+            (left_j / supply_j).abs() < 1e-9,
+            "{:.1e}",
+            left_j / supply_j
+        );
+        let (parallel, _) = run(3);
+        let largest = serial
+            .iter()
+            .map(|one| one.output_v.norm())
+            .fold(0.0, f64::max);
+        assert!(largest > 1.0);
+        for (a, b) in serial.iter().zip(&parallel) {
+            assert!((a.output_v - b.output_v).norm() < 1e-9 * largest);
+        }
+    }
+}
+
+/// Cuts say the same as a gate's windows; a cut that changes nothing changes nothing.
+#[test]
+fn cuts_agree_with_windows() {
+    let (network, drive) = network(STAGE);
+    let new = || Replay::new(&network, &drive, losses()).expect("a replay");
+    let (mut by_cuts, mut by_windows) = (new(), new());
+    for n in 0..200 {
+        let on = constant(&drive, 5.0, 0.03 * f64::from(n));
+        let (from, to) = (
+            TAU * (0.137 * f64::from(n)).fract(),
+            TAU * (0.291 * f64::from(n)).fract(),
+        );
+        let [from, to] = [from.min(to), from.max(to)];
+        let cut = |from_rad, pulse| Cut {
+            cycle: 0,
+            from_rad,
+            pulse,
+        };
+        let off = Cycle {
+            pulse: Pulse::Off,
+            ..on
+        };
+        let middle = cut(0.5 * (from + to), on.pulse);
+        let cuts = [cut(from, on.pulse), middle, cut(to, Pulse::Off)];
+        let a = by_cuts.cycle_cut(&off, &cuts).expect("a cycle");
+        let b = by_windows.cycle_gated(&on, &[[from, to]]).expect("a cycle");
+        // One propagation more, volts of order 10.
+        assert!((a.output_v - b.output_v).norm() < 1e-11, "{n}");
+        assert!(
+            (a.energies.supply_j - b.energies.supply_j).abs() < 1e-18,
+            "{n}"
+        );
+    }
 }
 
 /// Equal resonators, resonances without loss, extreme parts: what is replayed equals the orbit. Traps at the carrier

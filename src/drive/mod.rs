@@ -28,6 +28,7 @@ pub use burst::{
     BandFilter, BandShape, BurstScheme, GateFigures, MovedEdges, PulseFile, PulseSequence,
     Sampling, StopBand, Updates,
 };
+pub(crate) use burst::{FILTER_LAG, GATE_LAG};
 pub use class_b::{CLASS_B_PEAK_EFFICIENCY, ClassBScheme};
 pub use correct::Correction;
 pub use forward::{NoCorrection, NoInverse, TablePlace};
@@ -42,6 +43,7 @@ pub use rate::{MAX_FACTOR, RateReason, oversampling};
 pub use scheme::{Inversion, Scheme, SchemeDrive};
 pub use shaping::{Shape, Shaping};
 pub use supply::{PhasePath, SupplyDrive, SupplyScheme};
+pub(crate) use width::Inverse;
 pub use width::{WidthLaw, WidthScheme};
 
 /// The controls over a block of time, sample by sample, with the wanted signal at the same instants.

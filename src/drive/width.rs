@@ -97,7 +97,7 @@ impl WidthScheme {
 
 /// Widths and phases of a map over equal steps of amplitude: the inverse, quick enough for every instant.
 #[derive(Debug, Clone)]
-pub(super) struct Inverse {
+pub(crate) struct Inverse {
     width: Vec<f64>,
 }
 
@@ -106,7 +106,7 @@ const STEPS: usize = 4096;
 
 impl Inverse {
     /// Of the first rising stretch of `map`. Below its lowest amplitude the width is the lowest one.
-    pub(super) fn new(map: &Map) -> Self {
+    pub(crate) fn new(map: &Map) -> Self {
         let end = map.turns_at().unwrap_or(map.domain().1);
         let start = map.domain().0;
         let full_v = map.amplitude_held_v(end);
@@ -131,7 +131,7 @@ impl Inverse {
     }
 
     /// The width for the part `m` of the highest amplitude, linear between steps.
-    pub(super) fn width(&self, m: f64) -> f64 {
+    pub(crate) fn width(&self, m: f64) -> f64 {
         let at = (m.clamp(0.0, 1.0)) * STEPS as f64;
         let step = (at as usize).min(STEPS - 1);
         let rest = at - step as f64;

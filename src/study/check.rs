@@ -712,7 +712,7 @@ fn coarse_grid(result: &CheckResult) -> Option<Warning> {
 }
 
 /// What the gate of bursts could not do well.
-fn gate_warnings(result: &CheckResult) -> Vec<Warning> {
+pub(super) fn gate_warnings(result: &CheckResult) -> Vec<Warning> {
     let mut warnings = Vec::new();
     let Some(train) = &result.gate else {
         return warnings;
@@ -725,18 +725,26 @@ fn gate_warnings(result: &CheckResult) -> Vec<Warning> {
         transition_s,
         fit,
     } = train.figures;
-    if hurried > 0 {
+    // A replay has the transitions of the stage, whatever its modes.
+    let by_map = result.replay.is_none();
+    if by_map && hurried > 0 {
         warnings.push(Warning::HurriedGate {
             fraction: hurried as f64 / edges as f64,
             shortest_s,
             transition_s,
         });
     }
-    if fit > POOR_FIT {
+    if by_map && fit > POOR_FIT {
         warnings.push(Warning::PoorTransition { left: fit });
     }
     if overloads > 0 {
         warnings.push(Warning::OverloadedShaping { ticks: overloads });
+    }
+    if let Scheme::Burst(burst) = result.scheme()
+        && burst.transitions_s.is_some()
+        && !by_map
+    {
+        warnings.push(Warning::OwnTransitions);
     }
     if let Scheme::Burst(burst) = result.scheme()
         && let Some(pulses) = &burst.pulses

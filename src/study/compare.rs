@@ -10,11 +10,12 @@ use std::sync::atomic::{AtomicUsize, Ordering};
 use super::check::{Bench, Common};
 use super::error::StudyError;
 use super::load::Study;
-use super::replay::By;
+use super::replay::{By, is_refusal};
 use super::result::CheckResult;
 use super::warning::Warning;
 use crate::drive::{Inversion, Scheme};
 use crate::signal::Source;
+use crate::transmit::ReplayError;
 
 /// Opens the signal of the study with this index.
 pub type OpenSignal<'a> = dyn Fn(usize) -> Result<Box<dyn Source>, StudyError> + Sync + 'a;
@@ -115,8 +116,8 @@ pub fn compare(
     compare_by(studies, By::Map, threads, open, progress)
 }
 
-/// As [`compare`], with every stage replayed where `by` says so. The baseline `class_b` has no stage, and bursts are
-/// not replayed: both stay by map, which their warnings say.
+/// As [`compare`], with every stage replayed where `by` says so. The baseline `class_b` has no stage, and some
+/// stages and schemes are not replayed: they stay by map, which their warnings say.
 ///
 /// # Errors
 /// As [`compare`].
@@ -172,17 +173,24 @@ pub fn compare_by(
     let numbered: Vec<_> = jobs.iter().enumerate().collect();
     let results = in_order(threads, &numbered, |(at, (entry, bench, front))| {
         let mut source = open(entry.scheme)?;
-        let own = match entry.study.scheme {
-            Scheme::ClassB(_) | Scheme::Burst(_) => By::Map,
-            _ => by,
-        };
         let mut tell = |part| told(*at, part);
-        let mut result = bench.check_by(front.clone(), &mut *source, own, 1, &mut tell)?;
-        if own != by {
-            let scheme = entry.study.scheme.name();
-            result.warnings.push(Warning::OnlyByMap { scheme });
+        let scheme = entry.study.scheme.name();
+        let replayed = match entry.study.scheme {
+            Scheme::ClassB(_) if by != By::Map => Err(ReplayError::Scheme { scheme }.into()),
+            _ => bench.check_by(front.clone(), &mut *source, by, 1, &mut tell),
+        };
+        match replayed {
+            Err(StudyError::Replay(error)) if is_refusal(&error) => {
+                let mut source = open(entry.scheme)?;
+                let mut result = bench.check(front.clone(), &mut *source, &mut tell)?;
+                result.warnings.push(Warning::OnlyByMap {
+                    scheme,
+                    reason: sentence(&error.to_string()),
+                });
+                Ok(result)
+            }
+            replayed => replayed,
         }
-        Ok(result)
     })
     .map_err(|(at, error)| (jobs[at].0.scheme, error))?;
     let compared = jobs
@@ -194,6 +202,13 @@ pub fn compare_by(
             result,
         });
     Ok(compared.collect())
+}
+
+/// With a capital in front.
+fn sentence(text: &str) -> String {
+    let mut letters = text.chars();
+    let first = letters.next().map(|letter| letter.to_ascii_uppercase());
+    first.into_iter().chain(letters).collect()
 }
 
 /// `work` on every item, up to `threads` at a time; the results in the items' order.

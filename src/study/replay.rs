@@ -1,6 +1,6 @@
 //! A study whose stage is replayed, and how far its map is from that.
 
-use super::check::{Bench, FAR_WITHIN_DB, Front, metrics, stage_of, warnings};
+use super::check::{Bench, FAR_WITHIN_DB, Front, gate_warnings, metrics, stage_of, warnings};
 use super::error::StudyError;
 use super::parting::Parting;
 use super::result::{CheckResult, Metrics, RateFacts};
@@ -192,6 +192,7 @@ pub(super) fn replayed(
         stress: run.stress,
     };
     result.warnings = warnings(&result, run.held);
+    result.warnings.extend(gate_warnings(&result));
     if let Some(facts) = &result.replay {
         let outcome = result.judgement.verdict.outcome;
         if !facts.map_holds(outcome) {
@@ -211,6 +212,19 @@ pub(super) fn replayed(
         result.warnings.push(Warning::IdealChoke);
     }
     Ok(result)
+}
+
+/// Whether `error` says that a stage or a scheme as such is not replayed, in place of something amiss in the study.
+pub(super) fn is_refusal(error: &ReplayError) -> bool {
+    matches!(
+        error,
+        ReplayError::Curved
+            | ReplayError::Inputs
+            | ReplayError::Scheme { .. }
+            | ReplayError::TooLarge { .. }
+            | ReplayError::NeverSettles
+            | ReplayError::ChokeIntoOpen { .. }
+    )
 }
 
 fn margins(by_map: &Judgement, replay: &Judgement) -> Vec<MarginPair> {

@@ -68,7 +68,8 @@ pub(super) fn of_scheme(result: &CheckResult) -> Vec<Warning> {
 /// Whether the deepest notch lies below the lowest output that the width map knows.
 fn below_map(result: &CheckResult) -> Option<Warning> {
     let map = &result.map;
-    if map.control() != Control::Width {
+    // Bursts make little output of rare pulses, not of narrow ones.
+    if map.control() != Control::Width || matches!(result.scheme(), Scheme::Burst(_)) {
         return None;
     }
     let mut lowest = map.amplitude_held_v(map.domain().0) / map.full_amplitude_v();

@@ -58,7 +58,11 @@ pub enum Warning {
     OnlyByMap {
         /// Its name.
         scheme: &'static str,
+        /// Why not.
+        reason: String,
     },
+    /// Stated time constants of the gate, where the stage has its own.
+    OwnTransitions,
     /// A map from a file knows neither stress nor memory.
     MapFromFile {
         /// What it cannot answer.
@@ -236,9 +240,12 @@ impl fmt::Display for Warning {
             Self::IdealChoke => f.write_str(
                 "the feed is an ideal choke: its current is taken to follow the supply at once, so that the memory of a real choke is missing. Give the feed an `inductance` to see it",
             ),
-            Self::OnlyByMap { scheme } => write!(
+            Self::OnlyByMap { scheme, reason } => write!(
                 f,
-                "the scheme {scheme} is not replayed: its numbers are by map"
+                "the scheme {scheme} is not replayed: its numbers are by map. {reason}"
+            ),
+            Self::OwnTransitions => f.write_str(
+                "`rise` and `fall` of the scheme are not used: a replayed stage rises and falls as its network does",
             ),
             Self::MapFromFile { missing } => write!(
                 f,
@@ -318,7 +325,7 @@ impl fmt::Display for Warning {
                 transition_s,
             } => write!(
                 f,
-                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate; gated stages are not replayed yet",
+                "{:.2} % of the gate's edges come before the stage has settled from the last one ({} until 1 % is left; the shortest interval is {}): their transitions are only added up, which this result is uncertain by. Lower the burst rate; a linear stage has them with --by replay",
                 100.0 * fraction,
                 show(*transition_s, "s", 3),
                 show(*shortest_s, "s", 3)

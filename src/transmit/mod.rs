@@ -7,6 +7,6 @@ mod replay;
 pub use by_map::{Energy, MapTransmitter};
 pub use by_replay::{ReplayRequest, ReplayTransmitter};
 pub use replay::{
-    Account, Cycle, CycleOutput, Energies, Form, Gate, Interval, MAX_HARMONICS, MAX_REPLAY_STATES,
-    Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all,
+    Account, Cut, Cycle, CycleOutput, Energies, Form, Gate, Interval, MAX_HARMONICS,
+    MAX_REPLAY_STATES, Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all, replay_cut,
 };

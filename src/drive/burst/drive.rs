@@ -24,6 +24,12 @@ use crate::signal::Edge;
 /// value is `m(k + 2)` while the stretch from `k` to `k + 1` is done, after which sample `k + 1 - EDGE_LATENCY` is known.
 const GATE_LATENCY: usize = 1 + EDGE_LATENCY;
 
+/// Instants by which the rows of the drive's phase, and of the output in front of a filter, lag behind the times of the gate's edges.
+pub(crate) const GATE_LAG: usize = LATENCY + GATE_LATENCY;
+
+/// Instants by which a filter's output lags behind that.
+pub(crate) const FILTER_LAG: usize = MODAL_LATENCY;
+
 /// All latencies of the scheme beside its dead times.
 pub(super) const LATEST: usize = GATE_LATENCY + MODAL_LATENCY;
 

@@ -17,6 +17,7 @@ use super::supply::{PhasePath, settling};
 
 pub(super) use drive::BurstDrive;
 pub use drive::GateFigures;
+pub(crate) use drive::{FILTER_LAG, GATE_LAG};
 pub(super) use sequence::read_pulses;
 pub use sequence::{PulseFile, PulseSequence};
 

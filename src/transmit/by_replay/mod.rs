@@ -3,6 +3,8 @@
 
 mod controls;
 mod envelope;
+mod filter;
+mod gates;
 mod rails;
 
 use std::collections::VecDeque;
@@ -13,13 +15,16 @@ use num_complex::Complex64;
 
 use super::by_map::Energy;
 use super::replay::{
-    Account, Cycle, CycleOutput, Pulse, Replay, ReplayError, Segments, Setup, Timing, replay_all,
+    Account, Cut, Cycle, CycleOutput, Pulse, Replay, ReplayError, Segments, Setup, Timing,
+    replay_cut,
 };
-use crate::drive::{Combining, DrawnPower, Scheme, Track, TrackPart};
+use crate::drive::{Combining, Drawn, DrawnPower, FILTER_LAG, Scheme, Track, TrackPart};
 use crate::map::Map;
 use crate::orbit::{Drive, Network};
 use controls::{Border, Controls};
 use envelope::Envelope;
+use filter::Behind;
+use gates::Gates;
 use rails::Rails;
 
 /// Cycles that are replayed at a time: some MB.
@@ -54,6 +59,8 @@ enum Moves {
     Width,
     /// Two branches of full supply and width.
     Branches,
+    /// The gate: on and off, at the widths of its levels.
+    Gate,
 }
 
 /// How controls are read between the instants of the track.
@@ -69,6 +76,7 @@ struct Branch {
     controls: Reader,
     replay: Replay,
     cycles: Vec<Cycle>,
+    cuts: Vec<Cut>,
     outputs: Vec<CycleOutput>,
     /// Factor of its output in the sum.
     weight: f64,
@@ -82,6 +90,10 @@ pub struct ReplayTransmitter<'a> {
     full: Drive,
     branches: Vec<Branch>,
     envelope: Envelope,
+    gates: Option<Gates>,
+    /// A filter behind the stage, and the sum of counted powers that pass it, its loss aside, W.
+    behind: Option<Behind>,
+    through_w: f64,
     /// The last cycle of each branch.
     last: [CycleOutput; 2],
     overlap: u64,
@@ -124,6 +136,8 @@ struct Row {
     control: f64,
     phase: Complex64,
     supply_v: Option<f64>,
+    /// Output and powers by map, of a scheme that has them in its track.
+    by_map: Option<(Complex64, Drawn)>,
     /// How many parts it has, which wait in a row of their own.
     parts: usize,
 }
@@ -148,6 +162,7 @@ impl<'a> ReplayTransmitter<'a> {
                 });
             }
             Scheme::Outphase(_) => Moves::Branches,
+            Scheme::Burst(_) => Moves::Gate,
             other => {
                 return Err(ReplayError::Scheme {
                     scheme: other.name(),
@@ -172,8 +187,21 @@ impl<'a> ReplayTransmitter<'a> {
             ..held
         };
         let mut overlap = replay.memory_cycles(&held, FORGOTTEN)?;
-        if moves == Moves::Width {
+        if matches!(moves, Moves::Width | Moves::Gate) {
             overlap = overlap.max(replay.memory_cycles(&rarely, FORGOTTEN)?);
+        }
+        let (mut gates, mut behind) = (None, None);
+        if let Scheme::Burst(scheme) = request.scheme {
+            // What rings without end while all switches are open is replayed in one.
+            let open = Cycle {
+                pulse: Pulse::Off,
+                ..held
+            };
+            let open = replay.memory_cycles(&open, FORGOTTEN);
+            overlap = overlap.max(open.unwrap_or(u64::MAX));
+            gates = Some(Gates::new(stage, request.map, request.rate_hz));
+            let filter = scheme.filter.as_ref();
+            behind = filter.map(|filter| Behind::new(filter, request.map, request.rate_hz));
         }
         let branch = Branch {
             controls: match request.scheme {
@@ -182,6 +210,7 @@ impl<'a> ReplayTransmitter<'a> {
             },
             replay,
             cycles: Vec::new(),
+            cuts: Vec::new(),
             outputs: Vec::new(),
             weight: 1.0,
         };
@@ -206,6 +235,9 @@ impl<'a> ReplayTransmitter<'a> {
             full,
             branches,
             envelope: Envelope::new(carrier_hz, request.rate_hz),
+            gates,
+            behind,
+            through_w: 0.0,
             last: [CycleOutput::default(); 2],
             overlap,
             started: false,
@@ -253,9 +285,17 @@ impl<'a> ReplayTransmitter<'a> {
                 control: track.control[at],
                 phase: track.phase[at],
                 supply_v: track.supply_v.get(at).copied(),
+                by_map: track
+                    .output_v
+                    .get(at)
+                    .copied()
+                    .zip(track.drawn.get(at).copied()),
             });
         }
         self.taken += track.len() as u64;
+        if let Some(gates) = &mut self.gates {
+            gates.push(&track.gate);
+        }
         // In pieces, so that the cycles of a piece are a stretch or few.
         let carrier_hz = self.request.network.stage().frequency_hz;
         let piece = (STRETCH as f64 * self.request.rate_hz / carrier_hz).ceil() as usize;
@@ -336,7 +376,7 @@ impl<'a> ReplayTransmitter<'a> {
                     supply_v: ends.map(|border| border.control[0].clamp(0.0, full_v)),
                     pulse: Pulse::phased(&full, start.phase_rad, turn),
                 },
-                Moves::Branches => Cycle {
+                Moves::Branches | Moves::Gate => Cycle {
                     supply_v: [full_v; 2],
                     pulse: Pulse::phased(&full, start.phase_rad, turn),
                 },
@@ -357,18 +397,31 @@ impl<'a> ReplayTransmitter<'a> {
         for (index, branch) in self.branches.iter_mut().enumerate() {
             let phasors = if index == 0 { &*first } else { &*second };
             branch.cycles.clear();
-            let cycles = &mut branch.cycles;
-            let mut each = |start, end| cycles.push(cycle_of(start, end));
+            branch.cuts.clear();
+            let (cycles, cuts) = (&mut branch.cycles, &mut branch.cuts);
+            let gates = &mut self.gates;
+            let mut each = |start, end| {
+                let cycle = match gates {
+                    Some(gates) => gates.cycle(cycles.len(), [start, end], cuts),
+                    None => cycle_of(start, end),
+                };
+                cycles.push(cycle);
+            };
             match &mut branch.controls {
                 Reader::BandLimited(reader) => reader.push(controls, phasors, each),
                 Reader::Rails(rails) => rails.push(track, range.clone(), full_v, &mut each),
             }
             if let (false, Some(cycle)) = (self.started, branch.cycles.first()) {
-                branch.replay.settle(cycle)?;
+                match branch.replay.settle(cycle) {
+                    // With all switches open something may ring without end: it begins without any energy.
+                    Err(ReplayError::NeverSettles) if moves == Moves::Gate => branch.replay.rest(),
+                    settled => settled?,
+                }
             }
-            replay_all(
+            replay_cut(
                 &mut branch.replay,
                 &branch.cycles,
+                &branch.cuts,
                 segments,
                 &mut branch.outputs,
             )?;
@@ -412,6 +465,8 @@ impl<'a> ReplayTransmitter<'a> {
         let carrier_hz = self.request.network.stage().frequency_hz;
         let instants = self.request.rate_hz / carrier_hz;
         let count = first.outputs.len();
+        // What passes a filter leaves it later.
+        let late = if self.behind.is_some() { FILTER_LAG } else { 0 };
         let begin = first.replay.cycles() - count as u64;
         for at in 0..count {
             let instant = ((begin + at as u64) as f64 + 0.5) * instants;
@@ -431,7 +486,7 @@ impl<'a> ReplayTransmitter<'a> {
             self.instant.supply_v += 0.5 * (start_v + end_v);
             self.instant.supply_w += supply_j * carrier_hz;
             let (from, to) = self.request.counted;
-            if (from..to).contains(&instant) {
+            if (from..to).contains(&(instant + late as u64)) {
                 self.counted_cycles += 1;
                 self.supply_w += supply_j * carrier_hz;
                 self.generated_w += square / (2.0 * load_ohm);
@@ -473,16 +528,28 @@ impl<'a> ReplayTransmitter<'a> {
             ready.control.push(row.control);
             ready.phase.push(row.phase);
             ready.supply_v.extend(row.supply_v);
+            if let Some((seen_v, drawn)) = row.by_map {
+                ready.output_v.push(seen_v);
+                ready.drawn.push(drawn);
+            }
             let at = ready.control.len() - 1;
             let parts = self.parts.drain(..row.parts.min(self.parts.len()));
             ready
                 .parts
                 .extend(parts.map(|part| TrackPart { at, ..part }));
+            let (value, through_w) = match &mut self.behind {
+                Some(behind) => behind.push(value),
+                None => (value, value.norm_sqr() / (2.0 * load_ohm)),
+            };
             output_v.push(value);
             if (from..to).contains(&self.given) {
+                self.through_w += through_w;
                 self.energy.samples += 1;
                 self.energy.output_w += value.norm_sqr() / (2.0 * load_ohm);
-                self.energy.driver_w += self.request.map.driver_held_w(row.control).unwrap_or(0.0);
+                self.energy.driver_w += match row.by_map {
+                    Some((_, drawn)) => drawn.driver_w,
+                    None => self.request.map.driver_held_w(row.control).unwrap_or(0.0),
+                };
                 self.highest_control = self.highest_control.max(row.control);
             }
             self.given += 1;
@@ -490,7 +557,7 @@ impl<'a> ReplayTransmitter<'a> {
     }
 
     /// The sums so far: the supply's from integrated energy, the modulator's by its model from the mean voltage and
-    /// current of each instant, the driver's by the map.
+    /// current of each instant, the driver's by the map. What a filter turns away is not drawn, or burnt, as by map.
     pub fn energy(&self) -> Energy {
         let mut energy = self.energy;
         let samples = energy.samples as f64;
@@ -501,6 +568,20 @@ impl<'a> ReplayTransmitter<'a> {
             Moves::Branches => self.generated_w / cycles * samples,
             _ => energy.output_w,
         };
+        energy.filter_w = energy.output_w;
+        if self.moves == Moves::Gate {
+            if let Some(behind) = &self.behind {
+                let delivered_w = self.generated_w / cycles * samples;
+                energy.stage_w -= behind.not_drawn_w(delivered_w - self.through_w);
+                energy.generated_w = if behind.reflects() {
+                    self.through_w
+                } else {
+                    delivered_w
+                };
+                energy.filter_w = energy.generated_w;
+            }
+            energy.modulator_w = energy.stage_w;
+        }
         energy
     }
 

@@ -23,7 +23,7 @@ pub enum ReplayError {
     Inputs,
     /// A scheme without a stage of its own, or one that no replay knows.
     #[error(
-        "the scheme {scheme} cannot be replayed: replays know supply, width, levels and isolated outphase"
+        "the scheme {scheme} cannot be replayed: replays know supply, width, levels, burst and isolated outphase"
     )]
     Scheme {
         /// Its name.

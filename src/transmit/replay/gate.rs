@@ -82,6 +82,26 @@ pub fn gated(intervals: &[Interval], on: &[[f64; 2]], gated: &mut Vec<Interval>)
     }
 }
 
+/// Appends what lies of `intervals` within `window`, rad from the cycle's start. The last interval ends with the cycle.
+pub fn cut(intervals: &[Interval], window: [f64; 2], pieces: &mut Vec<Interval>) {
+    let [mut at, to] = window;
+    let mut end = 0.0;
+    for (index, interval) in intervals.iter().enumerate() {
+        end += interval.length_rad;
+        if index + 1 == intervals.len() {
+            end = TAU;
+        }
+        let until = end.min(to);
+        if until > at {
+            pieces.push(Interval {
+                topology: interval.topology,
+                length_rad: until - at,
+            });
+            at = until;
+        }
+    }
+}
+
 /// The intervals of a cycle whose pulse is high in `high` and low elsewhere.
 pub fn pulsed(switches: &Switches, high: &[[f64; 2]], intervals: &mut Vec<Interval>) {
     intervals.clear();

@@ -28,7 +28,7 @@ pub use edges::{Interval, Pulse, Timing};
 use edges::{Intervals, Switches};
 pub use error::ReplayError;
 pub use gate::Gate;
-pub use segments::{Segments, replay_all};
+pub use segments::{Segments, replay_all, replay_cut};
 use walk::{Walk, Walker};
 
 /// The most independent states a replayed stage may have.
@@ -85,6 +85,17 @@ pub struct Cycle {
     /// Supply at start and end, linear between, V.
     pub supply_v: [f64; 2],
     /// What the drive does.
+    pub pulse: Pulse,
+}
+
+/// A change of the pulse within a carrier cycle.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Cut {
+    /// Index of the cycle in its stretch.
+    pub cycle: usize,
+    /// From where on, rad from the cycle's start.
+    pub from_rad: f64,
+    /// What the drive does from there on, as if it had done so from the cycle's start.
     pub pulse: Pulse,
 }
 
@@ -313,6 +324,37 @@ impl Replay {
         gate::gated(self.intervals.as_slice(), on, &mut intervals);
         let output = self.cycle_of(cycle.supply_v, &intervals);
         self.pieces = intervals;
+        output
+    }
+
+    /// One carrier cycle whose pulse changes at once at each of `cuts`, in their order: the switches stand where the
+    /// pulse of the time has them.
+    ///
+    /// # Errors
+    /// As [`Replay::cycle`] and [`Replay::cycle_of`].
+    pub fn cycle_cut(&mut self, cycle: &Cycle, cuts: &[Cut]) -> Result<CycleOutput, ReplayError> {
+        if cuts.is_empty() {
+            return self.cycle(cycle);
+        }
+        let mut pieces = std::mem::take(&mut self.pieces);
+        pieces.clear();
+        let mut from = 0.0;
+        let mut pulse = &cycle.pulse;
+        for end in 0..=cuts.len() {
+            let next = cuts.get(end);
+            let to = next.map_or(TAU, |cut| cut.from_rad.clamp(from, TAU).max(from));
+            if to > from {
+                self.intervals
+                    .plan(pulse, &self.switches, self.timing.as_ref(), self.cycles)?;
+                gate::cut(self.intervals.as_slice(), [from, to], &mut pieces);
+                from = to;
+            }
+            if let Some(cut) = next {
+                pulse = &cut.pulse;
+            }
+        }
+        let output = self.cycle_of(cycle.supply_v, &pieces);
+        self.pieces = pieces;
         output
     }
 

@@ -4,7 +4,7 @@
 //! the true state has died away where it begins to count.
 
 use super::error::ReplayError;
-use super::{Cycle, CycleOutput, Replay};
+use super::{Cut, Cycle, CycleOutput, Replay};
 
 /// How a stretch is cut.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -26,6 +26,20 @@ pub fn replay_all(
     segments: Segments,
     outputs: &mut Vec<CycleOutput>,
 ) -> Result<(), ReplayError> {
+    replay_cut(replay, cycles, &[], segments, outputs)
+}
+
+/// The same with cycles whose pulse changes within them; `cuts` in the order of time.
+///
+/// # Errors
+/// As [`replay_all`].
+pub fn replay_cut(
+    replay: &mut Replay,
+    cycles: &[Cycle],
+    cuts: &[Cut],
+    segments: Segments,
+    outputs: &mut Vec<CycleOutput>,
+) -> Result<(), ReplayError> {
     outputs.clear();
     outputs.resize(cycles.len(), CycleOutput::default());
     let overlap = usize::try_from(segments.overlap).unwrap_or(usize::MAX);
@@ -36,8 +50,12 @@ pub fn replay_all(
     let length = cycles.len().div_ceil(workers).max(1);
     let first_cycle = replay.cycles;
     let run = |replay: &mut Replay, from: usize, to: &mut [CycleOutput]| {
-        for (cycle, output) in cycles[from..].iter().zip(to) {
-            *output = replay.cycle(cycle)?;
+        let mut later = &cuts[cuts.partition_point(|cut| cut.cycle < from)..];
+        for (at, output) in (from..).zip(to) {
+            let own = later.iter().take_while(|cut| cut.cycle == at).count();
+            let (own, rest) = later.split_at(own);
+            later = rest;
+            *output = replay.cycle_cut(&cycles[at], own)?;
         }
         Ok::<(), ReplayError>(())
     };
@@ -58,8 +76,10 @@ pub fn replay_all(
                         let early = from - overlap;
                         own.cycles = first_cycle + early as u64;
                         own.settle(&cycles[early])?;
-                        for cycle in &cycles[early..from] {
-                            own.cycle(cycle)?;
+                        let mut forgotten = [CycleOutput::default(); 256];
+                        for early in (early..from).step_by(forgotten.len()) {
+                            let count = forgotten.len().min(from - early);
+                            run(&mut own, early, &mut forgotten[..count])?;
                         }
                     }
                     run(&mut own, from, to)?;
