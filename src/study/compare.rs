@@ -14,6 +14,7 @@ use super::replay::{By, is_refusal};
 use super::result::CheckResult;
 use super::warning::Warning;
 use crate::drive::{Inversion, Scheme};
+use crate::map::Map;
 use crate::signal::Source;
 use crate::transmit::ReplayError;
 
@@ -23,6 +24,9 @@ pub type OpenSignal<'a> = dyn Fn(usize) -> Result<Box<dyn Source>, StudyError> +
 /// The part of the common sample rate up to which open-ended segments are judged, to each side: near half of it
 /// steps of pulses and rails fold back.
 const JUDGED_PART: f64 = 0.45;
+
+/// Outputs within this part of full output from a straight line have nothing to undo: 180 dB down.
+const STRAIGHT: f64 = 1e-9;
 
 /// Static predistortion from the inverse of the scheme's own map.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, serde::Serialize)]
@@ -144,20 +148,23 @@ pub fn compare_by(
     let mut jobs = Vec::with_capacity(entries.len());
     for entry in &entries {
         let bench = solved[entry.scheme].with_study(&entry.study);
-        let front = match (entry.inverted, &entry.study.predistort) {
+        let Some(inverted) = counted(entry, &bench.map) else {
+            continue;
+        };
+        let front = match (inverted, &entry.study.predistort) {
             (Inverted::With, None) if entry.study.scheme.inversion() == Inversion::Table => {
                 bench.inverse()
             }
             _ => bench.front(),
         };
         let front = front.map_err(|error| (entry.scheme, error))?;
-        jobs.push((entry, bench, front));
+        jobs.push((entry, inverted, bench, front));
     }
     let rate_hz = jobs
         .iter()
-        .map(|(_, bench, front)| bench.rate_hz(front))
+        .map(|(_, _, bench, front)| bench.rate_hz(front))
         .fold(0.0, f64::max);
-    for (_, bench, _) in &mut jobs {
+    for (_, _, bench, _) in &mut jobs {
         bench.common = Some(Common {
             rate_hz,
             until_hz: JUDGED_PART * rate_hz,
@@ -171,7 +178,7 @@ pub fn compare_by(
         }
     };
     let numbered: Vec<_> = jobs.iter().enumerate().collect();
-    let results = in_order(threads, &numbered, |(at, (entry, bench, front))| {
+    let results = in_order(threads, &numbered, |(at, (entry, _, bench, front))| {
         let mut source = open(entry.scheme)?;
         let mut tell = |part| told(*at, part);
         let scheme = entry.study.scheme.name();
@@ -196,9 +203,9 @@ pub fn compare_by(
     let compared = jobs
         .iter()
         .zip(results)
-        .map(|((entry, _, _), result)| Compared {
+        .map(|((entry, inverted, ..), result)| Compared {
             scheme: entry.scheme,
-            inverted: entry.inverted,
+            inverted: *inverted,
             result,
         });
     Ok(compared.collect())
@@ -209,6 +216,31 @@ fn sentence(text: &str) -> String {
     let mut letters = text.chars();
     let first = letters.next().map(|letter| letter.to_ascii_uppercase());
     first.into_iter().chain(letters).collect()
+}
+
+/// How `entry` counts where its map is `map`. A table's inverse of a straight map is the straight line itself: one
+/// check does for both.
+fn counted(entry: &Entry, map: &Map) -> Option<Inverted> {
+    let nothing_to_undo = entry.study.predistort.is_none()
+        && entry.study.scheme.inversion() == Inversion::Table
+        && is_straight(map);
+    match (nothing_to_undo, entry.inverted) {
+        (false, inverted) => Some(inverted),
+        (true, Inverted::With) => None,
+        (true, _) => Some(Inverted::Straight),
+    }
+}
+
+/// Whether the output of every point is that of the last one times its part of the control.
+fn is_straight(map: &Map) -> bool {
+    let Some(top) = map.points().last() else {
+        return false;
+    };
+    map.failures().is_empty()
+        && map.points().iter().all(|point| {
+            let line = top.output_v * (point.control / top.control);
+            (point.output_v - line).norm() <= STRAIGHT * top.output_v.norm()
+        })
 }
 
 /// `work` on every item, up to `threads` at a time; the results in the items' order.
