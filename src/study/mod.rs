@@ -1,5 +1,6 @@
 //! One study from file to verdict.
 
+mod advice;
 mod average;
 mod backoff;
 mod built_in;
@@ -8,10 +9,12 @@ mod closed;
 mod collect;
 mod compare;
 mod error;
+mod hardware;
 mod kept;
 mod load;
 mod measure;
 mod notch;
+mod numbers;
 mod parting;
 mod parts;
 mod predistort;

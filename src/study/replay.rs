@@ -1,7 +1,10 @@
 //! A study whose stage is replayed, and how far its map is from that.
 
-use super::check::{Bench, FAR_WITHIN_DB, Front, gate_warnings, metrics, stage_of, warnings};
+use super::advice::{gate_warnings, warnings};
+use super::check::{Bench, FAR_WITHIN_DB, Front};
 use super::error::StudyError;
+use super::hardware::stage_of;
+use super::numbers::metrics;
 use super::parting::Parting;
 use super::result::{CheckResult, Metrics, RateFacts};
 use super::run::Replayed;
