@@ -295,7 +295,10 @@ mod tests {
     }
 
     #[test]
-    #[ignore = "takes the search's whole budget"]
+    #[cfg_attr(
+        debug_assertions,
+        ignore = "takes the whole budget of the search: seconds in release only"
+    )]
     fn a_search_that_costs_too_much_is_given_up() {
         // Found by the long search: it took minutes and ended at a hundred-thousandth of the wanted power.
         let mut targets = targets(Choice::NoExcess);

@@ -2,13 +2,15 @@
 
 mod document;
 mod files;
+mod json;
 mod problem;
 mod range;
 mod section;
 mod values;
 
 pub use document::Document;
-pub use files::{Files, MAX_TEXT_BYTES, ReadSeek, read_text};
+pub use files::{Files, ReadSeek, read_text};
+pub use json::parse_json;
 pub use problem::{Complaint, Place, Problem};
 pub use range::Range;
 pub use section::{Section, nearest};

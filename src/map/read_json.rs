@@ -4,16 +4,7 @@ use num_complex::Complex64;
 
 use super::read::{Contents, MapFacts, Row};
 use super::{Control, Failure};
-use crate::input::{Complaint, Place, Problem};
-
-/// The words of `error`; its line and column stand in the place already.
-fn without_position(error: &serde_json::Error) -> String {
-    let text = error.to_string();
-    match text.rfind(" at line ") {
-        Some(at) => text[..at].to_owned(),
-        None => text,
-    }
-}
+use crate::input::{Problem, parse_json};
 
 /// Facts and rows of the document in `text`, which came from `file`.
 pub(super) fn from_json(file: &str, text: &str) -> Result<Contents, Problem> {
@@ -44,25 +35,7 @@ pub(super) fn from_json(file: &str, text: &str) -> Result<Contents, Problem> {
         re: f64,
         im: f64,
     }
-    let document: Document = serde_json::from_str(text).map_err(|error| {
-        let content = text
-            .lines()
-            .nth(error.line().saturating_sub(1))
-            .unwrap_or_default();
-        Problem::from(Complaint {
-            file: file.to_owned(),
-            place: Some(Place {
-                line: error.line(),
-                column: error.column().max(1),
-                text: content.chars().take(200).collect(),
-                width: 1,
-            }),
-            key: String::new(),
-            given: without_position(&error),
-            allowed: "the document of `quietedge map --json`".to_owned(),
-            hint: None,
-        })
-    })?;
+    let document: Document = parse_json(file, text, "the document of `quietedge map --json`")?;
     let control = match document.control.as_deref() {
         None => None,
         Some("supply") => Some(Control::Supply),

@@ -5,7 +5,7 @@ use std::io::Read;
 use num_complex::Complex64;
 
 use crate::drive::{MAX_TABLE_RATE, Polynomial, Term};
-use crate::input::{Complaint, MAX_TEXT_BYTES, Place, Problem};
+use crate::input::{Problem, parse_json, read_text};
 use crate::predistort::PolynomialSize;
 
 #[derive(serde::Deserialize)]
@@ -32,43 +32,13 @@ struct Row {
 /// The first thing wrong, with its line where the text is no such document.
 pub fn read_polynomial(file: &str, reader: impl Read) -> Result<Polynomial, Problem> {
     let about = |given: String, allowed: &str| Problem::about_file(file, given, allowed);
-    let mut text = String::new();
-    match reader.take(MAX_TEXT_BYTES + 1).read_to_string(&mut text) {
-        Err(error) => {
-            return Err(about(
-                format!("a file that cannot be read ({error})"),
-                "text",
-            ));
-        }
-        Ok(size) if size as u64 > MAX_TEXT_BYTES => {
-            return Err(about(
-                format!("more than {MAX_TEXT_BYTES} bytes"),
-                "the terms of one polynomial",
-            ));
-        }
-        Ok(_) => {}
-    }
-    let document: Document = serde_json::from_str(&text).map_err(|error| {
-        let line = text
-            .lines()
-            .nth(error.line().saturating_sub(1))
-            .unwrap_or_default();
-        Problem::from(Complaint {
-            file: file.to_owned(),
-            place: Some(Place {
-                line: error.line(),
-                column: error.column().max(1),
-                text: line.chars().take(200).collect(),
-                width: 1,
-            }),
-            key: String::new(),
-            given: error.to_string(),
-            allowed:
-                "a polynomial as `quietedge predistort --polynomial` writes it into polynomial.json"
-                    .to_owned(),
-            hint: None,
-        })
-    })?;
+    let text = read_text(reader)
+        .map_err(|error| Problem::unreadable(file, &error, "a polynomial, text in UTF-8"))?;
+    let document: Document = parse_json(
+        file,
+        &text,
+        "a polynomial as `quietedge predistort --polynomial` writes it into polynomial.json",
+    )?;
     if document.kind != "memory polynomial" || document.version != 1 {
         return Err(about(
             format!("kind \"{}\", version {}", document.kind, document.version),
